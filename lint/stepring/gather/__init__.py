@@ -1,0 +1,1 @@
+"""First stage: from the command line to the translation units to read."""
