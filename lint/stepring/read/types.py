@@ -28,6 +28,22 @@ from stepring.places import Notice, Origin, Position
 
 
 @dataclass(frozen=True, slots=True)
+class Preprocessed:
+    """A unit's text after preprocessing.
+
+    ``text`` holds GNU line markers (``# LINE "FILE" FLAGS``, files absolute) and keeps ``#define`` and ``#undef`` lines in place.
+    ``predefined`` maps the compiler's predefined macro names to their texts; empty where no compiler ran.
+    ``complete`` is False where something (a header, a macro) was missing and had to be guessed.
+    """
+
+    unit: Unit
+    text: str
+    predefined: Mapping[str, str]
+    complete: bool
+    notices: tuple[Notice, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Macro:
     """A ``#define``: ``parameters`` is None for an object-like macro; ``body`` is its replacement text."""
 
