@@ -1,0 +1,1 @@
+"""Fourth stage, the first engine: what each integer can be, everywhere."""
