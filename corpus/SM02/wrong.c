@@ -1,0 +1,89 @@
+/* The hopper and the transport blower of the feed barge. Each stores a state that no case handles; the default
+ * takes it for a corrupted value, so a bridged hopper is never shaken and the pipe is never blown empty. */
+#include <stdbool.h>
+#include <stdint.h>
+
+extern uint16_t hopper_grams(void);
+extern bool hopper_flows(void);
+extern void hopper_shaker(bool on);
+extern void slide_open(bool open);
+extern void blower_percent(uint8_t percent);
+extern bool feed_wanted(void);
+extern bool pipe_is_clear(void);
+
+typedef enum { HOPPER_IDLE, HOPPER_FILLING, HOPPER_BRIDGED, HOPPER_READY } hopper_state_t;
+
+struct hopper {
+    hopper_state_t state;
+    uint16_t wanted_grams;
+};
+
+void hopper_poll(struct hopper *h)
+{
+    switch (h->state) { /* finding: SM02 */
+    case HOPPER_IDLE:
+        if (h->wanted_grams > 0u) {
+            slide_open(true);
+            h->state = HOPPER_FILLING;
+        }
+        break;
+    case HOPPER_FILLING:
+        if (hopper_grams() >= h->wanted_grams) {
+            slide_open(false);
+            h->state = HOPPER_READY;
+        } else if (!hopper_flows()) {
+            h->state = HOPPER_BRIDGED;
+        }
+        break;
+    case HOPPER_READY:
+        if (hopper_grams() == 0u) {
+            h->wanted_grams = 0u;
+            h->state = HOPPER_IDLE;
+        }
+        break;
+    default:
+        hopper_shaker(false);
+        slide_open(false);
+        h->state = HOPPER_IDLE;
+        break;
+    }
+}
+
+#define BLOWER_OFF 0u
+#define BLOWER_SPINUP 1u
+#define BLOWER_RUN 2u
+#define BLOWER_CLEAR 3u
+
+static uint8_t blower_state = BLOWER_OFF;
+static uint8_t blower_ticks;
+
+void blower_poll(void)
+{
+    switch (blower_state) { /* finding: SM02 */
+    case BLOWER_OFF:
+        if (feed_wanted()) {
+            blower_percent(40u);
+            blower_ticks = 20u;
+            blower_state = BLOWER_SPINUP;
+        }
+        break;
+    case BLOWER_SPINUP:
+        if (blower_ticks > 0u) {
+            blower_ticks--;
+        } else {
+            blower_percent(80u);
+            blower_state = BLOWER_RUN;
+        }
+        break;
+    case BLOWER_RUN:
+        if (!feed_wanted()) {
+            blower_percent(100u);
+            blower_state = BLOWER_CLEAR;
+        }
+        break;
+    default:
+        blower_percent(0u);
+        blower_state = BLOWER_OFF;
+        break;
+    }
+}

@@ -1,0 +1,94 @@
+/* The water pump and an auger of the feed barge. Every case ends, and the one that runs on says so. */
+#include <stdbool.h>
+#include <stdint.h>
+
+extern void pump_run(bool on);
+extern bool pump_has_pressure(void);
+extern bool rinse_wanted(void);
+extern void auger_speed(uint8_t percent);
+extern bool auger_turns(void);
+extern void pellets_count(void);
+extern void telemetry_note(uint8_t code);
+
+typedef enum { PUMP_OFF, PUMP_PRIMING, PUMP_RUNNING } pump_state_t;
+
+struct pump {
+    pump_state_t state;
+    uint8_t ticks;
+};
+
+void pump_poll(struct pump *p)
+{
+    switch (p->state) {
+    case PUMP_OFF:
+        if (rinse_wanted()) {
+            pump_run(true);
+            p->ticks = 100u;
+            p->state = PUMP_PRIMING;
+        }
+        break;
+    case PUMP_PRIMING:
+        if (pump_has_pressure()) {
+            p->state = PUMP_RUNNING;
+            break;
+        }
+        p->ticks--;
+        telemetry_note(p->ticks);
+        if (p->ticks > 0u) {
+            break;
+        }
+        /* falls through */
+    case PUMP_RUNNING:
+        if (!pump_has_pressure()) {
+            pump_run(false);
+            p->state = PUMP_OFF;
+        }
+        break;
+    default:
+        pump_run(false);
+        p->state = PUMP_OFF;
+        break;
+    }
+}
+
+#define AUGER_IDLE 0u
+#define AUGER_STARTING 1u
+#define AUGER_FEEDING 2u
+
+static uint8_t auger_state = AUGER_IDLE;
+static bool dose_wanted;
+
+void auger_request(bool wanted)
+{
+    dose_wanted = wanted;
+}
+
+void auger_poll(void)
+{
+    switch (auger_state) {
+    case AUGER_IDLE:
+        if (dose_wanted) {
+            auger_speed(60u);
+            auger_state = AUGER_STARTING;
+        }
+        break;
+    case AUGER_STARTING:
+        if (auger_turns()) {
+            auger_state = AUGER_FEEDING;
+            break;
+        }
+        auger_speed(100u);
+        break;
+    case AUGER_FEEDING:
+        pellets_count();
+        if (!dose_wanted) {
+            auger_speed(0u);
+            auger_state = AUGER_IDLE;
+        }
+        break;
+    default:
+        auger_speed(0u);
+        auger_state = AUGER_IDLE;
+        break;
+    }
+}

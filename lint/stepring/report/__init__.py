@@ -1,0 +1,1 @@
+"""Last stage: verdicts become a SARIF log and a printed report."""

@@ -1,0 +1,1 @@
+"""Fifth stage: the machines and rings that the program holds."""

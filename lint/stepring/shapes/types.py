@@ -1,0 +1,228 @@
+"""What shapes gives: state machines as sets of facts with a graph, and rings with what walks them.
+
+Everything here speaks of the original source (``Origin``), so that rules and reports need no way back.
+"""
+
+from dataclasses import dataclass
+from typing import Literal, TypeAlias
+
+import networkx
+
+from stepring.places import Origin
+from stepring.values.types import Interval
+
+# ---------------------------------------------------------------------------------------------------------- machines
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """A state: its value, its name as the source spells it, and how it is known.
+
+    ``declared``: a constant of the enumeration or ``#define`` group that the machine's constants come from. ``labelled``: some
+    dispatch has a case for it. ``tested``: compared with ``==`` or ``!=``. ``stored``: some code stores it. ``initial``: the value at start.
+    ``where`` is its declaration if known, else its first use.
+    """
+
+    name: str
+    value: int
+    where: Origin
+    declared: bool
+    labelled: bool
+    tested: bool
+    stored: bool
+    initial: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Label:
+    """One ``case`` of a dispatch: the state names it covers; ``runs_on`` is the place it falls out of, if unmarked."""
+
+    states: tuple[str, ...]
+    low: int
+    high: int
+    written: int
+    where: Origin
+    constant: Origin
+    fallen_into_from: Origin | None = None
+    fall_marked: bool = False
+    overwrites: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Dispatch:
+    """One ``switch`` on the state: where it is, what it handles.
+
+    ``default_does``: what the default does: ``none`` (there is none), ``nothing``, ``stores`` a state, ``calls`` something,
+    ``leaves`` the function, ``work`` otherwise. ``unreached`` are first statements of code that no label leads to.
+    """
+
+    function: str
+    control: str
+    where: Origin
+    labels: tuple[Label, ...]
+    default: Origin | None
+    default_does: Literal["none", "nothing", "stores", "calls", "leaves", "work"]
+    unreached: tuple[Origin, ...]
+    control_low: int
+    control_high: int
+
+
+@dataclass(frozen=True, slots=True)
+class StateStore:
+    """A store into the state variable.
+
+    ``values`` are the constants that can be stored (name, value), None where that is not known and ``why_unknown`` says why. ``through`` is
+    the setter's name where the store happens in one.
+    """
+
+    function: str
+    where: Origin
+    values: tuple[tuple[str, int], ...] | None
+    why_unknown: str = ""
+    through: str | None = None
+    initial: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Transition:
+    """From one state to another, taken by a function at a place; ``guard`` is source text or empty."""
+
+    source: str
+    target: str
+    function: str
+    guard: str
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Machine:
+    """A state variable, its states and all code that dispatches on it, tests it or stores into it.
+
+    ``variable`` is how it is shown (``auger_state``, ``struct hopper.state``); ``kind`` is SARIF's logical location kind.
+    ``complete`` is False where some store's value is unknown, the variable's address leaves the code that was read, or part of the
+    program was not read; ``why_incomplete`` says which. ``family`` names the enumeration or ``#define`` group.
+    """
+
+    identity: str
+    variable: str
+    kind: Literal["variable", "member"]
+    where: Origin
+    form: str
+    states: tuple[State, ...]
+    dispatches: tuple[Dispatch, ...]
+    stores: tuple[StateStore, ...]
+    transitions: tuple[Transition, ...]
+    initial: tuple[str, ...]
+    complete: bool
+    why_incomplete: tuple[str, ...]
+    family: str
+
+    def state(self, name: str) -> State:
+        """The state of that name; ``KeyError`` if there is none."""
+        for state in self.states:
+            if state.name == name:
+                return state
+        raise KeyError(name)
+
+    def graph(self) -> "networkx.MultiDiGraph[str]":
+        """The states as nodes, the transitions as edges with ``function``, ``guard`` and ``where``."""
+        graph: networkx.MultiDiGraph[str] = networkx.MultiDiGraph()
+        graph.add_nodes_from(state.name for state in self.states)
+        for step in self.transitions:
+            graph.add_edge(step.source, step.target, function=step.function, guard=step.guard, where=step.where)
+        return graph
+
+
+# ---------------------------------------------------------------------------------------------------------- rings
+
+WrapForm: TypeAlias = Literal["reset", "modulo", "mask", "subtract", "choice", "free-running", "decrement", "none"]
+Scheme: TypeAlias = Literal["one slot empty", "count", "difference", "flag", "overwrite", "unchecked", "unknown"]
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """What one advance does to an index, as found by running the code for every start value.
+
+    ``pairs`` are (before, after); ``limit`` is the wrap's constant (N of ``>= N``, ``% N``, mask + 1) or None; ``wrap_where`` is the
+    wrap's place and ``where`` the advance's.
+    """
+
+    function: str
+    where: Origin
+    wrap: WrapForm
+    wrap_where: Origin | None
+    limit: int | None
+    pairs: tuple[tuple[int, int], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Access:
+    """An access to the ring's storage through an index (or an index reduced on access).
+
+    ``range`` is what the values engine says the subscript can be; ``exact`` are the subscripts that the index's real orbit gives,
+    None where the orbit is not known.
+    """
+
+    function: str
+    where: Origin
+    index: str
+    kind: Literal["load", "store", "address"]
+    range: Interval | None
+    exact: tuple[int, ...] | None
+    reduction: WrapForm
+    modulus: int | None
+    steps: tuple["OrbitStep", ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class OrbitStep:
+    """One step of the shortest way to a bad value: where, what happens, and the index before and after."""
+
+    where: Origin
+    text: str
+    values: tuple[tuple[str, str], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Index:
+    """An index of a ring: how it is shown, its type's name and limits, its orbit and its steps.
+
+    ``orbit`` are the values it really takes where it can be seen from outside a function, None if unknown. ``role``: ``write`` stores into the
+    storage, ``read`` loads, ``both``, ``count`` counts the occupied slots.
+    """
+
+    name: str
+    identity: str
+    type_name: str
+    low: int
+    high: int
+    role: Literal["write", "read", "both", "count"]
+    steps: tuple[Step, ...]
+    orbit: tuple[int, ...] | None
+    initial: int | None
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Ring:
+    """Storage with indices that walk it round; ``capacity`` in elements, None where it is set at run time."""
+
+    identity: str
+    storage: str
+    kind: Literal["variable", "member"]
+    where: Origin
+    capacity: int | None
+    element_size: int | None
+    indices: tuple[Index, ...]
+    accesses: tuple[Access, ...]
+    scheme: Scheme
+    wrap: WrapForm
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Program:
+    """All that rules read."""
+
+    machines: tuple[Machine, ...]
+    rings: tuple[Ring, ...]
