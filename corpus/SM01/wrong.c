@@ -78,3 +78,21 @@ void auger_poll(struct auger *a)
         break;
     }
 }
+
+#define AUGERS 3u
+
+static struct auger augers[AUGERS] = {{.channel = 0u}, {.channel = 1u}, {.channel = 2u}};
+
+void auger_order(uint8_t channel, uint16_t grams)
+{
+    if (channel < AUGERS) {
+        augers[channel].target = grams;
+    }
+}
+
+void augers_poll(void)
+{
+    for (uint8_t n = 0u; n < AUGERS; n++) {
+        auger_poll(&augers[n]);
+    }
+}

@@ -8,6 +8,7 @@ extern bool hopper_flows(void);
 extern void hopper_shaker(bool on);
 extern void slide_open(bool open);
 extern void blower_percent(uint8_t percent);
+extern uint16_t blower_rpm(void);
 extern bool feed_wanted(void);
 extern bool pipe_is_clear(void);
 
@@ -49,13 +50,24 @@ void hopper_poll(struct hopper *h)
     }
 }
 
+static struct hopper hopper;
+
+void hopper_order(uint16_t grams)
+{
+    hopper.wanted_grams = grams;
+}
+
+void hopper_tick(void)
+{
+    hopper_poll(&hopper);
+}
+
 #define BLOWER_OFF 0u
 #define BLOWER_SPINUP 1u
 #define BLOWER_RUN 2u
 #define BLOWER_CLEAR 3u
 
 static uint8_t blower_state = BLOWER_OFF;
-static uint8_t blower_ticks;
 
 void blower_poll(void)
 {
@@ -63,14 +75,11 @@ void blower_poll(void)
     case BLOWER_OFF:
         if (feed_wanted()) {
             blower_percent(40u);
-            blower_ticks = 20u;
             blower_state = BLOWER_SPINUP;
         }
         break;
     case BLOWER_SPINUP:
-        if (blower_ticks > 0u) {
-            blower_ticks--;
-        } else {
+        if (blower_rpm() > 2000u) {
             blower_percent(80u);
             blower_state = BLOWER_RUN;
         }

@@ -64,6 +64,7 @@ static void auger_step(struct auger *a)
     case AUGER_IDLE:
         if (auger_has_pellets() && dose_wanted()) {
             auger_speed(100u);
+            a->ticks = 200u;
             a->state = AUGER_FEED;
         } else if (dose_wanted()) {
             auger_speed(20u);
@@ -86,7 +87,7 @@ static void auger_step(struct auger *a)
         }
         break;
     case AUGER_FEED:
-        if (dose_done()) {
+        if (dose_done() || --a->ticks == 0u) {
             auger_speed(0u);
             a->state = AUGER_IDLE;
         }

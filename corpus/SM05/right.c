@@ -8,6 +8,7 @@ extern bool gate_at_bottom(void);
 extern bool feed_wanted(void);
 extern void auger_speed(uint8_t percent);
 extern bool auger_overloaded(void);
+extern bool auger_pipe_empty(void);
 extern void beacon(bool on);
 
 #define GATE_SHUT 0u
@@ -47,7 +48,7 @@ void gate_poll(void)
     }
 }
 
-enum auger_state { AUGER_IDLE, AUGER_FEED, AUGER_BLOCKED };
+enum auger_state { AUGER_IDLE, AUGER_FEED, AUGER_RUNOUT };
 enum alarm_code { ALARM_AUGER_BLOCKED = 20, ALARM_HOPPER_EMPTY };
 
 struct auger {
@@ -68,13 +69,13 @@ void auger_poll(struct auger *a)
         if (auger_overloaded()) {
             auger_speed(0u);
             a->alarm = ALARM_AUGER_BLOCKED;
-            a->state = AUGER_BLOCKED;
+            a->state = AUGER_RUNOUT;
         } else if (!feed_wanted()) {
-            a->state = AUGER_BLOCKED;
+            a->state = AUGER_RUNOUT;
         }
         break;
-    case AUGER_BLOCKED:
-        if (!auger_overloaded()) {
+    case AUGER_RUNOUT:
+        if (auger_pipe_empty()) {
             auger_speed(0u);
             a->state = AUGER_IDLE;
         }
@@ -84,6 +85,13 @@ void auger_poll(struct auger *a)
         a->state = AUGER_IDLE;
         break;
     }
+}
+
+static struct auger auger;
+
+void auger_tick(void)
+{
+    auger_poll(&auger);
 }
 
 /* The beacon blinks twice while feed falls: lit, dark, lit, dark. */

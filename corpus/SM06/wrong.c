@@ -30,15 +30,18 @@ void pump_poll(struct pump *p)
         break;
     case PUMP_PRIMING:
         if (pump_has_pressure()) {
+            p->ticks = 250u;
             p->state = PUMP_RUNNING;
             break;
         }
         p->ticks--;
         telemetry_note(p->ticks);
     case PUMP_RUNNING: /* finding: SM06 */
-        if (!pump_has_pressure()) {
+        if (p->ticks == 0u || !pump_has_pressure()) {
             pump_run(false);
             p->state = PUMP_OFF;
+        } else {
+            p->ticks--;
         }
         break;
     default:
@@ -46,6 +49,13 @@ void pump_poll(struct pump *p)
         p->state = PUMP_OFF;
         break;
     }
+}
+
+static struct pump rinse_pump;
+
+void rinse_pump_tick(void)
+{
+    pump_poll(&rinse_pump);
 }
 
 #define AUGER_IDLE 0u

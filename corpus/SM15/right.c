@@ -77,6 +77,13 @@ void auger_poll(struct auger *a)
     }
 }
 
+static struct auger auger;
+
+void auger_tick(void)
+{
+    auger_poll(&auger);
+}
+
 #define LINK_DOWN 0x00
 #define LINK_UP 0x01
 #define LINK_LOST 0x02

@@ -66,6 +66,7 @@ void auger_poll(struct auger *a)
         break;
         auger_speed(0u); /* finding: SM15 */
         alarm_raise(3u);
+        break;
     case 2:
         if (!auger_overloaded()) {
             a->state = 0;
@@ -76,6 +77,13 @@ void auger_poll(struct auger *a)
         a->state = 0;
         break;
     }
+}
+
+static struct auger auger;
+
+void auger_tick(void)
+{
+    auger_poll(&auger);
 }
 
 #define LINK_DOWN 0x00
