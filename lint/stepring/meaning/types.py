@@ -27,14 +27,15 @@ class IntType:
     """An integer type. ``name`` is the type's name without typedefs (``unsigned char``, ``_Bool``, ``int``, ``enum``-free).
 
     ``width`` is in bits (value and sign bits, padding excluded; a bit-field's own width), ``rank`` orders the types as
-    6.3.1.1 does. ``enum`` is the enumeration's identity where the object was declared with one.
+    6.3.1.1 does. ``enum`` is the enumeration's identity where the object was declared with one; it does not count when
+    types are compared.
     """
 
     name: str
     width: int
     signed: bool
     rank: int
-    enum: str | None = None
+    enum: str | None = field(default=None, compare=False)
 
     @property
     def low(self) -> int:
