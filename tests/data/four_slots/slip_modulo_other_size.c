@@ -1,0 +1,23 @@
+/* The last four weight samples of the hopper, newest first. Slip: the remainder is by the size of another buffer. */
+#include <stdint.h>
+
+#define COMMAND_SLOTS 6
+#define HISTORY_SLOTS 4
+
+static int16_t history[HISTORY_SLOTS];
+static uint8_t head;
+
+void history_put(int16_t sample)
+{
+    history[head] = sample;
+    head = (uint8_t)((head + 1) % COMMAND_SLOTS); /* finding: RB06 */
+}
+
+/* The i-th sample back: 0 is the newest, HISTORY_SLOTS - 1 the oldest. Anything older is gone and reads as 0. */
+int16_t history_get(uint8_t i)
+{
+    if (i >= HISTORY_SLOTS) {
+        return 0;
+    }
+    return history[(head + HISTORY_SLOTS - 1 - i) % HISTORY_SLOTS];
+}
