@@ -1,8 +1,8 @@
 """What a rule is, and what it says: obligations with verdicts.
 
-A rule is data (``Rule``) with one function that takes the ``Program`` and yields an ``Obligation`` for each thing that must
-hold at one place. Rules register in the entry point group ``stepring.rules``; ``load_rules`` finds them all, private ones
-included. The verdict words are SARIF's result kinds (2.1.0 section 3.27.9).
+A rule is data (``Rule``) with one function that takes the ``Program`` and yields an ``Obligation`` for each thing
+that must hold at one place. Rules register in the entry point group ``stepring.rules``; ``load_rules`` finds them
+all, private ones included. The verdict words are SARIF's result kinds (2.1.0 section 3.27.9).
 """
 
 from collections.abc import Callable, Iterable
@@ -29,7 +29,8 @@ class Related:
 
 @dataclass(frozen=True, slots=True)
 class WitnessStep:
-    """One step of a witness: where control is, what happens there, and the values that matter, as (expression, text)."""
+    """One step of a witness: where control is, what happens there, and the values that matter, as (expression,
+    text)."""
 
     where: Origin
     text: str
@@ -40,9 +41,10 @@ class WitnessStep:
 class Obligation:
     """One thing that must hold at one place, and the verdict on it.
 
-    ``what`` is one sentence, the finding itself; ``why`` says why it matters, ``advice`` what to do; ``reason`` is why an ``open`` one is
-    open. ``level`` is set exactly where ``kind`` is ``fail``. ``subject`` is the state variable or ring storage and ``shape`` the
-    machine's or ring's identity; ``states`` name the graph nodes concerned. ``witness`` are the steps that make it fail.
+    ``what`` is one sentence, the finding itself; ``why`` says why it matters, ``advice`` what to do; ``reason`` is
+    why an ``open`` one is open. ``level`` is set exactly where ``kind`` is ``fail``. ``subject`` is the state
+    variable or ring storage and ``shape`` the machine's or ring's identity; ``states`` name the graph nodes
+    concerned. ``witness`` are the steps that make it fail.
     """
 
     rule: str
@@ -65,7 +67,8 @@ class Obligation:
 
 @dataclass(frozen=True, slots=True)
 class Rule:
-    """A rule's identity: stable opaque ``id``, ``name`` in words run together, one-sentence ``summary``, usual ``level``.
+    """A rule's identity: stable opaque ``id``, ``name`` in words run together, one-sentence ``summary``, usual
+    ``level``.
 
     ``cwe`` are numbers of CWE 4.20 entries that contain what the rule finds. ``package`` holds ``pages/ID.md``.
     """

@@ -1,8 +1,9 @@
 """Exact evaluation of expressions whose parts are all constants, in the target's arithmetic.
 
-One place for C's rules on values: conversion (N1570 6.3.1.3), unsigned wrap-round (6.2.5p9), truncating division (6.5.5p6), shifts
-(6.5.7). What the standard leaves undefined gives None. Conversion to a signed type that cannot hold the value is
-implementation-defined; every compiler of the trade takes it modulo 2^N (common practice), and so does this.
+One place for C's rules on values: conversion (N1570 6.3.1.3), unsigned wrap-round (6.2.5p9), truncating division
+(6.5.5p6), shifts (6.5.7). What the standard leaves undefined gives None. Conversion to a signed type that cannot hold
+the value is implementation-defined; every compiler of the trade takes it modulo 2^N (common practice), and so does
+this.
 """
 
 from stepring.meaning.types import (

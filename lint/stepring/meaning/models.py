@@ -1,13 +1,14 @@
 """Data models: how wide the basic types are, and the integer types of each.
 
-The names LP64, LLP64 and ILP32 are those of the trade; ``IP16`` is the model of AVR and MSP430, whose ``int`` and pointers have
-16 bits and whose ``long`` has 32. Where a compiler was run, its predefined macros (``__SIZEOF_INT__`` and so on) give the model
-instead, so that an unusual target needs no name. Ranks and the typing of constants follow N1570 6.3.1.1 and 6.4.4.1p5.
+The names LP64, LLP64 and ILP32 are those of the trade; ``IP16`` is the model of AVR and MSP430, whose ``int`` and
+pointers have 16 bits and whose ``long`` has 32. Where a compiler was run, its predefined macros (``__SIZEOF_INT__``
+and so on) give the model instead, so that an unusual target needs no name. Ranks and the typing of constants follow
+N1570 6.3.1.1 and 6.4.4.1p5.
 """
 
 from collections.abc import Mapping
 from dataclasses import replace
-from functools import lru_cache
+from functools import cache
 
 from stepring.meaning.types import CType, DataModel, FloatType, IntType
 
@@ -18,7 +19,18 @@ MODELS: dict[str, DataModel] = {
     ),
     "ILP32": DataModel("ILP32", 16, 32, 32, 64, 32, max_align=8, size_type="unsigned int", ptrdiff_type="int"),
     "IP16": DataModel(
-        "IP16", 16, 16, 32, 64, 16, double=32, long_double=32, max_align=1, wchar=16, size_type="unsigned int", ptrdiff_type="int"
+        "IP16",
+        16,
+        16,
+        32,
+        64,
+        16,
+        double=32,
+        long_double=32,
+        max_align=1,
+        wchar=16,
+        size_type="unsigned int",
+        ptrdiff_type="int",
     ),
 }
 
@@ -35,9 +47,7 @@ def model_from_macros(predefined: Mapping[str, str]) -> DataModel | None:
         text = predefined.get(f"__SIZEOF_{name}__", "")
         return 8 * int(text) if text.isdigit() else None
 
-    short, int_, long, long_long, pointer = (
-        bits(name) for name in ("SHORT", "INT", "LONG", "LONG_LONG", "POINTER")
-    )
+    short, int_, long, long_long, pointer = (bits(name) for name in ("SHORT", "INT", "LONG", "LONG_LONG", "POINTER"))
     if short is None or int_ is None or long is None or long_long is None or pointer is None:
         return None
     align = predefined.get("__BIGGEST_ALIGNMENT__", "")
@@ -77,7 +87,7 @@ def _plain_name(text: str) -> str:
     return signed + "int"
 
 
-@lru_cache(maxsize=None)
+@cache
 def integer(model: DataModel, name: str) -> IntType:
     """The integer type of that plain name (``unsigned long``); ``KeyError`` for a name that is none."""
     base = name.removeprefix("unsigned ").removeprefix("signed ")

@@ -3,12 +3,13 @@
 The IR has one purpose: after it, nobody thinks about C's expression rules again. Its three layers:
 
 - *types* (``CType``): with widths and signs settled by a ``DataModel``.
-- *expressions* (``Expr``) are pure: evaluating one changes nothing. Every implicit conversion is a ``Cast``; both operands of a
+- *expressions* (``Expr``) are pure: evaluating one changes nothing. Every implicit conversion is a ``Cast``; both
+operands of a
   ``Binary`` have the same type (except shifts and pointer steps). Memory is read only by ``Load``, of a ``Place``.
 - *statements* do one thing each: ``Assign`` a place, ``Call``, ``Begin`` a variable's life. A ``Block`` is a run of
   statements and one ``Terminator``. ``&&``, ``||``, ``?:``, ``++``, compound assignment, comma and statement
-  expressions have become statements, branches and temporaries; values that a later side effect could change were saved in
-  temporaries first, operands being evaluated from left to right.
+  expressions have become statements, branches and temporaries; values that a later side effect could change were
+  saved in temporaries first, operands being evaluated from left to right.
 
 Clause numbers in docstrings are those of ISO/IEC 9899:2011 (N1570).
 """
@@ -24,7 +25,8 @@ from stepring.places import Notice, Position
 
 @dataclass(frozen=True, slots=True)
 class IntType:
-    """An integer type. ``name`` is the type's name without typedefs (``unsigned char``, ``_Bool``, ``int``, ``enum``-free).
+    """An integer type. ``name`` is the type's name without typedefs (``unsigned char``, ``_Bool``, ``int``,
+    ``enum``-free).
 
     ``width`` is in bits (value and sign bits, padding excluded; a bit-field's own width), ``rank`` orders the types as
     6.3.1.1 does. ``enum`` is the enumeration's identity where the object was declared with one; it does not count when
@@ -104,9 +106,7 @@ class UnknownType:
     name: str
 
 
-CType: TypeAlias = (
-    IntType | FloatType | VoidType | PointerType | ArrayType | StructType | FunctionType | UnknownType
-)
+CType: TypeAlias = IntType | FloatType | VoidType | PointerType | ArrayType | StructType | FunctionType | UnknownType
 
 
 @dataclass(frozen=True, slots=True)
@@ -187,7 +187,8 @@ Storage = Literal["automatic", "parameter", "static-local", "static", "global", 
 class Variable:
     """An object with a name.
 
-    ``identity`` tells it from every other in the program: ``name`` for one with external linkage, ``file:name`` for a file's static,
+    ``identity`` tells it from every other in the program: ``name`` for one with external linkage, ``file:name`` for a
+    file's static,
     ``file:function:name@line`` for a function's own static, ``name@line`` for automatic ones, ``%N`` for
     temporaries made by lowering.
     """
@@ -234,7 +235,8 @@ class MemberPlace:
 
 @dataclass(frozen=True, slots=True)
 class ElementPlace:
-    """An element of an array object: ``base[index]``; ``base`` has an ``ArrayType``. ``position`` is the subscript's."""
+    """An element of an array object: ``base[index]``; ``base`` has an ``ArrayType``. ``position`` is the
+    subscript's."""
 
     base: "PlaceExpr"
     index: "Expr"
@@ -390,7 +392,8 @@ Expr: TypeAlias = (
 
 @dataclass(frozen=True, slots=True)
 class Assign:
-    """Store ``value`` in ``place``; their types are equal. ``initial`` marks an initialiser of an automatic variable."""
+    """Store ``value`` in ``place``; their types are equal. ``initial`` marks an initialiser of an automatic
+    variable."""
 
     place: PlaceExpr
     value: Expr
@@ -449,8 +452,8 @@ class Branch:
 class CaseLabel:
     """A ``case``: the values from ``low`` to ``high`` (equal but for a case range), converted to the control's type.
 
-    ``position`` is the keyword's, ``constant`` the position of the label's expression and ``name`` its enumerator. ``written`` is
-    the value before conversion (a value that the control's type cannot hold never matches).
+    ``position`` is the keyword's, ``constant`` the position of the label's expression and ``name`` its enumerator.
+    ``written`` is the value before conversion (a value that the control's type cannot hold never matches).
     """
 
     low: int
@@ -475,8 +478,8 @@ class SwitchSyntax:
     """What rules need of how a ``switch`` was written.
 
     ``falls`` are the places where a case runs on; ``unreached`` the first statements that no label leads to;
-    ``default`` is the position of ``default:`` or None; ``nested_labels`` says that a label stands inside an inner statement (a loop or
-    block), as in Duff's device or a coroutine; ``end`` is the last line of the body.
+    ``default`` is the position of ``default:`` or None; ``nested_labels`` says that a label stands inside an inner
+    statement (a loop or block), as in Duff's device or a coroutine; ``end`` is the last line of the body.
     """
 
     position: Position
@@ -489,7 +492,8 @@ class SwitchSyntax:
 
 @dataclass(frozen=True, slots=True)
 class Switch:
-    """Go on at the case that holds ``value``, else at ``default`` (the block after the statement where none is written)."""
+    """Go on at the case that holds ``value``, else at ``default`` (the block after the statement where none is
+    written)."""
 
     value: Expr
     cases: tuple[CaseLabel, ...]
@@ -527,8 +531,8 @@ class Block:
 class Function:
     """A function body as a graph of blocks; ``blocks[0]`` is the entry.
 
-    ``name`` is the C name, ``identity`` is ``name`` or ``file:name`` for a static one. ``variables`` are all that it names, its own
-    and others. ``attributes`` are the words of ``read.types.Declaration``.
+    ``name`` is the C name, ``identity`` is ``name`` or ``file:name`` for a static one. ``variables`` are all that it
+    names, its own and others. ``attributes`` are the words of ``read.types.Declaration``.
     """
 
     name: str
@@ -551,7 +555,8 @@ class Function:
 class InitialValue:
     """What an object with static storage holds at start, scalar by scalar.
 
-    ``path`` leads from the variable to the scalar: member names and element numbers. Scalars that are not listed are zero.
+    ``path`` leads from the variable to the scalar: member names and element numbers. Scalars that are not listed are
+    zero.
     """
 
     path: tuple[str | int, ...]

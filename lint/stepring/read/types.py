@@ -31,7 +31,8 @@ from stepring.places import Notice, Origin, Position
 class Preprocessed:
     """A unit's text after preprocessing.
 
-    ``text`` holds GNU line markers (``# LINE "FILE" FLAGS``, files absolute) and keeps ``#define`` and ``#undef`` lines in place.
+    ``text`` holds GNU line markers (``# LINE "FILE" FLAGS``, files absolute) and keeps ``#define`` and ``#undef``
+    lines in place.
     ``predefined`` maps the compiler's predefined macro names to their texts; empty where no compiler ran.
     ``complete`` is False where something (a header, a macro) was missing and had to be guessed.
     """
@@ -58,7 +59,8 @@ class Macro:
 class Declaration:
     """One top-level declaration, parsed once for the whole run however many units contain it.
 
-    ``key`` is the same for the same text at the same place. ``nodes`` are pycparser nodes (``c_ast.FuncDef``, ``c_ast.Decl``,
+    ``key`` is the same for the same text at the same place. ``nodes`` are pycparser nodes (``c_ast.FuncDef``,
+    ``c_ast.Decl``,
     ``c_ast.Typedef``, ``c_ast.Pragma``…) whose coordinates are those of a ``Position``. ``typeofs`` maps each
     ``__stepring_typeof_N`` to its operand: an expression node or a ``c_ast.Typename``. ``attributes`` are the attribute
     words met in the declaration without underscores (``noreturn``, ``interrupt``, ``signal``, ``packed``, …), vendor
@@ -90,9 +92,10 @@ class ReadUnit:
     """A unit after reading.
 
     ``declarations`` are in source order and hold at least all that the unit's own function definitions need.
-    ``predefined`` are the compiler's predefined macros (empty where no compiler ran). ``inferred_types`` are type names that had
-    no declaration. ``origin`` leads back to the original source: from a token's position in parsed text to the place
-    and spelling a person sees; it never fails (a position that cannot be refined gives the line's first character).
+    ``predefined`` are the compiler's predefined macros (empty where no compiler ran). ``inferred_types`` are type
+    names that had no declaration. ``origin`` leads back to the original source: from a token's position in parsed
+    text to the place and spelling a person sees; it never fails (a position that cannot be refined gives the line's
+    first character).
     ``marked_falls`` are the (file, line) of statements or comments that mark a fall-through on purpose.
     """
 

@@ -20,7 +20,9 @@ class Coverage:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Outcome:
-    """A run's whole result; reported paths are relative to ``root``. ``models`` are the data models the units were read with."""
+    """A run's whole result; reported paths are relative to ``root``. ``models`` are the data models the units were
+    read with.
+    """
 
     root: Path
     rules: tuple[Rule, ...]

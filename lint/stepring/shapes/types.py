@@ -18,8 +18,9 @@ from stepring.values.types import Interval
 class State:
     """A state: its value, its name as the source spells it, and how it is known.
 
-    ``declared``: a constant of the enumeration or ``#define`` group that the machine's constants come from. ``labelled``: some
-    dispatch has a case for it. ``tested``: compared with ``==`` or ``!=``. ``stored``: some code stores it. ``initial``: the value at start.
+    ``declared``: a constant of the enumeration or ``#define`` group that the machine's constants come from.
+    ``labelled``: some dispatch has a case for it. ``tested``: compared with ``==`` or ``!=``. ``stored``: some code
+    stores it. ``initial``: the value at start.
     ``where`` is its declaration if known, else its first use.
     """
 
@@ -52,7 +53,8 @@ class Label:
 class Dispatch:
     """One ``switch`` on the state: where it is, what it handles.
 
-    ``default_does``: what the default does: ``none`` (there is none), ``nothing``, ``stores`` a state, ``calls`` something,
+    ``default_does``: what the default does: ``none`` (there is none), ``nothing``, ``stores`` a state, ``calls``
+    something,
     ``leaves`` the function, ``work`` otherwise. ``unreached`` are first statements of code that no label leads to.
     """
 
@@ -71,8 +73,8 @@ class Dispatch:
 class StateStore:
     """A store into the state variable.
 
-    ``values`` are the constants that can be stored (name, value), None where that is not known and ``why_unknown`` says why. ``through`` is
-    the setter's name where the store happens in one.
+    ``values`` are the constants that can be stored (name, value), None where that is not known and ``why_unknown``
+    says why. ``through`` is the setter's name where the store happens in one.
     """
 
     function: str
@@ -98,9 +100,11 @@ class Transition:
 class Machine:
     """A state variable, its states and all code that dispatches on it, tests it or stores into it.
 
-    ``variable`` is how it is shown (``auger_state``, ``struct hopper.state``); ``kind`` is SARIF's logical location kind.
-    ``complete`` is False where some store's value is unknown, the variable's address leaves the code that was read, or part of the
-    program was not read; ``why_incomplete`` says which. ``family`` names the enumeration or ``#define`` group.
+    ``variable`` is how it is shown (``auger_state``, ``struct hopper.state``); ``kind`` is SARIF's logical location
+    kind.
+    ``complete`` is False where some store's value is unknown, the variable's address leaves the code that was read,
+    or part of the program was not read; ``why_incomplete`` says which. ``family`` names the enumeration or
+    ``#define`` group.
     """
 
     identity: str
@@ -143,8 +147,8 @@ Scheme: TypeAlias = Literal["one slot empty", "count", "difference", "flag", "ov
 class Step:
     """What one advance does to an index, as found by running the code for every start value.
 
-    ``pairs`` are (before, after); ``limit`` is the wrap's constant (N of ``>= N``, ``% N``, mask + 1) or None; ``wrap_where`` is the
-    wrap's place and ``where`` the advance's.
+    ``pairs`` are (before, after); ``limit`` is the wrap's constant (N of ``>= N``, ``% N``, mask + 1) or None;
+    ``wrap_where`` is the wrap's place and ``where`` the advance's.
     """
 
     function: str
@@ -159,8 +163,8 @@ class Step:
 class Access:
     """An access to the ring's storage through an index (or an index reduced on access).
 
-    ``range`` is what the values engine says the subscript can be; ``exact`` are the subscripts that the index's real orbit gives,
-    None where the orbit is not known.
+    ``range`` is what the values engine says the subscript can be; ``exact`` are the subscripts that the index's real
+    orbit gives, None where the orbit is not known.
     """
 
     function: str
@@ -187,8 +191,8 @@ class OrbitStep:
 class Index:
     """An index of a ring: how it is shown, its type's name and limits, its orbit and its steps.
 
-    ``orbit`` are the values it really takes where it can be seen from outside a function, None if unknown. ``role``: ``write`` stores into the
-    storage, ``read`` loads, ``both``, ``count`` counts the occupied slots.
+    ``orbit`` are the values it really takes where it can be seen from outside a function, None if unknown. ``role``:
+    ``write`` stores into the storage, ``read`` loads, ``both``, ``count`` counts the occupied slots.
     """
 
     name: str

@@ -6,7 +6,8 @@ from typing import TypeAlias
 
 @dataclass(frozen=True, slots=True)
 class Interval:
-    """The integers ``low``, ``low + stride``, …, ``high``; a single value has stride 0. Never empty (None stands for that)."""
+    """The integers ``low``, ``low + stride``, …, ``high``; a single value has stride 0. Never empty (None stands for
+    that)."""
 
     low: int
     high: int
@@ -15,7 +16,8 @@ class Interval:
 
 @dataclass(frozen=True, slots=True, order=True)
 class VariableCell:
-    """A variable, or a part of one reached by constant members and elements: ``path`` is ``(".head",)``, ``("[]", ".state")``.
+    """A variable, or a part of one reached by constant members and elements: ``path`` is ``(".head",)``, ``("[]",
+    ".state")``.
 
     All elements of an array share one cell (``[]``).
     """
