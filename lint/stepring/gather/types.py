@@ -13,9 +13,13 @@ UnitKind = Literal["database", "source", "preprocessed"]
 class Unit:
     """One translation unit.
 
-    ``source`` and ``directory`` are absolute. ``arguments`` are the compiler's, with the compiler first, reduced to those that
-    only read (see ``gather.options``); empty where no compiler is known. ``include_folders`` are absolute and serve
-    the built-in preprocessor, ``defines`` are its ``NAME=VALUE`` texts.
+    ``source`` and ``directory`` are absolute. ``arguments`` are the compiler's, with the compiler first, reduced to
+    those that only read (see ``gather.options``); empty where no compiler is known. ``include_folders`` are absolute
+    and serve the built-in preprocessor, ``defines`` are its ``NAME=VALUE`` texts. ``included`` and ``macro_files``
+    are files that the compiler's ``-include`` and ``-imacros`` name: read before the source, the latter for their
+    macros alone.
+    ``data_model`` is what the compiler's name or the headers suggest (``IP16``, ``ILP32``, ``LP64``, ``LLP64``); it
+    counts only where no compiler can be asked and the user names none.
     """
 
     source: Path
@@ -24,6 +28,9 @@ class Unit:
     arguments: tuple[str, ...] = ()
     include_folders: tuple[Path, ...] = ()
     defines: tuple[str, ...] = ()
+    included: tuple[Path, ...] = ()
+    macro_files: tuple[Path, ...] = ()
+    data_model: str | None = None
 
 
 @dataclass(frozen=True, slots=True)
