@@ -1,4 +1,4 @@
-/* The last four weight samples of the hopper, newest first. Wrap: a counter that runs freely and is masked on access. */
+/* The last four weight samples of the hopper, newest first. Wrap: a free-running counter, masked on access. */
 #include <stdint.h>
 
 #define HISTORY_SLOTS 4u
