@@ -23,8 +23,8 @@ static void report(void)
     (void)telemetry_record(0x94u, (uint16_t)(feedlog_hour_before_last() / 1000u));
     (void)telemetry_record(0x95u, (uint16_t)(jobs_served_grams() / 1000u));
     (void)telemetry_record(0x96u, jobs_waiting(0u));
-    (void)telemetry_record(    (void)telemetry_record(0x97u, trace_recent(0u));
-0x98u, link_refused());
+    (void)telemetry_record(0x97u, trace_recent(0u));
+    (void)telemetry_record(0x98u, link_refused());
 }
 
 void shore_poll(void)
