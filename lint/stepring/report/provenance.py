@@ -1,25 +1,53 @@
 """Which version of the code was inspected, as the files of a Git checkout tell it.
 
-SARIF ties relative URIs to a repository through ``versionControlProvenance`` (2.1.0 section 3.23). Git is
-not run for it, since nothing in an inspected tree may make a program run: three small text files say enough. A remote
-that is no web address, or credentials in one, never reach the log.
+SARIF ties relative URIs to a repository through ``versionControlProvenance`` (2.1.0 section 3.23). Git is not run for it,
+since nothing in an inspected tree may make a program run: three small text files say enough. A remote that is no web
+address, or credentials in one, never reach the log.
 """
 
 import configparser
+import os
 import re
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 from urllib.parse import quote, urlsplit, urlunsplit
 
 import sarif_om as om
 
+from stepring.report.sources import CHECKOUT_BASE, ROOT_BASE
+
 _LARGEST = 1_000_000
 _REVISION = re.compile(r"[0-9a-f]{40}(?:[0-9a-f]{24})?")
 
 
-def provenance_of(root: Path, base: str) -> list[Any] | None:
-    """The checkout whose top is ``root``, the folder of the URI base ``base``; None where that is not known."""
-    git = root / ".git"
+@dataclass(frozen=True, slots=True)
+class Checkout:
+    """A checkout with a web address: ``below`` leads from its top to the inspected root, as a URI with a slash at its
+    end, and is empty where they are one folder.
+    """
+
+    address: str
+    revision: str | None
+    branch: str | None
+    below: str
+
+    def details(self) -> Any:
+        """The checkout as SARIF says it."""
+        return om.VersionControlDetails(
+            repository_uri=self.address,
+            revision_id=self.revision,
+            branch=self.branch,
+            mapped_to=om.ArtifactLocation(uri_base_id=CHECKOUT_BASE if self.below else ROOT_BASE),
+        )
+
+
+def checkout_of(root: Path) -> Checkout | None:
+    """The checkout that holds ``root``; None where there is none with a web address."""
+    top = next((folder for folder in (root, *root.parents) if (folder / ".git").is_dir()), None)
+    if top is None:
+        return None
+    git = top / ".git"
     try:
         address = _address(_text(git / "config"))
         head = _text(git / "HEAD").strip()
@@ -28,14 +56,8 @@ def provenance_of(root: Path, base: str) -> list[Any] | None:
     if address is None:
         return None
     branch = head.removeprefix("ref: refs/heads/") if head.startswith("ref: refs/heads/") else None
-    return [
-        om.VersionControlDetails(
-            repository_uri=address,
-            revision_id=_revision(git, head),
-            branch=branch,
-            mapped_to=om.ArtifactLocation(uri_base_id=base),
-        )
-    ]
+    below = "" if top == root else quote(os.fsencode(root.relative_to(top)), safe="/") + "/"
+    return Checkout(address, _revision(git, head), branch, below)
 
 
 def _text(path: Path) -> str:
@@ -63,7 +85,7 @@ def _revision(git: Path, head: str) -> str | None:
     if ".." in name.split("/") or name.startswith("/"):
         return None
     try:
-        return _matching((git / name).read_text(encoding="ascii").strip())
+        return _matching(_text(git / name).strip())
     except (OSError, ValueError):
         pass
     try:

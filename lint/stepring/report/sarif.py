@@ -19,9 +19,9 @@ from stepring.report import cwe
 from stepring.report.fingerprints import KEY, fingerprints, in_order
 from stepring.report.graphs import graph_of, traversal_of, verdict_counts
 from stepring.report.locations import Register, message
-from stepring.report.provenance import provenance_of
+from stepring.report.provenance import Checkout, checkout_of
 from stepring.report.serialise import JSON, SCHEMA, log_to_json
-from stepring.report.sources import BASES, ROOT_BASE, Sources
+from stepring.report.sources import BASES, CHECKOUT_BASE, OUTSIDE_BASE, ROOT_BASE, Sources
 from stepring.report.text import clean, escape_message, joined, one_sentence
 from stepring.report.types import Outcome
 from stepring.rule import Obligation, Rule
@@ -85,11 +85,12 @@ def sarif_log(outcome: Outcome, kinds: Collection[str] = ("fail",), exit_code: i
     )
     results = [_result(one, run) for one in ordered if one.kind in kinds]
     verdicts = _verdicts(ordered)
+    checkout = checkout_of(outcome.root)
     made = om.Run(
         tool=om.Tool(driver=_driver(run, rule_ids)),
         invocations=[_invocation(run, exit_code)],
-        original_uri_base_ids=_bases(register),
-        version_control_provenance=provenance_of(outcome.root, ROOT_BASE),
+        original_uri_base_ids=_bases(register, checkout),
+        version_control_provenance=None if checkout is None else [checkout.details()],
         artifacts=register.artifacts(),
         graphs=[
             graph_of(machine, register, verdict_counts(verdicts[machine.identity]))
@@ -240,8 +241,13 @@ def _driver(run: _Run, rule_ids: Sequence[str]) -> Any:
             _descriptor(rule, number, run.rules.get(rule), run.outcome.rules) for number, rule in enumerate(rule_ids)
         ],
         notifications=[
-            om.ReportingDescriptor(id=kind, short_description=om.MultiformatMessageString(text=text))
-            for kind, text in kinds.items()
+            om.ReportingDescriptor(
+                id=kind,
+                name="".join(word.capitalize() for word in kind.split("-")),
+                short_description=om.MultiformatMessageString(text=text),
+                help_uri=f"sarif:/runs/0/tool/driver/notifications/{number}/shortDescription",
+            )
+            for number, (kind, text) in enumerate(kinds.items())
         ],
         supported_taxonomies=[_cwe_reference()] if _cwe_numbers(run.outcome.rules) else None,
     )
@@ -364,12 +370,16 @@ def _without_root(text: str, outcome: Outcome) -> str:
     return text.replace(root + "/", "") if root else text
 
 
-def _bases(register: Register) -> dict[str, Any]:
+def _bases(register: Register, checkout: Checkout | None) -> dict[str, Any]:
     """The bases in use; the root's own place is left out, so that the log is the same on every machine (3.14.14)."""
     used = {ROOT_BASE} | {source.base for source in register.files.values()}
+    if checkout is not None and checkout.below:
+        used.add(CHECKOUT_BASE)
     made = {base: om.ArtifactLocation(description=message(text)) for base, text in BASES.items() if base in used}
-    if "FILESYSTEM" in made:
-        made["FILESYSTEM"].uri = "file:///"
+    if OUTSIDE_BASE in made:
+        made[OUTSIDE_BASE].uri = "file:///"
+    if checkout is not None and checkout.below:
+        made[ROOT_BASE].uri, made[ROOT_BASE].uri_base_id = checkout.below, CHECKOUT_BASE
     return made
 
 

@@ -13,8 +13,10 @@ from urllib.parse import quote
 
 ROOT_BASE = "SRCROOT"
 OUTSIDE_BASE = "FILESYSTEM"
+CHECKOUT_BASE = "REPOROOT"
 BASES = {
     ROOT_BASE: "The root folder of the inspected tree.",
+    CHECKOUT_BASE: "The top folder of the checkout that the inspected tree is a part of.",
     OUTSIDE_BASE: "The root of the file system, for files outside the inspected tree.",
 }
 
