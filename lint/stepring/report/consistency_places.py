@@ -85,7 +85,7 @@ def check_source_text(place: Mapping[str, Any], run: Mapping[str, Any], path: st
     """Whether regions lie inside the file below ``root``, and snippets say what the file says there."""
     location = place.get("artifactLocation", {})
     base = run.get("originalUriBaseIds", {}).get(location.get("uriBaseId"), {})
-    if "uri" in base or "uri" not in location or run.get("columnKind") != "unicodeCodePoints":
+    if _SCHEME.match(base.get("uri", "")) or "uri" not in location or run.get("columnKind") != "unicodeCodePoints":
         return
     try:
         data = Path(_joined(root, location["uri"])).read_bytes()

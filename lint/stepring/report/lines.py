@@ -1,7 +1,7 @@
 """One line for each finding, in the form that editors and build logs read: ``file:line:column: message``.
 
-The form is that of the GNU coding standards, "Formatting Error Messages": columns count from 1 in display columns with tab
-stops every 8, a message starts in lower case and has no final period.
+The form is that of the GNU coding standards, "Formatting Error Messages": columns count from 1 in display columns with
+tab stops every 8, a message starts in lower case and has no final period.
 """
 
 from collections.abc import Collection

@@ -1,8 +1,8 @@
 """Which version of the code was inspected, as the files of a Git checkout tell it.
 
-SARIF ties relative URIs to a repository through ``versionControlProvenance`` (2.1.0 section 3.23). Git is not run for it,
-since nothing in an inspected tree may make a program run: three small text files say enough. A remote that is no web
-address, or credentials in one, never reach the log.
+SARIF ties relative URIs to a repository through ``versionControlProvenance`` (2.1.0 section 3.23). Git is not run for
+it, since nothing in an inspected tree may make a program run: three small text files say enough. A remote that is no
+web address, or credentials in one, never reach the log.
 """
 
 import configparser

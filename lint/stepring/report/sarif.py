@@ -2,8 +2,8 @@
 
 One idea: a verdict is a result kind. ``fail`` alone has a level; ``pass``, ``open`` and ``review`` have level ``none``
 (sections 3.27.9 and 3.27.10). A witness is a code flow whose steps carry values; a machine is a graph; a ring stands
-in the run's properties, for which SARIF has no member of its own. The log holds no time, no random id and no absolute
-path, so that the same tree gives the same bytes wherever it lies (appendix F).
+in the run's properties, for which SARIF has no member of its own. The log holds no time, no random id and no place
+of the tree, so that the same checkout gives the same bytes wherever it lies (appendix F).
 """
 
 from collections import defaultdict
@@ -243,7 +243,7 @@ def _driver(run: _Run, rule_ids: Sequence[str]) -> Any:
         notifications=[
             om.ReportingDescriptor(
                 id=kind,
-                name="".join(word.capitalize() for word in kind.split("-")),
+                name="".join(word.capitalize() for word in kind.split("-")) + "Notice",
                 short_description=om.MultiformatMessageString(text=text),
                 help_uri=f"sarif:/runs/0/tool/driver/notifications/{number}/shortDescription",
             )

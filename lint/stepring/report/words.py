@@ -32,7 +32,7 @@ def count(number: int, noun: str, plural: str = "") -> str:
 def verdict_summary(obligations: Iterable[Obligation]) -> str:
     """How many verdicts of each kind there are, failures by level, in one phrase."""
     given = list(obligations)
-    kinds = Counter(one.kind for one in given)
+    kinds: Counter[str] = Counter(one.kind for one in given)
     levels = Counter(one.level for one in given if one.level)
     parts = [f"{kinds[kind]} {words}" for kind, words in VERDICT_WORDS.items() if kinds[kind]]
     if levels and kinds["fail"]:

@@ -1,0 +1,352 @@
+"""The commands: what they take, where they write, and what their exit code says.
+
+Standard output carries what was asked for; standard error carries one sentence for each notice. Exit codes: 0,
+nothing at or above the fail level; 1, something; 2, the work could not be done. No input may end in a traceback:
+``main`` turns whatever escapes the stages into one sentence that names the stage and the unit.
+"""
+
+import dataclasses
+import io
+import os
+import sys
+import traceback
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from typing import Any, NoReturn, TypeVar
+
+import click
+from rich.console import Console
+from rich.markdown import Markdown
+from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
+
+from stepring import __version__, pipeline
+from stepring.places import Notice
+from stepring.report.inventory import inventory_lines, print_inventory
+from stepring.report.lines import report_lines
+from stepring.report.notices import notice_sentences
+from stepring.report.printed import print_report
+from stepring.report.sarif import page_of, sarif_log
+from stepring.report.serialise import to_bytes, write_whole
+from stepring.report.text import one_sentence, printable, shown_path
+from stepring.report.types import Outcome
+from stepring.report.words import VERDICT_WORDS
+from stepring.rule import LEVELS, load_rules
+
+Function = TypeVar("Function", bound=Callable[..., Any])
+
+FOUND_NOTHING, FOUND_SOMETHING, NOT_DONE = 0, 1, 2
+
+# Set to anything, it makes an internal failure show its traceback: for those who mend stepring.
+TRACEBACK_VARIABLE = "STEPRING_TRACEBACK"
+
+
+@dataclasses.dataclass(slots=True)
+class _Now:
+    """What is being worked on, for the sentence of last resort."""
+
+    unit: str = ""
+
+
+_now = _Now()
+
+
+def _verdict_list(_context: click.Context, _option: click.Parameter, text: str) -> tuple[str, ...]:
+    """The verdicts in a list with commas."""
+    words = tuple(dict.fromkeys(word.strip() for word in text.split(",") if word.strip()))
+    wrong = [word for word in words if word not in VERDICT_WORDS]
+    if wrong or not words:
+        named = ", ".join(repr(word) for word in wrong) or "an empty list"
+        raise click.BadParameter(f"{named} names no verdict; known are {', '.join(VERDICT_WORDS)}")
+    return words
+
+
+_OPTIONS = (
+    click.argument("paths", nargs=-1, metavar="[PATH]...", type=click.Path(path_type=Path)),
+    click.option(
+        "--compile-commands",
+        metavar="FILE",
+        type=click.Path(path_type=Path),
+        help="The JSON compilation database that says how each file is compiled.",
+    ),
+    click.option("--sarif", metavar="FILE", help="Write a SARIF 2.1.0 log; - means standard output."),
+    click.option(
+        "--kind",
+        "kinds",
+        metavar="LIST",
+        callback=_verdict_list,
+        default="fail",
+        show_default=True,
+        help=f"Which verdicts are written: any of {', '.join(VERDICT_WORDS)}, with commas between.",
+    ),
+    click.option(
+        "--report",
+        type=click.Choice(("full", "lines", "none")),
+        help="The report on standard output: for people, a line each, or none. "
+        "The default is full, and none with --sarif -.",
+    ),
+    click.option("--data-model", metavar="NAME", help="The sizes of the C types, where no compiler tells them."),
+    click.option(
+        "--compiler",
+        "compilers",
+        metavar="PATH",
+        multiple=True,
+        help="A compiler that may be run although it is not on the search path; can be given several times.",
+    ),
+    click.option("--no-compiler", is_flag=True, help="Run no compiler; use the built-in preprocessor."),
+    click.option(
+        "--jobs",
+        metavar="N",
+        type=click.IntRange(1, 512),
+        default=lambda: os.cpu_count() or 1,
+        help="How many units are worked on at the same time; the default is one for each processor.",
+    ),
+)
+
+
+def _reading_options(function: Function) -> Function:
+    """The options that ``inspect`` and ``inventory`` share."""
+    for option in reversed(_OPTIONS):
+        function = option(function)
+    return function
+
+
+def _fail_level_option(default: str) -> Callable[[Function], Function]:
+    return click.option(
+        "--fail-level",
+        type=click.Choice((*reversed(LEVELS), "none")),
+        default=default,
+        show_default=True,
+        help="The lowest level of a failure that makes the exit code 1.",
+    )
+
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(__version__, prog_name="stepring")
+def commands() -> None:
+    """Inspect embedded C for defects in state machines and ring-shaped storage."""
+
+
+@commands.command()
+@_reading_options
+@_fail_level_option("warning")
+def inspect(fail_level: str, **given: Any) -> int:
+    """Run the rules on the C below each PATH and report what they find.
+
+    Without PATH the current folder is inspected. Exit code 0: nothing at or above the fail level; 1: something; 2:
+    the work could not be done.
+    """
+    return _run(fail_level, print_report_kind=_write_report, **given)
+
+
+@commands.command()
+@_reading_options
+@_fail_level_option("none")
+def inventory(fail_level: str, **given: Any) -> int:
+    """List the state machines and rings of the C below each PATH, with their tables.
+
+    Without PATH the current folder is inspected.
+    """
+    return _run(fail_level, print_report_kind=_write_inventory, **given)
+
+
+@commands.command()
+@click.argument("identity", metavar="[ID]", required=False)
+def rule(identity: str | None) -> int:
+    """Show a rule's page, or without ID the list of rules."""
+    rules = {known.id: known for known in load_rules()}
+    if identity is None:
+        for known in rules.values():
+            click.echo(f"{known.id}  {known.level:7}  {one_sentence(known.summary)}")
+        return FOUND_NOTHING
+    chosen = rules.get(identity) or rules.get(identity.upper())
+    if chosen is None:
+        _refuse(f"there is no rule {printable(identity)!r}; `stepring rule` lists all")
+    page = page_of(chosen) or f"# {chosen.id} {chosen.name}\n\n{one_sentence(chosen.summary)}"
+    console = _console()
+    if console.is_terminal:
+        console.print(Markdown(page))
+    else:
+        click.echo(page.rstrip("\n"))
+    return FOUND_NOTHING
+
+
+def _refuse(text: str) -> NoReturn:
+    raise click.ClickException(text)
+
+
+# ---------------------------------------------------------------------------------------------------------- a run
+
+
+def _run(
+    fail_level: str,
+    print_report_kind: Callable[[Outcome, Console, str, Sequence[str]], None],
+    paths: tuple[Path, ...],
+    compile_commands: Path | None,
+    sarif: str | None,
+    kinds: tuple[str, ...],
+    report: str | None,
+    data_model: str | None,
+    compilers: tuple[str, ...],
+    no_compiler: bool,
+    jobs: int,
+) -> int:
+    options = pipeline.Options(
+        compile_commands=compile_commands,
+        data_model=data_model,
+        jobs=jobs,
+        compilers=compilers,
+        use_compiler=not no_compiler,
+    )
+    with _progress() as progress:
+        outcome = pipeline.inspect(paths or (Path(),), options, progress)
+    code = exit_code(outcome, fail_level)
+    trouble = None if sarif is None else _write_sarif(outcome, sarif, kinds, code)
+    notices = outcome.notices if trouble is None else (*outcome.notices, trouble)
+    for sentence in notice_sentences(notices):
+        click.echo(f"stepring: {sentence}", err=True)
+    form = report or ("none" if sarif == "-" else "full")
+    if form != "none":
+        # Standard output belongs to the log if that was sent there.
+        print_report_kind(outcome, _console(stderr=sarif == "-"), form, kinds)
+    return code if trouble is None else NOT_DONE
+
+
+def exit_code(outcome: Outcome, fail_level: str) -> int:
+    """0, 1 or 2, whatever verdicts are written: see the module's text."""
+    if any(notice.level == "error" for notice in outcome.notices):
+        return NOT_DONE
+    if fail_level == "none":
+        return FOUND_NOTHING
+    counted = LEVELS[[str(level) for level in LEVELS].index(fail_level) :]
+    found = any(one.kind == "fail" and (one.level or "warning") in counted for one in outcome.obligations)
+    return FOUND_SOMETHING if found else FOUND_NOTHING
+
+
+def _write_sarif(outcome: Outcome, target: str, kinds: Sequence[str], code: int) -> Notice | None:
+    """Write the log whole or not at all; what stood in the way, if it could not be written."""
+    data = to_bytes(sarif_log(outcome, kinds, code))
+    if target == "-":
+        stream = click.get_binary_stream("stdout")
+        stream.write(data)
+        stream.flush()
+        return None
+    try:
+        write_whole(Path(target), data)
+    except (OSError, ValueError) as error:
+        why = getattr(error, "strerror", None) or str(error)
+        return Notice("unwritable", "error", f"The SARIF log could not be written to {target}: {why}")
+    return None
+
+
+def _write_report(outcome: Outcome, console: Console, form: str, kinds: Sequence[str]) -> None:
+    if form == "lines":
+        _write_lines(console, report_lines(outcome, kinds))
+    else:
+        _write_printed(console, lambda: print_report(outcome, console, kinds))
+
+
+def _write_inventory(outcome: Outcome, console: Console, form: str, _: Sequence[str]) -> None:
+    if form == "lines":
+        _write_lines(console, inventory_lines(outcome))
+    else:
+        _write_printed(console, lambda: print_inventory(outcome, console))
+
+
+def _write_lines(console: Console, lines: Sequence[str]) -> None:
+    for line in lines:
+        click.echo(line, file=console.file)
+
+
+def _write_printed(console: Console, write: Callable[[], None]) -> None:
+    """Print on a terminal as it is; elsewhere without the blanks that fill tables up."""
+    if console.is_terminal:
+        write()
+        return
+    with console.capture() as captured:
+        write()
+    for line in captured.get().splitlines():
+        click.echo(line.rstrip(), file=console.file)
+
+
+def _console(stderr: bool = False) -> Console:
+    """A console without any interpretation of the text that it prints."""
+    return Console(stderr=stderr, highlight=False, markup=False, emoji=False, soft_wrap=False)
+
+
+@contextmanager
+def _progress() -> Iterator[Callable[[int, int, str], None]]:
+    """A progress bar on standard error if that is a terminal; what is reported is remembered in any case."""
+    console = _console(stderr=True)
+    if not console.is_terminal:
+        yield _remember
+        return
+    columns = (TextColumn("{task.description}"), BarColumn(), MofNCompleteColumn())
+    with Progress(*columns, console=console, transient=True) as bar:
+        task = bar.add_task("", total=None)
+
+        def show(done: int, total: int, text: str) -> None:
+            _remember(done, total, text)
+            bar.update(task, completed=done, total=total, description=printable(text)[-40:])
+
+        yield show
+
+
+def _remember(_done: int, _total: int, text: str) -> None:
+    _now.unit = text
+
+
+# ---------------------------------------------------------------------------------------------------------- the entry
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """The command ``stepring``; gives the exit code."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")
+    try:
+        result = commands.main(args=arguments, prog_name="stepring", standalone_mode=False)
+    except click.exceptions.NoArgsIsHelpError as error:
+        click.echo(error.format_message(), err=True)
+        return NOT_DONE
+    except click.exceptions.Abort:
+        return _say("stopped before the work was done.")
+    except click.ClickException as error:
+        return _say(_lower_first(one_sentence(error.format_message())))
+    except KeyboardInterrupt:
+        return _say("stopped before the work was done.")
+    except BrokenPipeError:
+        # Whoever read our output has gone. Nothing more may be written, not even by the interpreter on its way out.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return NOT_DONE
+    except Exception as error:
+        if os.environ.get(TRACEBACK_VARIABLE):
+            traceback.print_exc()
+        return _say(last_resort(error, _now.unit))
+    return result if isinstance(result, int) else FOUND_NOTHING
+
+
+def last_resort(error: BaseException, unit: str) -> str:
+    """One sentence on a failure of stepring itself: the stage, the unit and the error."""
+    package = Path(__file__).parent
+    stages = [
+        Path(frame.filename).relative_to(package).parts[0].removesuffix(".py")
+        for frame in traceback.extract_tb(error.__traceback__)
+        if Path(frame.filename).is_relative_to(package)
+    ]
+    stage = next(
+        (name for name in reversed(stages) if name not in ("cli", "pipeline")), stages[-1] if stages else "start"
+    )
+    place = f" at {shown_path(unit)}" if unit else ""
+    what = printable(" ".join(f"{type(error).__name__}: {error}".split()))[:300]
+    return f"the stage {stage} failed{place} by a defect of stepring itself ({what}); please report it."
+
+
+def _lower_first(text: str) -> str:
+    """A sentence without its capital, unless it begins with a name."""
+    return text[:1].lower() + text[1:] if text[1:2].islower() else text
+
+
+def _say(sentence: str) -> int:
+    click.echo(f"stepring: {sentence}", err=True)
+    return NOT_DONE
