@@ -6,8 +6,26 @@ from stepring.values.spots import Exposure
 from stepring.values.types import FieldCell, Interval, VariableCell
 
 from .build import (
-    I8, INT, STRUCT, U8, U16, U32, Body, address, arrow, at, cast, element, load, local, member, num, op, parameter,
-    pointer, static,
+    I8,
+    INT,
+    STRUCT,
+    U8,
+    U16,
+    U32,
+    Body,
+    address,
+    arrow,
+    at,
+    cast,
+    element,
+    load,
+    local,
+    member,
+    num,
+    op,
+    parameter,
+    pointer,
+    static,
 )  # fmt: skip
 
 HEAD = static("head", U8)

@@ -347,9 +347,7 @@ class Engine:
 
     # ------------------------------------------------------------------------------------------------------ blocks
 
-    def flow(
-        self, frame: Frame, block: int, state: State, stack: tuple[str, ...], record: Record | None
-    ) -> list[Edge]:
+    def flow(self, frame: Frame, block: int, state: State, stack: tuple[str, ...], record: Record | None) -> list[Edge]:
         """The states in which control goes on from a block that is entered in ``state``."""
         view = self.run_statements(frame, block, state, stack, record)
         if view is None:
@@ -504,8 +502,9 @@ class Engine:
             kind = number_type(parameter.type)
             if kind is None:
                 continue
-            known = convert(values[number], kind) if number < len(values) and values[number] is not UNBOUNDED else
-            None spot = inner.store(VariablePlace(parameter), known if known is not None else whole(kind))
+            given = number < len(values) and values[number] is not UNBOUNDED
+            known = convert(values[number], kind) if given else None
+            spot = inner.store(VariablePlace(parameter), known if known is not None else whole(kind))
             if number < len(values):
                 definition = view._definition(Cast(call.arguments[number], kind), spot)
                 if definition is not None and isinstance(parameter.type, IntType):
@@ -640,8 +639,10 @@ class Engine:
 
 
 def _same(a: State, b: State) -> bool:
-    return a.values == b.values and a.definitions.keys() == b.definitions.keys() and all(
-        other.value is b.definitions[spot].value for spot, other in a.definitions.items()
+    return (
+        a.values == b.values
+        and a.definitions.keys() == b.definitions.keys()
+        and all(other.value is b.definitions[spot].value for spot, other in a.definitions.items())
     )
 
 

@@ -179,8 +179,8 @@ class _Deeper:
 def forget_definitions(state: State, changed: frozenset[Spot]) -> None:
     """Drop the definitions of changed spots and those that read one."""
     if state.definitions:
-        stale = [spot for spot, by in state.definitions.items() if spot in changed or not
-        changed.isdisjoint(by.reads)] for spot in stale:
+        stale = [spot for spot, by in state.definitions.items() if spot in changed or not changed.isdisjoint(by.reads)]
+        for spot in stale:
             del state.definitions[spot]
 
 
@@ -318,5 +318,3 @@ def join_optional(places: Places, a: State | None, b: State | None) -> State | N
     if a is None or b is None:
         return b if a is None else a
     return join_states(places, a, b)
-
-
