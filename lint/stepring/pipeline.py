@@ -1,11 +1,37 @@
-"""The whole inspection, from paths to an outcome."""
+"""The whole inspection in one place: units go through the stages one by one, then the program is judged.
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+Unit, then program: what is expensive happens once for each unit and ends in a ``UnitSummary`` that can be stored and
+sent; the program stage merges summaries and runs the rules. With several jobs each worker process keeps its own
+reader; the order of summaries is that of the units, whatever the number of jobs. A unit that fails costs itself and
+is said.
+"""
+
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from concurrent.futures import ProcessPoolExecutor
+from dataclasses import dataclass, replace
 from pathlib import Path
 
+from stepring.gather.gather import gather
+from stepring.gather.settings import Settings
+from stepring.gather.types import Unit
+from stepring.meaning.models import MODELS, model_from_macros
+from stepring.meaning.types import DataModel, Function, Object, StructLayout
+from stepring.meaning.unit import Meanings, lower_unit
+from stepring.places import Notice, Origin, Position
+from stepring.read.preprocess import preprocess
+from stepring.read.reader import Reader
+from stepring.read.types import FunctionPlace, Preprocessed, ReadUnit
 from stepring.report.types import Coverage, Outcome
-from stepring.shapes.types import Program
+from stepring.rule import Obligation, Rule, load_rules
+from stepring.shapes.facts import StateFacts
+from stepring.shapes.machines import find_machines
+from stepring.shapes.positions import positions_of
+from stepring.shapes.rings import find_rings, ring_functions
+from stepring.shapes.state_facts import state_facts
+from stepring.shapes.types import Program, Ring
+
+DEFAULT_MODEL = "ILP32"
+Progress = Callable[[int, int, str], None]
 
 
 @dataclass(frozen=True, slots=True)
@@ -19,8 +45,198 @@ class Options:
     use_compiler: bool = True
 
 
-def inspect(
-    paths: Sequence[Path], options: Options, progress: Callable[[int, int, str], None] | None = None
-) -> Outcome:
-    """Inspect the C below ``paths``."""
-    return Outcome(Path.cwd(), (), Program((), ()), (), (), Coverage(0, 0, 0, 0), ())
+@dataclass(frozen=True, slots=True, eq=False)
+class UnitSummary:
+    """What the program stage needs of a unit: plain data, no syntax trees and no way back into the unit.
+
+    ``ring_functions`` is the IR of the functions that may be part of a ring, ``origins`` the original places of all
+    that it mentions.
+    """
+
+    unit: Unit
+    model: DataModel
+    read: bool
+    states: StateFacts
+    ring_functions: tuple[Function, ...]
+    objects: tuple[Object, ...]
+    structs: Mapping[str, StructLayout]
+    origins: Mapping[Position, Origin]
+    functions: tuple[FunctionPlace, ...]
+    notices: tuple[Notice, ...]
+
+
+class Worker:
+    """What one process keeps between units: the reader with its caches, and functions already lowered."""
+
+    def __init__(self, root: Path, options: Options) -> None:
+        self.options = options
+        self.reader = Reader(root)
+        self.meanings = Meanings()
+        # A header's inline function is in many units; its part of a summary is made once.
+        self.origins: dict[Position, Origin] = {}
+
+    def summarise(self, unit: Unit) -> UnitSummary:
+        """One unit through gathering's, reading's and meaning's stages to its summary."""
+        model_name = self.options.data_model or unit.data_model or DEFAULT_MODEL
+        pre = preprocess(unit, data_model=model_name, allow_compiler=self.options.use_compiler)
+        read = self.reader.read(pre)
+        return self._summary(pre, read, model_name)
+
+    def _summary(self, pre: Preprocessed, read: ReadUnit, model_name: str) -> UnitSummary:
+        named = MODELS[self.options.data_model] if self.options.data_model else None
+        model = named or model_from_macros(pre.predefined) or MODELS[model_name]
+        typed = lower_unit(read, model, self.meanings)
+        rings = ring_functions([function for function in typed.functions if function.own])
+        wanted = {variable.identity for function in rings for variable in function.variables if variable.lasting}
+        objects = tuple(item for item in typed.objects if item.variable.identity in wanted)
+        origins = {position: self._origin(read, position) for position in positions_of(rings, objects)}
+        lost = {(notice.file, notice.line) for notice in typed.notices}
+        functions = tuple(
+            replace(place, read=False) if (place.file, place.line) in lost else place for place in read.functions
+        )
+        return UnitSummary(
+            read.unit,
+            model,
+            True,
+            state_facts(typed, read),
+            rings,
+            objects,
+            typed.types.structs if rings else {},
+            origins,
+            functions,
+            (*read.notices, *(self._placed(read, notice) for notice in typed.notices)),
+        )
+
+    def _origin(self, read: ReadUnit, position: Position) -> Origin:
+        known = self.origins.get(position)
+        if known is None:
+            known = self.origins[position] = read.origin(position)
+        return known
+
+    def _placed(self, read: ReadUnit, notice: Notice) -> Notice:
+        if notice.file is None or notice.line is None:
+            return notice
+        where = read.origin(Position(notice.file, notice.line, notice.column or 0))
+        return replace(notice, file=where.file, line=where.line, column=where.column)
+
+
+def inspect(paths: Sequence[Path], options: Options, progress: Progress | None = None) -> Outcome:
+    """Inspect the C below ``paths`` and judge every rule. Bad input becomes notices; nothing is raised for it."""
+    settings, notices = Settings(), ()
+    gathered = gather(paths, database=options.compile_commands, compilers=options.compilers, settings=settings)
+    summaries = list(summarise(gathered.root, gathered.units, options, progress))
+    rules = load_rules()
+    program = merge(summaries)
+    obligations: list[Obligation] = []
+    said: list[Notice] = [*notices, *gathered.notices]
+    for summary in summaries:
+        said.extend(summary.notices)
+    for rule in rules:
+        obligations.extend(judge(rule, program, said))
+    return Outcome(
+        gathered.root,
+        rules,
+        program,
+        tuple(sorted(set(obligations), key=_order)),
+        tuple(dict.fromkeys(said)),
+        coverage(summaries, len(gathered.units)),
+        tuple(sorted({summary.model.name for summary in summaries if summary.read})),
+    )
+
+
+def summarise(root: Path, units: Sequence[Unit], options: Options, progress: Progress | None) -> Iterator[UnitSummary]:
+    """Every unit's summary, in the units' order."""
+    if options.jobs <= 1 or len(units) < 2:
+        worker = Worker(root, options)
+        for number, unit in enumerate(units):
+            if progress is not None:
+                progress(number, len(units), unit.source.name)
+            yield _guarded(worker, unit)
+        return
+    with ProcessPoolExecutor(options.jobs, initializer=_start, initargs=(root, options)) as pool:
+        chunk = max(1, min(8, len(units) // (4 * options.jobs)))
+        for number, summary in enumerate(pool.map(_one, units, chunksize=chunk)):
+            if progress is not None:
+                progress(number, len(units), summary.unit.source.name)
+            yield summary
+
+
+_worker: Worker | None = None
+
+
+def _start(root: Path, options: Options) -> None:
+    global _worker
+    _worker = Worker(root, options)
+
+
+def _one(unit: Unit) -> UnitSummary:
+    assert _worker is not None
+    return _guarded(_worker, unit)
+
+
+def _guarded(worker: Worker, unit: Unit) -> UnitSummary:
+    """A unit's summary; one that makes a stage fail is reported and left out, the rest goes on."""
+    try:
+        return worker.summarise(unit)
+    except Exception as trouble:  # whatever it is, it must not cost the other units
+        text = f"{unit.source} was left out: a stage failed on it ({type(trouble).__name__}: {trouble})."
+        notice = Notice("internal", "warning", text, str(unit.source))
+        empty = StateFacts()
+        model = MODELS[DEFAULT_MODEL]
+        return UnitSummary(unit, model, False, empty, (), (), {}, {}, (), (notice,))
+
+
+def merge(summaries: Sequence[UnitSummary]) -> Program:
+    """The program: machines and rings from all summaries."""
+    machines = find_machines(summary.states for summary in summaries)
+    return Program(machines, merge_rings(summaries))
+
+
+def merge_rings(summaries: Sequence[UnitSummary]) -> tuple[Ring, ...]:
+    """The rings of all units of one data model together; a program has one model, but a tree may hold several."""
+    rings: list[Ring] = []
+    for model in dict.fromkeys(summary.model for summary in summaries if summary.ring_functions):
+        group = [summary for summary in summaries if summary.model == model]
+        functions: dict[tuple[str, Position], Function] = {}
+        objects: dict[tuple[str, Position], Object] = {}
+        structs: dict[str, StructLayout] = {}
+        origins: dict[Position, Origin] = {}
+        for summary in group:
+            functions.update({(function.identity, function.position): function for function in summary.ring_functions})
+            for item in summary.objects:
+                objects.setdefault((item.variable.identity, item.position), item)
+            for name, layout in summary.structs.items():
+                if name not in structs or structs[name].size is None:
+                    structs[name] = layout
+            origins.update(summary.origins)
+
+        def origin(position: Position, origins: Mapping[Position, Origin] = origins) -> Origin:
+            column = max(1, position.column)
+            return origins.get(position) or Origin(position.file, max(1, position.line), column, column)
+
+        rings.extend(find_rings(tuple(functions.values()), tuple(objects.values()), structs, model, origin))
+    return tuple(sorted(rings, key=lambda ring: (ring.where, ring.identity)))
+
+
+def judge(rule: Rule, program: Program, said: list[Notice]) -> Iterable[Obligation]:
+    """A rule's obligations; a rule that fails is reported and costs itself."""
+    try:
+        return list(rule.check(program))
+    except Exception as trouble:  # a private rule's mistake must not cost the others
+        said.append(Notice("internal", "warning", f"Rule {rule.id} failed ({type(trouble).__name__}: {trouble})."))
+        return ()
+
+
+def coverage(summaries: Sequence[UnitSummary], total: int) -> Coverage:
+    """How much was read; a function that several units contain counts once, as read if one of them read it."""
+    functions: dict[tuple[str, int, str], bool] = {}
+    for summary in summaries:
+        for place in summary.functions:
+            key = (place.file, place.line, place.name)
+            functions[key] = functions.get(key, False) or place.read
+    read = sum(functions.values())
+    return Coverage(total, sum(summary.read for summary in summaries), len(functions), read)
+
+
+def _order(obligation: Obligation) -> tuple[object, ...]:
+    return (obligation.where.file, obligation.where.line, obligation.where.column, obligation.rule, obligation.what)

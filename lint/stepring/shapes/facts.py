@@ -1,0 +1,152 @@
+"""What one unit says about state variables: plain facts that can be stored, sent and merged.
+
+A state variable is known by its ``key``: a variable's identity, or a structure's identity with a member's name,
+whatever object is meant. Facts name values as the source does and carry original places only, so the program stage
+needs nothing else of a unit. A transition's source is a value, or ``OTHER``: any value that the function does not
+mention (``mentioned``).
+"""
+
+from dataclasses import dataclass, field
+from typing import Literal, TypeAlias
+
+from stepring.places import Origin
+
+OTHER = None  # a source that stands for every value not mentioned
+Source: TypeAlias = int | None
+
+
+@dataclass(frozen=True, slots=True)
+class Constant:
+    """A constant as it is used: its value, the name the source spells it with (None for a plain number), the place."""
+
+    value: int
+    name: str | None
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True)
+class Family:
+    """A declared group of constants: an enumeration, or neighbouring ``#define``s with a prefix in common."""
+
+    identity: str
+    kind: Literal["enumeration", "macros"]
+    members: tuple[Constant, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class KeyFact:
+    """A state variable's identity: how it is shown, where it is declared, its type's limits."""
+
+    key: str
+    shown: str
+    kind: Literal["variable", "member"]
+    where: Origin
+    low: int
+    high: int
+    enum: str | None
+    scope: Literal["lasting", "local", "parameter"]
+    initials: tuple[Constant, ...]
+    # Whether objects are known to start as zero (static storage) and no initialiser says otherwise.
+    starts_zero: bool
+    file: str
+
+
+@dataclass(frozen=True, slots=True)
+class LabelFact:
+    """One ``case``; ``fell_from`` is set where the code before runs on into it."""
+
+    constant: Constant
+    high: int
+    written: int
+    where: Origin
+    fell_from: Origin | None
+    fall_marked: bool
+    overwrites: bool
+
+
+@dataclass(frozen=True, slots=True)
+class DispatchFact:
+    """One ``switch`` on a key."""
+
+    key: str
+    instance: str
+    function: str
+    control: str
+    where: Origin
+    labels: tuple[LabelFact, ...]
+    default: Origin | None
+    default_does: Literal["none", "nothing", "stores", "calls", "leaves", "work"]
+    unreached: tuple[Origin, ...]
+    in_loop: bool
+    characters: bool
+    line_numbers: bool
+    stores_inside: tuple[int, ...]
+    end: int
+
+
+@dataclass(frozen=True, slots=True)
+class TestFact:
+    """A comparison of a key with a constant."""
+
+    key: str
+    function: str
+    constant: Constant
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True)
+class StoreFact:
+    """A store into a key: the constants it can store, or why they are not known.
+
+    ``parameter`` is the number of the function's parameter whose value is stored. ``fresh``: the object is one that
+    the function made or reset, so the store is an initial value, not a transition. ``stepped``: ``++``, ``--`` or
+    arithmetic on the old value.
+    """
+
+    key: str
+    function: str
+    where: Origin
+    constants: tuple[Constant, ...]
+    why_unknown: str = ""
+    parameter: int | None = None
+    fresh: bool = False
+    stepped: bool = False
+    copied: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class TransitionFact:
+    """A step of a key's value, taken by a function: from a value (or ``OTHER``) to a constant."""
+
+    key: str
+    function: str
+    source: Source
+    mentioned: tuple[int, ...]
+    target: Constant
+    guard: str
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True)
+class CallFact:
+    """A call with a constant argument, of a function that may be a setter."""
+
+    callee: str
+    argument: int
+    constant: Constant
+    function: str
+    where: Origin
+
+
+@dataclass(frozen=True, slots=True)
+class StateFacts:
+    """All that a unit says about state variables."""
+
+    keys: tuple[KeyFact, ...] = ()
+    dispatches: tuple[DispatchFact, ...] = ()
+    tests: tuple[TestFact, ...] = ()
+    stores: tuple[StoreFact, ...] = ()
+    transitions: tuple[TransitionFact, ...] = ()
+    calls: tuple[CallFact, ...] = ()
+    families: tuple[Family, ...] = ()
+    exposed: tuple[tuple[str, Origin], ...] = field(default=())

@@ -1,0 +1,368 @@
+"""Which state variables are machines, and what each machine is: the program's facts brought together.
+
+A ``switch`` on a stored value is a machine if the value survives until the next evaluation, constants of the labels'
+own group are stored in it, and it is no character, cursor or value mapped in place. (The criteria are those that
+separated machines from other switches on a hand-labelled sample of public firmware.) A machine is then everything in
+the program that dispatches on the variable, tests it or stores into it.
+"""
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import TypeVar
+
+from stepring.places import Origin
+from stepring.shapes.facts import (
+    CallFact,
+    Constant,
+    DispatchFact,
+    Family,
+    KeyFact,
+    StateFacts,
+    StoreFact,
+    TestFact,
+    TransitionFact,
+)
+from stepring.shapes.types import (
+    Dispatch,
+    Label,
+    Machine,
+    State,
+    StateStore,
+    Transition,
+)
+
+MOST_STATES = 512
+T = TypeVar("T")
+
+
+@dataclass(slots=True)
+class _Gathered:
+    """All facts about one key."""
+
+    key: KeyFact
+    dispatches: list[DispatchFact] = field(default_factory=list)
+    tests: list[TestFact] = field(default_factory=list)
+    stores: list[StoreFact] = field(default_factory=list)
+    transitions: list[TransitionFact] = field(default_factory=list)
+    exposed: list[Origin] = field(default_factory=list)
+    initials: list[Constant] = field(default_factory=list)
+    starts_zero: bool = False
+    setters: list[tuple[StoreFact, CallFact]] = field(default_factory=list)
+
+
+def find_machines(facts: Iterable[StateFacts], *, complete: bool = True) -> tuple[Machine, ...]:
+    """The machines of a program, in the order of their places; ``complete`` says that all of it was read."""
+    facts = list(facts)
+    gathered = _gather(facts)
+    families: dict[str, Family] = {}
+    for part in facts:
+        for family in part.families:
+            families.setdefault(family.identity, family)
+    named = {member.name: family for family in families.values() for member in family.members if member.name}
+    machines = [_machine(group, named, complete) for group in gathered.values() if is_machine(group, named)]
+    return tuple(sorted(machines, key=lambda machine: (machine.where, machine.identity)))
+
+
+def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
+    gathered: dict[str, _Gathered] = {}
+    for part in facts:
+        for key in part.keys:
+            group = gathered.setdefault(key.key, _Gathered(key))
+            if group.key.low < key.low or group.key.high > key.high:
+                group.key = key
+            group.initials.extend(key.initials)
+            group.starts_zero = group.starts_zero or key.starts_zero
+    callers: dict[str, list[CallFact]] = {}
+    for part in facts:
+        for call in part.calls:
+            callers.setdefault(call.callee, []).append(call)
+        for dispatch in part.dispatches:
+            gathered[dispatch.key].dispatches.append(dispatch)
+        for test in part.tests:
+            gathered[test.key].tests.append(test)
+        for store in part.stores:
+            gathered[store.key].stores.append(store)
+        for transition in part.transitions:
+            if transition.key in gathered:
+                gathered[transition.key].transitions.append(transition)
+        for exposed_key, where in part.exposed:
+            if exposed_key in gathered:
+                gathered[exposed_key].exposed.append(where)
+    for group in gathered.values():
+        # A header's inline function is seen by many units; its facts count once.
+        group.dispatches = _distinct(group.dispatches)
+        group.tests = _distinct(group.tests)
+        group.stores = _distinct(group.stores)
+        group.transitions = _distinct(group.transitions)
+        group.initials = _distinct(group.initials)
+        for store in group.stores:
+            if store.parameter is not None:
+                for call in _distinct(callers.get(store.function, [])):
+                    if call.argument == store.parameter:
+                        group.setters.append((store, call))
+    return gathered
+
+
+def _distinct(items: "Iterable[T]") -> "list[T]":
+    return list(dict.fromkeys(items))
+
+
+# ------------------------------------------------------------------------------------------------------ recognition
+
+
+def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
+    """Whether a key that is dispatched on is a state."""
+    dispatches = [dispatch for dispatch in group.dispatches if not dispatch.line_numbers]
+    if not dispatches or group.key.scope == "parameter":
+        return False
+    if all(dispatch.characters for dispatch in dispatches):
+        return False
+    if group.key.scope == "local" and not any(dispatch.in_loop for dispatch in dispatches):
+        return False
+    labels = {
+        value
+        for dispatch in dispatches
+        for label in dispatch.labels
+        for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1)
+    }
+    label_families = {
+        named[label.constant.name].identity
+        for dispatch in dispatches
+        for label in dispatch.labels
+        if label.constant.name is not None and label.constant.name in named
+    }
+    targets: set[int] = set()
+    family_targets: set[int] = set()
+    stepped = False
+    for constant in _stored_constants(group):
+        targets.add(constant.value)
+        family = named.get(constant.name or "")
+        if family is not None and family.identity in label_families:
+            family_targets.add(constant.value)
+    for store in group.stores:
+        stepped = stepped or store.stepped
+    hits = (targets & labels) | family_targets
+    if not hits and not stepped:
+        return False
+    if group.key.scope == "local":
+        # The store must happen while the loop runs, not only before it.
+        return bool(group.transitions) or stepped
+    if _mapped_in_place(group, dispatches, labels):
+        return False
+    return len(targets | labels) >= 2
+
+
+def _stored_constants(group: _Gathered) -> Iterable[Constant]:
+    for store in group.stores:
+        yield from store.constants
+    for _, call in group.setters:
+        yield call.constant
+
+
+def _mapped_in_place(group: _Gathered, dispatches: Sequence[DispatchFact], labels: set[int]) -> bool:
+    """A value put into another coding by the switch itself: everything stored is stored inside, and nothing is a
+    label."""
+    inside = {value for dispatch in dispatches for value in dispatch.stores_inside}
+    stored = {constant.value for constant in _stored_constants(group)}
+    return bool(inside) and stored <= inside and not inside & labels
+
+
+# ------------------------------------------------------------------------------------------------------ one machine
+
+
+def _machine(group: _Gathered, named: Mapping[str, Family], complete: bool) -> Machine:
+    key = group.key
+    family = _family(group, named)
+    states = _states(group, family)
+    by_value = {state.value: state for state in states}
+    why: list[str] = []
+    if not complete:
+        why.append("part of the program was not read")
+    if group.exposed:
+        why.append(f"its address is taken (line {group.exposed[0].line})")
+    setters = {store for store, _ in group.setters}
+    for store in group.stores:
+        if store.why_unknown and store not in setters:
+            why.append(f"{_short(store.function)} stores {store.why_unknown} (line {store.where.line})")
+        elif store.stepped:
+            why.append(f"{_short(store.function)} computes the next state (line {store.where.line})")
+    dispatches = tuple(
+        _dispatch(dispatch, key, by_value)
+        for dispatch in sorted(group.dispatches, key=lambda dispatch: dispatch.where)
+        if not dispatch.line_numbers
+    )
+    transitions = tuple(_transitions(group, states))
+    initial = tuple(state.name for state in states if state.initial)
+    return Machine(
+        key.key,
+        key.shown,
+        key.kind,
+        key.where,
+        "switch",
+        states,
+        dispatches,
+        tuple(_stores(group, by_value)),
+        transitions,
+        initial,
+        not why,
+        tuple(dict.fromkeys(why)),
+        family.identity.split("@", 1)[0] if family is not None else "",
+    )
+
+
+def _short(function: str) -> str:
+    return function.rsplit(":", 1)[-1]
+
+
+def _family(group: _Gathered, named: Mapping[str, Family]) -> Family | None:
+    """The group of constants that most of the machine's labels come from."""
+    votes: dict[str, int] = {}
+    found: dict[str, Family] = {}
+    for dispatch in group.dispatches:
+        for label in dispatch.labels:
+            family = named.get(label.constant.name or "")
+            if family is not None:
+                votes[family.identity] = votes.get(family.identity, 0) + 1
+                found[family.identity] = family
+    if not votes:
+        return None
+    return found[max(sorted(votes), key=lambda identity: votes[identity])]
+
+
+def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
+    names: dict[int, tuple[str, Origin]] = {}
+    declared: set[int] = set()
+    labelled: set[int] = set()
+    tested: set[int] = set()
+    stored: set[int] = set()
+    initial: set[int] = set()
+    by_family = {member.name: member for member in family.members} if family is not None else {}
+
+    def see(constant: Constant, into: set[int]) -> None:
+        into.add(constant.value)
+        known = names.get(constant.value)
+        if known is None or (constant.name is not None and constant.name in by_family and known[0] not in by_family):
+            names[constant.value] = (constant.name or str(constant.value), constant.where)
+
+    for member in by_family.values():
+        see(member, declared)
+    for dispatch in group.dispatches:
+        if dispatch.line_numbers:
+            continue
+        for label in dispatch.labels:
+            see(label.constant, labelled)
+            if label.high > label.constant.value:
+                for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1):
+                    see(Constant(value, None, label.where), labelled)
+    for test in group.tests:
+        see(test.constant, tested)
+    for store in group.stores:
+        for constant in store.constants:
+            see(constant, initial if store.fresh else stored)
+            stored.add(constant.value)
+    for _, call in group.setters:
+        see(call.constant, stored)
+    for move in group.transitions:
+        see(move.target, stored)
+    for constant in group.initials:
+        see(constant, initial)
+    if group.starts_zero or not initial:
+        # Static storage starts as zero (6.7.9p10); where no initial store is seen, zeroed memory is assumed.
+        if 0 in names or group.starts_zero:
+            see(Constant(0, None, group.key.where), initial)
+    return tuple(
+        State(
+            name,
+            value,
+            where,
+            value in declared,
+            value in labelled,
+            value in tested,
+            value in stored,
+            value in initial,
+        )
+        for value, (name, where) in sorted(names.items())
+    )
+
+
+def _dispatch(fact: DispatchFact, key: KeyFact, by_value: Mapping[int, State]) -> Dispatch:
+    labels = tuple(
+        Label(
+            tuple(
+                by_value[value].name
+                for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1)
+                if value in by_value
+            ),
+            label.constant.value,
+            label.high,
+            label.written,
+            label.where,
+            label.constant.where,
+            label.fell_from,
+            label.fall_marked,
+            label.overwrites,
+        )
+        for label in fact.labels
+    )
+    return Dispatch(
+        fact.function,
+        fact.control,
+        fact.where,
+        labels,
+        fact.default,
+        fact.default_does,
+        fact.unreached,
+        key.low,
+        key.high,
+    )
+
+
+def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateStore]:
+    def named(constants: Iterable[Constant]) -> tuple[tuple[str, int], ...]:
+        return tuple((by_value[constant.value].name, constant.value) for constant in constants)
+
+    setters = {store for store, _ in group.setters}
+    for store in sorted(group.stores, key=lambda store: store.where):
+        if store in setters or (store.copied and not store.constants):
+            continue
+        unknown = store.why_unknown or ("arithmetic on its own value" if store.stepped else "")
+        yield StateStore(
+            store.function,
+            store.where,
+            None if unknown else named(store.constants),
+            unknown,
+            None,
+            store.fresh,
+        )
+    for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
+        yield StateStore(call.function, call.where, named([call.constant]), "", _short(store.function))
+
+
+def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transition]:
+    by_value = {state.value: state for state in states}
+    seen: set[tuple[str, str, str, Origin]] = set()
+
+    def step(source: State, target: int, function: str, guard: str, where: Origin) -> Iterable[Transition]:
+        mark = (source.name, by_value[target].name, function, where)
+        if mark not in seen:
+            seen.add(mark)
+            yield Transition(source.name, by_value[target].name, function, guard, where)
+
+    # A state that is only ever declared cannot be left by code that never sees it; it gets no transitions.
+    real = [state for state in states if state.labelled or state.tested or state.stored or state.initial]
+    for move in sorted(group.transitions, key=lambda move: (move.where, move.source is None, move.source or 0)):
+        if move.source is not None:
+            source = by_value.get(move.source)
+            if source is not None and source in real:
+                yield from step(source, move.target.value, move.function, move.guard, move.where)
+        else:
+            for state in real:
+                if state.value not in move.mentioned:
+                    yield from step(state, move.target.value, move.function, move.guard, move.where)
+    followed = {(move.function, move.target.value) for move in group.transitions}
+    for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
+        if (store.function, call.constant.value) in followed or store.fresh:
+            continue
+        # A setter called from another file: from which state is not known, so from any.
+        for state in real:
+            yield from step(state, call.constant.value, call.function, f"calls {_short(store.function)}", call.where)

@@ -1,0 +1,69 @@
+"""SM03: a state that nothing enters, so that its case is dead code.
+
+Said only where every store of the variable is known; otherwise the verdict is open. CWE-561.
+"""
+
+from collections.abc import Iterator
+
+from stepring.rule import Obligation, Related, Rule
+from stepring.shapes.types import Program
+from stepring_rules.machine_common import about, short
+
+
+def never_entered(program: Program) -> Iterator[Obligation]:
+    """One obligation for each labelled state of each machine, at its first case."""
+    for machine in program.machines:
+        seen: set[str] = set()
+        for dispatch in machine.dispatches:
+            for label in dispatch.labels:
+                if label.high != label.low or not label.states or label.states[0] in seen:
+                    continue
+                if not dispatch.control_low <= label.written <= dispatch.control_high:
+                    continue  # the constant cannot match at all; that is SM15's finding
+                state = machine.state(label.states[0])
+                seen.add(state.name)
+                if state.stored or state.initial:
+                    yield about(
+                        "SM03",
+                        machine,
+                        "pass",
+                        label.where,
+                        f"{state.name} is entered.",
+                        function=short(dispatch.function),
+                    )
+                elif not machine.complete:
+                    yield about(
+                        "SM03",
+                        machine,
+                        "open",
+                        label.where,
+                        f"No store of {state.name} was found.",
+                        reason=machine.why_incomplete[0],
+                        function=short(dispatch.function),
+                    )
+                else:
+                    yield about(
+                        "SM03",
+                        machine,
+                        "fail",
+                        label.where,
+                        f"Nothing in the program stores {state.name} in {machine.variable}; this case is never run.",
+                        "warning",
+                        why="Either the code is left over, or the transition that should lead here is missing.",
+                        advice=f"Add the transition to {state.name}, or remove the state and its case.",
+                        function=short(dispatch.function),
+                        states=(state.name,),
+                        related=(Related(state.where, f"{state.name} is declared here."),)
+                        if state.where != label.constant
+                        else (),
+                    )
+
+
+RULE = Rule(
+    "SM03",
+    "StateNeverEntered",
+    "A state is never entered; its case is dead.",
+    "warning",
+    never_entered,
+    (561,),
+)
