@@ -30,7 +30,7 @@ from stepring.report.sarif import page_of, sarif_log
 from stepring.report.serialise import to_bytes, write_whole
 from stepring.report.text import one_sentence, printable, shown_path
 from stepring.report.types import Outcome
-from stepring.report.words import VERDICT_WORDS
+from stepring.report.words import VERDICT_WORDS, level_of
 from stepring.rule import LEVELS, load_rules
 
 Function = TypeVar("Function", bound=Callable[..., Any])
@@ -89,9 +89,10 @@ _OPTIONS = (
     click.option(
         "--compiler",
         "compilers",
-        metavar="PATH",
+        metavar="NAME",
         multiple=True,
-        help="A compiler that may be run although it is not on the search path; can be given several times.",
+        help="A compiler to preprocess with: a program on the search path, or its absolute path. Can be given several "
+        "times, once for each compiler that a database names.",
     ),
     click.option("--no-compiler", is_flag=True, help="Run no compiler; use the built-in preprocessor."),
     click.option(
@@ -199,7 +200,7 @@ def _run(
         use_compiler=not no_compiler,
     )
     with _progress() as progress:
-        outcome = pipeline.inspect(paths or (Path(),), options, progress)
+        outcome = pipeline.inspect(paths, options, progress)
     code = exit_code(outcome, fail_level)
     trouble = None if sarif is None else _write_sarif(outcome, sarif, kinds, code)
     notices = outcome.notices if trouble is None else (*outcome.notices, trouble)
@@ -219,7 +220,7 @@ def exit_code(outcome: Outcome, fail_level: str) -> int:
     if fail_level == "none":
         return FOUND_NOTHING
     counted = LEVELS[[str(level) for level in LEVELS].index(fail_level) :]
-    found = any(one.kind == "fail" and (one.level or "warning") in counted for one in outcome.obligations)
+    found = any(level_of(one) in counted for one in outcome.obligations)
     return FOUND_SOMETHING if found else FOUND_NOTHING
 
 
@@ -227,9 +228,8 @@ def _write_sarif(outcome: Outcome, target: str, kinds: Sequence[str], code: int)
     """Write the log whole or not at all; what stood in the way, if it could not be written."""
     data = to_bytes(sarif_log(outcome, kinds, code))
     if target == "-":
-        stream = click.get_binary_stream("stdout")
-        stream.write(data)
-        stream.flush()
+        sys.stdout.buffer.write(data)
+        sys.stdout.buffer.flush()
         return None
     try:
         write_whole(Path(target), data)

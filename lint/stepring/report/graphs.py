@@ -18,8 +18,8 @@ from stepring.report.text import clean, escape_message
 from stepring.shapes.types import Machine, State, Transition
 
 
-def graph_of(machine: Machine, register: Register, verdicts: Mapping[str, int]) -> Any:
-    """The machine as a graph; node ids are state names, edge ids count from ``t1``."""
+def graph_of(machine: Machine, index: int, register: Register, verdicts: Mapping[str, int]) -> Any:
+    """The machine as graph number ``index``; node ids are state names, edge ids count from ``t1``."""
     place = register.sources.of(machine.where.file)
     return om.Graph(
         description=message(f"The state machine on {machine.variable}."),
@@ -27,6 +27,7 @@ def graph_of(machine: Machine, register: Register, verdicts: Mapping[str, int]) 
         + [om.Node(id=name, label=message(name), properties={"listed": False}) for name in _unlisted(machine)],
         edges=[_edge(number, step, register) for number, step in enumerate(machine.transitions, start=1)],
         properties={
+            "index": index,
             "variable": clean(machine.variable),
             "functions": sorted({clean(dispatch.function) for dispatch in machine.dispatches}),
             "initial": [clean(name) for name in machine.initial],

@@ -13,7 +13,7 @@ from stepring.report.fingerprints import in_order
 from stepring.report.sources import Source, Sources
 from stepring.report.text import printable, shown_path
 from stepring.report.types import Outcome
-from stepring.report.words import VERDICT_WORDS
+from stepring.report.words import VERDICT_WORDS, level_of
 from stepring.rule import Obligation
 
 _TAB_STOP = 8
@@ -30,7 +30,7 @@ def _line(one: Obligation, source: Source, base: Path | None) -> str:
     column = display_column(source.line(one.where.line) or "", one.where.column)
     place = f"{shown_path(source.file, base)}:{one.where.line}:" + (f"{column}:" if column else "")
     # The verdict comes first: a sentence that begins with an identifier could not begin in lower case.
-    verdict = one.level or VERDICT_WORDS[one.kind]
+    verdict = level_of(one) or VERDICT_WORDS[one.kind]
     text = printable(" ".join(one.what.split())).rstrip(".")
     return f"{place} {verdict}, rule {one.rule}: {text}"
 

@@ -19,7 +19,7 @@ from stepring.report.fingerprints import in_order
 from stepring.report.sources import Sources
 from stepring.report.text import one_sentence, printable, shown_path
 from stepring.report.types import Outcome
-from stepring.report.words import CAUTION, count, coverage_sentence, verdict_summary, verdict_words
+from stepring.report.words import CAUTION, count, coverage_sentence, level_of, verdict_summary, verdict_words
 from stepring.rule import Obligation, Rule, WitnessStep
 
 _COLOURS = {
@@ -66,7 +66,7 @@ def _print_card(
     head.add_column()
     head.add_column(justify="right")
     verdict = Text(f"{number}. ")
-    verdict.append(verdict_words(one), style=_COLOURS[one.level or one.kind])
+    verdict.append(verdict_words(one), style=_COLOURS[level_of(one) or one.kind])
     head.add_row(verdict, Text(_line_words(one.where)))
     console.print(head)
     rows = Table.grid(padding=(0, 2))

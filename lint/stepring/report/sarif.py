@@ -24,6 +24,7 @@ from stepring.report.serialise import JSON, SCHEMA, log_to_json
 from stepring.report.sources import BASES, CHECKOUT_BASE, OUTSIDE_BASE, ROOT_BASE, Sources
 from stepring.report.text import clean, escape_message, joined, one_sentence
 from stepring.report.types import Outcome
+from stepring.report.words import level_of
 from stepring.rule import Obligation, Rule
 from stepring.shapes.types import Ring
 
@@ -93,8 +94,8 @@ def sarif_log(outcome: Outcome, kinds: Collection[str] = ("fail",), exit_code: i
         version_control_provenance=None if checkout is None else [checkout.details()],
         artifacts=register.artifacts(),
         graphs=[
-            graph_of(machine, register, verdict_counts(verdicts[machine.identity]))
-            for machine in outcome.program.machines
+            graph_of(machine, index, register, verdict_counts(verdicts[machine.identity]))
+            for index, machine in enumerate(outcome.program.machines)
         ],
         results=results,
         taxonomies=_taxonomies(outcome.rules),
@@ -138,11 +139,11 @@ def _result(one: Obligation, run: _Run) -> Any:
     if one.subject is not None:
         logical.append(register.subject(one.subject, one.subject_kind))
     made = om.Result(
-        message=_result_message(one, register),
+        message=_result_message(one, register, one.rule in run.rules),
         rule_id=one.rule,
         rule_index=run.rule_numbers[one.rule],
         kind=one.kind,
-        level=_level(one, run.rules),
+        level=level_of(one) or "none",
         locations=[register.location(one.where, logical=logical)],
         related_locations=[
             _with_id(register.location(related.where, related.text), number)
@@ -161,14 +162,7 @@ def _result(one: Obligation, run: _Run) -> Any:
     return made
 
 
-def _level(one: Obligation, rules: Mapping[str, Rule]) -> str:
-    if one.kind != "fail":
-        return "none"
-    usual = rules[one.rule].level if one.rule in rules else "warning"
-    return one.level or usual
-
-
-def _result_message(one: Obligation, register: Register) -> Any:
+def _result_message(one: Obligation, register: Register, known: bool) -> Any:
     """What, why and what to do, then links to the related places; the id leads to the rule's general wording."""
     opened = f"This is left open: {one_sentence(one.reason)}" if one.reason else ""
     text = escape_message(joined(one.what, opened, one.why, one.advice)) or "No text is given."
@@ -177,8 +171,11 @@ def _result_message(one: Obligation, register: Register) -> Any:
         for number, related in enumerate(one.related[:3], start=1)
     ]
     place = one.function or register.sources.of(one.where.file).uri
+    full = text + (f" See {' and '.join(links)}." if links else "")
+    if not known:  # then there is no general wording either
+        return om.Message(text=full)
     return om.Message(
-        text=text + (f" See {' and '.join(links)}." if links else ""),
+        text=full,
         id=one.kind,
         arguments=[clean(place), clean(one.subject or one.where.spelling) or "line " + str(one.where.line)],
     )

@@ -4,7 +4,7 @@ from collections import Counter
 from collections.abc import Iterable
 
 from stepring.report.types import Outcome
-from stepring.rule import LEVELS, Obligation
+from stepring.rule import LEVELS, Level, Obligation
 
 VERDICT_WORDS = {
     "fail": "shown to fail",
@@ -19,9 +19,15 @@ CAUTION = (
 )
 
 
+def level_of(one: Obligation) -> Level | None:
+    """The level of a failure, ``warning`` where its rule gave none; None for every other verdict."""
+    return (one.level or "warning") if one.kind == "fail" else None
+
+
 def verdict_words(one: Obligation) -> str:
     """The verdict in words, with its level where it has one."""
-    return VERDICT_WORDS[one.kind] + (f" ({one.level})" if one.level else "")
+    level = level_of(one)
+    return VERDICT_WORDS[one.kind] + (f" ({level})" if level else "")
 
 
 def count(number: int, noun: str, plural: str = "") -> str:
@@ -33,9 +39,9 @@ def verdict_summary(obligations: Iterable[Obligation]) -> str:
     """How many verdicts of each kind there are, failures by level, in one phrase."""
     given = list(obligations)
     kinds: Counter[str] = Counter(one.kind for one in given)
-    levels = Counter(one.level for one in given if one.level)
+    levels = Counter(level_of(one) for one in given)
     parts = [f"{kinds[kind]} {words}" for kind, words in VERDICT_WORDS.items() if kinds[kind]]
-    if levels and kinds["fail"]:
+    if kinds["fail"]:
         parts[0] += f" ({', '.join(count(levels[level], level) for level in reversed(LEVELS) if levels[level])})"
     return ", ".join(parts) or "none"
 
