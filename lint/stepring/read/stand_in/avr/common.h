@@ -1,0 +1,2 @@
+/* Stand-in for <avr/common.h>. */
+#include <avr/io.h>

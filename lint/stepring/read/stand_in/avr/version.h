@@ -1,0 +1,2 @@
+/* Stand-in for <avr/version.h>. */
+#define __AVR_LIBC_VERSION__ 20000UL

@@ -1,0 +1,2 @@
+/* Stand-in: see cmsis_compiler.h. */
+#include <cmsis_compiler.h>

@@ -1,0 +1,28 @@
+/* Stand-in for <float.h> (ISO C N1570 5.2.4.2.2): IEC 60559 single and double. */
+#ifndef STEPRING_FLOAT_H
+#define STEPRING_FLOAT_H
+#define FLT_RADIX 2
+#define FLT_MANT_DIG 24
+#define FLT_DIG 6
+#define FLT_MIN_EXP (-125)
+#define FLT_MAX_EXP 128
+#define FLT_MIN 1.17549435e-38F
+#define FLT_MAX 3.40282347e+38F
+#define FLT_EPSILON 1.19209290e-7F
+#if __SIZEOF_DOUBLE__ == 4
+#define DBL_MANT_DIG 24
+#define DBL_DIG 6
+#define DBL_MIN 1.17549435e-38
+#define DBL_MAX 3.40282347e+38
+#define DBL_EPSILON 1.19209290e-7
+#else
+#define DBL_MANT_DIG 53
+#define DBL_DIG 15
+#define DBL_MIN 2.2250738585072014e-308
+#define DBL_MAX 1.7976931348623157e+308
+#define DBL_EPSILON 2.2204460492503131e-16
+#endif
+#define LDBL_MAX DBL_MAX
+#define LDBL_MIN DBL_MIN
+#define LDBL_EPSILON DBL_EPSILON
+#endif

@@ -1,0 +1,2 @@
+/* Stand-in for <netinet/tcp.h> (POSIX). */
+#define TCP_NODELAY 1

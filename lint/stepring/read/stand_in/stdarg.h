@@ -1,0 +1,9 @@
+/* Stand-in for <stdarg.h> (ISO C N1570 7.16). */
+#ifndef STEPRING_STDARG_H
+#define STEPRING_STDARG_H
+typedef __builtin_va_list va_list;
+#define va_start(list, last) __builtin_va_start (list, last)
+#define va_arg(list, type) __builtin_va_arg (list, type)
+#define va_end(list) __builtin_va_end (list)
+#define va_copy(to, from) __builtin_va_copy (to, from)
+#endif
