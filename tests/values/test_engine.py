@@ -1,8 +1,9 @@
 """What the engine finds in small functions written by hand."""
 
 from stepring.meaning.types import ArrayType
-from stepring.values.engine import Effect, Surroundings, analyse
+from stepring.values.engine import analyse
 from stepring.values.spots import Exposure
+from stepring.values.surroundings import Effect, Surroundings
 from stepring.values.types import FieldCell, Interval, VariableCell
 
 from .build import (

@@ -25,8 +25,8 @@ from stepring.meaning.types import (
     Unary,
 )
 from stepring.values import intervals as iv
+from stepring.values.cells import cell_of
 from stepring.values.intervals import UNBOUNDED, constant, contains, convert, number_type, whole
-from stepring.values.spots import cell_of
 from stepring.values.types import Cell, Interval
 
 Read: TypeAlias = Callable[[PlaceExpr], Interval]

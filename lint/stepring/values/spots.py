@@ -17,38 +17,15 @@ points to.
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from typing import Final, TypeAlias
+from typing import TypeAlias
 
 from stepring.meaning.types import (
-    AddressOf,
-    ArrayType,
-    Assign,
-    Begin,
-    Call,
-    Cast,
-    Clobber,
-    Const,
     CType,
-    DerefPlace,
-    ElementPlace,
-    Expr,
-    Function,
-    IntType,
-    Load,
-    MemberPlace,
-    PlaceExpr,
-    PointerStep,
-    PointerType,
-    StructType,
-    Variable,
-    VariablePlace,
 )
-from stepring.values.intervals import number_type, whole
-from stepring.values.scan import expressions_of, places_of, walk_expression
-from stepring.values.types import Cell, FieldCell, Interval, VariableCell
+from stepring.values.intervals import number_type, union, whole
+from stepring.values.types import Cell, FieldCell, Interval
 
 Bucket: TypeAlias = tuple[object, ...]
-LOCAL_STORAGE: Final = ("automatic", "parameter", "temporary")
 
 
 @dataclass(frozen=True, slots=True)
@@ -176,8 +153,6 @@ class Places:
     def _add(self, key: tuple[object, ...], access: Access, definite: bool, width: int) -> Spot:
         pointee = access.reached and access.cell is None
         cell = access.cell
-        lasting = access.reached or not access.local
-        summary = self.summaries.get(cell) if cell is not None and lasting and access.tracked else None
         volatile = access.volatile and not (cell is not None and self._steady(cell))
         spot = Spot(
             root=access.root if definite or not access.reached else "?",
@@ -195,7 +170,7 @@ class Places:
             pointee=pointee,
             depends=access.depends if definite else (),
             buckets=self._buckets_of(access, width, pointee),
-            default=summary if summary is not None else whole(access.type),
+            default=self._default(access),
         )
         self._spots[key] = spot
         if definite:
@@ -208,6 +183,22 @@ class Places:
             self._buckets.setdefault(bucket, []).append(spot)
         self._version += 1
         return spot
+
+    def _default(self, access: Access) -> Interval:
+        """What a spot holds of which the state says nothing: what its cell's summary allows, and what stores through
+        pointers to the structure that it is a member of may have put there."""
+        anything = whole(access.type)
+        if access.cell is None or not access.tracked or (access.local and not access.reached):
+            return anything
+        value = self.summaries.get(access.cell)
+        if value is None:
+            return anything
+        if access.view and (access.reached or access.exposed):
+            shared = FieldCell(access.view[0], access.view[1:])
+            if shared != access.cell:
+                also = self.summaries.get(shared)
+                return union(value, also) if also is not None else anything
+        return value
 
     def _buckets_of(self, access: Access, width: int, pointee: bool) -> tuple[Bucket, ...]:
         buckets: list[Bucket] = []
@@ -275,407 +266,3 @@ def _may_alias(a: Spot, b: Spot, kind: object) -> bool:
         if not a.reached and not b.reached:
             return a.cell == b.cell
     return True
-
-
-@dataclass(frozen=True, slots=True)
-class Binding:
-    """What a pointer that never changes points to: an expression, and the frame that it belongs to."""
-
-    frame: "Frame"
-    value: Expr
-
-
-class Frame:
-    """A function as it takes part in an analysis: how its places become spots.
-
-    ``prefix`` tells the automatic variables of one activation from those of others; ``bindings`` give the values of
-    its pointer parameters.
-    """
-
-    def __init__(
-        self, places: Places, function: Function, prefix: str = "", bindings: Mapping[str, Binding] | None = None
-    ) -> None:
-        self.places = places
-        self.function = function
-        self.prefix = prefix
-        facts = facts_of(function)
-        self.taken = facts.taken
-        self._taken_cells = facts.taken_cells
-        self.bindings: dict[str, Binding] = dict(bindings or {})
-        for identity, value in facts.fixed.items():
-            self.bindings.setdefault(identity, Binding(self, value))
-        self._cache: dict[int, tuple[PlaceExpr, Spot]] = {}
-
-    def spot(self, place: PlaceExpr) -> Spot:
-        """The spot that a place names."""
-        cached = self._cache.get(id(place))
-        if cached is not None and cached[0] is place:
-            return cached[1]
-        spot = self.places.spot(self.access(place))
-        self._cache[id(place)] = (place, spot)
-        return spot
-
-    def access(self, place: PlaceExpr) -> Access:
-        """The access path of a place."""
-        if isinstance(place, VariablePlace):
-            return self._variable(place.variable)
-        if isinstance(place, MemberPlace):
-            return self._member(self.access(place.base), place)
-        if isinstance(place, ElementPlace):
-            return self._element(self.access(place.base), place.index, place.type)
-        return self.pointed(place.pointer, place.type)
-
-    def _variable(self, variable: Variable) -> Access:
-        local = variable.storage in LOCAL_STORAGE
-        root = self.prefix + variable.identity if local else variable.identity
-        exposure = self.places.exposure
-        if local:
-            exposed = variable.identity in self.taken
-        else:
-            exposed = exposure is None or variable.identity in exposure.variables
-        return Access(
-            root, (), True, (), VariableCell(root), (), variable.type, local, exposed, False, True, variable.volatile
-        )
-
-    def _member(self, base: Access, place: MemberPlace) -> Access:
-        exposure = self.places.exposure
-        in_union = isinstance(base.type, StructType) and base.type.union
-        overlaps = exposure is not None and place.struct in exposure.unions
-        step = "." + place.name
-        cell: Cell | None = None
-        if isinstance(base.cell, VariableCell):
-            cell = VariableCell(base.cell.variable, (*base.cell.path, step))
-        elif isinstance(base.cell, FieldCell):
-            cell = FieldCell(base.cell.struct, (*base.cell.path, place.name))
-        return Access(
-            base.root, (*base.path, step), base.definite, base.depends, cell, (place.struct, place.name), place.type,
-            base.local, base.exposed, base.reached, base.tracked and not in_union and not overlaps,
-            base.volatile or place.volatile,
-        )  # fmt: skip
-
-    def _element(self, base: Access, index: Expr, kind: CType) -> Access:
-        step, depends = self._index(index)
-        cell: Cell | None = None
-        if isinstance(base.cell, VariableCell):
-            cell = VariableCell(base.cell.variable, (*base.cell.path, "[]"))
-        elif isinstance(base.cell, FieldCell) and base.cell.path:
-            cell = FieldCell(base.cell.struct, (*base.cell.path, "[]"))
-        elif isinstance(kind, StructType):
-            cell = FieldCell(kind.identity, ())
-        return Access(
-            base.root, (*base.path, step), base.definite and step != "[]", base.depends + depends, cell,
-            (*base.view, "[]") if base.view else (), kind, base.local, base.exposed, base.reached, base.tracked,
-            base.volatile,
-        )  # fmt: skip
-
-    def _index(self, index: Expr) -> tuple[str, tuple[Spot, ...]]:
-        """The path's step for an element, and the spot whose change would make it another element."""
-        plain = index
-        while isinstance(plain, Cast) and isinstance(plain.type, IntType):
-            plain = plain.operand
-        if isinstance(index, Const) or isinstance(plain, Const):
-            return f"[{plain.value if isinstance(plain, Const) else 0}]", ()
-        if isinstance(plain, Load) and isinstance(plain.place, VariablePlace):
-            variable = plain.place.variable
-            if variable.storage in LOCAL_STORAGE and not variable.volatile and variable.identity not in self.taken:
-                if _widens(index):
-                    spot = self.spot(plain.place)
-                    return f"[{spot.root}]", (spot,)
-        return "[]", ()
-
-    def pointed(self, pointer: Expr, kind: CType) -> Access:
-        """The access path of what a pointer points to, seen as an object of the type ``kind``."""
-        target = self.target(pointer, kind)
-        if target is not None:
-            return target
-        cell = FieldCell(kind.identity, ()) if isinstance(kind, StructType) else None
-        return Access("?", ("->",), False, (), cell, (), kind, False, True, True, not _is_union(kind), False)
-
-    def target(self, pointer: Expr, kind: CType) -> Access | None:
-        """As ``pointed``; None where the pointer's value has no name."""
-        plain = pointer
-        while isinstance(plain, Cast) and isinstance(plain.type, PointerType):
-            plain = plain.operand
-        if isinstance(plain, AddressOf):
-            return self._addressed(plain.place, kind)
-        if isinstance(plain, PointerStep):
-            return self._stepped(plain, kind)
-        if not isinstance(plain, Load):
-            return None
-        if isinstance(plain.place, VariablePlace):
-            bound = self.bindings.get(plain.place.variable.identity)
-            if bound is not None and plain.place.variable.storage in LOCAL_STORAGE:
-                found = bound.frame.target(bound.value, kind)
-                if found is not None:
-                    return found
-        access = self.access(plain.place)
-        spot = self.places.spot(access)
-        if not (spot.definite and spot.tracked and isinstance(access.type, PointerType)):
-            return None
-        cell = FieldCell(kind.identity, ()) if isinstance(kind, StructType) else None
-        return Access(
-            access.root, (*access.path, "->"), True, (*access.depends, spot), cell, (), kind, False, True, True,
-            not _is_union(kind), False,
-        )  # fmt: skip
-
-    def _addressed(self, place: PlaceExpr, kind: CType) -> Access | None:
-        access = self.access(place)
-        if same_object(access.type, kind):
-            return access
-        if isinstance(access.type, ArrayType) and same_object(access.type.element, kind):
-            return self._element(access, Const(0, IntType("int", 32, True, 4)), access.type.element)
-        return None
-
-    def _stepped(self, step: PointerStep, kind: CType) -> Access | None:
-        plain = step.pointer
-        while isinstance(plain, Cast) and isinstance(plain.type, PointerType):
-            plain = plain.operand
-        if isinstance(plain, AddressOf):
-            access = self.access(plain.place)
-            if isinstance(access.type, ArrayType) and same_object(access.type.element, kind):
-                return self._element(access, step.steps, kind)
-            if isinstance(plain.place, ElementPlace) and same_object(access.type, kind):
-                unknown = Load(plain.place, access.type)
-                return self._element(self.access(plain.place.base), unknown, kind)
-        if not (isinstance(step.type, PointerType) and same_object(step.type.to, kind)):
-            return None
-        base = self.target(step.pointer, kind)
-        if base is None:
-            return None
-        token, depends = self._index(step.steps)
-        if token == "[0]":
-            return base
-        if not base.reached:
-            # A step from a single object or from an element: some element of the same array.
-            path = tuple("[]" if part.startswith("[") else part for part in base.path)
-            return Access(
-                base.root, path, False, (), base.cell, base.view, kind, base.local, base.exposed, False, base.tracked,
-                base.volatile,
-            )  # fmt: skip
-        return Access(
-            base.root, (*base.path, token), base.definite and token != "[]", base.depends + depends, base.cell,
-            base.view, kind, base.local, base.exposed, True, base.tracked, base.volatile,
-        )  # fmt: skip
-
-
-def same_object(a: CType, b: CType) -> bool:
-    """Whether an object of one type can be taken for one of the other: equal, or of one kind and width."""
-    if isinstance(a, IntType) and isinstance(b, IntType):
-        return a.width == b.width
-    if isinstance(a, StructType) and isinstance(b, StructType):
-        return a.identity == b.identity
-    if isinstance(a, PointerType) and isinstance(b, PointerType):
-        return a.width == b.width
-    return a == b
-
-
-def _is_union(kind: CType) -> bool:
-    return isinstance(kind, StructType) and kind.union
-
-
-def _widens(index: Expr) -> bool:
-    """Whether the casts around an index variable cannot change its value."""
-    while isinstance(index, Cast):
-        inner = index.operand
-        source = number_type(inner.type) if isinstance(inner, (Cast, Load)) else None
-        if source is None or not isinstance(index.type, IntType):
-            return False
-        if not (index.type.low <= source.low and source.high <= index.type.high):
-            return False
-        index = inner
-    return True
-
-
-# ---------------------------------------------------------------------------------------------------------- a
-# function's facts
-
-
-@dataclass(frozen=True, slots=True)
-class FunctionFacts:
-    """What a function does with addresses.
-
-    ``taken``: identities of variables whose address it takes (and does not use at once). ``taken_cells``: scalar
-    cells whose own address is taken. ``fixed``: pointer variables that are set once, to an address that cannot
-    change. ``unassigned``: its parameters that are never stored to.
-    """
-
-    taken: frozenset[str]
-    taken_cells: frozenset[Cell]
-    fixed: Mapping[str, Expr]
-    unassigned: frozenset[str]
-
-
-_facts: dict[int, tuple[Function, FunctionFacts]] = {}
-
-
-def facts_of(function: Function) -> FunctionFacts:
-    """The facts of a function, computed once."""
-    known = _facts.get(id(function))
-    if known is not None and known[0] is function:
-        return known[1]
-    facts = _find_facts(function)
-    if len(_facts) > 4096:
-        _facts.clear()
-    _facts[id(function)] = (function, facts)
-    return facts
-
-
-def _find_facts(function: Function) -> FunctionFacts:
-    taken: set[str] = set()
-    cells: set[Cell] = set()
-    stores: dict[str, list[Expr | None]] = {}
-    for block in function.blocks:
-        for statement in block.statements:
-            if isinstance(statement, Assign) and isinstance(statement.place, VariablePlace):
-                stores.setdefault(statement.place.variable.identity, []).append(statement.value)
-            elif isinstance(statement, Call) and isinstance(statement.result, VariablePlace):
-                stores.setdefault(statement.result.variable.identity, []).append(None)
-            elif isinstance(statement, Clobber):
-                for place in statement.places:
-                    if isinstance(place, VariablePlace):
-                        stores.setdefault(place.variable.identity, []).append(None)
-            elif isinstance(statement, Begin):
-                continue
-            for expression in expressions_of(statement):
-                collect_taken(expression, taken, cells)
-            for place in places_of(statement):
-                _taken_in_place(place, taken, cells)
-        for expression in expressions_of(block.terminator):
-            collect_taken(expression, taken, cells)
-    unassigned = frozenset(
-        p.identity
-        for p in function.parameters
-        if p.identity not in stores and p.identity not in taken and not p.volatile
-    )
-    fixed: dict[str, Expr] = {}
-    once = {
-        variable.identity: stores[variable.identity][0]
-        for variable in function.variables
-        if variable.storage in ("automatic", "temporary")
-        and isinstance(variable.type, PointerType)
-        and not variable.volatile
-        and variable.identity not in taken
-        and len(stores.get(variable.identity, ())) == 1
-    }
-    for _ in range(len(once) + 1):
-        found = {
-            identity: value
-            for identity, value in once.items()
-            if identity not in fixed and value is not None and is_fixed(value, unassigned, fixed)
-        }
-        if not found:
-            break
-        fixed.update(found)
-    return FunctionFacts(frozenset(taken), frozenset(cells), fixed, unassigned)
-
-
-def is_fixed(pointer: Expr, unassigned: frozenset[str], fixed: Mapping[str, Expr]) -> bool:
-    """Whether a pointer has one value in the whole function: an address, or a parameter that is never stored to."""
-    if isinstance(pointer, Cast):
-        return isinstance(pointer.type, PointerType) and is_fixed(pointer.operand, unassigned, fixed)
-    if isinstance(pointer, AddressOf):
-        return _fixed_place(pointer.place, unassigned, fixed)
-    if isinstance(pointer, Load) and isinstance(pointer.place, VariablePlace):
-        identity = pointer.place.variable.identity
-        return identity in unassigned or identity in fixed
-    return False
-
-
-def _fixed_place(place: PlaceExpr, unassigned: frozenset[str], fixed: Mapping[str, Expr]) -> bool:
-    if isinstance(place, VariablePlace):
-        return True
-    if isinstance(place, MemberPlace):
-        return _fixed_place(place.base, unassigned, fixed)
-    if isinstance(place, ElementPlace):
-        return isinstance(place.index, Const) and _fixed_place(place.base, unassigned, fixed)
-    return is_fixed(place.pointer, unassigned, fixed)
-
-
-def collect_taken(expression: Expr, taken: set[str], cells: set[Cell]) -> None:
-    """Add the variables and scalar cells whose address an expression makes, except addresses that are used at once."""
-    for part in walk_expression(expression):
-        if isinstance(part, AddressOf):
-            _take(part.place, taken, cells)
-        elif isinstance(part, Load):
-            _taken_in_place(part.place, taken, cells)
-
-
-def _taken_in_place(place: PlaceExpr, taken: set[str], cells: set[Cell]) -> None:
-    while not isinstance(place, VariablePlace):
-        if isinstance(place, DerefPlace):
-            plain: Expr = place.pointer
-            while isinstance(plain, Cast):
-                plain = plain.operand
-            if isinstance(plain, PointerStep) and isinstance(plain.pointer, AddressOf):
-                collect_taken(plain.steps, taken, cells)
-                if not isinstance(plain.pointer.place.type, ArrayType):
-                    _take(plain.pointer.place, taken, cells)
-                place = plain.pointer.place
-            elif isinstance(plain, AddressOf):
-                if plain is not place.pointer:
-                    _take(plain.place, taken, cells)
-                place = plain.place
-            else:
-                collect_taken(place.pointer, taken, cells)
-                return
-            continue
-        if isinstance(place, ElementPlace):
-            collect_taken(place.index, taken, cells)
-        place = place.base
-
-
-def _take(place: PlaceExpr, taken: set[str], cells: set[Cell]) -> None:
-    kind = place.type
-    cell = cell_of(place)
-    while isinstance(kind, ArrayType):
-        kind = kind.element
-        if isinstance(cell, VariableCell):
-            cell = VariableCell(cell.variable, (*cell.path, "[]"))
-        elif isinstance(cell, FieldCell):
-            cell = FieldCell(cell.struct, (*cell.path, "[]"))
-    if cell is not None and number_type(kind) is not None:
-        cells.add(cell)
-    base = place
-    while isinstance(base, (MemberPlace, ElementPlace)):
-        base = base.base
-    if isinstance(base, VariablePlace):
-        taken.add(base.variable.identity)
-    else:
-        _taken_in_place(place, taken, cells)
-
-
-# ---------------------------------------------------------------------------------------------------------- cells
-
-
-def cell_of(place: PlaceExpr) -> Cell | None:
-    """The cell of a place, known without its function: None for what a pointer to a scalar points to and for unions.
-
-    ``x.state`` is ``VariableCell("x", (".state",))``, ``x[i].state`` has ``("[]", ".state")``; ``p->a.b`` is
-    ``FieldCell(S, ("a", "b"))`` with the structure that ``p`` points to.
-    """
-    if isinstance(place, VariablePlace):
-        return VariableCell(place.variable.identity)
-    if isinstance(place, MemberPlace):
-        if isinstance(place.base.type, StructType) and place.base.type.union:
-            return None
-        base = cell_of(place.base)
-        if isinstance(base, VariableCell):
-            return VariableCell(base.variable, (*base.path, "." + place.name))
-        return FieldCell(base.struct, (*base.path, place.name)) if base is not None else None
-    if isinstance(place, ElementPlace):
-        base = cell_of(place.base)
-        if isinstance(base, VariableCell):
-            return VariableCell(base.variable, (*base.path, "[]"))
-        return FieldCell(base.struct, (*base.path, "[]")) if base is not None else None
-    pointer = place.pointer
-    while isinstance(pointer, (Cast, PointerStep)):
-        pointer = pointer.operand if isinstance(pointer, Cast) else pointer.pointer
-    if isinstance(pointer, AddressOf):
-        if same_object(pointer.place.type, place.type):
-            return cell_of(pointer.place)
-        if isinstance(pointer.place.type, ArrayType) and same_object(pointer.place.type.element, place.type):
-            base = cell_of(pointer.place)
-            if isinstance(base, VariableCell):
-                return VariableCell(base.variable, (*base.path, "[]"))
-            return FieldCell(base.struct, (*base.path, "[]")) if base is not None else None
-    return FieldCell(place.type.identity, ()) if isinstance(place.type, StructType) else None

@@ -15,10 +15,11 @@ from typing import Final, TypeAlias
 
 from stepring.meaning.types import Expr, Load, PlaceExpr
 from stepring.values.evaluate import compute
+from stepring.values.frames import Frame
 from stepring.values.intervals import UNBOUNDED, convert, fits, is_subset, meet, number_type, union, whole
 from stepring.values.refine import constrain
 from stepring.values.scan import walk_deep
-from stepring.values.spots import Frame, Places, Spot
+from stepring.values.spots import Places, Spot
 from stepring.values.types import Cell, Interval
 
 DEPTH: Final = 4
@@ -53,11 +54,11 @@ StoreObserver: TypeAlias = Callable[[Spot, Interval], None]
 
 def read_spot(places: Places, state: State, spot: Spot) -> Interval:
     """What a spot may hold."""
+    if not spot.tracked:
+        return spot.default
     known = state.values.get(spot)
     if known is not None and spot.definite:
         return known
-    if not spot.tracked:
-        return spot.default
     base = spot.default if known is None or spot.pointee else union(known, spot.default)
     return _with_aliases(places, state, spot, base)
 
@@ -202,11 +203,12 @@ def store_spot(
         observe(spot, value)
     if state.definitions:
         forget_definitions(state, frozenset((spot, *aliases)))
-    if spot.definite and not weak:
-        if spot.tracked:
+    if spot.tracked or spot.buckets:
+        # The value of a spot that is not tracked is kept for those that may be the same.
+        if spot.definite and not weak:
             values[spot] = value
-    elif spot.tracked or spot.pointee:
-        _maybe(places, state, spot, value)
+        else:
+            _maybe(places, state, spot, value)
     for other in aliases:
         for name in other.dependents:
             end_name(places, state, name)
@@ -267,15 +269,13 @@ def join_states(places: Places, a: State, b: State) -> State:
         y = b.values.get(spot)
         if y is x:
             values[spot] = x
-            continue
-        joined = union(x, y) if y is not None else _one_sided(places, b, spot, x)
-        if joined is not None:
-            values[spot] = joined
+        elif y is not None:
+            values[spot] = union(x, y)
+        else:
+            _join_one_sided(places, values, b, spot, x)
     for spot, y in b.values.items():
         if spot not in a.values:
-            joined = _one_sided(places, a, spot, y)
-            if joined is not None:
-                values[spot] = joined
+            _join_one_sided(places, values, a, spot, y)
     definitions = {}
     if a.definitions and b.definitions:
         for spot, definition in a.definitions.items():
@@ -285,13 +285,20 @@ def join_states(places: Places, a: State, b: State) -> State:
     return State(values, definitions)
 
 
-def _one_sided(places: Places, other: State, spot: Spot, value: Interval) -> Interval | None:
-    """A spot's joined value where the other state does not name it; None if its default says the same."""
-    if not spot.definite:
-        joined = value if spot.pointee else union(value, spot.default)
-        return None if joined == spot.default and not spot.pointee else joined
-    joined = union(value, read_spot(places, other, spot))
-    return None if joined == spot.default else joined
+def _join_one_sided(places: Places, values: Values, other: State, spot: Spot, value: Interval) -> None:
+    """Enter a spot's joined value where the other state does not name it; not needed where its default says the same.
+
+    What was stored through a pointer to a scalar is kept: the spots that may be the same need it, and their summaries
+    do not have it.
+    """
+    if spot.pointee:
+        kept = spot if spot.remainder is None or not spot.tracked else spot.remainder
+        known = values.get(kept)
+        values[kept] = value if known is None else union(known, value)
+        return
+    joined = union(value, read_spot(places, other, spot) if spot.definite else spot.default)
+    if joined != spot.default:
+        values[spot] = joined
 
 
 def includes(places: Places, large: State, small: State) -> bool:
@@ -300,13 +307,17 @@ def includes(places: Places, large: State, small: State) -> bool:
         known = large.values.get(spot)
         if known is value:
             continue
-        if known is None:
-            known = read_spot(places, large, spot) if spot.definite or not spot.pointee else None
+        if known is None and not spot.pointee:
+            known = read_spot(places, large, spot) if spot.definite else spot.default
         if known is None or not is_subset(value, known):
             return False
     for spot, value in large.values.items():
-        if spot not in small.values and spot.definite and not is_subset(read_spot(places, small, spot), value):
-            return False
+        if spot not in small.values:
+            if spot.pointee and spot.definite:
+                if spot.tracked:
+                    return False
+            elif spot.definite and not is_subset(read_spot(places, small, spot), value):
+                return False
     return all(
         (other := small.definitions.get(spot)) is not None and other.value is by.value
         for spot, by in large.definitions.items()

@@ -1,0 +1,93 @@
+"""What the analysis of one function is told of the rest of the program, and what is noted of it for the rest."""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+
+from stepring.meaning.types import (
+    Function,
+)
+from stepring.values.intervals import number_type, union
+from stepring.values.spots import Exposure, Spot
+from stepring.values.states import (
+    State,
+)
+from stepring.values.types import Cell, Interval
+
+
+@dataclass(frozen=True, slots=True)
+class Effect:
+    """What a call of known code does.
+
+    ``writes``: cells it may store into and what they then hold (None: what the summary says). ``certain``: cells
+    among them that are stored on every path. ``through_pointers``: it also stores through pointers that it was
+    given. ``returns``: its result, None for the type's range. ``comes_back``: False for a function that never
+    returns. ``outward``: it calls unknown code.
+    """
+
+    writes: Mapping[Cell, Interval | None] = field(default_factory=dict)
+    certain: frozenset[Cell] = frozenset()
+    through_pointers: bool = False
+    returns: Interval | None = None
+    comes_back: bool = True
+    outward: bool = False
+
+
+def _nothing(name: str) -> None:
+    return None
+
+
+def _never(cell: Cell) -> bool:
+    return False
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Surroundings:
+    """What a function's analysis may assume of the rest of the program.
+
+    ``summaries``: what each lasting cell can hold whenever code of the program starts; a cell that is missing can
+    hold anything. ``exposure``: what the program does with addresses; None where not all of it was read.
+    ``effects``: the effect of a callee by its C name. ``bodies``: the body of a callee that is to be run in place.
+    ``steady``: volatile cells that only the analysed code stores into. ``foreign``: cells that another context (an
+    interrupt) may store into at any moment. ``depth``: how deep bodies are nested. ``track_pointees``: follow what
+    pointers to scalars point to (they must not lead to device registers).
+    """
+
+    summaries: Mapping[Cell, Interval] = field(default_factory=dict)
+    exposure: Exposure | None = None
+    effects: Callable[[str], Effect | None] = _nothing
+    bodies: Callable[[str], Function | None] = _nothing
+    steady: Callable[[Cell], bool] = _never
+    foreign: Callable[[Cell], bool] = _never
+    depth: int = 2
+    track_pointees: bool = False
+
+
+@dataclass(slots=True)
+class Record:
+    """What is noted of a run: for each cell what is stored at all, and what it holds where other code can look.
+
+    ``stored``: the join of all stores. ``left``: the join over returns and calls that are not run in place, of the
+    cells that were stored into. ``pointees``: what is stored through pointers to scalars, by width. ``returned``:
+    the value returned.
+    """
+
+    stored: dict[Cell, Interval] = field(default_factory=dict)
+    left: dict[Cell, Interval] = field(default_factory=dict)
+    pointees: dict[int, Interval] = field(default_factory=dict)
+    called: set[str] = field(default_factory=set)
+    calls_unknown: bool = False
+    returned: Interval | None = None
+    looks: list[State] = field(default_factory=list)
+
+    def observe(self, spot: Spot, value: Interval) -> None:
+        """Note a store."""
+        if spot.private:
+            return
+        if spot.pointee:
+            kind = number_type(spot.type)
+            if kind is not None:
+                known = self.pointees.get(kind.width)
+                self.pointees[kind.width] = value if known is None else union(known, value)
+        elif spot.cell is not None and number_type(spot.type) is not None:
+            known = self.stored.get(spot.cell)
+            self.stored[spot.cell] = value if known is None else union(known, value)
