@@ -147,7 +147,21 @@ def effect(work: Work, node: Any) -> None:
             jump(work, after)
         resume(work, after)
     else:
-        value(work, node)
+        discard(work, value(work, node), position(node, work.at))
+
+
+def discard(work: Work, expr: Expr, at: Position) -> None:
+    """Evaluate a value that nothing uses: it may read a device's register, or do what is undefined."""
+    inner = expr
+    while isinstance(inner, Cast):
+        inner = inner.operand
+    match inner:
+        case Const() | FloatConst() | TextConst() | AddressOf() | FunctionName() | Unknown():
+            return
+        case Load(place=VariablePlace(variable=variable)) if not variable.volatile:
+            return  # ``(void)unused;``
+    if not isinstance(expr.type, VoidType | UnknownType | FunctionType):
+        emit(work, Assign(temporary(work, expr.type), expr, at))
 
 
 def condition(work: Work, node: Any, then: int, otherwise: int) -> None:
