@@ -20,7 +20,8 @@ from rich.console import Console
 from rich.markdown import Markdown
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
 
-from stepring import __version__, pipeline
+from stepring import __version__
+from stepring.meaning.models import MODELS
 from stepring.places import Notice
 from stepring.report.inventory import inventory_lines, print_inventory
 from stepring.report.lines import report_lines
@@ -85,7 +86,12 @@ _OPTIONS = (
         help="The report on standard output: for people, a line each, or none. "
         "The default is full, and none with --sarif -.",
     ),
-    click.option("--data-model", metavar="NAME", help="The sizes of the C types, where no compiler tells them."),
+    click.option(
+        "--data-model",
+        metavar="NAME",
+        type=click.Choice(tuple(MODELS)),
+        help=f"The sizes of the C types, whatever a compiler says: {', '.join(MODELS)}.",
+    ),
     click.option(
         "--compiler",
         "compilers",
@@ -192,6 +198,9 @@ def _run(
     no_compiler: bool,
     jobs: int,
 ) -> int:
+    # Imported here: the engines take a while to load, and the other commands need none of them.
+    from stepring import pipeline
+
     options = pipeline.Options(
         compile_commands=compile_commands,
         data_model=data_model,
@@ -301,6 +310,7 @@ def _remember(_done: int, _total: int, text: str) -> None:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """The command ``stepring``; gives the exit code."""
+    _now.unit = ""
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="replace")
