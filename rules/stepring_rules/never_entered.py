@@ -31,14 +31,16 @@ def never_entered(program: Program) -> Iterator[Obligation]:
                         f"{state.name} is entered.",
                         function=short(dispatch.function),
                     )
-                elif not machine.complete:
+                elif not machine.complete or state.elsewhere:
                     yield about(
                         "SM03",
                         machine,
                         "open",
                         label.where,
                         f"No store of {state.name} was found.",
-                        reason=machine.why_incomplete[0],
+                        reason=machine.why_incomplete[0]
+                        if machine.why_incomplete
+                        else f"{state.elsewhere} is stored with it, which may be the same memory",
                         function=short(dispatch.function),
                     )
                 else:

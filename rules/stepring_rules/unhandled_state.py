@@ -7,7 +7,7 @@ function that is itself an event handles only some states by design. CWE-478.
 from collections.abc import Iterator
 
 from stepring.rule import Level, Obligation, Related, Rule
-from stepring.shapes.types import Machine, Program, State
+from stepring.shapes.types import Dispatch, Machine, Program, State
 from stepring_rules.machine_common import about, is_bound, main_dispatch, short
 
 
@@ -39,7 +39,9 @@ def unhandled_state(program: Program) -> Iterator[Obligation]:
             ]
             entered = _entered(machine, state)
             hidden = dispatch.default is not None and dispatch.default_does not in ("nothing", "none")
-            level: Level = "warning" if entered and hidden else "note"
+            # A function that is itself an event handles some states only; a default that stores a state recovers.
+            recovers = dispatch.default_does == "stores" and _is_whole(machine, dispatch)
+            level: Level = "warning" if entered and recovers else "note"
             how = (
                 "the default takes it for an unknown value"
                 if hidden
@@ -64,6 +66,13 @@ def unhandled_state(program: Program) -> Iterator[Obligation]:
                     *(Related(where, f"{state.name} is stored here.") for where in stores[:3]),
                 ),
             )
+
+
+def _is_whole(machine: Machine, dispatch: Dispatch) -> bool:
+    """Whether a dispatch is meant to handle every state: it has cases for most of those that occur."""
+    real = [state.name for state in machine.states if state.stored or state.initial]
+    handled = {name for label in dispatch.labels for name in label.states}
+    return 3 * len(handled & set(real)) >= 2 * len(real)
 
 
 def _entered(machine: Machine, state: State) -> bool:

@@ -66,7 +66,10 @@ class LabelFact:
 
 @dataclass(frozen=True, slots=True)
 class DispatchFact:
-    """One ``switch`` on a key."""
+    """One ``switch`` on a key.
+
+    ``carried``: a constant stored while a loop runs reaches this dispatch again (what makes a local variable a state).
+    """
 
     key: str
     instance: str
@@ -80,7 +83,7 @@ class DispatchFact:
     in_loop: bool
     characters: bool
     line_numbers: bool
-    stores_inside: tuple[int, ...]
+    carried: bool
     end: int
 
 
@@ -149,4 +152,6 @@ class StateFacts:
     transitions: tuple[TransitionFact, ...] = ()
     calls: tuple[CallFact, ...] = ()
     families: tuple[Family, ...] = ()
+    # Keys whose transitions may be incomplete because a bound was met.
+    bounded: tuple[str, ...] = ()
     exposed: tuple[tuple[str, Origin], ...] = field(default=())

@@ -7,7 +7,7 @@ the program that dispatches on the variable, tests it or stores into it.
 """
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TypeVar
 
 from stepring.places import Origin
@@ -45,6 +45,7 @@ class _Gathered:
     stores: list[StoreFact] = field(default_factory=list)
     transitions: list[TransitionFact] = field(default_factory=list)
     exposed: list[Origin] = field(default_factory=list)
+    bounded: bool = False
     initials: list[Constant] = field(default_factory=list)
     starts_zero: bool = False
     setters: list[tuple[StoreFact, CallFact]] = field(default_factory=list)
@@ -59,7 +60,12 @@ def find_machines(facts: Iterable[StateFacts], *, complete: bool = True) -> tupl
         for family in part.families:
             families.setdefault(family.identity, family)
     named = {member.name: family for family in families.values() for member in family.members if member.name}
-    machines = [_machine(group, named, complete) for group in gathered.values() if is_machine(group, named)]
+    stored_in: dict[str, dict[str, str]] = {}
+    for group in gathered.values():
+        for constant in _stored_constants(group):
+            if constant.name is not None and group.key.kind == "member":
+                stored_in.setdefault(constant.name, {})[group.key.key] = group.key.shown
+    machines = [_machine(group, named, complete, stored_in) for group in gathered.values() if is_machine(group, named)]
     return tuple(sorted(machines, key=lambda machine: (machine.where, machine.identity)))
 
 
@@ -85,6 +91,8 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
         for transition in part.transitions:
             if transition.key in gathered:
                 gathered[transition.key].transitions.append(transition)
+        for key_name in part.bounded:
+            gathered[key_name].bounded = True
         for exposed_key, where in part.exposed:
             if exposed_key in gathered:
                 gathered[exposed_key].exposed.append(where)
@@ -117,7 +125,7 @@ def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
         return False
     if all(dispatch.characters for dispatch in dispatches):
         return False
-    if group.key.scope == "local" and not any(dispatch.in_loop for dispatch in dispatches):
+    if group.key.scope == "local" and not any(dispatch.carried for dispatch in dispatches):
         return False
     labels = {
         value
@@ -144,12 +152,25 @@ def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
     hits = (targets & labels) | family_targets
     if not hits and not stepped:
         return False
-    if group.key.scope == "local":
-        # The store must happen while the loop runs, not only before it.
-        return bool(group.transitions) or stepped
-    if _mapped_in_place(group, dispatches, labels):
+    if len(targets | labels) < 2:
         return False
-    return len(targets | labels) >= 2
+    return stepped or _moves_on(group, labels)
+
+
+def _moves_on(group: _Gathered, labels: set[int]) -> bool:
+    """Whether code that knows the present state stores another one that is dispatched on or tested.
+
+    A message's type, a configuration or a value put into another coding in place is stored from nowhere in
+    particular, or goes to values that nothing looks at again.
+    """
+    known = labels | {test.constant.value for test in group.tests}
+    return any(
+        move.source is not None
+        and move.source in labels
+        and move.source != move.target.value
+        and move.target.value in known
+        for move in group.transitions
+    )
 
 
 def _stored_constants(group: _Gathered) -> Iterable[Constant]:
@@ -159,27 +180,23 @@ def _stored_constants(group: _Gathered) -> Iterable[Constant]:
         yield call.constant
 
 
-def _mapped_in_place(group: _Gathered, dispatches: Sequence[DispatchFact], labels: set[int]) -> bool:
-    """A value put into another coding by the switch itself: everything stored is stored inside, and nothing is a
-    label."""
-    inside = {value for dispatch in dispatches for value in dispatch.stores_inside}
-    stored = {constant.value for constant in _stored_constants(group)}
-    return bool(inside) and stored <= inside and not inside & labels
-
-
 # ------------------------------------------------------------------------------------------------------ one machine
 
 
-def _machine(group: _Gathered, named: Mapping[str, Family], complete: bool) -> Machine:
+def _machine(
+    group: _Gathered, named: Mapping[str, Family], complete: bool, stored_in: Mapping[str, Mapping[str, str]]
+) -> Machine:
     key = group.key
     family = _family(group, named)
-    states = _states(group, family)
+    states = tuple(_elsewhere(state, group.key, stored_in) for state in _states(group, family))
     by_value = {state.value: state for state in states}
     why: list[str] = []
     if not complete:
         why.append("part of the program was not read")
     if group.exposed:
         why.append(f"its address is taken (line {group.exposed[0].line})")
+    if group.bounded:
+        why.append("its transitions are too many to follow them all")
     setters = {store for store, _ in group.setters}
     for store in group.stores:
         if store.why_unknown and store not in setters:
@@ -266,10 +283,9 @@ def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
         see(move.target, stored)
     for constant in group.initials:
         see(constant, initial)
-    if group.starts_zero or not initial:
-        # Static storage starts as zero (6.7.9p10); where no initial store is seen, zeroed memory is assumed.
-        if 0 in names or group.starts_zero:
-            see(Constant(0, None, group.key.where), initial)
+    if group.starts_zero or (0 in names and (group.key.kind == "member" or not initial)):
+        # Static storage starts as zero (6.7.9p10); an object of unknown origin may have been cleared.
+        see(Constant(0, None, group.key.where), initial)
     return tuple(
         State(
             name,
@@ -283,6 +299,19 @@ def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
         )
         for value, (name, where) in sorted(names.items())
     )
+
+
+def _elsewhere(state: State, key: KeyFact, stored_in: Mapping[str, Mapping[str, str]]) -> State:
+    """A state that nothing stores here but that is stored in a member of another structure with the same name."""
+    if state.stored or state.initial or key.kind != "member":
+        return state
+    member = key.key.rsplit(".", 1)[-1]
+    others = [
+        shown
+        for other, shown in sorted(stored_in.get(state.name, {}).items())
+        if other != key.key and other.rsplit(".", 1)[-1] == member
+    ]
+    return replace(state, elsewhere=others[0]) if others else state
 
 
 def _dispatch(fact: DispatchFact, key: KeyFact, by_value: Mapping[int, State]) -> Dispatch:

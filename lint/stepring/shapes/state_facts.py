@@ -52,10 +52,8 @@ from stepring.shapes.facts import (
 from stepring.shapes.keys import PlaceKey, is_integral, place_key, uncast
 from stepring.shapes.names import Names, constant_at, constant_of, families
 from stepring.shapes.state_flow import (
-    ELSE,
-    Environment,
+    ENTRY,
     Setting,
-    Value,
     flow,
     guard_text,
 )
@@ -107,6 +105,7 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         tuple(dict.fromkeys(work.transitions)),
         tuple(work.calls),
         _families_by_key(names, work),
+        tuple(work.bounded),
         tuple(work.exposed),
     )
 
@@ -127,6 +126,7 @@ class _Work:
     transitions: list[TransitionFact] = field(default_factory=list)
     calls: list[CallFact] = field(default_factory=list)
     exposed: list[tuple[str, Origin]] = field(default_factory=list)
+    bounded: list[str] = field(default_factory=list)
 
 
 # ------------------------------------------------------------------------------------------------------ first pass
@@ -278,7 +278,8 @@ def _candidates(scans: Sequence[_Scan]) -> frozenset[str]:
     for scan in scans:
         for key, seen in scan.keys.items():
             if seen.dispatches:
-                chosen.add(key)
+                if seen.key.scope == "lasting" or any(_carried(scan, seen, block) for block, _ in seen.dispatches):
+                    chosen.add(key)
             elif seen.key.scope == "lasting" and _shared(seen):
                 if any(_constant_store(statement) for _, statement, _ in seen.stores) or seen.tests:
                     chosen.add(key)
@@ -499,13 +500,6 @@ def _dispatch(work: _Work, scan: _Scan, seen: _Seen, block: int, switch: Switch)
     if switch.syntax.default is not None:
         others = frozenset().union(*reach) if reach else frozenset()
         default_does = _does(function, _reach(function, switch.default, block) - others, seen.key.key)
-    inside = {
-        inner.value
-        for number, statement, place in seen.stores
-        if number in frozenset().union(*reach, _reach(function, switch.default, block))
-        for inner in [uncast(statement.value) if isinstance(statement, Assign) else None]
-        if isinstance(inner, Const)
-    }
     return DispatchFact(
         seen.key.key,
         seen.key.instance,
@@ -519,9 +513,32 @@ def _dispatch(work: _Work, scan: _Scan, seen: _Seen, block: int, switch: Switch)
         block in _reach_after(function, block),
         characters,
         line_numbers > 0 and line_numbers >= len([label for label in labels if label.constant.value > 1]),
-        tuple(sorted(inside)),
+        seen.key.scope == "local" and _carried(scan, seen, block),
         switch.syntax.end,
     )
+
+
+def _carried(scan: _Scan, seen: _Seen, dispatch: int) -> bool:
+    """Whether a constant stored in a loop can reach the dispatch with no other store on the way."""
+    function = scan.function
+    around = _reach_after(function, dispatch)
+    if dispatch not in around:
+        return False
+    storing = {block for block, _, _ in seen.stores}
+    for block, statement, _ in seen.stores:
+        last = [one for number, one, _ in seen.stores if number == block][-1]
+        if block not in around or statement is not last or not _constant_store(statement):
+            continue
+        passed = {block}
+        pending = [block]
+        while pending:
+            for target in _targets(function, pending.pop()):
+                if target == dispatch and target not in storing:
+                    return True
+                if target not in passed and target not in storing:
+                    passed.add(target)
+                    pending.append(target)
+    return False
 
 
 def _marked(work: _Work, source: Position, label: Position) -> bool:
@@ -611,29 +628,34 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
             *(const.value for const, _ in seen.tests),
         )
     )
-    setting = Setting(key, mentioned, work.by_name.get, writers)
-    followed: set[str] = set()
-    readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
+    by_identity = {scan.function.identity: scan for scan in work.scans}
+
+    def instances(function: str) -> frozenset[str]:
+        scan = by_identity.get(function)
+        seen = scan.keys.get(key) if scan is not None else None
+        return frozenset(seen.instances) if seen is not None else frozenset()
+
+    setting = Setting(key, mentioned, work.by_name.get, writers, instances)
     # Functions that dispatch or test come first: what they call is then seen with its sources.
+    readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)
-    pending = list(readers)
-    callers_of_writers = [
+    others = [
         scan
         for scan in work.scans
-        if scan not in readers and any(_identity(work, name) in writers for _, name in scan.calls)
+        if key not in scan.keys and any(_identity(work, name) in writers for _, name in scan.calls)
     ]
-    for scan in [*pending, *callers_of_writers]:
+    for scan in [*readers, *others]:
         function = scan.function
         seen = scan.keys.get(key)
-        if function.identity in followed and function.static and (seen is None or not seen.read_instances):
+        if function.identity in setting.followed and function.static and (seen is None or not seen.read_instances):
             continue
-        for instance in sorted(seen.instances) if seen is not None else [""]:
+        for instance in sorted(seen.instances) if seen is not None else [key]:
             reads = seen is not None and instance in seen.read_instances
             if seen is not None and not reads and _is_fresh(seen, instance):
                 continue
-            for value in [*(Value("known", number) for number in sorted(mentioned)), ELSE]:
-                flow(setting, function, instance, Environment(value, value, ()), {})
-        followed |= setting.followed
+            flow(setting, function, instance, ENTRY, ENTRY, {})
+    if setting.bounded:
+        work.bounded.append(key)
     for move in sorted(
         setting.moves,
         key=lambda move: (move.at, move.source is None, move.source or 0, move.target, move.chosen.block),
@@ -646,7 +668,7 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
                 key,
                 move.function.identity,
                 move.source,
-                tuple(sorted(mentioned)) if move.source is None else (),
+                tuple(sorted(move.excluded)) if move.source is None else (),
                 target,
                 guard_text(move.function, move.chosen.block, key),
                 where,

@@ -1,11 +1,10 @@
 """Where a function can take a state: constant propagation over sets of environments.
 
-For one state variable and the few helpers that carry its values (copies, ``next`` variables, parameters of setters),
-a function is run on *sets* of environments without joining them, so that ``next = tms ? A : B; … state = next;``
-keeps both steps apart. An environment remembers the value at the latest dispatch or test (the source of a
-transition); the values that the function does not mention are one class of their own. Functions that the function
-calls are followed. Method: the classic disjunctive constant propagation; bounded, and the result says so when the
-bound was met.
+A function's slice for one state is run on *sets* of environments without joining them, so that ``next = tms ? A : B;
+… state = next;`` keeps both steps apart. The state starts as "any value" and is split only where a test or dispatch
+splits it; an environment remembers the value at the latest of these as the source of a transition. Functions that the
+function calls are followed. Method: the classic disjunctive constant propagation; it is bounded, and the setting says
+so when the bound was met.
 """
 
 from collections.abc import Callable, Iterator
@@ -16,38 +15,38 @@ from stepring.meaning.fold import apply_binary, apply_unary, convert
 from stepring.meaning.show import expr_text
 from stepring.meaning.types import (
     AddressOf,
-    Assign,
-    Begin,
-    Binary,
     Branch,
     Call,
-    Cast,
-    Clobber,
-    Const,
-    Expr,
     Function,
-    FunctionName,
-    IntType,
     Jump,
     Load,
-    PlaceExpr,
-    PointerType,
-    Return,
-    Statement,
     Switch,
-    Unary,
-    VariablePlace,
+    Terminator,
 )
 from stepring.places import Position
 from stepring.shapes.keys import instance_text, place_key, uncast
+from stepring.shapes.state_slice import (
+    BinaryTerm,
+    CallOp,
+    CastTerm,
+    HelperTerm,
+    Number,
+    Op,
+    Slice,
+    SliceBlock,
+    StateTerm,
+    StoreOp,
+    Term,
+    UnaryTerm,
+    make_slice,
+)
 
-MOST_VISITS = 6000
+MOST_VISITS = 20_000  # blocks run for one key in one unit
 MOST_DEPTH = 3
-MOST_HELPERS = 10
 
 
 class Chosen(NamedTuple):
-    """Where a constant was chosen: the block, the place, its enumerator's name."""
+    """Where a constant was chosen: the function's block, the place, its enumerator's name."""
 
     block: int
     position: Position | None
@@ -55,18 +54,19 @@ class Chosen(NamedTuple):
 
 
 class Value(NamedTuple):
-    """``known`` with its number; ``other``: the entry value, none of those mentioned; ``any``: not known.
+    """A value: ``known`` with its number; ``other``: any but those excluded; ``any``: computed, not known.
 
-    ``chosen`` is None where the number is only what a test told.
+    ``chosen`` is None where a number is only what a test told.
     """
 
     kind: Literal["known", "other", "any"]
     number: int = 0
     chosen: Chosen | None = None
+    excluded: frozenset[int] = frozenset()
 
 
 ANY = Value("any")
-ELSE = Value("other")
+ENTRY = Value("other")
 
 
 class Environment(NamedTuple):
@@ -79,345 +79,337 @@ class Environment(NamedTuple):
 
 @dataclass(frozen=True, slots=True)
 class Move:
-    """A store of a constant: from ``source`` (None: a value not mentioned) to ``target``."""
+    """A store of a constant: from ``source`` (None: any value but those in ``excluded``) to ``target``."""
 
     function: Function
     source: int | None
+    excluded: frozenset[int]
     target: int
     chosen: Chosen
-    store_block: int
     at: Position
 
 
-@dataclass(frozen=True, slots=True)
-class Exit:
-    """What holds when the function returns: the state and the returned value."""
+class Exit(NamedTuple):
+    """What holds when a function returns: the source, the state and the returned value."""
 
+    source: Value
     state: Value
     returned: Value
 
 
 @dataclass(slots=True)
 class Setting:
-    """What a flow needs of its surroundings: the key, the functions that can be followed, the values mentioned."""
+    """What a flow needs of its surroundings: the key, the values mentioned anywhere, the functions that can be
+    followed."""
 
     key: str
     mentioned: frozenset[int]
     resolve: Callable[[str], Function | None]
     writers: frozenset[str]
+    instances: Callable[[str], frozenset[str]]
     moves: set[Move] = field(default_factory=set)
+    slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
     followed: set[str] = field(default_factory=set)
-    bounded: bool = False
+    visits: int = 0
 
-
-def helpers_of(function: Function, key: str, instance: str) -> tuple[str, ...]:
-    """The variables whose values flow into the state, or that hold copies of it that are tested."""
-    wanted: list[str] = []
-
-    def want(expr: Expr) -> None:
-        for variable in _loaded_variables(expr):
-            if variable not in wanted and variable != instance and len(wanted) < MOST_HELPERS:
-                wanted.append(variable)
-
-    assigned: list[tuple[str, Expr]] = []
-    for block in function.blocks:
-        for statement in block.statements:
-            if isinstance(statement, Assign):
-                if _is_state(statement.place, function, key, instance):
-                    want(statement.value)
-                elif isinstance(statement.place, VariablePlace):
-                    assigned.append((statement.place.variable.identity, statement.value))
-    for name, value in assigned:
-        inner = uncast(value)
-        if isinstance(inner, Load) and _is_state(inner.place, function, key, instance) and len(wanted) < MOST_HELPERS:
-            if name not in wanted:
-                wanted.append(name)
-    size = -1
-    while size != len(wanted):
-        size = len(wanted)
-        for name, value in assigned:
-            if name in wanted:
-                want(value)
-    return tuple(wanted)
-
-
-def _loaded_variables(expr: Expr) -> Iterator[str]:
-    stack = [expr]
-    while stack:
-        node = stack.pop()
-        if isinstance(node, Load):
-            if isinstance(node.place, VariablePlace) and isinstance(node.type, IntType):
-                yield node.place.variable.identity
-        elif isinstance(node, Cast | Unary):
-            stack.append(node.operand)
-        elif isinstance(node, Binary):
-            stack.extend((node.left, node.right))
-
-
-def _is_state(place: PlaceExpr, function: Function, key: str, instance: str) -> bool:
-    found = place_key(place, function.identity)
-    return found is not None and found.key == key and found.instance == instance
+    @property
+    def bounded(self) -> bool:
+        """Whether the bound was met, so that transitions may be missing."""
+        return self.visits > MOST_VISITS
 
 
 def flow(
     setting: Setting,
     function: Function,
     instance: str,
-    entry: Environment,
+    source: Value,
+    state: Value,
     arguments: dict[str, Value],
     depth: int = 0,
 ) -> frozenset[Exit]:
-    """Run a function from one entry environment; moves gather in ``setting``."""
-    helpers = helpers_of(function, setting.key, instance)
-    start = Environment(entry.source, entry.state, tuple(arguments.get(name, ANY) for name in helpers))
+    """Run a function from one source and state; moves gather in ``setting``."""
+    part = setting.slices.get((function.identity, instance))
+    if part is None:
+        part = make_slice(function, setting.key, instance, setting.resolve, setting.writers)
+        setting.slices[function.identity, instance] = part
+    start = Environment(source, state, tuple(arguments.get(name, ANY) for name in part.helpers))
     memo_key = (function.identity, instance, start)
     known = setting.memo.get(memo_key)
     if known is not None:
         return known
     setting.memo[memo_key] = frozenset()  # a recursive call adds nothing to its own exits
-    run = _Run(setting, function, instance, {name: number for number, name in enumerate(helpers)}, depth)
+    run = _Run(setting, part, instance, depth)
     exits: set[Exit] = set()
-    seen: set[tuple[int, Environment]] = {(0, start)}
-    pending = [(0, start)]
-    visits = 0
-    while pending:
+    seen: set[tuple[int, Environment]] = set()
+    pending: list[tuple[int, Environment]] = []
+
+    def visit(targets: tuple[int, ...], environment: Environment) -> None:
+        for target in targets:
+            live = part.live[target]
+            helpers = tuple(value if slot in live else ANY for slot, value in enumerate(environment.helpers))
+            item = (target, environment._replace(helpers=helpers))
+            if item not in seen:
+                seen.add(item)
+                pending.append(item)
+
+    visit(part.entry, start)
+    while pending and not setting.bounded:
         number, environment = pending.pop()
-        visits += 1
-        if visits > MOST_VISITS:
-            setting.bounded = True
-            break
-        block = function.blocks[number]
+        setting.visits += 1
+        block = part.blocks[number]
         current = {environment}
-        for statement in block.statements:
-            current = {after for before in current for after in _statement(run, number, statement, before)}
+        for op in block.ops:
+            current = {after for before in current for after in _operate(run, number, op, before)}
         for after in current:
-            for target, following in _terminator(run, number, after, exits):
-                if (target, following) not in seen:
-                    seen.add((target, following))
-                    pending.append((target, following))
+            if block.leaves:
+                returned = _evaluate(run, number, block.returned, after) if block.returned is not None else ANY
+                exits.add(Exit(after.source, after.state, returned))
+            elif block.test is None:
+                visit(block.plain, after)
+            else:
+                for targets, following in _leave(run, number, block, after):
+                    visit(targets, following)
     setting.memo[memo_key] = frozenset(exits)
     return frozenset(exits)
 
 
 @dataclass(slots=True)
 class _Run:
-    """One function being run: its slots for helpers, its depth in the calls."""
+    """One function being run."""
 
     setting: Setting
-    function: Function
+    part: Slice
     instance: str
-    slots: dict[str, int]
     depth: int
 
 
-def _statement(run: _Run, block: int, statement: Statement, environment: Environment) -> Iterator[Environment]:
-    match statement:
-        case Assign(place=place, value=value, position=position):
-            yield _store(run, block, place, _evaluate(run, block, value, environment, position), environment, position)
-        case Call():
-            yield from _call(run, block, statement, environment)
-        case Begin(variable=variable):
-            yield _with_helper(run, environment, variable.identity, ANY)
-        case Clobber(places=places):
-            for place in places:
-                environment = _store(run, block, place, ANY, environment, statement.position)
-            yield environment
+def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterator[Environment]:
+    if isinstance(op, CallOp):
+        yield from _call(run, block, op, environment)
+    else:
+        yield _store(run, block, op, _evaluate(run, block, op.term, environment), environment)
 
 
-def _store(
-    run: _Run, block: int, place: PlaceExpr, value: Value, environment: Environment, at: Position
-) -> Environment:
-    if _is_state(place, run.function, run.setting.key, run.instance):
-        if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
-            source = environment.source.number if environment.source.kind == "known" else None
-            run.setting.moves.add(Move(run.function, source, value.number, value.chosen, block, at))
-        return environment._replace(state=value)
-    if isinstance(place, VariablePlace):
-        return _with_helper(run, environment, place.variable.identity, value)
-    return environment
+def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Environment) -> Environment:
+    if op.slot is not None:
+        helpers = environment.helpers
+        return environment._replace(helpers=(*helpers[: op.slot], value, *helpers[op.slot + 1 :]))
+    if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
+        source = environment.source
+        known = source.number if source.kind == "known" else None
+        run.setting.moves.add(Move(run.part.function, known, source.excluded, value.number, value.chosen, op.position))
+    return environment._replace(state=value)
 
 
-def _with_helper(run: _Run, environment: Environment, name: str, value: Value) -> Environment:
-    slot = run.slots.get(name)
-    if slot is None:
-        return environment
-    helpers = environment.helpers
-    return environment._replace(helpers=(*helpers[:slot], value, *helpers[slot + 1 :]))
-
-
-def _call(run: _Run, block: int, call: Call, environment: Environment) -> Iterator[Environment]:
+def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterator[Environment]:
     setting = run.setting
-    name = call.callee.name if isinstance(call.callee, FunctionName) else ""
-    callee = setting.resolve(name) if name else None
-    result = call.result.variable.identity if isinstance(call.result, VariablePlace) else ""
-    follow = callee is not None and (callee.identity in setting.writers or result in run.slots)
-    if callee is None or not follow or run.depth >= MOST_DEPTH:
-        if call.result is not None:
-            environment = _store(run, block, call.result, ANY, environment, call.position)
-        yield environment
+    callee = op.callee
+    result = StoreOp(None if op.slot == -1 else op.slot, Number(0, None, None), op.call.position)
+    if run.depth >= MOST_DEPTH:
+        yield _store(run, block, result, ANY, environment) if op.slot is not None else environment
         return
-    setting.followed.add(callee.identity)
-    instance = _instance_in(run, callee, call)
+    instance = _instance_in(run, callee, op.call)
+    if instance in setting.instances(callee.identity):
+        setting.followed.add(callee.identity)
     arguments = {
-        parameter.identity: _evaluate(run, block, argument, environment, call.position)
-        for parameter, argument in zip(callee.parameters, call.arguments, strict=False)
+        parameter.identity: _evaluate(run, block, argument, environment)
+        for parameter, argument in zip(callee.parameters, op.arguments, strict=False)
     }
-    exits = flow(setting, callee, instance, environment, arguments, run.depth + 1)
-    for leaving in exits or {Exit(environment.state, ANY)}:
-        after = environment._replace(state=leaving.state)
-        if call.result is not None:
-            after = _store(run, block, call.result, leaving.returned, after, call.position)
-        yield after
+    exits = flow(setting, callee, instance, environment.source, environment.state, arguments, run.depth + 1)
+    for leaving in exits or {Exit(environment.source, environment.state, ANY)}:
+        after = environment._replace(source=leaving.source, state=leaving.state)
+        yield _store(run, block, result, leaving.returned, after) if op.slot is not None else after
 
 
 def _instance_in(run: _Run, callee: Function, call: Call) -> str:
     """The way to the caller's object as the callee sees it."""
+    instance = run.instance
     for parameter, argument in zip(callee.parameters, call.arguments, strict=False):
         inner = uncast(argument)
         if isinstance(inner, Load):
-            prefix = f"*{instance_text(inner.place)}"
+            text = instance_text(inner.place)
+            instance = instance.replace(f"[{text}]", f"[{parameter.identity}]")
+            prefix = f"*{text}"
         elif isinstance(inner, AddressOf):
             prefix = instance_text(inner.place)
         else:
             continue
-        if run.instance.startswith((f"{prefix}.", f"{prefix}[")):
-            return f"*{parameter.identity}{run.instance[len(prefix) :]}"
-        if isinstance(inner, AddressOf) and run.instance == prefix:
+        if instance.startswith((f"{prefix}.", f"{prefix}[")):
+            return f"*{parameter.identity}{instance[len(prefix) :]}"
+        if isinstance(inner, AddressOf) and instance == prefix:
             return f"*{parameter.identity}"
-    return run.instance
+    return instance
 
 
-def _terminator(
-    run: _Run, number: int, environment: Environment, exits: set[Exit]
-) -> Iterator[tuple[int, Environment]]:
-    terminator = run.function.blocks[number].terminator
-    match terminator:
-        case Jump(target=target):
-            yield target, environment
-        case Return(value=value, position=position):
-            returned = _evaluate(run, number, value, environment, position) if value is not None else ANY
-            exits.add(Exit(environment.state, returned))
-        case Branch(condition=condition, then=then, otherwise=otherwise, position=position):
-            environment = _sourced(run, condition, environment)
-            outcome = _evaluate(run, number, condition, environment, position)
-            if outcome.kind != "known" or outcome.number:
-                yield then, _told(run, condition, environment, True)
-            if outcome.kind != "known" or not outcome.number:
-                yield otherwise, _told(run, condition, environment, False)
-        case Switch(value=control):
-            environment = _sourced(run, control, environment)
-            outcome = _evaluate(run, number, control, environment, terminator.syntax.position)
-            yield from _switch(run, terminator, control, outcome, environment)
+def _leave(
+    run: _Run, number: int, block: SliceBlock, environment: Environment
+) -> Iterator[tuple[tuple[int, ...], Environment]]:
+    test = block.test
+    assert test is not None
+    if block.cases:
+        for one in _split_for_switch(run, test, block, environment):
+            outcome = _evaluate(run, number, test, one)
+            if outcome.kind == "known":
+                targets = next(
+                    (case.targets for case in block.cases if case.low <= outcome.number <= case.high), block.otherwise
+                )
+                yield targets, _sourced(run, test, one)
+            else:
+                if outcome.kind == "any":
+                    for case in block.cases:
+                        told = _assume(test, one, case.low) if case.low == case.high else one
+                        yield case.targets, _sourced(run, test, told)
+                yield block.otherwise, _sourced(run, test, one)
+        return
+    for one in _split_for_branch(run, test, environment):
+        outcome = _evaluate(run, number, test, one)
+        if outcome.kind != "known" or outcome.number:
+            yield block.then, _sourced(run, test, _told(test, one, True))
+        if outcome.kind != "known" or not outcome.number:
+            yield block.otherwise, _sourced(run, test, _told(test, one, False))
 
 
-def _switch(
-    run: _Run, terminator: Switch, control: Expr, outcome: Value, environment: Environment
-) -> Iterator[tuple[int, Environment]]:
-    for case in terminator.cases:
-        if outcome.kind == "known":
-            if case.low <= outcome.number <= case.high:
-                yield case.target, environment
-                return
-        elif outcome.kind == "other":
-            # A value that the function does not mention can still lie inside a range of labels.
-            if case.high - case.low > 64:
-                yield case.target, environment
-        elif case.low == case.high:
-            yield case.target, _sourced(run, control, _assume(run, control, environment, case.low))
+def _split_for_switch(run: _Run, test: Term, block: SliceBlock, environment: Environment) -> Iterator[Environment]:
+    """A dispatch on "any value": one environment for each label, one for the rest."""
+    inner = _uncast(test)
+    value = _of(inner, environment)
+    if value is None or value.kind != "other":
+        yield environment
+        return
+    labels: list[int] = []
+    for case in block.cases:
+        inside = range(case.low, case.high + 1)
+        if len(inside) <= 64:
+            labels.extend(inside)
         else:
-            yield case.target, environment
-    yield terminator.default, environment
+            labels.extend(number for number in sorted(run.setting.mentioned) if number in inside)
+    yield from _each(inner, value, labels, environment)
 
 
-def _sourced(run: _Run, test: Expr, environment: Environment) -> Environment:
-    """At a dispatch or test of the state its value becomes the source of what follows."""
-    for value in _tested(run, test, environment):
-        if value.kind != "any":
-            return environment._replace(source=Value(value.kind, value.number))
+def _split_for_branch(run: _Run, test: Term, environment: Environment) -> Iterator[Environment]:
+    """A test of "any value": split by its constant, or by all values mentioned where the test is no equality."""
+    for inner in _tested(test):
+        value = _of(inner, environment)
+        if value is not None and value.kind == "other":
+            numbers = _equality(test)
+            yield from _each(inner, value, sorted(run.setting.mentioned) if numbers is None else numbers, environment)
+            return
+    yield environment
+
+
+def _equality(test: Term) -> list[int] | None:
+    test = _uncast(test)
+    if isinstance(test, UnaryTerm) and test.op == "!":
+        return _equality(test.operand)
+    if isinstance(test, StateTerm | HelperTerm):
+        return [0]
+    if isinstance(test, BinaryTerm) and test.op in ("==", "!="):
+        for side in (test.left, test.right):
+            side = _uncast(side)
+            if isinstance(side, Number):
+                return [side.number]
+    return None
+
+
+def _each(term: Term, value: Value, numbers: list[int], environment: Environment) -> Iterator[Environment]:
+    for number in dict.fromkeys(numbers):
+        if number not in value.excluded:
+            yield _set(term, environment, Value("known", number, None))
+    yield _set(term, environment, value._replace(excluded=value.excluded | frozenset(numbers)))
+
+
+def _set(term: Term, environment: Environment, value: Value) -> Environment:
+    if isinstance(term, HelperTerm):
+        helpers = environment.helpers
+        copied = environment._replace(helpers=(*helpers[: term.slot], value, *helpers[term.slot + 1 :]))
+        # A copy that still equals the state tells about the state as well.
+        same = helpers[term.slot] == environment.state
+        return copied._replace(state=value) if same else copied
+    if isinstance(term, StateTerm):
+        helpers = tuple(value if helper == environment.state else helper for helper in environment.helpers)
+        return environment._replace(state=value, helpers=helpers)
     return environment
 
 
-def _tested(run: _Run, test: Expr, environment: Environment) -> Iterator[Value]:
-    stack = [test]
-    while stack:
-        node = stack.pop()
-        if isinstance(node, Load):
-            if _is_state(node.place, run.function, run.setting.key, run.instance):
-                yield environment.state
-            elif isinstance(node.place, VariablePlace):
-                slot = run.slots.get(node.place.variable.identity)
-                # Only a copy of the state counts, not a constant meant for it.
-                if slot is not None and environment.helpers[slot].chosen is None:
-                    yield environment.helpers[slot]
-        elif isinstance(node, Cast | Unary):
-            stack.append(node.operand)
-        elif isinstance(node, Binary):
-            stack.extend((node.left, node.right))
+def _of(term: Term, environment: Environment) -> Value | None:
+    if isinstance(term, StateTerm):
+        return environment.state
+    return environment.helpers[term.slot] if isinstance(term, HelperTerm) else None
 
 
-def _told(run: _Run, condition: Expr, environment: Environment, true: bool) -> Environment:
-    """What an equality test tells of a value that was not known."""
-    condition = uncast(condition)
-    if isinstance(condition, Unary) and condition.op == "!":
-        return _told(run, condition.operand, environment, not true)
-    if isinstance(condition, Binary) and condition.op in ("==", "!="):
-        if (condition.op == "==") == true:
-            for side, other in ((condition.left, condition.right), (condition.right, condition.left)):
-                number = uncast(other)
-                if isinstance(number, Const):
-                    told = _assume(run, side, environment, number.value)
-                    return _sourced(run, side, told) if told is not environment else environment
+def _uncast(term: Term) -> Term:
+    while isinstance(term, CastTerm):
+        term = term.operand
+    return term
+
+
+def _tested(term: Term) -> Iterator[Term]:
+    """The state and the helpers that a test reads."""
+    term = _uncast(term)
+    if isinstance(term, StateTerm | HelperTerm):
+        yield term
+    elif isinstance(term, UnaryTerm):
+        yield from _tested(term.operand)
+    elif isinstance(term, BinaryTerm):
+        yield from _tested(term.left)
+        yield from _tested(term.right)
+
+
+def _sourced(run: _Run, test: Term, environment: Environment) -> Environment:
+    """At a dispatch or test of the state (or a copy of it) its value becomes the source of what follows."""
+    for term in _tested(test):
+        value = _of(term, environment)
+        if value is None or value.kind == "any" or (isinstance(term, HelperTerm) and value.chosen is not None):
+            continue  # a constant meant for the state is no copy of it
+        return environment._replace(source=value._replace(chosen=None))
     return environment
 
 
-def _assume(run: _Run, expr: Expr, environment: Environment, number: int) -> Environment:
-    inner = uncast(expr)
-    if isinstance(inner, Load):
-        if _is_state(inner.place, run.function, run.setting.key, run.instance):
-            if environment.state.kind == "any":
-                return environment._replace(state=Value("known", number))
-        elif isinstance(inner.place, VariablePlace):
-            slot = run.slots.get(inner.place.variable.identity)
-            if slot is not None and environment.helpers[slot].kind == "any":
-                return _with_helper(run, environment, inner.place.variable.identity, Value("known", number))
+def _told(test: Term, environment: Environment, true: bool) -> Environment:
+    """What an equality test tells of a value that was computed and not known."""
+    test = _uncast(test)
+    if isinstance(test, UnaryTerm) and test.op == "!":
+        return _told(test.operand, environment, not true)
+    if isinstance(test, BinaryTerm) and test.op in ("==", "!=") and (test.op == "==") == true:
+        for side, other in ((test.left, test.right), (test.right, test.left)):
+            number = _uncast(other)
+            if isinstance(number, Number):
+                return _assume(side, environment, number.number)
     return environment
 
 
-def _evaluate(run: _Run, block: int, expr: Expr, environment: Environment, at: Position) -> Value:
-    match expr:
-        case Const(value=number, position=position, name=name):
+def _assume(term: Term, environment: Environment, number: int) -> Environment:
+    term = _uncast(term)
+    value = _of(term, environment)
+    return _set(term, environment, Value("known", number)) if value is not None and value.kind == "any" else environment
+
+
+def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Value:
+    match term:
+        case Number(number=number, position=position, name=name):
             return Value("known", number, Chosen(block, position, name))
-        case Load(place=place):
-            if _is_state(place, run.function, run.setting.key, run.instance):
-                return environment.state
-            if isinstance(place, VariablePlace):
-                slot = run.slots.get(place.variable.identity)
-                if slot is not None:
-                    return environment.helpers[slot]
-            return ANY
-        case Cast(operand=operand, type=type_):
-            value = _evaluate(run, block, operand, environment, at)
-            if value.kind == "known" and isinstance(type_, IntType | PointerType):
-                return value._replace(number=convert(value.number, type_))
-            return value
-        case Unary(op=op, operand=operand, type=type_):
-            value = _evaluate(run, block, operand, environment, at)
-            if value.kind == "known":
-                result = apply_unary(op, value.number, type_)
-                return ANY if result is None else Value("known", result, Chosen(block, at, None))
-            return ANY
-        case Binary(op=op, left=left, right=right, type=type_):
-            a = _evaluate(run, block, left, environment, at)
-            b = _evaluate(run, block, right, environment, at)
+        case StateTerm():
+            return environment.state
+        case HelperTerm(slot=slot):
+            return environment.helpers[slot]
+        case CastTerm(operand=operand, type=type_):
+            value = _evaluate(run, block, operand, environment)
+            return value._replace(number=convert(value.number, type_)) if value.kind == "known" else value
+        case UnaryTerm(op=op, operand=operand, type=type_):
+            value = _evaluate(run, block, operand, environment)
+            result = apply_unary(op, value.number, type_) if value.kind == "known" else None
+            return ANY if result is None else Value("known", result, Chosen(block, None, None))
+        case BinaryTerm(op=op, left=left, right=right, type=type_):
+            a = _evaluate(run, block, left, environment)
+            b = _evaluate(run, block, right, environment)
             if a.kind == "known" and b.kind == "known":
                 result = apply_binary(op, a.number, b.number, type_)
-                return ANY if result is None else Value("known", result, Chosen(block, at, None))
-            if op in ("==", "!=") and {a.kind, b.kind} == {"other", "known"}:
-                number = a.number if a.kind == "known" else b.number
-                if number in run.setting.mentioned:
-                    return Value("known", int(op == "!="))
-            return ANY
+                return ANY if result is None else Value("known", result, Chosen(block, None, None))
+            if op in ("==", "!="):
+                for known, rest in ((a, b), (b, a)):
+                    if known.kind == "known" and rest.kind == "other" and known.number in rest.excluded:
+                        return Value("known", int(op == "!="))
     return ANY
 
 
@@ -451,7 +443,7 @@ def guard_text(function: Function, block: int, key: str) -> str:
     return " && ".join(reversed(parts))
 
 
-def _targets(terminator: object) -> tuple[int, ...]:
+def _targets(terminator: Terminator) -> tuple[int, ...]:
     match terminator:
         case Jump(target=target):
             return (target,)

@@ -21,7 +21,8 @@ class State:
     ``declared``: a constant of the enumeration or ``#define`` group that the machine's constants come from.
     ``labelled``: some dispatch has a case for it. ``tested``: compared with ``==`` or ``!=``. ``stored``: some code
     stores it. ``initial``: the value at start.
-    ``where`` is its declaration if known, else its first use.
+    ``where`` is its declaration if known, else its first use. ``elsewhere`` names another variable that the same
+    constant is stored in, which may be the same memory under another type.
     """
 
     name: str
@@ -32,6 +33,7 @@ class State:
     tested: bool
     stored: bool
     initial: bool
+    elsewhere: str = ""
 
 
 @dataclass(frozen=True, slots=True)
