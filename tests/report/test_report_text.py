@@ -7,7 +7,16 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from stepring.report.text import clean, escape_message, joined, one_sentence, printable, shown_path, unescape_message
+from stepring.report.text import (
+    clean,
+    escape_message,
+    function_name,
+    joined,
+    one_sentence,
+    printable,
+    shown_path,
+    unescape_message,
+)
 
 ANY_TEXT = st.text(alphabet=st.one_of(st.sampled_from("\\[]{}()ab0 "), st.characters()))
 
@@ -54,3 +63,8 @@ def test_paths_are_shown_relative_to_where_one_is() -> None:
     assert shown_path("/barge2/auger.c", Path("/barge")) == "/barge2/auger.c"
     assert shown_path("feed/../auger.c", Path("/barge")) == "auger.c"
     assert shown_path("/auger.c", Path("/")) == "auger.c"
+
+
+def test_a_static_function_is_shown_by_its_name() -> None:
+    assert function_name("/barge/feed/auger.c:auger_poll") == "auger_poll"
+    assert function_name("auger_poll") == "auger_poll"

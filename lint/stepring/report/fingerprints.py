@@ -11,6 +11,7 @@ from collections.abc import Iterable
 
 from stepring.places import Origin
 from stepring.report.sources import Sources
+from stepring.report.text import function_name
 from stepring.rule import Obligation
 
 KEY = "stepring/v1"
@@ -32,7 +33,7 @@ def fingerprints(ordered: Iterable[Obligation], sources: Sources) -> dict[Obliga
     seen: dict[tuple[str, str, str, str], int] = defaultdict(int)
     made: dict[Obligation, str] = {}
     for one in ordered:
-        parts = (one.rule, one.function or "", one.subject or "", _line_text(one.where, sources))
+        parts = (one.rule, function_name(one.function or ""), one.subject or "", _line_text(one.where, sources))
         seen[parts] += 1
         text = "\0".join((*parts, str(seen[parts])))
         made[one] = hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()[:32]

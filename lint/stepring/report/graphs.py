@@ -14,7 +14,7 @@ import networkx
 import sarif_om as om
 
 from stepring.report.locations import Register, message
-from stepring.report.text import clean, escape_message
+from stepring.report.text import clean, escape_message, function_name
 from stepring.shapes.types import Machine, State, Transition
 
 
@@ -29,7 +29,7 @@ def graph_of(machine: Machine, index: int, register: Register, verdicts: Mapping
         properties={
             "index": index,
             "variable": clean(machine.variable),
-            "functions": sorted({clean(dispatch.function) for dispatch in machine.dispatches}),
+            "functions": sorted({clean(function_name(dispatch.function)) for dispatch in machine.dispatches}),
             "initial": [clean(name) for name in machine.initial],
             "form": clean(machine.form),
             "uri": place.uri,
@@ -74,7 +74,7 @@ def _edge(number: int, step: Transition, register: Register) -> Any:
         source_node_id=clean(step.source),
         target_node_id=clean(step.target),
         label=message(step.guard) if step.guard else None,
-        properties={"function": clean(step.function), "uri": source.uri, "line": step.where.line},
+        properties={"function": clean(function_name(step.function)), "uri": source.uri, "line": step.where.line},
     )
 
 
@@ -105,7 +105,7 @@ def _list_of(names: Sequence[str]) -> str:
 
 def _step_text(step: Transition) -> str:
     guard = f" if {step.guard}" if step.guard else ""
-    return f"{step.function} goes from {step.source} to {step.target}{guard}."
+    return f"{function_name(step.function)} goes from {step.source} to {step.target}{guard}."
 
 
 def _walk(machine: Machine, states: Sequence[str]) -> list[tuple[int, Transition]]:

@@ -15,7 +15,7 @@ from rich.text import Text
 
 from stepring.places import Origin
 from stepring.report.sources import Sources
-from stepring.report.text import one_sentence, printable, shown_path
+from stepring.report.text import function_name, one_sentence, printable, shown_path
 from stepring.report.types import Outcome
 from stepring.report.words import CAUTION, count, coverage_sentence
 from stepring.shapes.types import Access, Index, Machine, Ring, State, StateStore, Transition
@@ -90,7 +90,7 @@ def _print_table(console: Console, columns: Sequence[str], rows: Iterable[Sequen
 
 def _print_machine(console: Console, machine: Machine, sources: Sources, base: Path | None) -> None:
     _print_heading(console, f"State machine {machine.variable}")
-    functions = sorted({dispatch.function for dispatch in machine.dispatches})
+    functions = sorted({function_name(dispatch.function) for dispatch in machine.dispatches})
     _print_facts(
         console,
         [
@@ -121,15 +121,15 @@ def _state_row(state: State) -> tuple[str, str, str]:
 
 
 def _transition_row(step: Transition) -> tuple[str, str, str, str, str]:
-    return step.source, step.target, step.function, step.guard, str(step.where.line)
+    return step.source, step.target, function_name(step.function), step.guard, str(step.where.line)
 
 
 def _store_row(store: StateStore, beside: Origin, sources: Sources, base: Path | None) -> tuple[str, str, str]:
     place = str(store.where.line)
     if store.where.file != beside.file:
         place = f"{_file(store.where, sources, base)}:{place}"
-    through = f" through {store.through}" if store.through else ""
-    function = "(initial value)" if store.initial and not store.function else store.function
+    through = f" through {function_name(store.through)}" if store.through else ""
+    function = "(initial value)" if store.initial and not store.function else function_name(store.function)
     if store.values is None:
         return function + through, f"unknown: {store.why_unknown or 'the value was not settled'}", place
     return function + through, ", ".join(name for name, _ in store.values), place
@@ -168,12 +168,12 @@ def _print_ring(console: Console, ring: Ring, sources: Sources, base: Path | Non
 
 
 def _users(accesses: Iterable[Access], kind: str) -> str:
-    return ", ".join(sorted({access.function for access in accesses if access.kind == kind}))
+    return ", ".join(sorted({function_name(access.function) for access in accesses if access.kind == kind}))
 
 
 def _index_row(index: Index) -> tuple[str, str, str, str, str, str]:
     type_name = f"{index.type_name} ({index.low} to {index.high})"
-    steps = ", ".join(sorted({f"{step.function} ({step.wrap})" for step in index.steps}))
+    steps = ", ".join(sorted({f"{function_name(step.function)} ({step.wrap})" for step in index.steps}))
     initial = "unknown" if index.initial is None else str(index.initial)
     return index.name, type_name, index.role, initial, _orbit_words(index.orbit), steps
 

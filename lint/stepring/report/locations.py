@@ -107,8 +107,12 @@ def content(text: str) -> Any:
     shown = clean(text)
     if shown == text:
         return om.ArtifactContent(text=text)
-    raw = base64.b64encode(text.encode("utf-8", "surrogateescape")).decode("ascii")
-    return om.ArtifactContent(binary=raw, rendered=om.MultiformatMessageString(text=escape_message(text)))
+    rendered = om.MultiformatMessageString(text=escape_message(text))
+    try:
+        raw = text.encode("utf-8", "surrogateescape")
+    except UnicodeEncodeError:  # a spelling that came from no file; of a file's text only bytes are undecodable
+        return om.ArtifactContent(rendered=rendered)
+    return om.ArtifactContent(binary=base64.b64encode(raw).decode("ascii"), rendered=rendered)
 
 
 def columns_of(where: Origin, source: Source) -> tuple[int, int] | None:

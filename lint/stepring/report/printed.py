@@ -17,7 +17,7 @@ from rich.text import Text
 from stepring.places import Origin
 from stepring.report.fingerprints import in_order
 from stepring.report.sources import Sources
-from stepring.report.text import one_sentence, printable, shown_path
+from stepring.report.text import function_name, one_sentence, printable, shown_path
 from stepring.report.types import Outcome
 from stepring.report.words import CAUTION, count, coverage_sentence, level_of, verdict_summary, verdict_words
 from stepring.rule import Obligation, Rule, WitnessStep
@@ -92,7 +92,7 @@ def _line_words(where: Origin) -> str:
 def _rows(one: Obligation, rule: Rule | None, sources: Sources, base: Path | None) -> Iterable[tuple[str, str]]:
     """The card's labels and texts, without those that have nothing to say."""
     source = (sources.of(one.where.file).line(one.where.line) or one.where.spelling).strip()
-    inside = [f"in {one.function}" if one.function else "", f"on {one.subject}" if one.subject else ""]
+    inside = [f"in {function_name(one.function)}" if one.function else "", f"on {one.subject}" if one.subject else ""]
     see = [f"{_place(other.where, one.where, sources, base)}: {one_sentence(other.text)}" for other in one.related]
     texts = {
         "Finding": one_sentence(one.what),

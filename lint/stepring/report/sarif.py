@@ -22,7 +22,7 @@ from stepring.report.locations import Register, message
 from stepring.report.provenance import Checkout, checkout_of
 from stepring.report.serialise import JSON, SCHEMA, log_to_json
 from stepring.report.sources import BASES, CHECKOUT_BASE, OUTSIDE_BASE, ROOT_BASE, Sources
-from stepring.report.text import clean, escape_message, joined, one_sentence
+from stepring.report.text import clean, escape_message, function_name, joined, one_sentence
 from stepring.report.types import Outcome
 from stepring.report.words import level_of
 from stepring.rule import Obligation, Rule
@@ -135,7 +135,7 @@ def _verdicts(ordered: Iterable[Obligation]) -> Mapping[str, list[str]]:
 
 def _result(one: Obligation, run: _Run) -> Any:
     register = run.register
-    logical = [] if one.function is None else [register.function(one.function)]
+    logical = [] if one.function is None else [register.function(function_name(one.function))]
     if one.subject is not None:
         logical.append(register.subject(one.subject, one.subject_kind))
     made = om.Result(
@@ -170,7 +170,7 @@ def _result_message(one: Obligation, register: Register, known: bool) -> Any:
         f"[{escape_message(_short_place(related.where, register))}]({number})"
         for number, related in enumerate(one.related[:3], start=1)
     ]
-    place = one.function or register.sources.of(one.where.file).uri
+    place = function_name(one.function or "") or register.sources.of(one.where.file).uri
     full = text + (f" See {' and '.join(links)}." if links else "")
     if not known:  # then there is no general wording either
         return om.Message(text=full)

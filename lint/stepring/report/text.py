@@ -51,6 +51,11 @@ def _shown(character: str) -> str:
     return f"\\u{code:04x}" if code <= 0xFFFF else f"\\U{code:08x}"
 
 
+def function_name(identity: str) -> str:
+    """A function's name in C: the identity of a static one is ``file:name``."""
+    return identity.rpartition(":")[2]
+
+
 def one_sentence(text: str) -> str:
     """The text on one line, blanks collapsed, with a period at its end; empty stays empty."""
     line = " ".join(text.split())
