@@ -82,6 +82,14 @@ def test_the_exit_code_follows_the_fail_level(
     assert main(["inspect", *option]) == code
 
 
+def test_the_settings_of_a_project_give_the_fail_level_unless_the_command_line_does(
+    outcome: Outcome, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    answer_with(monkeypatch, replace(outcome, fail_level="none"))
+    assert main(["inspect"]) == 0
+    assert main(["inspect", "--fail-level", "error"]) == 1
+
+
 @pytest.mark.parametrize("kind", ["open", "pass", "review"])
 def test_only_failures_make_the_exit_code(outcome: Outcome, monkeypatch: pytest.MonkeyPatch, kind: Any) -> None:
     found = replace(outcome.obligations[0], kind=kind, level=None)

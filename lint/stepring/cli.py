@@ -37,6 +37,7 @@ from stepring.rule import LEVELS, load_rules
 Function = TypeVar("Function", bound=Callable[..., Any])
 
 FOUND_NOTHING, FOUND_SOMETHING, NOT_DONE = 0, 1, 2
+DEFAULT_FAIL_LEVEL = "warning"
 
 # Set to anything, it makes an internal failure show its traceback: for those who mend stepring.
 TRACEBACK_VARIABLE = "STEPRING_TRACEBACK"
@@ -118,13 +119,11 @@ def _reading_options(function: Function) -> Function:
     return function
 
 
-def _fail_level_option(default: str) -> Callable[[Function], Function]:
+def _fail_level_option(unless_given: str) -> Callable[[Function], Function]:
     return click.option(
         "--fail-level",
         type=click.Choice((*reversed(LEVELS), "none")),
-        default=default,
-        show_default=True,
-        help="The lowest level of a failure that makes the exit code 1.",
+        help=f"The lowest level of a failure that makes the exit code 1; {unless_given}.",
     )
 
 
@@ -136,8 +135,8 @@ def commands() -> None:
 
 @commands.command()
 @_reading_options
-@_fail_level_option("warning")
-def inspect(fail_level: str, **given: Any) -> int:
+@_fail_level_option("the default is that of stepring.toml, else warning")
+def inspect(fail_level: str | None, **given: Any) -> int:
     """Run the rules on the C below each PATH and report what they find.
 
     Without PATH the current folder is inspected. Exit code 0: nothing at or above the fail level; 1: something; 2:
@@ -148,13 +147,13 @@ def inspect(fail_level: str, **given: Any) -> int:
 
 @commands.command()
 @_reading_options
-@_fail_level_option("none")
-def inventory(fail_level: str, **given: Any) -> int:
+@_fail_level_option("the default is none")
+def inventory(fail_level: str | None, **given: Any) -> int:
     """List the state machines and rings of the C below each PATH, with their tables.
 
     Without PATH the current folder is inspected.
     """
-    return _run(fail_level, print_report_kind=_write_inventory, **given)
+    return _run(fail_level or "none", print_report_kind=_write_inventory, **given)
 
 
 @commands.command()
@@ -186,7 +185,7 @@ def _refuse(text: str) -> NoReturn:
 
 
 def _run(
-    fail_level: str,
+    fail_level: str | None,
     print_report_kind: Callable[[Outcome, Console, str, Sequence[str]], None],
     paths: tuple[Path, ...],
     compile_commands: Path | None,
@@ -210,7 +209,7 @@ def _run(
     )
     with _progress() as progress:
         outcome = pipeline.inspect(paths, options, progress)
-    code = exit_code(outcome, fail_level)
+    code = exit_code(outcome, fail_level or outcome.fail_level or DEFAULT_FAIL_LEVEL)
     trouble = None if sarif is None else _write_sarif(outcome, sarif, kinds, code)
     notices = outcome.notices if trouble is None else (*outcome.notices, trouble)
     for sentence in notice_sentences(notices):

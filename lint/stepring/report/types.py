@@ -20,8 +20,10 @@ class Coverage:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Outcome:
-    """A run's whole result; reported paths are relative to ``root``. ``models`` are the data models the units were
-    read with.
+    """A run's whole result; reported paths are relative to ``root``.
+
+    ``models`` are the data models the units were read with. ``fail_level`` is what the project's settings say about the
+    exit code, None where they say nothing.
     """
 
     root: Path
@@ -31,3 +33,4 @@ class Outcome:
     notices: tuple[Notice, ...]
     coverage: Coverage
     models: tuple[str, ...]
+    fail_level: str | None = None
