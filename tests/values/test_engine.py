@@ -29,6 +29,12 @@ from .build import (
     static,
 )  # fmt: skip
 
+
+def known(table):  # type: ignore[no-untyped-def]
+    """A table as the function that the surroundings ask."""
+    return lambda name, caller: table.get(name)
+
+
 HEAD = static("head", U8)
 COUNT = static("count", U16)
 HEAD_CELL = VariableCell(HEAD.identity)
@@ -137,7 +143,7 @@ def test_unknown_code_gives_lasting_cells_their_summary_again() -> None:
 def test_an_effect_changes_what_it_says_and_nothing_else() -> None:
     body = Body().set(HEAD, 3).set(COUNT, 2).call("poll").give(op("+", load(HEAD), load(COUNT)))
     effect = Effect({HEAD_CELL: Interval(5, 6, 1)}, certain=frozenset((HEAD_CELL,)))
-    around = Surroundings(effects={"poll": effect}.get)
+    around = Surroundings(effects=known({"poll": effect}))
     assert analyse(body.function(variables=[HEAD, COUNT], returns=INT), None, around).returned == Interval(7, 8, 1)
 
 
@@ -154,7 +160,7 @@ def test_a_body_runs_in_place_on_the_callers_objects() -> None:
     caller = body.give(op("+", op("*", load(member(at(hopper), "head", U8)), 100), load(x))).function(
         "feed", variables=[hopper, x], returns=INT
     )
-    around = Surroundings(bodies={"advance": advance}.get)
+    around = Surroundings(bodies=known({"advance": advance}))
     assert analyse(caller, None, around).returned == Interval(7, 7, 0)
 
 
@@ -165,7 +171,7 @@ def test_an_index_behind_a_pointer_that_is_passed_on() -> None:
     target = DerefPlace(load(index), U8)
     step = Body().set(target, op("%", op("+", load(target), 1), 10)).function("step", [index])
     body = Body().set(HEAD, 9).call("step", address(HEAD)).give(load(HEAD))
-    found = analyse(body.function(variables=[HEAD], returns=U8), None, Surroundings(bodies={"step": step}.get))
+    found = analyse(body.function(variables=[HEAD], returns=U8), None, Surroundings(bodies=known({"step": step})))
     assert found.returned == Interval(0, 0, 0)
 
 

@@ -321,7 +321,7 @@ def examine(random: Random, pointers: bool, summarised: bool) -> None:
         return values.high if edge < 0.4 else random.randint(values.low, min(values.high, values.low + 300))
 
     bodies = {"step": inner} if in_place else {}
-    values = analyse(function, None, Surroundings(limits, exposure, bodies=bodies.get))
+    values = analyse(function, None, Surroundings(limits, exposure, bodies=lambda name, caller: bodies.get(name)))
     results: list[Value | None] = []
     for _ in range(4):
         memory: dict[Address, Value] = {}

@@ -27,15 +27,16 @@ from stepring.meaning.types import (
     StructType,
     Switch,
     Terminator,
+    Unknown,
     Variable,
     VariablePlace,
 )
 from stepring.values.addresses import facts_of, is_fixed
 from stepring.values.frames import Binding, Frame
-from stepring.values.intervals import UNBOUNDED, constant, convert, number_type, whole, within
+from stepring.values.intervals import UNBOUNDED, constant, convert, is_subset, number_type, union, whole, within
 from stepring.values.library import CONTRACTS, Contract
 from stepring.values.refine import assume, refine_by_case, refine_by_default
-from stepring.values.spots import Places, Spot
+from stepring.values.spots import Places, Spot, Steps
 from stepring.values.states import (
     State,
     View,
@@ -46,7 +47,7 @@ from stepring.values.states import (
     store_spot,
 )
 from stepring.values.surroundings import Effect, Record, Surroundings
-from stepring.values.types import Cell, Interval, VariableCell
+from stepring.values.types import Cell, FieldCell, Interval, VariableCell
 
 Edge: TypeAlias = tuple[int, State]
 
@@ -120,8 +121,8 @@ class Execution(ABC):
             kind = kind.element
         exposure = self.surroundings.exposure
         if isinstance(kind, StructType) and kind is place.type and exposure is not None:
-            for path, member in exposure.members.get(kind.identity, {}).items():
-                view.frame.spot(member_place(place, kind.identity, path, member))
+            for steps in exposure.members.get(kind.identity, ()):
+                view.frame.spot(member_place(place, steps))
         length = len(access.path)
         result: list[Spot] = []
         for spot in self.places.all():
@@ -145,19 +146,14 @@ class Execution(ABC):
         """A call; False if it does not come back."""
         name = call.callee.name if isinstance(call.callee, FunctionName) else None
         result: Interval | None = None
-        body = self.body(name, stack)
+        body = self.body(name, view.frame.function, stack)
         if name is not None and body is not None:
             inner = self.enter(view, call, body, stack, record)
             if inner is None:
                 return False
             result = inner
         else:
-            if record is not None and name not in CONTRACTS:
-                if name is None:
-                    record.calls_unknown = True
-                else:
-                    record.called.add(name)
-            effect = self.surroundings.effects(name) if name is not None else None
+            effect = self.surroundings.effects(name, view.frame.function) if name is not None else None
             contract = CONTRACTS.get(name) if name is not None and effect is None else None
             if contract is not None:
                 if not contract.returns:
@@ -166,6 +162,8 @@ class Execution(ABC):
             else:
                 if record is not None:
                     record.looks.append(view.state.copy())
+                    if effect is not None:
+                        record.pass_to(effect.callee, [view.evaluate(argument) for argument in call.arguments])
                 result = self.outside(view, effect)
                 if effect is not None and not effect.comes_back:
                     return False
@@ -178,11 +176,11 @@ class Execution(ABC):
                 view.store(call.result, value if value is not None else whole(kind))
         return True
 
-    def body(self, name: str | None, stack: tuple[str, ...]) -> Function | None:
+    def body(self, name: str | None, caller: Function, stack: tuple[str, ...]) -> Function | None:
         """The body to run in place for a callee, if there is one and the nesting allows it."""
         if name is None or len(stack) > self.surroundings.depth:
             return None
-        body = self.surroundings.bodies(name)
+        body = self.surroundings.bodies(name, caller)
         return body if body is not None and body.identity not in stack else None
 
     def frame_for(self, view: View, call: Call, body: Function) -> Frame:
@@ -224,6 +222,10 @@ class Execution(ABC):
         self, view: View, call: Call, body: Function, stack: tuple[str, ...], record: Record | None
     ) -> Interval | None:
         """Run a callee in place; its result (``UNBOUNDED`` if it has none), or None if it does not come back."""
+        if record is not None:
+            record.enter(
+                body.identity, [view.evaluate(argument) for argument in call.arguments], self.deviations(view.state)
+            )
         inner = self.begin(view, call, body)
         frame = inner.frame
         inner_stack = (*stack, body.identity)
@@ -241,6 +243,18 @@ class Execution(ABC):
         self.drop_frame(frame, after)
         view.state = after
         return result
+
+    def deviations(self, state: State) -> dict[Cell, Interval]:
+        """The lasting cells that hold more than their summaries say."""
+        found: dict[Cell, Interval] = {}
+        for spot, value in state.values.items():
+            if spot.private or spot.cell is None or not spot.tracked:
+                continue
+            value = read_spot(self.places, state, spot) if spot.definite else value
+            if not is_subset(value, spot.default):
+                known = found.get(spot.cell)
+                found[spot.cell] = value if known is None else union(known, value)
+        return found
 
     def give_result(self, view: View, terminator: Return) -> None:
         """Keep a return value for the caller, in a place of its own."""
@@ -284,7 +298,8 @@ class Execution(ABC):
 
     def _write_cell(self, view: View, cell: Cell, value: Interval | None, certain: bool) -> None:
         state = view.state
-        touched = [spot for spot in self.places.all() if spot.cell == cell]
+        member = ("member", cell.struct, *cell.path) if isinstance(cell, FieldCell) else None
+        touched = [spot for spot in self.places.all() if spot.cell == cell or member in spot.buckets]
         if value is None:
             reach = set(touched)
             for spot in touched:
@@ -344,12 +359,15 @@ def _under(prefix: tuple[str, ...], path: tuple[str, ...]) -> bool:
     return all(x == y or (x[0] == y[0] == "[") for x, y in zip(prefix, path, strict=False))
 
 
-def member_place(base: PlaceExpr, struct: str, path: tuple[str, ...], kind: object) -> PlaceExpr:
-    """The place of a member of a structure by its path of names."""
+def member_place(base: PlaceExpr, steps: Steps) -> PlaceExpr:
+    """The place of a part of a structure; some element of each array on the way."""
     place = base
-    for name in path[:-1]:
-        place = MemberPlace(place, struct, name, StructType(struct))
-    return MemberPlace(place, struct, path[-1], kind)  # type: ignore[arg-type]
+    for struct, name, kind in steps:
+        if struct:
+            place = MemberPlace(place, struct, name, kind)
+        else:
+            place = ElementPlace(place, Unknown(IntType("int", 32, True, 4), "some element"), kind)
+    return place
 
 
 _RESULTS: dict[int, tuple[Function, VariablePlace]] = {}

@@ -9,6 +9,7 @@ pair, so results for it are the tightest strided interval there is.
 Every function is sound: each concrete result lies in the interval that is returned. ``None`` is the empty set.
 """
 
+from bisect import bisect_left, bisect_right
 from collections.abc import Callable, Iterable, Sequence
 from math import gcd
 from typing import Final
@@ -174,10 +175,12 @@ def widen(old: Interval | None, new: Interval | None, thresholds: Sequence[int])
     low, high = both.low, both.high
     step = both.stride or 1
     if low < old.low:
-        floor = max((value for value in thresholds if value <= low), default=UNBOUNDED.low)
+        place = bisect_right(thresholds, low)
+        floor = thresholds[place - 1] if place else UNBOUNDED.low
         low = floor + (low - floor) % step
     if high > old.high:
-        ceiling = min((value for value in thresholds if value >= high), default=UNBOUNDED.high)
+        place = bisect_left(thresholds, high)
+        ceiling = thresholds[place] if place < len(thresholds) else UNBOUNDED.high
         high = ceiling - (ceiling - high) % step
     return interval(low, high, step)
 

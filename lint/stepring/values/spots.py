@@ -15,17 +15,19 @@ A pointer that is set once, to an address that stays the same (``struct ring *r 
 points to.
 """
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TypeAlias
 
 from stepring.meaning.types import (
     CType,
 )
-from stepring.values.intervals import number_type, union, whole
-from stepring.values.types import Cell, FieldCell, Interval
+from stepring.values.intervals import number_type, union, whole, within
+from stepring.values.types import Cell, FieldCell, Interval, VariableCell
 
 Bucket: TypeAlias = tuple[object, ...]
+Steps: TypeAlias = tuple[tuple[str, str, CType], ...]
+"""A way into a structure: (structure, member, its type) for each step; ``("", "[]", type)`` for an array's elements."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,7 +44,7 @@ class Exposure:
     cells: frozenset[Cell] = frozenset()
     bytes_of: frozenset[str] = frozenset()
     unions: frozenset[str] = frozenset()
-    members: Mapping[str, Mapping[tuple[str, ...], CType]] = field(default_factory=dict)
+    members: Mapping[str, Sequence[Steps]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -97,6 +99,11 @@ class Spot:
 
     def __repr__(self) -> str:
         return f"<{self.root}{''.join(self.path)}{'' if self.definite else ' …'}>"
+
+
+def pointee_cell(width: object) -> Cell:
+    """The cell under which a program's summary keeps what is stored through pointers to integers of a width."""
+    return VariableCell("*", (str(width),))
 
 
 class Places:
@@ -154,6 +161,7 @@ class Places:
         pointee = access.reached and access.cell is None
         cell = access.cell
         volatile = access.volatile and not (cell is not None and self._steady(cell))
+        buckets = self._buckets_of(access, width, pointee)
         spot = Spot(
             root=access.root if definite or not access.reached else "?",
             path=access.path if definite else tuple("[]" if step.startswith("[") else step for step in access.path),
@@ -169,8 +177,8 @@ class Places:
             reached=access.reached,
             pointee=pointee,
             depends=access.depends if definite else (),
-            buckets=self._buckets_of(access, width, pointee),
-            default=self._default(access),
+            buckets=buckets,
+            default=self._default(access, buckets),
         )
         self._spots[key] = spot
         if definite:
@@ -184,21 +192,30 @@ class Places:
         self._version += 1
         return spot
 
-    def _default(self, access: Access) -> Interval:
+    def _default(self, access: Access, buckets: tuple[Bucket, ...]) -> Interval:
         """What a spot holds of which the state says nothing: what its cell's summary allows, and what stores through
-        pointers to the structure that it is a member of may have put there."""
+        pointers may have put there: those to the structure that it is a member of, those to a scalar."""
         anything = whole(access.type)
         if access.cell is None or not access.tracked or (access.local and not access.reached):
             return anything
         value = self.summaries.get(access.cell)
         if value is None:
             return anything
-        if access.view and (access.reached or access.exposed):
-            shared = FieldCell(access.view[0], access.view[1:])
-            if shared != access.cell:
-                also = self.summaries.get(shared)
-                return union(value, also) if also is not None else anything
-        return value
+        for bucket in buckets:
+            if bucket[0] == "member":
+                shared = FieldCell(access.view[0], access.view[1:])
+                also = self.summaries.get(shared) if shared != access.cell else value
+                if also is None:
+                    return anything
+                value = union(value, also)
+            elif bucket[0] in ("scalar", "bytes"):
+                width = bucket[1] if bucket[0] == "scalar" else 8
+                stored = self.summaries.get(pointee_cell(width))
+                if stored is not None:
+                    value = union(value, stored if within(stored, anything.low, anything.high) == stored else anything)
+                    if bucket[0] == "bytes" and anything.high > 255:
+                        return anything
+        return within(value, anything.low, anything.high) or anything
 
     def _buckets_of(self, access: Access, width: int, pointee: bool) -> tuple[Bucket, ...]:
         buckets: list[Bucket] = []

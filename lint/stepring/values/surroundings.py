@@ -21,7 +21,8 @@ class Effect:
     ``writes``: cells it may store into and what they then hold (None: what the summary says). ``certain``: cells
     among them that are stored on every path. ``through_pointers``: it also stores through pointers that it was
     given. ``returns``: its result, None for the type's range. ``comes_back``: False for a function that never
-    returns. ``outward``: it calls unknown code.
+    returns. ``outward``: it calls unknown
+    code. ``callee``: the function's identity.
     """
 
     writes: Mapping[Cell, Interval | None] = field(default_factory=dict)
@@ -30,9 +31,10 @@ class Effect:
     returns: Interval | None = None
     comes_back: bool = True
     outward: bool = False
+    callee: str = ""
 
 
-def _nothing(name: str) -> None:
+def _nothing(name: str, caller: Function) -> None:
     return None
 
 
@@ -46,16 +48,16 @@ class Surroundings:
 
     ``summaries``: what each lasting cell can hold whenever code of the program starts; a cell that is missing can
     hold anything. ``exposure``: what the program does with addresses; None where not all of it was read.
-    ``effects``: the effect of a callee by its C name. ``bodies``: the body of a callee that is to be run in place.
-    ``steady``: volatile cells that only the analysed code stores into. ``foreign``: cells that another context (an
-    interrupt) may store into at any moment. ``depth``: how deep bodies are nested. ``track_pointees``: follow what
-    pointers to scalars point to (they must not lead to device registers).
+    ``effects``: the effect of a callee by its C name and the function that calls it. ``bodies``: the body of a callee
+    that is to be run in place. ``steady``: volatile cells that only the analysed code stores into. ``foreign``: cells
+    that another context (an interrupt) may store into at any moment. ``depth``: how deep bodies are nested.
+    ``track_pointees``: follow what pointers to scalars point to (they must not lead to device registers).
     """
 
     summaries: Mapping[Cell, Interval] = field(default_factory=dict)
     exposure: Exposure | None = None
-    effects: Callable[[str], Effect | None] = _nothing
-    bodies: Callable[[str], Function | None] = _nothing
+    effects: Callable[[str, Function], Effect | None] = _nothing
+    bodies: Callable[[str, Function], Function | None] = _nothing
     steady: Callable[[Cell], bool] = _never
     foreign: Callable[[Cell], bool] = _never
     depth: int = 2
@@ -74,10 +76,26 @@ class Record:
     stored: dict[Cell, Interval] = field(default_factory=dict)
     left: dict[Cell, Interval] = field(default_factory=dict)
     pointees: dict[int, Interval] = field(default_factory=dict)
-    called: set[str] = field(default_factory=set)
-    calls_unknown: bool = False
+    arguments: dict[str, list[Interval]] = field(default_factory=dict)
+    entered: dict[str, tuple[list[Interval], dict[Cell, Interval]]] = field(default_factory=dict)
     returned: Interval | None = None
     looks: list[State] = field(default_factory=list)
+
+    def pass_to(self, callee: str, arguments: list[Interval]) -> None:
+        """Note the arguments of a call that is not run in place."""
+        known = self.arguments.get(callee)
+        if known is not None and len(known) == len(arguments):
+            arguments = [union(a, b) for a, b in zip(known, arguments, strict=True)]
+        self.arguments[callee] = arguments
+
+    def enter(self, callee: str, arguments: list[Interval], cells: dict[Cell, Interval]) -> None:
+        """Note a call run in place: its arguments, and lasting cells that hold more than their summaries say."""
+        known = self.entered.get(callee)
+        if known is not None:
+            arguments = [union(a, b) for a, b in zip(known[0], arguments, strict=False)]
+            for cell, value in known[1].items():
+                cells[cell] = union(cells[cell], value) if cell in cells else value
+        self.entered[callee] = (arguments, cells)
 
     def observe(self, spot: Spot, value: Interval) -> None:
         """Note a store."""
@@ -91,3 +109,6 @@ class Record:
         elif spot.cell is not None and number_type(spot.type) is not None:
             known = self.stored.get(spot.cell)
             self.stored[spot.cell] = value if known is None else union(known, value)
+            if not spot.tracked:
+                known = self.left.get(spot.cell)
+                self.left[spot.cell] = value if known is None else union(known, value)
