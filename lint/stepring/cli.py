@@ -6,12 +6,13 @@ nothing at or above the fail level; 1, something; 2, the work could not be done.
 """
 
 import dataclasses
+import errno
 import io
 import os
 import sys
 import traceback
 from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import Any, NoReturn, TypeVar
 
@@ -162,18 +163,20 @@ def rule(identity: str | None) -> int:
     """Show a rule's page, or without ID the list of rules."""
     rules = {known.id: known for known in load_rules()}
     if identity is None:
-        for known in rules.values():
-            click.echo(f"{known.id}  {known.level:7}  {one_sentence(known.summary)}")
+        with _writing():
+            for known in rules.values():
+                click.echo(f"{known.id}  {known.level:7}  {one_sentence(known.summary)}")
         return FOUND_NOTHING
     chosen = rules.get(identity) or rules.get(identity.upper())
     if chosen is None:
         _refuse(f"there is no rule {printable(identity)!r}; `stepring rule` lists all")
     page = page_of(chosen) or f"# {chosen.id} {chosen.name}\n\n{one_sentence(chosen.summary)}"
     console = _console()
-    if console.is_terminal:
-        console.print(Markdown(page))
-    else:
-        click.echo(page.rstrip("\n"))
+    with _writing():
+        if console.is_terminal:
+            console.print(Markdown(page))
+        else:
+            click.echo(page.rstrip("\n"))
     return FOUND_NOTHING
 
 
@@ -217,7 +220,8 @@ def _run(
     form = report or ("none" if sarif == "-" else "full")
     if form != "none":
         # Standard output belongs to the log if that was sent there.
-        print_report_kind(outcome, _console(stderr=sarif == "-"), form, kinds)
+        with _writing():
+            print_report_kind(outcome, _console(stderr=sarif == "-"), form, kinds)
     return code if trouble is None else NOT_DONE
 
 
@@ -236,8 +240,10 @@ def _write_sarif(outcome: Outcome, target: str, kinds: Sequence[str], code: int)
     """Write the log whole or not at all; what stood in the way, if it could not be written."""
     data = to_bytes(sarif_log(outcome, kinds, code))
     if target == "-":
-        sys.stdout.buffer.write(data)
-        sys.stdout.buffer.flush()
+        with _writing():
+            if sys.stdout is None:
+                raise OSError(errno.EBADF, "it is closed")
+            sys.stdout.buffer.write(data)
         return None
     try:
         write_whole(Path(target), data)
@@ -245,6 +251,27 @@ def _write_sarif(outcome: Outcome, target: str, kinds: Sequence[str], code: int)
         why = getattr(error, "strerror", None) or str(error)
         return Notice("unwritable", "error", f"The SARIF log could not be written to {target}: {why}")
     return None
+
+
+@contextmanager
+def _writing() -> Iterator[None]:
+    """Around what writes to standard output: a full disk, say, is no defect of stepring."""
+    try:
+        yield
+        if sys.stdout is not None:
+            sys.stdout.flush()
+    except BrokenPipeError:
+        raise
+    except OSError as error:
+        _silence_output()
+        _refuse(f"standard output could not be written: {error.strerror or error}")
+
+
+def _silence_output() -> None:
+    """Let nothing more be written, not even by the interpreter on its way out."""
+    if sys.stdout is not None:
+        with suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _write_report(outcome: Outcome, console: Console, form: str, kinds: Sequence[str]) -> None:
@@ -325,8 +352,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except KeyboardInterrupt:
         return _say("stopped before the work was done.")
     except BrokenPipeError:
-        # Whoever read our output has gone. Nothing more may be written, not even by the interpreter on its way out.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _silence_output()  # whoever read it has gone
         return NOT_DONE
     except Exception as error:
         if os.environ.get(TRACEBACK_VARIABLE):

@@ -10,6 +10,7 @@ import json
 import os
 import tempfile
 from collections.abc import Mapping
+from contextlib import suppress
 from pathlib import Path
 from typing import Any, TypeAlias
 
@@ -86,7 +87,7 @@ def write_whole(path: Path, data: bytes) -> None:
     if path.exists() and not path.is_file() and not path.is_dir():
         path.write_bytes(data)
         return
-    target = path.resolve() if path.is_symlink() else path
+    target = _behind_link(path) if path.is_symlink() else path
     handle, name = tempfile.mkstemp(prefix=f".{target.name[:100]}.", suffix=".part", dir=target.parent)
     beside = Path(name)
     try:
@@ -99,6 +100,13 @@ def write_whole(path: Path, data: bytes) -> None:
     except BaseException:
         beside.unlink(missing_ok=True)
         raise
+
+
+def _behind_link(path: Path) -> Path:
+    """What a link leads to, whether it exists or not; a circle of links is an ``OSError``."""
+    with suppress(FileNotFoundError):
+        path.stat()
+    return Path(os.path.realpath(path))
 
 
 def _mode_for(target: Path) -> int:
