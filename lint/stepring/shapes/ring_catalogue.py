@@ -1,0 +1,345 @@
+"""The facts of all flat functions put together: which integers are indices, of which storage, and what is no ring.
+
+The one idea: a ring is storage that an index stores into, where the index advances and is brought back. Look-alikes
+fail one of these: a cyclic counter over channels stores nothing through the index, a playback of a table has constant
+storage, a line buffer gives its index back to 0 wherever a message ends, a stack moves its index both ways without
+ever wrapping it.
+"""
+
+from collections import defaultdict
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+
+from stepring.meaning.types import (
+    AddressOf,
+    ArrayType,
+    Assign,
+    Call,
+    Cast,
+    Expr,
+    Function,
+    FunctionName,
+    IntType,
+    Object,
+    PointerType,
+    StructLayout,
+    StructType,
+)
+from stepring.places import Position
+from stepring.shapes.ring_facts import Advance, Comparison, FlatFacts, Reset, Use, Wrap, facts_of
+from stepring.shapes.ring_flat import Flat, Outside, Spoil, Touch, flatten
+from stepring.shapes.ring_keys import Key, inner_structs, is_scalar, targets
+
+
+@dataclass(slots=True)
+class Moves:
+    """All that happens to one integer in the program, each place once."""
+
+    advances: dict[Position, Advance] = field(default_factory=dict)
+    wraps: dict[tuple[Position, str], Wrap] = field(default_factory=dict)
+    resets: dict[Position, Reset] = field(default_factory=dict)
+    copies: set[Position] = field(default_factory=set)
+
+    @property
+    def both_ways(self) -> bool:
+        """Whether it is counted up and down."""
+        signs = {item.by > 0 for item in self.advances.values() if item.by}
+        return len(signs) == 2
+
+
+@dataclass(slots=True, eq=False)
+class Catalogue:
+    """The program's facts."""
+
+    facts: list[FlatFacts]
+    moves: dict[Key, Moves]
+    uses: dict[Key, list[Use]]
+    lengths: dict[Key, int | None]
+    elements: dict[Key, Touch]
+    types: dict[Key, IntType]
+    comparisons: list[Comparison]
+    copied: set[tuple[Key, Key]]
+    constant: set[Key]
+    objects: Mapping[Key, Object]
+    entered: list[FlatFacts]
+    writers: dict[str, frozenset[Key]]
+    structs: Mapping[str, StructLayout]
+
+
+@dataclass(frozen=True, slots=True)
+class Candidate:
+    """A ring before its indices were run: storage, capacity, indices in the order of their first use, counts."""
+
+    storage: Key
+    capacity: int | None
+    indices: tuple[Key, ...]
+    counts: tuple[Key, ...]
+
+
+def catalogue(
+    functions: Sequence[Function], objects: Sequence[Object], structs: Mapping[str, StructLayout]
+) -> Catalogue:
+    """Lay out all functions and collect their facts."""
+    by_name: dict[str, list[Function]] = defaultdict(list)
+    for function in functions:
+        by_name[function.name].append(function)
+
+    def resolve(caller: Function, name: str) -> Function | None:
+        found = by_name.get(name, [])
+        for item in found:
+            if item.static and item.position.file == caller.position.file:
+                return item
+        plain = [item for item in found if not item.static]
+        chosen = plain or found
+        return chosen[0] if len(chosen) == 1 or plain else None
+
+    inner: dict[str, frozenset[str]] = {}
+
+    def contained(identity: str) -> frozenset[str]:
+        if identity not in inner:
+            inner[identity] = inner_structs(identity, structs)
+        return inner[identity]
+
+    known: dict[Key, Object] = {("var", item.variable.identity): item for item in objects}
+    pointers = _pointers(objects)
+    facts = [facts_of(flatten(function, resolve, contained, pointers)) for function in functions]
+    merged = Catalogue(
+        facts, defaultdict(Moves), defaultdict(list), {}, {}, {}, [], set(), set(), known, [], {}, structs
+    )
+    merged.constant = {key for key, item in known.items() if item.variable.const}
+    seen: set[tuple[Position, str, Key]] = set()
+    for item in facts:
+        _merge(merged, item, seen)
+    _cross(merged)
+    taken = _taken(functions, objects)
+    inlined = {name for item in facts for name in item.flat.inlined}
+    merged.entered = [
+        item
+        for item in facts
+        if not item.flat.function.static
+        or item.flat.function.identity not in inlined
+        or item.flat.function.name in taken
+    ]
+    merged.writers = _writers(facts, structs)
+    return merged
+
+
+def _pointers(objects: Sequence[Object]) -> dict[Key, frozenset[Key]]:
+    """Lasting pointer variables that start at a known array."""
+    found: dict[Key, frozenset[Key]] = {}
+    for item in objects:
+        if isinstance(item.variable.type, PointerType):
+            for initial in item.initial:
+                to = targets(initial.value, "", {})
+                if not initial.path and len(to) == 1:
+                    found[("var", item.variable.identity)] = to
+    return found
+
+
+def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, Key]]) -> None:
+    merged.types.update(facts.types)
+    merged.comparisons.extend(facts.comparisons)
+    merged.copied |= facts.copied
+    for key, length in facts.flat.lengths.items():
+        merged.lengths.setdefault(key, length)
+    for key, found in facts.cells.items():
+        moves = merged.moves[key]
+        for advance in found.advances:
+            moves.advances.setdefault(advance.position, advance)
+        for wrap in found.wraps:
+            moves.wraps.setdefault((wrap.position, wrap.form), wrap)
+        for reset in found.resets:
+            moves.resets.setdefault(reset.position, reset)
+        moves.copies.update(found.copies)
+    for use in facts.uses:
+        touch = use.touch
+        merged.elements.setdefault(touch.storage, touch)
+        mark = (touch.position, touch.kind, touch.storage)
+        if mark not in seen:
+            seen.add(mark)
+            merged.uses[touch.storage].append(use)
+
+
+def _cross(merged: Catalogue) -> None:
+    """An index that is stepped by way of another lasting integer: ``next = head + 1; ... head = next``."""
+    for facts in merged.facts:
+        for (target, base), found in facts.cross.items():
+            if (base, target) in merged.copied:
+                moves = merged.moves[base]
+                for advance in found.advances:
+                    moves.advances.setdefault(advance.position, advance)
+                for wrap in found.wraps:
+                    moves.wraps.setdefault((wrap.position, wrap.form), wrap)
+
+
+def _taken(functions: Sequence[Function], objects: Sequence[Object]) -> set[str]:
+    """The functions whose address is taken."""
+    found: set[str] = set()
+
+    def look(expr: Expr) -> None:
+        while isinstance(expr, Cast):
+            expr = expr.operand
+        if isinstance(expr, FunctionName):
+            found.add(expr.name)
+        elif isinstance(expr, AddressOf):
+            name = getattr(expr.place, "name", None)
+            if isinstance(name, str):
+                found.add(name)
+
+    for item in objects:
+        for initial in item.initial:
+            look(initial.value)
+    for function in functions:
+        for block in function.blocks:
+            for statement in block.statements:
+                if isinstance(statement, Assign):
+                    look(statement.value)
+                elif isinstance(statement, Call):
+                    for argument in statement.arguments:
+                        look(argument)
+    return found
+
+
+def _writers(facts: Sequence[FlatFacts], structs: Mapping[str, StructLayout]) -> dict[str, frozenset[Key]]:
+    """What each function stores into, by its name, whole structures member by member."""
+    found: dict[str, set[Key]] = defaultdict(set)
+    for item in facts:
+        keys = found[item.flat.function.name]
+        keys.update(item.stored)
+        for block in item.flat.blocks:
+            for op in block.ops:
+                if isinstance(op, Spoil):
+                    keys.update(op.keys)
+                    for name in op.structs:
+                        layout = structs.get(name)
+                        for member in layout.fields if layout is not None else ():
+                            keys.add(("member", name, member.name))
+    return {name: frozenset(keys) for name, keys in found.items()}
+
+
+# ---------------------------------------------------------------------------------------------------------- judging
+
+
+def candidates(merged: Catalogue) -> Iterator[Candidate]:
+    """The rings of the program, in the order of their storage."""
+    for storage, uses in sorted(merged.uses.items(), key=lambda item: item[1][0].touch.position):
+        if storage in merged.constant or not uses:
+            continue
+        capacity = merged.lengths.get(storage) if storage[-1] != "*" else None
+        if capacity is not None and capacity < 2:
+            continue
+        found = _candidate(merged, storage, uses, capacity)
+        if found is not None:
+            yield found
+
+
+def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: int | None) -> Candidate | None:
+    used = list(dict.fromkeys(key for use in uses for key in sorted(use.cells)))
+    indices = [key for key in used if is_index(merged, key, uses)]
+    followers = [
+        key
+        for key in used
+        if key not in indices
+        and not merged.moves[key].advances
+        and any((key, other) in merged.copied for other in _masters(merged, key, uses))
+    ]
+    if not indices and not followers:
+        return None
+    stores = {key for use in uses if use.touch.kind != "load" for key in use.cells}
+    if not any(key in stores for key in (*indices, *followers)):
+        return None
+    if all(_linear(merged, key, uses) for key in indices) and not followers:
+        return None
+    if len(indices) + len(followers) == 1 and _borrowed(merged, storage, uses):
+        return None
+    counts = _counts(merged, storage, uses, {*indices, *followers})
+    indices = [key for key in indices if key not in counts]
+    if not indices and not followers:
+        return None
+    return Candidate(storage, capacity, (*indices, *followers), tuple(counts))
+
+
+def is_index(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
+    """Whether an integer advances and is brought back, at its update or where it is used."""
+    moves = merged.moves.get(key)
+    if moves is None or not moves.advances:
+        return False
+    if moves.wraps:
+        return not all(_only_stops(wrap) for wrap in moves.wraps.values())
+    if moves.both_ways:
+        return False
+    return any(key in use.cells and use.reduction != "none" for use in uses)
+
+
+def _only_stops(wrap: Wrap) -> bool:
+    """A decrement from a comparison with 0 that sets no upper end says nothing."""
+    return wrap.form == "decrement" and wrap.limit is None
+
+
+def _masters(merged: Catalogue, key: Key, uses: Sequence[Use]) -> Iterator[Key]:
+    for target, source in merged.copied:
+        if target == key and merged.moves.get(source) is not None and merged.moves[source].wraps:
+            if is_index(merged, source, uses):
+                yield source
+
+
+def _linear(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
+    """Whether an index belongs to a buffer that is filled from 0 again and again, and not walked round."""
+    moves = merged.moves[key]
+    if any(wrap.form in ("modulo", "mask", "subtract", "decrement") for wrap in moves.wraps.values()):
+        return False
+    if not moves.wraps:
+        return False
+    movers = {item.function for item in moves.advances.values()}
+    return any(reset.function in movers and reset.value == 0 for reset in moves.resets.values())
+
+
+def _borrowed(merged: Catalogue, storage: Key, uses: Sequence[Use]) -> bool:
+    """Whether one index only ever lends out rows of text by their address: a set of scratch strings."""
+    touch = merged.elements[storage]
+    return isinstance(touch.element, ArrayType) and all(use.touch.kind == "address" for use in uses)
+
+
+def _counts(merged: Catalogue, storage: Key, uses: Sequence[Use], indices: set[Key]) -> list[Key]:
+    """The integers that count the occupied slots: up where the ring stores, down where it loads."""
+    inside = {use.touch.function for use in uses if use.cells & indices}
+    found = []
+    for key, moves in merged.moves.items():
+        if not is_scalar(key) or moves.wraps or not moves.both_ways:
+            continue
+        functions = {item.function for item in moves.advances.values()}
+        if functions & inside and len(functions & inside) == len(functions):
+            if key[0] != "member" or any(key[1] == index[1] for index in indices if index[0] == "member"):
+                found.append(key)
+    return found
+
+
+def struct_of(key: Key) -> str | None:
+    """The structure of a member's key."""
+    return key[1] if key[0] == "member" else None
+
+
+def touches_of(flat: Flat, storage: Key) -> Iterator[Touch]:
+    """The accesses of a flat function to some storage."""
+    for block in flat.blocks:
+        for op in block.ops:
+            if isinstance(op, Touch) and op.storage == storage:
+                yield op
+
+
+def calls_out(flat: Flat) -> Iterator[Outside]:
+    """The calls of a flat function that were not laid out."""
+    for block in flat.blocks:
+        for op in block.ops:
+            if isinstance(op, Outside):
+                yield op
+
+
+def instances(merged: Catalogue, struct: str) -> Iterator[Object]:
+    """The objects of the program that are, or hold, objects of a structure."""
+    for item in merged.objects.values():
+        type_ = item.variable.type
+        while isinstance(type_, ArrayType):
+            type_ = type_.element
+        if isinstance(type_, StructType) and struct in inner_structs(type_.identity, merged.structs):
+            yield item

@@ -1,0 +1,539 @@
+"""What a flat function does to indices: where it advances one, where it wraps it, where it subscripts with it.
+
+The one idea: an index is a lasting integer whose new value is made from its old one by adding a constant, with a wrap
+somewhere on the way: a remainder, a mask, or a comparison that decides on another value. The way may lead through
+local copies, so the sources of every local variable are computed first (which lasting integers its value is made of
+by copying, adding, reducing), then the locals that lead back into the index (its *chain*). A store of a constant is a
+wrap only if a comparison of the same index decides on it (control dependence in the sense of Ferrante, Ottenstein
+and Warren, 1987); any other constant is a reset.
+"""
+
+from collections import defaultdict
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import networkx
+
+from stepring.meaning.fold import fold
+from stepring.meaning.types import (
+    Binary,
+    Branch,
+    Cast,
+    Expr,
+    IntType,
+    Load,
+    Unary,
+    VariablePlace,
+)
+from stepring.places import Position
+from stepring.shapes.ring_flat import Flat, FlatBlock, Set, Touch
+from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
+from stepring.shapes.types import WrapForm
+
+COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
+Role = Literal["advance", "wrap", "reset", "copy", "other"]
+
+
+@dataclass(frozen=True, slots=True)
+class Wrap:
+    """A wrap: its form, the constant it speaks of (None at run time), the operator, its place.
+
+    ``limit`` is N of ``% N`` or ``>= N``, the mask plus one, or the value that a decrement comes back from.
+    """
+
+    form: WrapForm
+    limit: int | None
+    operator: str
+    position: Position
+    function: str
+
+
+@dataclass(frozen=True, slots=True)
+class Advance:
+    """A change of an index by ``by`` (None: not a constant)."""
+
+    by: int | None
+    position: Position
+    function: str
+
+
+@dataclass(frozen=True, slots=True)
+class Reset:
+    """A store of a constant that no comparison of the index decides on."""
+
+    value: int
+    position: Position
+    function: str
+
+
+@dataclass(slots=True)
+class CellFacts:
+    """What one flat function does to one lasting integer; ``roles`` says it of every operation."""
+
+    roles: dict[int, Role] = field(default_factory=dict)
+    moves: dict[int, int] = field(default_factory=dict)
+    advances: list[Advance] = field(default_factory=list)
+    wraps: list[Wrap] = field(default_factory=list)
+    resets: list[Reset] = field(default_factory=list)
+    copies: list[Position] = field(default_factory=list)
+
+
+@dataclass(frozen=True, slots=True)
+class Use:
+    """A subscript that is made from lasting integers; ``scaled``: multiplied on the way."""
+
+    touch: Touch
+    cells: frozenset[Key]
+    reduction: WrapForm
+    modulus: int | None
+    reduced_at: Position | None
+    scaled: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Comparison:
+    """A branch on lasting integers: those of the left and of the right side, and whether either is advanced."""
+
+    left: frozenset[Key]
+    right: frozenset[Key]
+    operator: str
+    constant: int | None
+    position: Position
+    moved: bool
+
+
+@dataclass(slots=True, eq=False)
+class FlatFacts:
+    """The facts of a flat function."""
+
+    flat: Flat
+    cells: dict[Key, CellFacts]
+    uses: list[Use]
+    plain: list[Touch]
+    comparisons: list[Comparison]
+    sources: dict[Key, frozenset[Key]]
+    types: dict[Key, IntType]
+    cross: dict[tuple[Key, Key], CellFacts]
+    copied: set[tuple[Key, Key]]
+    stored: frozenset[Key]
+
+
+def facts_of(flat: Flat) -> FlatFacts:
+    """Collect the facts of a flat function."""
+    sight = _Sight(flat)
+    _spread(sight)
+    cells = {key: found for key in sight.stored for found in (_cell(sight, key),) if found is not None}
+    uses: list[Use] = []
+    plain: list[Touch] = []
+    for block in flat.blocks:
+        for op in block.ops:
+            if isinstance(op, Touch):
+                use = _use(sight, op)
+                if use is None:
+                    plain.append(op)
+                else:
+                    uses.append(use)
+    cross: dict[tuple[Key, Key], CellFacts] = {}
+    copied: set[tuple[Key, Key]] = set()
+    for key in sight.stored:
+        for _, op in sight.sets[key]:
+            for other in sources(sight, op.value, op.frame) - {key}:
+                copied.add((key, other))
+                crossing = _cell(sight, key, other) if (key, other) not in cross else None
+                if crossing is not None and crossing.advances:
+                    cross[key, other] = crossing
+    comparisons = list(_comparisons(sight))
+    stored = frozenset(sight.stored)
+    return FlatFacts(flat, cells, uses, plain, comparisons, sight.sources, sight.types, cross, copied, stored)
+
+
+# ---------------------------------------------------------------------------------------------------------- sources
+
+
+@dataclass(slots=True)
+class _Sight:
+    """A flat function with what was found of it so far."""
+
+    flat: Flat
+    sources: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    types: dict[Key, IntType] = field(default_factory=dict)
+    sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
+    stored: list[Key] = field(default_factory=list)
+    decides: dict[int, tuple[int, ...]] | None = None
+
+
+def _spread(sight: _Sight) -> None:
+    """Fill ``sets`` and ``sources``."""
+    flat = sight.flat
+    stored: dict[Key, None] = {}
+    for number, block in enumerate(flat.blocks):
+        for op in block.ops:
+            if isinstance(op, Set) and isinstance(op.place.type, IntType):
+                for key in place_keys(op.place, op.place_frame, flat.points):
+                    sight.sets[key].append((number, op))
+                    if not is_local(key):
+                        stored[key] = None
+                        sight.types[key] = op.place.type
+    sight.stored = list(stored)
+    pending = True
+    while pending:
+        pending = False
+        for key, sets in sight.sets.items():
+            if not is_local(key):
+                continue
+            found = sight.sources.get(key, NOTHING)
+            for _, op in sets:
+                found |= sources(sight, op.value, op.frame)
+            if found != sight.sources.get(key, NOTHING):
+                sight.sources[key] = found
+                pending = True
+
+
+def sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
+    """The lasting integers that a value is made of by copying, adding, reducing or scaling."""
+    match expr:
+        case Load(place=place, type=IntType() as type_):
+            found: frozenset[Key] = NOTHING
+            for key in place_keys(place, frame, sight.flat.points):
+                if not is_local(key):
+                    sight.types.setdefault(key, type_)
+                found |= sight.sources.get(key, NOTHING) if is_local(key) else frozenset((key,))
+            return found
+        case Cast(operand=operand):
+            return sources(sight, operand, frame)
+        case Binary(op="+" | "-" | "*" | "&", left=left, right=right):
+            return sources(sight, left, frame) | sources(sight, right, frame)
+        case Binary(op="%" | "<<", left=left):
+            return sources(sight, left, frame)
+    return NOTHING
+
+
+def _scaled(expr: Expr) -> bool:
+    match expr:
+        case Cast(operand=operand):
+            return _scaled(operand)
+        case Binary(op="*" | "<<"):
+            return True
+        case Binary(op="+" | "-", left=left, right=right):
+            return _scaled(left) or _scaled(right)
+    return False
+
+
+# ---------------------------------------------------------------------------------------------------------- uses
+
+
+def _use(sight: _Sight, touch: Touch) -> Use | None:
+    if touch.subscript is None:
+        return None
+    cells = sources(sight, touch.subscript, touch.frame)
+    if not cells:
+        return None
+    form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
+    return Use(touch, cells, form, modulus, at, _scaled(touch.subscript))
+
+
+def _reduction(sight: _Sight, expr: Expr, frame: str, depth: int) -> tuple[WrapForm, int | None, Position | None]:
+    """How a subscript is brought into range at the access: the remainder or mask that is outermost in it."""
+    match expr:
+        case Cast(operand=operand):
+            return _reduction(sight, operand, frame, depth)
+        case Binary(op="%", right=right, position=position):
+            return "modulo", fold(right), position
+        case Binary(op="&", left=left, right=right, position=position):
+            mask = fold(right) if fold(right) is not None else fold(left)
+            return "mask", None if mask is None else mask + 1, position
+        case Load(place=VariablePlace() as place) if depth < 4:
+            for key in place_keys(place, frame, sight.flat.points):
+                sets = sight.sets.get(key, ())
+                if is_local(key) and len(sets) == 1:
+                    op = sets[0][1]
+                    form, modulus, at = _reduction(sight, op.value, op.frame, depth + 1)
+                    return form, modulus, at or op.position
+    return "none", None, None
+
+
+# ---------------------------------------------------------------------------------------------------------- cells
+
+
+def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | None:
+    """What the function does to a lasting integer, None where it is only filled from elsewhere with data.
+
+    With ``base``: how ``target`` is made from the integer ``base``, as in ``next = (head + 1) % N`` where both last.
+    """
+    cell = base or target
+    chain = _chain(sight, target, cell)
+    facts = CellFacts()
+    nodes = [(number, op, key == target) for key in (target, *chain) for number, op in sight.sets.get(key, ())]
+    guards = _guards(sight, cell, nodes)
+    moved = {
+        at
+        for number, op, _ in nodes
+        if any(_steps(sight, op.value, op.frame, cell))
+        for _, at in guards.get(number, ())
+    }
+    signs: set[int] = set()
+    bare: list[tuple[int, Set, int, bool]] = []
+    for number, op, direct in nodes:
+        steps = list(_steps(sight, op.value, op.frame, cell))
+        for form, limit, operator, at in _reductions(sight, op.value, op.frame, cell):
+            facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function))
+            facts.roles[id(op)] = "wrap"
+        value = fold(op.value)
+        if steps:
+            total = None if None in steps else sum(step for step in steps if step is not None)
+            if total is not None and not guards.get(number):
+                signs.add(1 if total > 0 else -1)
+            bare.append((number, op, 0 if total is None else total, total is None))
+        elif value is not None:
+            _constant_store(facts, op, value, guards.get(number, ()), direct, moved)
+        elif direct and cell not in sources(sight, op.value, op.frame):
+            facts.copies.append(op.position)
+            facts.roles[id(op)] = "copy"
+    for number, op, total, unknown in bare:
+        guard = guards.get(number, ())
+        sign = 1 if total > 0 else -1
+        if guard and not unknown and (-sign in signs or (abs(total) > 1 and not signs)):
+            for comparison, at in guard:
+                facts.wraps.append(
+                    Wrap(
+                        "decrement" if sign > 0 else "subtract",
+                        abs(total) if sign > 0 else comparison.constant,
+                        comparison.operator,
+                        at,
+                        op.function,
+                    )
+                )
+            facts.roles[id(op)] = "wrap"
+        elif guard and unknown:
+            # head += n; if (head >= size) head -= size;
+            for comparison, at in guard:
+                facts.wraps.append(Wrap("subtract", comparison.constant, comparison.operator, at, op.function))
+            facts.roles[id(op)] = "wrap"
+        else:
+            facts.advances.append(Advance(None if unknown else total, op.position, op.function))
+            facts.roles[id(op)] = "advance"
+            facts.moves[id(op)] = total
+    if not (facts.advances or facts.wraps or facts.resets or facts.copies):
+        return None
+    return facts
+
+
+def _constant_store(
+    facts: CellFacts,
+    op: Set,
+    value: int,
+    guard: "tuple[tuple[Comparison, Position], ...]",
+    direct: bool,
+    moved: set[Position],
+) -> None:
+    """A constant is a wrap where a comparison of the index decides on it and it is no clamp.
+
+    ``moved`` are the comparisons that decide whether the index steps at all: ``if (i == 0) i = N - 1; else i--;``
+    """
+    for comparison, at in guard:
+        limit = comparison.constant
+        if limit is not None and value not in (0, 1) and limit > 1 and abs(limit - value) <= 1:
+            facts.roles[id(op)] = "other"  # a clamp: the index stays at its end
+            return
+        low = limit is not None and limit in (0, 1, -1) and value > 1
+        form: WrapForm = "decrement" if low else "choice" if _temporary(op) else "reset"
+        if low:
+            limit = value + 1 if at in moved or comparison.operator in ("<", ">=") else value
+        facts.wraps.append(Wrap(form, limit, comparison.operator, at, op.function))
+        facts.roles[id(op)] = "wrap"
+    if not guard and direct:
+        facts.resets.append(Reset(value, op.position, op.function))
+        facts.roles[id(op)] = "reset"
+
+
+def _temporary(op: Set) -> bool:
+    return isinstance(op.place, VariablePlace) and op.place.variable.identity.startswith("%")
+
+
+def _chain(sight: _Sight, target: Key, cell: Key) -> list[Key]:
+    """The locals that are made from the cell and lead into the target (usually the cell itself)."""
+    found: dict[Key, None] = {}
+    pending = [(op.value, op.frame) for _, op in sight.sets.get(target, ())]
+    while pending:
+        expr, frame = pending.pop()
+        for key in _locals(sight, expr, frame):
+            if key not in found and cell in sight.sources.get(key, NOTHING):
+                found[key] = None
+                pending.extend((op.value, op.frame) for _, op in sight.sets.get(key, ()))
+    return list(found)
+
+
+def _locals(sight: _Sight, expr: Expr, frame: str) -> Iterator[Key]:
+    match expr:
+        case Load(place=place):
+            yield from (key for key in place_keys(place, frame, sight.flat.points) if is_local(key))
+        case Cast(operand=operand):
+            yield from _locals(sight, operand, frame)
+        case Binary(op="+" | "-" | "%" | "&", left=left, right=right):
+            yield from _locals(sight, left, frame)
+            yield from _locals(sight, right, frame)
+
+
+def _steps(sight: _Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | None]:
+    """What is added to the cell's value in an expression; ``(i + N - 1) % N`` counts as -1."""
+    match expr:
+        case Cast(operand=operand):
+            yield from _steps(sight, operand, frame, cell)
+        case Binary(op="%" | "&" as op, left=left, right=right):
+            steps = list(_steps(sight, left, frame, cell))
+            limit = fold(right)
+            if limit is not None and op == "&":
+                limit += 1
+            if steps and None not in steps:
+                total = sum(step for step in steps if step is not None)
+                if limit is not None and 1 < limit - 1 <= total <= limit - 1:
+                    total -= limit
+                yield total
+            else:
+                yield from steps[:1]
+        case Binary(op="+" | "-" as op, left=left, right=right):
+            in_left = cell in sources(sight, left, frame)
+            in_right = cell in sources(sight, right, frame)
+            if in_left:
+                yield from _steps(sight, left, frame, cell)
+                by = fold(right)
+                yield by if by is None or op == "+" else -by
+            elif in_right and op == "+":
+                yield from _steps(sight, right, frame, cell)
+                yield fold(left)
+
+
+def _reductions(
+    sight: _Sight, expr: Expr, frame: str, cell: Key
+) -> Iterator[tuple[WrapForm, int | None, str, Position | None]]:
+    match expr:
+        case Cast(operand=operand):
+            yield from _reductions(sight, operand, frame, cell)
+        case Binary(op="%", left=left, right=right, position=position):
+            if cell in sources(sight, left, frame):
+                yield "modulo", fold(right), "%", position
+        case Binary(op="&", left=left, right=right, position=position):
+            inner, mask = (left, right) if cell in sources(sight, left, frame) else (right, left)
+            if cell in sources(sight, inner, frame):
+                known = fold(mask)
+                yield "mask", None if known is None else known + 1, "&", position
+        case Binary(op="+" | "-", left=left, right=right):
+            yield from _reductions(sight, left, frame, cell)
+            yield from _reductions(sight, right, frame, cell)
+
+
+# ---------------------------------------------------------------------------------------------------------- guards
+
+
+def _guards(
+    sight: _Sight, cell: Key, nodes: list[tuple[int, Set, bool]]
+) -> dict[int, tuple[tuple[Comparison, Position], ...]]:
+    """For the blocks of some operations: the comparisons of the cell with a limit that decide on them."""
+    found: dict[int, tuple[tuple[Comparison, Position], ...]] = {}
+    blocks = {number for number, _, _ in nodes}
+    if len(sight.flat.blocks) == 1:
+        return found
+    compared: dict[int, Comparison] = {}
+    for number, block in enumerate(sight.flat.blocks):
+        comparison = _comparison(sight, block)
+        if comparison is None:
+            continue
+        if (cell in comparison.left) != (cell in comparison.right):
+            compared[number] = comparison
+    if not compared:
+        return found
+    if sight.decides is None:
+        sight.decides = control(sight.flat.blocks, post_dominators(sight.flat.blocks))
+    for number in blocks:
+        entries = tuple(
+            (compared[branch], compared[branch].position)
+            for branch in sight.decides.get(number, ())
+            if branch in compared
+        )
+        if entries:
+            found[number] = entries
+    return found
+
+
+def _comparison(sight: _Sight, block: FlatBlock) -> Comparison | None:
+    if not isinstance(block.end, Branch):
+        return None
+    condition = block.end.condition
+    while True:
+        if isinstance(condition, Cast) or (isinstance(condition, Unary) and condition.op == "!"):
+            condition = condition.operand
+        else:
+            break
+    if isinstance(condition, Binary) and condition.op in COMPARISONS:
+        left = sources(sight, condition.left, block.frame)
+        right = sources(sight, condition.right, block.frame)
+        if not left and not right:
+            return None
+        constant = fold(condition.right) if left else fold(condition.left)
+        moved = _moved(sight, condition.left, block.frame) or _moved(sight, condition.right, block.frame)
+        return Comparison(left, right, condition.op, constant, block.end.position, moved)
+    left = sources(sight, condition, block.frame)
+    return Comparison(left, NOTHING, "!=", 0, block.end.position, False) if left else None
+
+
+def _moved(sight: _Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
+    match expr:
+        case Cast(operand=operand):
+            return _moved(sight, operand, frame, depth)
+        case Binary(op="+" | "-" | "%" | "&"):
+            return True
+        case Load(place=VariablePlace() as place) if depth < 4:
+            return any(
+                _moved(sight, op.value, op.frame, depth + 1)
+                for key in place_keys(place, frame, sight.flat.points)
+                if is_local(key)
+                for _, op in sight.sets.get(key, ())
+            )
+    return False
+
+
+def _comparisons(sight: _Sight) -> Iterator[Comparison]:
+    for block in sight.flat.blocks:
+        comparison = _comparison(sight, block)
+        if comparison is not None:
+            yield comparison
+
+
+def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:
+    """The next block that every way from a block meets; -1 stands for leaving the function."""
+    graph: networkx.DiGraph[object] = networkx.DiGraph()
+    graph.add_node(-1)
+    for number, block in enumerate(blocks):
+        graph.add_node(number)
+        following = block.targets()
+        for target in following:
+            graph.add_edge(target, number)
+        if not following:
+            graph.add_edge(-1, number)
+    while True:  # a loop that is never left still has an order: its last block counts as a way out
+        missing = set(graph) - set(networkx.descendants(graph, -1)) - {-1}
+        if not missing:
+            break
+        graph.add_edge(-1, max(number for number in missing if isinstance(number, int)))
+    found = networkx.immediate_dominators(graph, -1)
+    return {
+        node: up for node, up in found.items() if isinstance(node, int) and isinstance(up, int) and node != up
+    }
+
+
+def control(blocks: list[FlatBlock], up: Mapping[int, int]) -> dict[int, tuple[int, ...]]:
+    """For each block the branches that it directly depends on; ``up`` are the post-dominators."""
+    found: dict[int, list[int]] = defaultdict(list)
+    for number, block in enumerate(blocks):
+        following = block.targets()
+        if len(following) < 2:
+            continue
+        stop = up.get(number)
+        for target in dict.fromkeys(following):
+            current: int | None = target
+            while current is not None and current != stop and current != -1:
+                if number not in found[current]:
+                    found[current].append(number)
+                current = up.get(current)
+    return {number: tuple(branches) for number, branches in found.items()}

@@ -1,0 +1,387 @@
+"""The values that a ring's indices really take, and the slots that are accessed with them.
+
+The one idea: start from the initial values, run every function that uses the ring from every value reached so far,
+until nothing new comes (explicit-state reachability, as in model checking). First each index is followed alone and all
+else counts as unknown; that bounds every subscript from above. Where a subscript then seems to leave the array and the
+way there depends on other state (a count, a flag), the indices are followed together with that state, which settles
+whether it is real. What is reached along certain paths only is a fact with a witness; what is not reached at all,
+although every doubtful path was taken, cannot happen.
+"""
+
+from collections import deque
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+from stepring.meaning.types import IntType
+from stepring.places import Position
+from stepring.shapes.ring_arith import Range, Value
+from stepring.shapes.ring_facts import FlatFacts
+from stepring.shapes.ring_flat import Touch
+from stepring.shapes.ring_keys import Key
+from stepring.shapes.steps import Pair, Trace, Walk
+
+STATES = 20_000
+"""Combinations of values that are looked at when several integers are followed together."""
+ORBIT = 4_200
+"""Values of one index that are looked at."""
+RUN_WORK = 60_000
+ALONE_WORK = 250_000
+TOGETHER_WORK = 500_000
+TOGETHER = 8
+"""Up to this many integers are followed together."""
+
+State = tuple[Value, ...]
+Spot = tuple[Position, str, str, Key]
+"""An access: its place, its kind, its function, its storage."""
+
+
+@dataclass(slots=True)
+class Witness:
+    """How a subscript comes about: stores of the followed integers from the start on, then the access."""
+
+    stores: list[tuple[Position, Key, Value, Value]]
+    calls: int
+
+
+@dataclass(slots=True, eq=False)
+class Access:
+    """What is known of the subscripts of one access."""
+
+    touch: Touch
+    certain: set[int] = field(default_factory=set)
+    doubtful: set[Value] = field(default_factory=set)
+    bad: tuple[int, Witness] | None = None
+    maybe: Value = None
+    settled: bool = False
+
+
+@dataclass(slots=True, eq=False)
+class Orbit:
+    """The values of one index: certain ones, all that cannot be excluded, and whether the search came to an end."""
+
+    certain: set[int] = field(default_factory=set)
+    possible: set[Value] = field(default_factory=set)
+    complete: bool = True
+
+
+@dataclass(slots=True, eq=False)
+class Study:
+    """What was found out about a ring."""
+
+    accesses: dict[Spot, Access] = field(default_factory=dict)
+    orbits: dict[Key, Orbit] = field(default_factory=dict)
+    pairs: dict[Pair, bool] = field(default_factory=dict)
+    complete: bool = True
+
+
+@dataclass(frozen=True, slots=True)
+class Scene:
+    """What all studies share: the functions that can be entered, initial values, types, who writes what."""
+
+    events: Callable[[frozenset[Key], frozenset[Key]], Sequence[FlatFacts]]
+    initial: Callable[[Key], tuple[int, ...] | None]
+    types: dict[Key, IntType]
+    writes: Callable[[str], frozenset[Key]]
+
+
+def study(scene: Scene, storage: Key, capacity: int, indices: Sequence[Key], counts: Sequence[Key] = ()) -> Study:
+    """Find out which slots of ``storage`` are accessed and which values the indices take.
+
+    ``counts`` are integers that count occupied slots; they are followed to bound them, but they are no indices.
+    """
+    arrays = frozenset((storage,))
+    followed = [*indices, *counts]
+    ranges: dict[Key, Range] = {}
+    for attempt in range(2):
+        found = Study()
+        state: set[Key] = set()
+        for index in followed:
+            others = {key: known for key, known in ranges.items() if key != index}
+            state |= _alone(scene, arrays, capacity, index, followed, others, found)
+        suspects = [access for access in found.accesses.values() if not _fits(access, capacity)]
+        if attempt == 1 or not suspects or len(followed) == 1:
+            break
+        ranges = {key: known for key in followed for known in (_hull(found.orbits[key]),) if known is not None}
+    suspects = [access for access in suspects if access.bad is None]
+    if suspects:
+        _together(scene, arrays, capacity, followed, state - set(followed), found, suspects)
+    return found
+
+
+def _hull(orbit: Orbit) -> Range | None:
+    """Bounds of an orbit, None where the search did not come to an end."""
+    if not orbit.complete or not orbit.possible:
+        return None
+    lows = [value.low if isinstance(value, Range) else int(value) for value in orbit.possible]
+    highs = [value.high if isinstance(value, Range) else int(value) for value in orbit.possible]
+    return Range(min(lows), max(highs), False)
+
+
+def out_of_range(value: Value, capacity: int, kind: str) -> bool:
+    """Whether a subscript can leave the array; the address one past the end may be formed (6.5.6p8)."""
+    top = capacity if kind == "address" else capacity - 1
+    if isinstance(value, int):
+        return not 0 <= value <= top
+    if isinstance(value, Range):
+        return value.low < 0 or value.high > top
+    return True
+
+
+def _fits(access: Access, capacity: int) -> bool:
+    kind = access.touch.kind
+    return not any(out_of_range(value, capacity, kind) for value in access.certain | access.doubtful)
+
+
+def _walks(
+    scene: Scene, arrays: frozenset[Key], capacity: int, tracked: Sequence[Key], ranges: Mapping[Key, Range]
+) -> list[Walk]:
+    wholes = {key: _whole(scene, key) for key in tracked}
+    made = [
+        Walk(facts, tracked, arrays, capacity, wholes, ranges, scene.writes, scene.types)
+        for facts in scene.events(frozenset(tracked), arrays)
+    ]
+    return [walk for walk in made if not walk.idle]
+
+
+def _whole(scene: Scene, key: Key) -> Range:
+    type_ = scene.types.get(key)
+    return Range(type_.low, type_.high, False) if type_ is not None else Range(-(1 << 31), (1 << 32) - 1, False)
+
+
+# ---------------------------------------------------------------------------------------------------------- one index
+
+
+def _alone(
+    scene: Scene,
+    arrays: frozenset[Key],
+    capacity: int,
+    index: Key,
+    followed: Sequence[Key],
+    ranges: Mapping[Key, Range],
+    found: Study,
+) -> set[Key]:
+    """Follow one index; gives the state that its functions depend on besides.
+
+    Each access is looked at while the first of the integers that its subscript is made of is followed.
+    """
+    walks = _walks(scene, arrays, capacity, (index,), ranges)
+    cells = {id(use.touch): use.cells for walk in walks for use in walk.facts.uses}
+
+    def wanted(touch: Touch) -> bool:
+        mine = [key for key in followed if key in cells.get(id(touch), ())]
+        return (mine[0] if mine else followed[0]) == index
+
+    orbit = found.orbits[index] = Orbit()
+    whole = _whole(scene, index)
+    advances = [facts.cells[index] for facts in (walk.facts for walk in walks) if index in facts.cells]
+    free = whole.high > ORBIT and not any(facts.wraps for facts in advances) and any(f.advances for f in advances)
+    if free:
+        # A counter that runs through its whole type: every value counts.
+        orbit.possible.add(whole)
+        for walk in walks:
+            run = walk.run((whole,), RUN_WORK)
+            _collect(walk, run.touches, (), found, capacity, False, wanted)
+            found.complete = found.complete and not run.cut
+    else:
+        search = _Search(scene, walks, (index,), capacity, found, ORBIT, ALONE_WORK, wanted)
+        search.go()
+        for state, certain in search.states.items():
+            if certain and isinstance(state[0], int):
+                orbit.certain.add(state[0])
+            orbit.possible.add(state[0])
+        orbit.complete = not search.cut
+    found.complete = found.complete and orbit.complete
+    return {key for walk in walks for key in walk.state}
+
+
+@dataclass(slots=True)
+class _Search:
+    """Reachability over the values of some integers."""
+
+    scene: Scene
+    walks: list[Walk]
+    tracked: tuple[Key, ...]
+    capacity: int
+    found: Study
+    limit: int
+    work: int
+    wanted: Callable[[Touch], bool] = lambda touch: True
+    states: dict[State, bool] = field(default_factory=dict)
+    parents: dict[State, tuple[State | None, Trace]] = field(default_factory=dict)
+    cut: bool = False
+    stop_at: set[Spot] = field(default_factory=set)
+
+    def go(self) -> None:
+        """Look at all states, certain ones first and in order of their distance from the start."""
+        sure: deque[State] = deque()
+        doubtful: deque[State] = deque()
+        for state, certain in self._starts():
+            self.states[state] = certain
+            self.parents[state] = (None, None)
+            (sure if certain else doubtful).append(state)
+        while sure or doubtful:
+            if not sure and self.stop_at and self._all_bad():
+                self.cut = True
+                return
+            state = sure.popleft() if sure else doubtful.popleft()
+            certain = self.states[state]
+            for walk in self.walks:
+                run = walk.run(state, min(RUN_WORK, max(1, self.work)))
+                self.work -= run.work if run.work else 1
+                run.work = 0  # a remembered run costs nothing more
+                if run.cut:
+                    self.cut = True
+                _collect(walk, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
+                for pair, sure_pair in run.pairs.items():
+                    self.found.pairs[pair] = self.found.pairs.get(pair, False) or (sure_pair and certain)
+                for values, (sure_end, trace) in run.ends.items():
+                    end = tuple(
+                        new if key in walk.reads else old
+                        for key, new, old in zip(self.tracked, values, state, strict=True)
+                    )
+                    self._reach(end, certain and sure_end, state, trace, sure, doubtful)
+            if self.work <= 0 or len(self.states) > self.limit:
+                self.cut = True
+                return
+
+    def _all_bad(self) -> bool:
+        known = (self.found.accesses.get(spot) for spot in self.stop_at)
+        return all(access is not None and access.bad is not None for access in known)
+
+    def _starts(self) -> list[tuple[State, bool]]:
+        found: list[State] = [()]
+        certain = True
+        for key in self.tracked:
+            values = self.scene.initial(key)
+            if values is None:
+                values = (0,)
+                certain = False
+            found = [(*state, value) for state in found for value in values]
+        return [(state, certain) for state in found]
+
+    def _reach(
+        self, end: State, certain: bool, state: State, trace: Trace, sure: deque[State], doubtful: deque[State]
+    ) -> None:
+        if any(isinstance(value, Range) for value in end):
+            end = tuple(
+                _whole(self.scene, key) if isinstance(value, Range) else value
+                for key, value in zip(self.tracked, end, strict=True)
+            )
+            certain = False
+        known = self.states.get(end)
+        if known is None or (certain and not known):
+            self.states[end] = certain
+            self.parents[end] = (state, trace)
+            (sure if certain else doubtful).append(end)
+
+    def witness(self, state: State, trace: Trace) -> Witness:
+        """The stores from the start to a point in a run from ``state``."""
+        runs = [trace]
+        current: State | None = state
+        while current is not None:
+            current, came = self.parents[current]
+            if current is not None:
+                runs.append(came)
+        stores: list[tuple[Position, Key, Value, Value]] = []
+        for item in runs:
+            while item is not None:
+                item, position, key, before, after = item
+                stores.append((position, key, before, after))
+        return Witness(stores[::-1], len(runs) - 1)
+
+
+def _collect(
+    walk: Walk,
+    touches: Mapping[int, Any],
+    at: tuple[Any, ...],
+    found: Study,
+    capacity: int,
+    certain: bool,
+    wanted: Callable[[Touch], bool],
+) -> None:
+    """Add what a run saw to the accesses; ``at`` is the search and the state that the run started from."""
+    for number, seen in touches.items():
+        touch = walk.touched[number]
+        if not wanted(touch):
+            continue
+        spot = (touch.position, touch.kind, touch.function, touch.storage)
+        access = found.accesses.get(spot)
+        if access is None:
+            access = found.accesses[spot] = Access(touch)
+        for value, (trace, subscript) in seen.certain.items():
+            known = access.certain if certain else access.doubtful
+            if value in known and (access.bad is not None or not certain):
+                continue
+            known.add(value)
+            if not out_of_range(value, capacity, touch.kind):
+                continue
+            if certain and access.bad is None:
+                search, state = at
+                access.bad = (subscript, search.witness(state, trace))
+            elif not certain and access.maybe is None:
+                access.maybe = subscript
+        for value, (_, subscript) in seen.doubtful.items():
+            if value in access.doubtful:
+                continue
+            access.doubtful.add(value)
+            if access.maybe is None and out_of_range(value, capacity, touch.kind):
+                access.maybe = subscript if subscript is not None else Range(-(1 << 31), (1 << 31) - 1, False)
+
+
+# ---------------------------------------------------------------------------------------------------------- together
+
+
+def _together(
+    scene: Scene,
+    arrays: frozenset[Key],
+    capacity: int,
+    indices: list[Key],
+    state: set[Key],
+    found: Study,
+    suspects: list[Access],
+) -> None:
+    """Follow the indices with the state that they depend on, and settle the suspects if that comes to an end."""
+    tracked = list(dict.fromkeys([*indices, *sorted(state)]))
+    walks: list[Walk] = []
+    for _ in range(3):
+        tracked = [key for key in tracked if scene.types.get(key) is not None]
+        if len(tracked) > TOGETHER:
+            return
+        walks = _walks(scene, arrays, capacity, tracked, {})
+        more = {key for walk in walks for key in walk.state} - set(tracked)
+        if not more:
+            break
+        tracked = [*tracked, *sorted(more)]
+    fresh = Study()
+    search = _Search(scene, walks, tuple(tracked), capacity, fresh, STATES, TOGETHER_WORK)
+    search.stop_at = {
+        (access.touch.position, access.touch.kind, access.touch.function, access.touch.storage) for access in suspects
+    }
+    search.go()
+    for pair, certain in fresh.pairs.items():
+        if certain:
+            found.pairs[pair] = True
+    for number, index in enumerate(search.tracked):
+        orbit = found.orbits.get(index)
+        if orbit is None:
+            continue
+        for values, certain in search.states.items():
+            if certain and isinstance(values[number], int):
+                orbit.certain.add(values[number])
+    for access in suspects:
+        touch = access.touch
+        other = fresh.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
+        if other is None:
+            if not search.cut:
+                access.doubtful.clear()
+                access.maybe = None
+                access.settled = True
+            continue
+        if other.bad is not None:
+            access.bad = other.bad
+            access.certain |= other.certain
+        elif not search.cut:
+            access.certain, access.doubtful = other.certain, other.doubtful
+            access.maybe = other.maybe
+            access.settled = True

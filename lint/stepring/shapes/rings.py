@@ -1,0 +1,116 @@
+"""Rings: found from the IR of the functions that could be part of one, and studied by running them.
+
+Two stages. In a unit, ``ring_functions`` keeps the functions that matter. In the program, ``find_rings`` lays them out
+with their helpers, finds storage with indices that walk it round, and for each ring of constant capacity runs its
+functions from every index value that can be reached. What a report shows is a ``Ring``; its accesses and steps carry
+the evidence that the rules need (``ring_types``).
+"""
+
+from collections.abc import Callable, Mapping, Sequence
+
+from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
+from stepring.places import Origin, Position
+from stepring.shapes.ring_build import build
+from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances
+from stepring.shapes.ring_facts import FlatFacts
+from stepring.shapes.ring_filter import ring_functions
+from stepring.shapes.ring_flat import Spoil, Touch
+from stepring.shapes.ring_keys import Key
+from stepring.shapes.ring_orbit import Scene, study
+from stepring.shapes.types import Ring
+
+__all__ = ["find_rings", "ring_functions"]
+
+LARGEST = 4096
+"""Rings with more slots are found, but not run slot by slot."""
+
+
+def find_rings(
+    functions: Sequence[Function],
+    objects: Sequence[Object],
+    structs: Mapping[str, StructLayout],
+    model: DataModel,
+    origin: Callable[[Position], Origin],
+) -> tuple[Ring, ...]:
+    """The rings of a program.
+
+    ``functions`` are those that ``ring_functions`` kept, of all units; ``objects`` and ``structs`` are the program's;
+    ``origin`` leads from a position to the source as it was written.
+    """
+    merged = catalogue(functions, objects, structs)
+    scene = _scene(merged)
+    found = []
+    for candidate in candidates(merged):
+        studied = None
+        if candidate.capacity is not None and candidate.capacity <= LARGEST:
+            studied = study(scene, candidate.storage, candidate.capacity, candidate.indices, candidate.counts)
+        found.append(build(merged, candidate, studied, origin))
+    return tuple(found)
+
+
+def _scene(merged: Catalogue) -> Scene:
+    """What the studies need of the program."""
+    stored: list[tuple[FlatFacts, frozenset[Key], frozenset[str], frozenset[Key]]] = []
+    for facts in merged.entered:
+        keys: set[Key] = set()
+        structs: set[str] = set()
+        arrays: set[Key] = set()
+        for block in facts.flat.blocks:
+            for op in block.ops:
+                if isinstance(op, Spoil):
+                    keys |= op.keys
+                    structs |= op.structs
+                elif isinstance(op, Touch):
+                    arrays.add(op.storage)
+        keys.update(facts.stored)
+        stored.append((facts, frozenset(keys), frozenset(structs), frozenset(arrays)))
+
+    def events(tracked: frozenset[Key], arrays: frozenset[Key]) -> list[FlatFacts]:
+        members = {key[1] for key in tracked if key[0] == "member"}
+        return [
+            facts
+            for facts, keys, structs, touched in stored
+            if keys & tracked or touched & arrays or structs & members
+        ]
+
+    def initial(key: Key) -> tuple[int, ...] | None:
+        return _initial(merged, key)
+
+    def writes(name: str) -> frozenset[Key]:
+        return merged.writers.get(name, frozenset())
+
+    return Scene(events, initial, merged.types, writes)
+
+
+def _initial(merged: Catalogue, key: Key) -> tuple[int, ...] | None:
+    """The values that an integer can have at start; None where its object is not in the code that was read."""
+    if key[0] == "var":
+        item = merged.objects.get(key[:2])
+        if item is None:
+            return None
+        values = {known for found in item.initial for known in (_constant(found.value),) if known is not None}
+        if isinstance(item.variable.type, IntType):
+            return tuple(values) or (0,)
+        return tuple(sorted(values | {0}))
+    found_values: set[int] = set()
+    some = False
+    for item in instances(merged, key[1]):
+        some = True
+        listed = [found for found in item.initial if found.path and found.path[-1] == key[2]]
+        values = {known for found in listed for known in (_constant(found.value),) if known is not None}
+        found_values |= values or {0}
+        if len(listed) > 1:
+            found_values.add(0)
+    if some:
+        return tuple(sorted(found_values))
+    # No object in sight: it comes from the caller, set up by the code's own reset if there is one.
+    resets = {reset.value for reset in merged.moves[key].resets.values()} if key in merged.moves else set()
+    return tuple(sorted(resets)) or (0,)
+
+
+def _constant(value: object) -> int | None:
+    found = getattr(value, "value", None)
+    while found is None and hasattr(value, "operand"):
+        value = value.operand
+        found = getattr(value, "value", None)
+    return found if isinstance(found, int) else None
