@@ -283,8 +283,8 @@ def examine(random: Random, pointers: bool, summarised: bool) -> None:
     lasting = scalars()
     limits: dict[Cell, Interval] = {}
     if summarised:
-        for _, cell, _ in lasting:
-            limits.setdefault(cell, Interval(0, random.choice((1, 5, 11, 100)), 1))
+        for _, cell, kind in lasting:
+            limits.setdefault(cell, Interval(0, min(kind.high, random.choice((1, 5, 11, 100))), 1))
     exposure = None
     if summarised:
         # With structures reached by pointers, what holds for members of one must hold for all.
