@@ -32,8 +32,8 @@ class Chunk:
 
     ``text`` starts at ``line`` and ``column`` of ``file`` and holds nothing but C, ``#line`` markers and line ends:
     each of its physical lines has a place of its own (no two share file, line and columns). ``offset`` and
-    ``end_offset`` bound it in its piece. ``names`` are what it declares for others (objects, functions, tags,
-    enumerators), ``typedefs`` the type names; ``variable`` says that it defines an object. ``uses`` are all
+    ``end_offset`` bound it in its piece. ``names`` are the objects and functions that it declares, ``tags`` the
+    tags and enumerators, ``typedefs`` the type names; ``variable`` says that it defines an object. ``uses`` are all
     identifiers in it.
     """
 
@@ -47,6 +47,7 @@ class Chunk:
     end_offset: int
     system: bool
     names: tuple[str, ...]
+    tags: tuple[str, ...]
     typedefs: tuple[str, ...]
     variable: bool
     uses: frozenset[str]
@@ -227,7 +228,7 @@ def _carve_piece(text: str, source: str, last: bool = False) -> Piece:
     rest = _scan(text, 0, _EVENT, spans, changes, notices, lines)
     if rest is not None and last:
         while rest is not None:
-            file, line, _ = lines.at(rest)
+            file, line, _ = lines.at(_first(text, rest))
             notices.append(
                 Notice(
                     "unterminated",
@@ -247,7 +248,7 @@ def _carve_piece(text: str, source: str, last: bool = False) -> Piece:
     typedefs: set[str] = set()
     for chunk in chunks:
         typedefs.update(chunk.typedefs)
-        for name in (*chunk.names, *chunk.typedefs):
+        for name in (*chunk.names, *chunk.tags, *chunk.typedefs):
             declares[name] = (*declares.get(name, ()), chunk)
     fixed = {name: tuple(events) for name, events in changes.items()}
     return Piece(chunks, fixed, tuple(notices), declares, frozenset(typedefs), rest is not None and not last)
@@ -308,7 +309,7 @@ def _scan(
             if match.end() == at + 1:
                 # only the strict pattern matches a bare line end: a declaration starts although braces are open
                 if depth:
-                    file, line, _ = lines.at(start)
+                    file, line, _ = lines.at(_first(text, start))
                     text_of = "A declaration that starts here is not closed; it was left out."
                     notices.append(Notice("unterminated", "warning", text_of, file, line))
                     start, depth, dirty, body = match.end(), 0, False, -1
@@ -334,6 +335,13 @@ def _scan(
     if depth or not _blank(text, start, len(text)):
         return start
     return None
+
+
+def _first(text: str, start: int) -> int:
+    """The offset of the first character from ``start`` on that is no space."""
+    while start < len(text) and text[start].isspace():
+        start += 1
+    return start
 
 
 def _blank(text: str, start: int, end: int) -> bool:
@@ -394,9 +402,7 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
     used_place: tuple[str, int] = ("", 0)
     used_column = 0
     for span in sorted(spans, key=lambda one: one.start):
-        start = span.start
-        while start < span.end and text[start].isspace():
-            start += 1
+        start = _first(text, span.start)
         file, line, system = lines.at(start)
         column = start - text.rfind("\n", 0, start)
         if (file, line) == used_place and column <= used_column:
@@ -406,8 +412,9 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
             body = _plain(body, file, line, column)
         head = body
         if span.kind == "function":
-            # offsets move when text was blanked; the body starts at the same count of braces
-            head = body[: body.index("{")] if not span.dirty else _head(body)
+            head = text[start : span.body]
+            if span.dirty:
+                head = _plain(head, file, line, column)
         names = declared_names(head, span.kind == "function") if span.kind != "pragma" else Declared()
         last_break = body.rfind("\n")
         if last_break < 0:
@@ -426,17 +433,11 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
             span.end,
             system,
             names.names,
+            names.tags,
             names.typedefs,
             names.object,
             identifiers(body),
         )
-
-
-def _head(body: str) -> str:
-    for match in _EVENT.finditer(body):
-        if match.group() == "{":
-            return body[: match.start()]
-    return body
 
 
 def _end_place(body: str, line: int) -> int:

@@ -26,6 +26,7 @@ from stepring.read.words import (
     SPECIAL,
     STATEMENT_KEYWORDS,
     TAKES_GROUP,
+    TAKES_TYPE,
     TYPE_KEYWORDS,
     TYPED_BY_POSITION,
     TYPEOF,
@@ -95,26 +96,28 @@ _GOOD_ESCAPES = frozenset("0123456789abcdefghijklmnopqrstuvwxyzABCDEFGHIJKLMNOPQ
 _OPENERS = {"(": ")", "[": "]", "{": "}"}
 _ASM_QUALIFIERS = word_set("volatile __volatile__ __volatile goto inline __inline __inline__ const")
 _MODES = {"QI": "char", "byte": "char", "HI": "short", "DI": "long long", "SF": "", "DF": ""}
-_BODY_LINE = re.compile(r"[^\n]")
+_SIGNS = ("signed", "unsigned", "long", "short")
 
 
 def clean(
     text: str,
     declared: Collection[str] = (),
     int_bytes: int = 4,
-    force: bool = False,
     guess: Guess = NO_GUESS,
+    force: bool = False,
+    types: Collection[str] = (),
 ) -> Cleaned:
     """The declaration (or a whole unit's text) in ISO C.
 
     ``declared`` are names that the unit declares: a dialect word among them is an identifier. ``int_bytes`` is the
-    size of ``int``, needed for GNU machine modes. ``force`` looks at every token even where nothing looks like
-    dialect. ``guess`` names unknown words that are no C (see ``read.infer``).
+    size of ``int``, needed for GNU machine modes. ``guess`` names unknown words that are no C (see ``read.infer``).
+    ``force`` looks at every token even where nothing looks like dialect, and at what only unknown macros can make:
+    a type (one of ``types``) or assembler operands as an argument.
     """
     words = guess.words()
     if not force and not _ODD.search(text) and not _has_special(text, words):
         return Cleaned(text)
-    return _Cleaner(text, declared, int_bytes, guess).run()
+    return _Cleaner(text, declared, int_bytes, guess, frozenset(types) if force else None).run()
 
 
 _IDENT = re.compile(r"[A-Za-z_]\w*")
@@ -127,9 +130,15 @@ def _has_special(text: str, words: frozenset[str]) -> bool:
 
 _ASM_LINES = re.compile(r"\n[ \t]*#[ \t]*asm\b(?!\s*\()[^\n]*\n(?s:.*?)\n[ \t]*#[ \t]*endasm\b[^\n]*")
 _ASM_CALL = re.compile(r'\n([ \t]*)#[ \t]*asm[ \t]*\([ \t]*("(?:[^"\\\n]|\\.)*")[ \t]*\)')
-_ASM_WORDS = re.compile(r"_asm\b(?![ \t]*[({])((?:(?!_endasm\b)[\s\S])*?)_?_endasm\b")
-_ASM_BLOCK = re.compile(r"asm(?:__)?(?:\s+(?:volatile|__volatile__|__volatile))?\s*\{[^{}]*\}")
-_ASM_FUNCTION = re.compile(r"__asm[ \t]+([A-Za-z_][\w \t*]*\([^(){};]*\)\s*)\{([^{}]*)\}")
+_ASM_WORDS = re.compile(r"__?asm\b(?![ \t]*[({])((?:(?!_endasm\b)[\s\S])*?)_?_endasm\b")
+_INNER = r"\{((?:[^{}]|\{[^{}]*\})*)\}"
+_PLAIN_ASM = r"(?:volatile|__volatile__|__volatile|goto|inline|__inline__|__inline)\b"
+_ASM_BARE = re.compile(
+    r"asm(?:__)?(?:\s+(?:volatile|__volatile__|__volatile))?\s*\{|asm[ \t\r\n]+(?!" + _PLAIN_ASM + r")[A-Za-z.]"
+)
+_ASM_FUNCTION = re.compile(r"\b_{0,2}asm\b((?:\s+[A-Za-z_]\w*[\s*]*)+\([^(){};]*\)\s*)" + _INNER)
+_ASM_BLOCK = re.compile(r"\b_{0,2}asm(?:__)?(?:\s+(?:volatile|__volatile__|__volatile))?\s*" + _INNER)
+_ASM_LINE = re.compile(r"\b_{0,2}asm[ \t]+(?!" + _PLAIN_ASM + r")(?=[A-Za-z.])[^\n;{}]*;?")
 
 
 def lift_assembler(text: str) -> str:
@@ -142,10 +151,10 @@ def lift_assembler(text: str) -> str:
         text = _ASM_WORDS.sub(lambda m: _asm_in_place(m[0], ""), text)
     if "#asm" in text or "# asm" in text:
         text = _ASM_CALL.sub(r"\n\1__asm__(\2);", text)
-    if "__asm " in text or "__asm\t" in text:
-        text = _ASM_FUNCTION.sub(lambda m: "      " + m[1] + "{" + _asm_in_place(m[2]) + "}", text)
-    if "asm" in text:
+    if _ASM_BARE.search(text):
+        text = _ASM_FUNCTION.sub(lambda m: m[1] + "{" + _asm_in_place(m[2]) + "}", text)
         text = _ASM_BLOCK.sub(lambda m: _asm_in_place(m[0]), text)
+        text = _ASM_LINE.sub(lambda m: _asm_in_place(m[0]), text)
     return text
 
 
@@ -160,10 +169,23 @@ def clean_whole_unit(text: str) -> str:
     return f"typedef int {', '.join(names)};\n" + cleaned.text
 
 
+def _wordlike(word: str) -> bool:
+    """Whether a token is an identifier or a keyword."""
+    return bool(word) and (word[0].isalpha() or word[0] in "_$") and word[-1] not in "\"'"
+
+
 class _Cleaner:
     """The state of one pass: significant tokens, what each becomes, what stands between."""
 
-    def __init__(self, text: str, declared: Collection[str], int_bytes: int, guess: Guess = NO_GUESS) -> None:
+    def __init__(
+        self,
+        text: str,
+        declared: Collection[str],
+        int_bytes: int,
+        guess: Guess = NO_GUESS,
+        types: frozenset[str] | None = None,
+    ) -> None:
+        self.types = types
         self.guess = guess
         self.guessed = guess.words()
         self.declared = declared
@@ -223,6 +245,8 @@ class _Cleaner:
             if first.isalpha() or first in "_$":
                 if word in SPECIAL:
                     self._special(index, word)
+                elif self.types is not None and self.braces and self._argument(index, word):
+                    pass
                 elif word in self.guessed:
                     self._guessed(index, word)
                 elif word == "case":
@@ -310,14 +334,53 @@ class _Cleaner:
         grouped = self.word(index + 1) == "("
         end = self.group_end(index + 1) if grouped else index
         after = self.word(end + 1)
-        if word in self.guess.decorations:
-            if self.word(index - 1) not in (".", "->") and not (grouped and after in (";", ",") and self.braces):
+        if word in self.guess.types:
+            if self.word(index - 1) in _SIGNS:
+                self.out[index] = ""
+        elif word in self.guess.decorations:
+            before = self.word(index - 1)
+            beside = _wordlike(after) or _wordlike(before) or before in (")", "]") or (grouped and not self.braces)
+            call = grouped and after == ";" and self.braces and before != "]"
+            if beside and before not in (".", "->", "return", "goto") and not call:
                 self.blank(index, end)
+        elif word in self.guess.strings:
+            if self.word(index - 1)[-1:] == '"' or after[:1] == '"':
+                self.out[index] = '""'
         elif grouped and word in self.guess.loops and after == "{":
             self.before.setdefault(index, []).append("while (")
             self.out[end] = "))"
         elif grouped and word in self.guess.statements and after not in (";", ",", ")"):
             self.out[end] = ");"
+
+    def _argument(self, index: int, word: str) -> bool:
+        """What can only be an argument of an unknown macro: assembler operands, a type (which becomes its size)."""
+        types = self.types or frozenset()
+        if self.word(index + 1) == "(" and self.word(index + 2)[:1] == '"' and word not in STATEMENT_KEYWORDS:
+            end = self.group_end(index + 1)
+            inner = self.words[index + 2 : end]
+            if ":" in inner and "?" not in inner and self.word(index - 1) in (";", "{", "}"):
+                self._asm(index)
+                return True
+        if self.word(index - 1) not in ("(", ",") or not self.openers or self.words[self.openers[-1]] != "(":
+            return False
+        callee = self.word(self.openers[-1] - 1)
+        if not _wordlike(callee) or callee in STATEMENT_KEYWORDS or callee in TAKES_TYPE or callee in types:
+            return False
+        end = index
+        typed = False
+        while end < len(self.words) and self.words[end] not in (",", ")"):
+            word = self.words[end]
+            tagged = self.word(end - 1) in ("struct", "union", "enum") and _wordlike(word)
+            if not (word in TYPE_KEYWORDS or word in types or tagged or (word == "*" and typed)):
+                return False
+            typed = True
+            end += 1
+        before = self.word(self.openers[-1] - 2)
+        if before in TYPE_KEYWORDS or before in types or before == "*":
+            return False
+        self.before.setdefault(index, []).append("sizeof(")
+        self.before.setdefault(end, []).append(")")
+        return True
 
     def _is_type_use(self, index: int) -> bool:
         after = self.word(index + 1)
@@ -571,6 +634,11 @@ class _Cleaner:
         if word == "interrupt" and after == "[" and self.braces == 0 and before in ("", ";", "}"):
             self.blank(index, self.group_end(index + 1))
             self.attributes.add("interrupt")
+            return
+        if word in TYPED_BY_POSITION and before == "(" and after == ")":
+            operand = self.word(index + 2)
+            if operand and (operand[0].isalnum() or operand[0] == "_"):
+                self.out[index] = TYPED_BY_POSITION[word]
             return
         if not starts or not (plain_after or (after == "*" and typed_before)):
             return

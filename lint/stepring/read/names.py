@@ -14,7 +14,7 @@ from functools import lru_cache
 from stepring.read.words import word_set
 
 _IDENTIFIER = re.compile(r"(?:(?<=\.\.\.)|(?<!->)(?<![\w$.]))[A-Za-z_$][\w$]*")
-_TOKEN = re.compile(r"[A-Za-z_$][\w$]*|[()\[\],;=*:]")
+_TOKEN = re.compile(r"[A-Za-z_$][\w$]*|\.?\d[\w.]*|[()\[\],;=*:@]")
 _STRING = re.compile(r"\"(?:[^\"\\\n]|\\.)*\"|'(?:[^'\\\n]|\\.)*'")
 _TAG = re.compile(
     r"\b(struct|union|enum)\b(?:\s*__attribute__\s*\(\((?:[^()]|\((?:[^()]|\([^()]*\))*\))*\)\)|\s*\[\[[^\]]*\]\])*"
@@ -22,10 +22,12 @@ _TAG = re.compile(
 )
 _ENUM_BODY = re.compile(r"\benum\b[^{};()]*(?:\(\([^{};]*\)\)[^{};()]*)?\{([^{}]*)\}")
 _ENUMERATOR = re.compile(r"(?:^|,)\s*([A-Za-z_$][\w$]*)")
+_INTERRUPT_MACRO = re.compile(r"\s*(?:ISR|SIGNAL|INTERRUPT)\s*\(\s*([A-Za-z_]\w*)")
+_INTERRUPT_WORD = re.compile(r"\s*interrupt\s*\[[^\]]*\]")
 _LINE = re.compile(r"(?m)^[ \t]*#.*$")
 
 TYPE_WORDS = word_set(
-    "void char short int long float double signed unsigned _Bool _Complex __signed__ __signed __int128 bool"
+    "void char short int long float double signed unsigned _Bool _Complex __signed__ __signed __int128"
 )
 _NO_NAMES = TYPE_WORDS | word_set(
     "const volatile restrict static extern register auto inline typedef struct union enum _Noreturn _Thread_local"
@@ -45,11 +47,13 @@ def identifiers(text: str) -> frozenset[str]:
 
 @dataclass(frozen=True, slots=True)
 class Declared:
-    """``names`` are ordinary names, tags and enumerators; ``typedefs`` type names; ``object`` whether one is a
-    variable.
+    """``names`` are objects and functions, ``tags`` tags and enumerators, ``typedefs`` type names.
+
+    ``object`` says whether one is a variable.
     """
 
     names: tuple[str, ...] = ()
+    tags: tuple[str, ...] = ()
     typedefs: tuple[str, ...] = ()
     object: bool = False
 
@@ -61,22 +65,28 @@ def declared_names(text: str, function: bool) -> Declared:
         text = _LINE.sub("", text)
     if '"' in text or "'" in text:
         text = _STRING.sub('""', text)
-    names: list[str] = []
+    if text.startswith("interrupt"):
+        text = _INTERRUPT_WORD.sub("", text, count=1)
+    tags: list[str] = []
     if "{" in text:
         for tag in _TAG.finditer(text):
             words = tag[2].split()
             if words:
-                names.append(words[-1])
+                tags.append(words[-1])
         if "enum" in text:
             for body in _ENUM_BODY.finditer(text):
-                names.extend(_ENUMERATOR.findall(_without_groups(body[1])))
+                tags.extend(_ENUMERATOR.findall(_without_groups(body[1])))
         text = _without_braces(text)
     found, is_object = _declarators(text, function)
+    macro = _INTERRUPT_MACRO.match(text) if function else None
+    if macro is not None:
+        found = [macro[1]]
     intern = sys.intern
+    marks = tuple(map(intern, dict.fromkeys(tags)))
     if not function and "typedef" in text and re.search(r"\btypedef\b", text):
-        return Declared(tuple(map(intern, names)), tuple(map(intern, found)))
+        return Declared((), marks, tuple(map(intern, found)))
     is_object = is_object and not function and re.search(r"\bextern\b", text) is None
-    return Declared(tuple(map(intern, dict.fromkeys((*names, *found)))), (), is_object)
+    return Declared(tuple(map(intern, found)), marks, (), is_object)
 
 
 def _without_groups(text: str) -> str:
@@ -125,7 +135,10 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                     before = ")"
                     continue
                 inside = tokens[index + 1] if index + 1 < count else ""
-                if inside == "*" or not last:
+                end = _skip_group(tokens, index)
+                called = end < count and tokens[end] == "(" and before not in _TAKES_GROUP
+                wrapped = tokens[index + 2 : index + 3] == ["("] and tokens[index + 3 : index + 4] != ["*"]
+                if inside == "*" or before == "*" or not last or called or (wrapped and inside not in _TAKES_GROUP):
                     name = _first_inside(tokens, index)
                     if name:
                         names.append(name)
@@ -145,17 +158,19 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                     is_object = is_object or typed
                 last, taken = "", False
                 typed = True
-            elif token in ("[", "=", ":"):
+            elif token in ("[", "=", ":", "@", "_at_"):
                 if not taken and last:
                     names.append(last)
-                    taken = is_object = True
+                    is_object = True
+                taken = taken or token != "["
+                taken = taken or bool(last)
                 if token == "[":
                     index = _skip_group(tokens, index, "[", "]")
                     before = "]"
                     continue
             elif token == "*":
                 typed = True
-            elif token != "]" and token not in _NO_NAMES and token not in _TAKES_GROUP:
+            elif token != "]" and not token[0].isdigit() and token not in _NO_NAMES and token not in _TAKES_GROUP:
                 typed = typed or bool(last)
                 last = token
             elif token in TYPE_WORDS:

@@ -6,6 +6,7 @@ known (``typedef int A, B;``: what they stand for does not matter to the grammar
 pragma before each; where such a call fails, they are parsed one by one, so that a bad declaration costs only itself.
 """
 
+import gc
 import re
 import sys
 from collections.abc import Collection, Iterator, Sequence
@@ -40,8 +41,7 @@ class Job:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Parsed:
-    """What parsing one job gave: nodes and typeof operands, or the reason why not (with line and column where known).
-    """
+    """What parsing one job gave: nodes and typeof operands, or the reason why not (with line and column where known)."""
 
     nodes: tuple[Any, ...] = ()
     typeofs: dict[str, Any] = field(default_factory=dict)
@@ -51,22 +51,29 @@ class Parsed:
     column: int = 0
 
 
-def parse_all(jobs: Sequence[Job]) -> list[Parsed]:
-    """Parse jobs, many in one call of the parser; one answer per job, in order."""
+def parse_all(jobs: Sequence[Job], parser: CParser | None = None) -> list[Parsed]:
+    """Parse jobs, many in one call of the parser; one answer per job, in order.
+
+    ``parser`` may be used again and again; it starts afresh with every text.
+    """
+    parser = parser or CParser()
     answers: list[Parsed] = []
-    with _deep_recursion():
+    if not jobs:
+        return answers
+    with _deep_recursion(), _collector_at_rest():
         for batch in _batches(jobs):
-            done = _parse_together(batch) if len(batch) > 1 else None
-            answers.extend(done if done is not None else [parse_one(job) for job in batch])
+            done = _parse_together(batch, parser) if len(batch) > 1 else None
+            answers.extend(done if done is not None else [parse_one(job, parser) for job in batch])
+        parser.parse("")  # lets go of the last text's tokens
     return answers
 
 
-def parse_one(job: Job) -> Parsed:
+def parse_one(job: Job, parser: CParser) -> Parsed:
     """Parse one job on its own."""
     with _deep_recursion():
         text = _prefix(job.types, job.cleaned.operands) + f"#pragma {_MARK} 0\n" + _body(job)
         try:
-            tree = CParser().parse(text, spelled_file(job.chunk.file))
+            tree = parser.parse(text, spelled_file(job.chunk.file))
         except ParseError as error:
             return _failure(str(error), job.chunk)
         except RecursionError:
@@ -88,7 +95,7 @@ def _batches(jobs: Sequence[Job]) -> Iterator[Sequence[Job]]:
         yield jobs[start:]
 
 
-def _parse_together(batch: Sequence[Job]) -> list[Parsed] | None:
+def _parse_together(batch: Sequence[Job], parser: CParser) -> list[Parsed] | None:
     types: set[str] = set()
     operands: list[Operand] = []
     for job in batch:
@@ -99,7 +106,7 @@ def _parse_together(batch: Sequence[Job]) -> list[Parsed] | None:
         parts.append(f"#pragma {_MARK} {number}\n")
         parts.append(_body(job))
     try:
-        tree = CParser().parse("".join(parts), "")
+        tree = parser.parse("".join(parts), "")
     except (ParseError, RecursionError, AssertionError, AttributeError, ValueError, TypeError, IndexError, KeyError):
         return None
     return _groups(tree.ext, batch)
@@ -164,11 +171,25 @@ def _split_answer(nodes: Sequence[Any], job: Job) -> Parsed:
 def _failure(message: str, chunk: Chunk) -> Parsed:
     match = re.match(r"(.*?):(\d+)(?::(\d+))?: (.*)\Z", message, re.DOTALL)
     if match is None:
-        return Parsed(error=message, file=chunk.file, line=chunk.line)
+        reason = message.removeprefix(f"{spelled_file(chunk.file)}: ")
+        return Parsed(error=reason, file=chunk.file, line=chunk.line)
     reason = match[4]
     if reason.startswith("before: "):
         reason = f"the parser stopped before {reason[8:]!r}"
     return Parsed(error=reason, file=match[1], line=int(match[2]), column=int(match[3] or 0))
+
+
+@contextmanager
+def _collector_at_rest() -> Iterator[None]:
+    """No garbage collection while parsing: it makes no cycles, and walking the growing trees doubles the time."""
+    was_on = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if was_on:
+            gc.freeze()
+            gc.enable()
 
 
 @contextmanager

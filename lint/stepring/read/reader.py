@@ -10,11 +10,14 @@ import re
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
+
+from pycparser import CParser, c_ast
 
 from stepring.places import Notice, Position
 from stepring.read.carve import Chunk, Piece, carve, spelled_file
 from stepring.read.dialect import Cleaned, clean, lift_assembler
-from stepring.read.infer import Guess, infer
+from stepring.read.infer import Guess, Votes, infer
 from stepring.read.needed import Ownership, Scope, file_scope, needed_chunks, own_chunks
 from stepring.read.origin import OriginFinder
 from stepring.read.parse import Job, Parsed, parse_all, place_of_offset
@@ -102,6 +105,7 @@ class Reader:
         self._pieces: dict[str, Piece] = {}
         self._done: dict[tuple[object, ...], _Done] = {}
         self._sources = SourceFiles()
+        self._parser = CParser()
 
     def __getstate__(self) -> dict[str, object]:
         return {"root": self.root}
@@ -117,26 +121,31 @@ class Reader:
         own = own_chunks(pieces, self._ownership, pre.unit.kind == "preprocessed")
         chunks = needed_chunks(pieces, scope, own)
         context = _Context(scope, scope.typedefs | _ALWAYS_TYPES, _int_bytes(pre.predefined))
+        mine = [chunk for chunk in chunks if chunk in own]
         if not pre.complete:
-            context.guess = self._guess((chunk for chunk in chunks if chunk in own), context)
+            context.guess = self._guess(mine, context)
         done = self._read_chunks(chunks, context)
         failed = [chunk for chunk in chunks if done[chunk].parsed.error]
         if failed:
-            context.guess = context.guess | self._guess(failed, context)
+            context.guess = self._guess(dict.fromkeys((*mine, *failed)), context)
+            words = context.guess.words()
+            done.update(self._read_chunks([chunk for chunk in mine if chunk.uses & words], context))
             done.update(self._read_chunks(failed, context, force=True))
-            if context.guess.types:
-                # a name that is a type in one declaration is one in all
-                again = [chunk for chunk in chunks if chunk.uses & context.guess.types and not done[chunk].inferred]
-                done.update(self._read_chunks(again, context))
+            together = context.guess
+            for chunk in [one for one in failed if done[one].parsed.error]:
+                # what the others made of a name may be wrong here
+                context.guess = self._guess([chunk], context)
+                done.update(self._read_chunks([chunk], context, force=True))
+            context.guess = together
         return self._unit(pre, pieces, chunks, own, done, context)
 
     def _guess(self, chunks: Iterable[Chunk], context: _Context) -> Guess:
-        guess = Guess()
+        votes = Votes()
         for chunk in chunks:
             if chunk.kind != "pragma":
                 text = clean(chunk.text, context.declared_words(chunk), context.int_bytes).text
-                guess = guess | infer(text, context.types | guess.types, context.scope.declares)
-        return guess
+                infer(text, context.types, context.scope.declares, votes)
+        return votes.decide()
 
     def _read_chunks(self, chunks: Iterable[Chunk], context: _Context, force: bool = False) -> dict[Chunk, _Done]:
         answers: dict[Chunk, _Done] = {}
@@ -152,10 +161,11 @@ class Reader:
             if chunk.kind == "pragma":
                 cleaned = Cleaned(chunk.text)
             else:
-                cleaned = clean(chunk.text, declared, context.int_bytes, force, context.guess)
+                types = chunk.uses & (context.types | context.guess.types)
+                cleaned = clean(chunk.text, declared, context.int_bytes, context.guess, force, types)
             jobs.append(Job(chunk, cleaned, chunk.uses & (context.types | context.guess.types)))
             keys.append(key)
-        for job, key, parsed in zip(jobs, keys, parse_all(jobs), strict=True):
+        for job, key, parsed in zip(jobs, keys, parse_all(jobs, self._parser), strict=True):
             declaration = None if parsed.error else self._declaration(job, parsed)
             done = _Done(job.cleaned, parsed, declaration, job.chunk.uses & context.guess.types)
             self._done[key] = answers[job.chunk] = done
@@ -164,7 +174,7 @@ class Reader:
     def _declaration(self, job: Job, parsed: Parsed) -> Declaration:
         chunk = job.chunk
         digest = hashlib.blake2b(chunk.text.encode("utf-8", "replace"), digest_size=8).hexdigest()
-        names = tuple(dict.fromkeys((*chunk.names, *chunk.typedefs)))
+        names = tuple(dict.fromkeys((*_node_names(parsed.nodes), *chunk.tags)))
         return Declaration(
             key=f"{chunk.file}:{chunk.line}:{chunk.column}:{digest}",
             kind="function" if chunk.kind == "function" else "other",
@@ -196,7 +206,7 @@ class Reader:
             here = done[chunk]
             inferred |= here.inferred
             if chunk.kind == "function" and chunk in own:
-                name = chunk.names[0] if chunk.names else ""
+                name = next(iter(_node_names(here.parsed.nodes) or chunk.names), "")
                 line = _name_line(chunk, name)
                 place = FunctionPlace(name, chunk.file, line, not here.parsed.error)
                 functions.setdefault((place.file, place.line, place.name), place)
@@ -216,6 +226,16 @@ class Reader:
             marked_falls=frozenset(falls),
             notices=tuple(notices),
         )
+
+
+def _node_names(nodes: Iterable[Any]) -> list[str]:
+    """The objects, functions and types that top-level nodes declare."""
+    names: list[str] = []
+    for node in nodes:
+        name = node.decl.name if isinstance(node, c_ast.FuncDef) else getattr(node, "name", None)
+        if isinstance(name, str):
+            names.append(name)
+    return names
 
 
 def _int_bytes(predefined: Mapping[str, str]) -> int:
@@ -246,7 +266,7 @@ def _fall_lines(chunk: Chunk, cleaned: Cleaned) -> Iterator[tuple[str, int]]:
 def _skipped(chunk: Chunk, done: _Done, find: OriginFinder, own: bool) -> Notice:
     """The notice for a declaration that could not be parsed, at the place where parsing stopped."""
     error = done.parsed
-    name = next(iter((*chunk.names, *chunk.typedefs)), "a declaration without a name")
+    name = next(iter((*chunk.names, *chunk.typedefs, *chunk.tags)), "a declaration without a name")
     if error.line:
         at = find(Position(error.file or spelled_file(chunk.file), error.line, error.column))
         file, line, column = at.file, at.line, at.column

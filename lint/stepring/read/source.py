@@ -17,11 +17,11 @@ TOKEN_TEXT = (
     r"|\.\.\.|->|&&|\|\||\+\+|--|<<=|>>=|[-+*/%&|^!<>=]=|<<|>>|\#\#|."
 )
 TOKEN = re.compile(TOKEN_TEXT)
+_COMMENT = r"/\*(?:[^*]|\*(?!/))*(?:\*/)?|//(?:[^\\\n]|\\[ \t\r]*\n|\\.)*"
 _PART = re.compile(
-    r"(?P<space>[ \t\f\v\r]+|\\\r?\n)|(?P<line>\n)|(?P<comment>/\*(?:[^*]|\*(?!/))*(?:\*/)?|//(?:[^\\\n]|\\\r?\n|\\.)*)"
-    r"|(?P<token>" + TOKEN_TEXT + r")"
+    r"(?P<space>[ \t\f\v\r]+|\\[ \t\r]*\n)|(?P<line>\n)|(?P<comment>" + _COMMENT + r")|(?P<token>" + TOKEN_TEXT + r")"
 )
-_REST_OF_DIRECTIVE = re.compile(r"(?:[^\\\n/]|\\\r?\n|\\.|/\*(?:[^*]|\*(?!/))*(?:\*/)?|//(?:[^\\\n]|\\\r?\n|\\.)*|/)*")
+_REST_OF_DIRECTIVE = re.compile(r"(?:[^\\\n/]|\\[ \t\r]*\n|\\.|" + _COMMENT + r"|/)*")
 _FALL_PART = re.compile(
     r'"(?:[^"\\\n]|\\.)*"|\'(?:[^\'\\\n]|\\.)*\'|(/\*(?:[^*]|\*(?!/))*(?:\*/)?|//[^\n]*)|([A-Za-z_]\w*)'
 )

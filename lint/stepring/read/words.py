@@ -248,6 +248,13 @@ TYPEOF = frozenset({"typeof", "__typeof__", "__typeof", "typeof_unqual", "__type
 ALIGNOF = frozenset({"__alignof__", "__alignof", "_Alignof", "alignof"})
 VA_ARG = frozenset({"__builtin_va_arg", "va_arg"})
 INTERRUPT_MACROS = frozenset({"ISR", "SIGNAL", "INTERRUPT"})
+TAKES_TYPE = (
+    TYPEOF
+    | ALIGNOF
+    | VA_ARG
+    | word_set("sizeof offsetof __builtin_offsetof __builtin_types_compatible_p _Generic _Alignas _Atomic")
+)
+"""Words before a parenthesis in which ISO C itself, or this package, expects a type."""
 HANDLED = (
     ASM
     | TYPEOF
