@@ -505,7 +505,7 @@ def _logical(work: Work, node: Any) -> Expr:
             return Const(int(right.value != 0), int_, position(node, work.at))
         return (
             right
-            if isinstance(right, Binary)
+            if isinstance(right, Binary) and right.op in COMPARISONS
             else Binary("!=", right, converted(work, Const(0, int_), right.type), int_)
         )
     result = temporary(work, int_)
