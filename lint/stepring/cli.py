@@ -18,7 +18,6 @@ from typing import Any, NoReturn, TypeVar
 
 import click
 from rich.console import Console
-from rich.markdown import Markdown
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
 
 from stepring import __version__
@@ -174,6 +173,8 @@ def rule(identity: str | None) -> int:
     console = _console()
     with _writing():
         if console.is_terminal:
+            from rich.markdown import Markdown  # slow to load, and needed here only
+
             console.print(Markdown(page))
         else:
             click.echo(page.rstrip("\n"))
