@@ -196,7 +196,10 @@ def _cast(code: Code, source: CType, type_: IntType) -> Code:
     def run(env: Env) -> Value:
         value = code(env)
         if isinstance(value, int):
-            return value if low <= value <= high else _wrapped(value, type_)
+            if low <= value <= high:
+                return value
+            result = _wrapped(value, type_)
+            return Low(result) if isinstance(value, Low) and not type_.signed else result
         if isinstance(value, Range):
             if low <= value.low and value.high <= high:
                 return value

@@ -134,6 +134,7 @@ def _steps(
                 if cell != key or function != advance.function:
                     continue
                 pairs.append((before, after))
+                by = by or advance.by or 0  # a path that only wraps goes one step too
                 expected = (before + by) % capacity
                 if by and certain and form not in ("free-running", "none") and after % capacity != expected:
                     odd.append((before, after, expected))

@@ -32,7 +32,9 @@ from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
 from stepring.shapes.types import WrapForm
 
 COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
-Role = Literal["advance", "wrap", "reset", "copy", "other"]
+Role = Literal["advance", "wrap", "before", "instead", "reset", "copy", "other"]
+"""What an operation is to an index; a wrap comes after the advance, ``before`` it (as counting down needs it), or
+``instead`` of it (``i = i == N - 1 ? 0 : i + 1``)."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -316,6 +318,15 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
             facts.moves[id(op)] = total
     if not (facts.advances or facts.wraps or facts.resets or facts.copies):
         return None
+    for number, op, _ in nodes:
+        later = [item.position for item in facts.advances if item.function == op.function]
+        apart = any(at in moved for _, at in guards.get(number, ()))  # either wrap or advance, never both
+        if facts.roles.get(id(op)) != "wrap" or not later:
+            continue
+        if apart:
+            facts.roles[id(op)] = "instead"
+        elif all(op.position < item for item in later):
+            facts.roles[id(op)] = "before"
     return facts
 
 

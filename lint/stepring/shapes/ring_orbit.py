@@ -19,15 +19,15 @@ from stepring.shapes.ring_arith import Range, Value
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_flat import Touch
 from stepring.shapes.ring_keys import Key
-from stepring.shapes.steps import Pair, Trace, Walk
+from stepring.shapes.steps import Pair, Run, Trace, Walk
 
 STATES = 20_000
 """Combinations of values that are looked at when several integers are followed together."""
 ORBIT = 4_200
 """Values of one index that are looked at."""
-RUN_WORK = 60_000
-ALONE_WORK = 250_000
-TOGETHER_WORK = 500_000
+RUN_WORK = 30_000
+ALONE_WORK = 80_000
+TOGETHER_WORK = 160_000
 TOGETHER = 8
 """Up to this many integers are followed together."""
 
@@ -133,15 +133,48 @@ def _fits(access: Access, capacity: int) -> bool:
     return not any(out_of_range(value, capacity, kind) for value in access.certain | access.doubtful)
 
 
-def _walks(
+@dataclass(frozen=True, slots=True)
+class Pace:
+    """A function ready to run: ``moves`` for what it does to the followed integers, ``looks`` for its accesses.
+
+    They are apart because an access may depend on more than the integers' new values do, and what a value depends on
+    decides how certain it is. None where there is nothing to see.
+    """
+
+    moves: Walk | None
+    looks: Walk | None
+
+    @property
+    def walks(self) -> tuple[Walk, ...]:
+        """Both, each once."""
+        found = (self.moves, self.looks) if self.moves is not self.looks else (self.looks,)
+        return tuple(walk for walk in found if walk is not None)
+
+
+def _paces(
     scene: Scene, arrays: frozenset[Key], capacity: int, tracked: Sequence[Key], ranges: Mapping[Key, Range]
-) -> list[Walk]:
+) -> list[Pace]:
     wholes = {key: _whole(scene, key) for key in tracked}
-    made = [
-        Walk(facts, tracked, arrays, capacity, wholes, ranges, scene.writes, scene.types)
-        for facts in scene.events(frozenset(tracked), arrays)
-    ]
-    return [walk for walk in made if not walk.idle]
+    found = []
+    for facts in scene.events(frozenset(tracked), arrays):
+
+        def walk(storage: frozenset[Key], facts: FlatFacts = facts) -> Walk:
+            return Walk(facts, tracked, storage, capacity, wholes, ranges, scene.writes, scene.types)
+
+        looks: Walk | None = walk(arrays)
+        moves: Walk | None = looks
+        if looks is None or looks.idle:
+            continue
+        if looks.touched:
+            moves = walk(frozenset())
+            if moves.idle:
+                moves = None
+            elif moves.branching == looks.branching:
+                moves = looks
+        else:
+            looks = None
+        found.append(Pace(moves, looks))
+    return found
 
 
 def _whole(scene: Scene, key: Key) -> Range:
@@ -165,7 +198,8 @@ def _alone(
 
     Each access is looked at while the first of the integers that its subscript is made of is followed.
     """
-    walks = _walks(scene, arrays, capacity, (index,), ranges)
+    paces = _paces(scene, arrays, capacity, (index,), ranges)
+    walks = [walk for pace in paces for walk in pace.walks]
     cells = {id(use.touch): use.cells for walk in walks for use in walk.facts.uses}
 
     def wanted(touch: Touch) -> bool:
@@ -184,7 +218,7 @@ def _alone(
             _collect(walk, run.touches, (), found, capacity, False, wanted)
             found.complete = found.complete and not run.cut
     else:
-        search = _Search(scene, walks, (index,), capacity, found, ORBIT, ALONE_WORK, wanted)
+        search = _Search(scene, paces, (index,), capacity, found, ORBIT, ALONE_WORK, wanted)
         search.go()
         for state, certain in search.states.items():
             if certain and isinstance(state[0], int):
@@ -200,7 +234,7 @@ class _Search:
     """Reachability over the values of some integers."""
 
     scene: Scene
-    walks: list[Walk]
+    paces: list[Pace]
     tracked: tuple[Key, ...]
     capacity: int
     found: Study
@@ -221,29 +255,37 @@ class _Search:
             self.parents[state] = (None, None)
             (sure if certain else doubtful).append(state)
         while sure or doubtful:
-            if not sure and self.stop_at and self._all_bad():
+            if self.stop_at and self._all_bad():
                 self.cut = True
                 return
             state = sure.popleft() if sure else doubtful.popleft()
             certain = self.states[state]
-            for walk in self.walks:
-                run = walk.run(state, min(RUN_WORK, max(1, self.work)))
-                self.work -= run.work if run.work else 1
-                run.work = 0  # a remembered run costs nothing more
-                if run.cut:
-                    self.cut = True
-                _collect(walk, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
+            for pace in self.paces:
+                looks, moves = pace.looks, pace.moves
+                if looks is not None:
+                    run = self._run(looks, state)
+                    _collect(looks, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
+                if moves is None:
+                    continue
+                run = self._run(moves, state)
                 for pair, sure_pair in run.pairs.items():
                     self.found.pairs[pair] = self.found.pairs.get(pair, False) or (sure_pair and certain)
                 for values, (sure_end, trace) in run.ends.items():
                     end = tuple(
-                        new if key in walk.reads else old
+                        new if key in moves.reads else old
                         for key, new, old in zip(self.tracked, values, state, strict=True)
                     )
                     self._reach(end, certain and sure_end, state, trace, sure, doubtful)
             if self.work <= 0 or len(self.states) > self.limit:
                 self.cut = True
                 return
+
+    def _run(self, walk: Walk, state: State) -> Run:
+        run = walk.run(state, min(RUN_WORK, max(1, self.work)))
+        self.work -= run.work or 1
+        run.work = 0  # a remembered run costs nothing more
+        self.cut = self.cut or run.cut
+        return run
 
     def _all_bad(self) -> bool:
         known = (self.found.accesses.get(spot) for spot in self.stop_at)
@@ -343,18 +385,18 @@ def _together(
 ) -> None:
     """Follow the indices with the state that they depend on, and settle the suspects if that comes to an end."""
     tracked = list(dict.fromkeys([*indices, *sorted(state)]))
-    walks: list[Walk] = []
+    paces: list[Pace] = []
     for _ in range(3):
         tracked = [key for key in tracked if scene.types.get(key) is not None]
         if len(tracked) > TOGETHER:
             return
-        walks = _walks(scene, arrays, capacity, tracked, {})
-        more = {key for walk in walks for key in walk.state} - set(tracked)
+        paces = _paces(scene, arrays, capacity, tracked, {})
+        more = {key for pace in paces for walk in pace.walks for key in walk.state} - set(tracked)
         if not more:
             break
         tracked = [*tracked, *sorted(more)]
     fresh = Study()
-    search = _Search(scene, walks, tuple(tracked), capacity, fresh, STATES, TOGETHER_WORK)
+    search = _Search(scene, paces, tuple(tracked), capacity, fresh, STATES, TOGETHER_WORK)
     search.stop_at = {
         (access.touch.position, access.touch.kind, access.touch.function, access.touch.storage) for access in suspects
     }

@@ -14,8 +14,8 @@ from stepring.shapes.ring_build import build
 from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_filter import ring_functions
-from stepring.shapes.ring_flat import Spoil, Touch
-from stepring.shapes.ring_keys import Key
+from stepring.shapes.ring_flat import Set, Spoil, Touch
+from stepring.shapes.ring_keys import Key, place_keys
 from stepring.shapes.ring_orbit import Scene, study
 from stepring.shapes.types import Ring
 
@@ -50,20 +50,8 @@ def find_rings(
 
 def _scene(merged: Catalogue) -> Scene:
     """What the studies need of the program."""
-    stored: list[tuple[FlatFacts, frozenset[Key], frozenset[str], frozenset[Key]]] = []
-    for facts in merged.entered:
-        keys: set[Key] = set()
-        structs: set[str] = set()
-        arrays: set[Key] = set()
-        for block in facts.flat.blocks:
-            for op in block.ops:
-                if isinstance(op, Spoil):
-                    keys |= op.keys
-                    structs |= op.structs
-                elif isinstance(op, Touch):
-                    arrays.add(op.storage)
-        keys.update(facts.stored)
-        stored.append((facts, frozenset(keys), frozenset(structs), frozenset(arrays)))
+    names = {facts.flat.function.name for facts in merged.entered}
+    stored = [(facts, *_reach(facts, names)) for facts in merged.entered]
 
     def events(tracked: frozenset[Key], arrays: frozenset[Key]) -> list[FlatFacts]:
         members = {key[1] for key in tracked if key[0] == "member"}
@@ -80,6 +68,30 @@ def _scene(merged: Catalogue) -> Scene:
         return merged.writers.get(name, frozenset())
 
     return Scene(events, initial, merged.types, writes)
+
+
+def _reach(facts: FlatFacts, entered: set[str]) -> tuple[frozenset[Key], frozenset[str], frozenset[Key]]:
+    """What a function stores into and accesses (integers, whole structures, arrays), by itself or through helpers.
+
+    What it does through functions that can be entered themselves is left to those: they are run from every state.
+    """
+    keys: set[Key] = set()
+    structs: set[str] = set()
+    arrays: set[Key] = set()
+    own = facts.flat.function.name
+    for block in facts.flat.blocks:
+        if block.function != own and block.function in entered:
+            continue
+        for op in block.ops:
+            match op:
+                case Spoil():
+                    keys |= op.keys
+                    structs |= op.structs
+                case Touch():
+                    arrays.add(op.storage)
+                case Set():
+                    keys |= place_keys(op.place, op.place_frame, facts.flat.points)
+    return frozenset(keys), frozenset(structs), frozenset(arrays)
 
 
 def _initial(merged: Catalogue, key: Key) -> tuple[int, ...] | None:

@@ -10,7 +10,7 @@ the fork was on state that is not followed here, or on a value that only has bou
 from collections import defaultdict
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Any, TypeAlias
+from typing import Any, NamedTuple, TypeAlias
 
 from stepring.meaning.types import (
     AddressOf,
@@ -33,6 +33,7 @@ from stepring.meaning.types import (
     Switch,
     Unary,
     Variable,
+    VariablePlace,
 )
 from stepring.places import Position
 from stepring.shapes.ring_arith import Code, Compiler, Env, Ptr, Range, Value, add_offsets, whole
@@ -86,6 +87,7 @@ class _Compiled:
     targets: tuple[int, ...] = ()
     cases: tuple[tuple[int, int, int], ...] = ()
     joins: bool = False
+    live: set[Key] = field(default_factory=set)
     free: bool = False
 
 
@@ -275,6 +277,44 @@ class Walk:
             self.blocks.append(made)
         for number, made in enumerate(self.blocks):
             made.joins = into[number] > 1
+        self._lives()
+
+    def _lives(self) -> None:
+        """For each block the locals that are still read from it on: the others must not tell paths apart."""
+        blocks = self.facts.flat.blocks
+        reads: list[set[Key]] = []
+        stores: list[set[Key]] = []
+        before: dict[int, set[int]] = defaultdict(set)
+        for number, made in enumerate(self.blocks):
+            used: set[Key] = set()
+            given: set[Key] = set()
+            for op in blocks[number].ops:
+                if id(op) not in self.relevant:
+                    continue
+                for expr, frame in _expressions(op):
+                    used.update(key for key in self._uses(expr, frame) if key not in given)
+                if isinstance(op, Set) and isinstance(op.place, VariablePlace):
+                    given |= place_keys(op.place, op.place_frame, self.points)
+            if made.condition is not None:
+                end = blocks[number].end
+                condition = end.condition if isinstance(end, Branch) else getattr(end, "value", None)
+                if condition is not None:
+                    used.update(key for key in self._uses(condition, blocks[number].frame) if key not in given)
+            reads.append({key for key in used if is_local(key)})
+            stores.append(given)
+            for target in made.targets:
+                before[target].add(number)
+        for number, made in enumerate(self.blocks):
+            made.live = set(reads[number])
+        pending = list(range(len(self.blocks)))
+        while pending:
+            number = pending.pop()
+            live = self.blocks[number].live
+            for earlier in before[number]:
+                more = live - stores[earlier] - self.blocks[earlier].live
+                if more:
+                    self.blocks[earlier].live |= more
+                    pending.append(earlier)
 
     def _op(self, op: FlatOp) -> tuple[str, Any, Any, Any]:
         if isinstance(op, Set):
@@ -420,6 +460,9 @@ class Walk:
             node = sure.pop() if sure else doubtful.pop()
             block = self.blocks[node.block]
             if block.joins:
+                node.env = {
+                    key: value for key, value in node.env.items() if not is_local(key) or key in block.live
+                }
                 mark = (node.block, frozenset(node.env.items()), tuple(sorted(node.moves.items())))
                 if mark in known:
                     continue
@@ -506,26 +549,31 @@ class Walk:
             now = env[cell]
             segment = node.moves.get(number)
             if role == "advance":
-                if segment is not None and segment[1] != 0:
+                if segment is not None and not segment.early:
                     self._close(node, number, run)
                     segment = None
-                start = segment[0] if segment is not None else now
-                node.moves[number] = (start, by, segment is not None and segment[2], function)
+                start = segment.start if segment is not None else now
+                node.moves[number] = _Move(start, by, segment is not None and segment.stored, function, False)
             elif role == "wrap":
                 if segment is None:
-                    node.moves[number] = (now, 0, False, function)
+                    node.moves[number] = _Move(now, 0, False, function, False)
+            elif role in ("before", "instead"):
+                if segment is not None:
+                    self._close(node, number, run)
+                node.moves[number] = _Move(now, 0, False, function, role == "before")
             elif role in ("reset", "copy"):
                 node.moves.pop(number, None)
-            if cell == key and number in node.moves:
-                start, moved, _, name = node.moves[number]
-                node.moves[number] = (start, moved, True, name)
+        if key in self.follow:
+            number = self.tracked.index(key)
+            if number in node.moves:
+                node.moves[number] = node.moves[number]._replace(stored=True)
 
     def _close(self, node: "_Node", number: int, run: Run) -> None:
-        start, by, stored, function = node.moves.pop(number)
+        move = node.moves.pop(number)
         cell = self.tracked[number]
         now = node.env[cell]
-        if stored and isinstance(start, int) and isinstance(now, int):
-            pair = (cell, function, int(start), int(now), by)
+        if move.stored and isinstance(move.start, int) and isinstance(now, int):
+            pair = (cell, move.function, int(move.start), int(now), move.by)
             run.pairs[pair] = run.pairs.get(pair, False) or node.certain
 
     def _touch(self, node: "_Node", number: int, subscript: Value, pointer: Code | None, run: Run) -> None:
@@ -627,15 +675,39 @@ class Walk:
         ]
 
 
+class _Move(NamedTuple):
+    """An advance under way: the value before, what was added (0: only wrapped so far), whether it was stored yet, the
+    function, and whether a wrap was done ahead of the advance that is still to come."""
+
+    start: Value
+    by: int
+    stored: bool
+    function: str
+    early: bool
+
+
 @dataclass(slots=True)
 class _Node:
-    """A path's tip. ``moves`` are open advances: (value before, added, stored yet, function)."""
+    """A path's tip, with the advances that are under way, by the number of the integer."""
 
     block: int
     env: Env
-    moves: dict[int, tuple[Value, int, bool, str]]
+    moves: dict[int, _Move]
     certain: bool
     trace: Trace
+
+
+def _expressions(op: FlatOp) -> list[tuple[Expr, str]]:
+    """The expressions that an operation evaluates, each with its frame."""
+    match op:
+        case Set(value=value, frame=frame):
+            found = [(value, frame)]
+            if isinstance(op.place, DerefPlace):
+                found.append((op.place.pointer, op.place_frame))
+            return found
+        case Touch(subscript=subscript, pointer=pointer, frame=frame):
+            return [(part, frame) for part in (subscript, pointer) if part is not None]
+    return []
 
 
 _NEGATED = {"<": ">=", "<=": ">", ">": "<=", ">=": "<", "==": "!=", "!=": "=="}
