@@ -13,6 +13,7 @@ import re
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from fnmatch import fnmatch
+from functools import lru_cache
 from pathlib import Path
 
 from stepring.gather.text import is_text, not_text, read_bytes, reason
@@ -27,6 +28,16 @@ _STANDARD = """assert complex ctype errno fenv float inttypes iso646 limits loca
     stdatomic stdbool stddef stdint stdio stdlib stdnoreturn string tgmath threads time uchar wchar wctype"""
 STANDARD_HEADERS = frozenset(f"{name}.h" for name in _STANDARD.split())
 
+# Steps from a source to an include folder from which on nearness alone says little.
+_FAR = 4
+
+
+@lru_cache(maxsize=1)
+def _library() -> frozenset[str]:
+    """The names of the stand-in library's headers."""
+    folder = Path(__file__).parent.parent / "read" / "stand_in"
+    return STANDARD_HEADERS | {path.relative_to(folder).as_posix() for path in folder.rglob("*.h")}
+
 
 @dataclass(slots=True)
 class Tree:
@@ -39,8 +50,10 @@ class Tree:
     _folders: set[str] = field(default_factory=set)
     _by_name: dict[str, list[str]] = field(default_factory=dict)
     _includes: dict[str, tuple[tuple[str, bool], ...]] = field(default_factory=dict)
-    _found: dict[tuple[str, str], str | None] = field(default_factory=dict)
+    _found: dict[tuple[str, str, bool], tuple[str, str] | None] = field(default_factory=dict)
+    _candidates: dict[str, tuple[tuple[str, str], ...]] = field(default_factory=dict)
     _steps: dict[tuple[str, str], int] = field(default_factory=dict)
+    _unknown: dict[tuple[str, int], int] = field(default_factory=dict)
     _closures: dict[str, frozenset[str]] = field(default_factory=dict)
 
     def add(self, path: str) -> None:
@@ -75,12 +88,11 @@ class Tree:
             for text, quoted in self.includes(file):
                 target = self._beside(folder, text) if quoted else None
                 if target is None:
-                    if not quoted and text in STANDARD_HEADERS:
+                    nearest = self._nearest(home, text, quoted)
+                    if nearest is None:
                         continue
-                    target = self._nearest(home, text)
-                    if target is None:
-                        continue
-                    folders.add(_folder_of(target, text))
+                    found_in, target = nearest
+                    folders.add(found_in)
                 if target not in seen:
                     seen.add(target)
                     waiting.append(target)
@@ -103,30 +115,61 @@ class Tree:
         return known
 
     def _beside(self, folder: str, text: str) -> str | None:
-        path = posixpath.normpath(f"{folder}/{text}" if folder else text)
+        path = f"{folder}/{text}" if folder else text
+        if path in self._files:
+            return path
+        path = posixpath.normpath(path) if "." in text[:-2] else path
         return path if path in self._files else None
 
-    def _nearest(self, home: str, text: str) -> str | None:
-        """The file an include means to a source in ``home``: the candidate whose include folder is nearest."""
-        key = (home, text)
+    def _nearest(self, home: str, text: str, quoted: bool) -> tuple[str, str] | None:
+        """What an include means to a source in ``home``: the nearest candidate's include folder and path.
+
+        A standard header in angle brackets never means the tree, another library's only where it is near.
+        """
+        key = (home, text, quoted)
         if key in self._found:
             return self._found[key]
-        plain = posixpath.normpath(text)
-        while plain.startswith("../"):
-            plain = plain[3:]
-        name = plain.rpartition("/")[2].lower()
-        ending = "/" + plain.lower()
-        found: str | None = None
-        best: tuple[int, int, str] | None = None
-        for candidate in self._by_name.get(name, ()):
-            if not ("/" + candidate.lower()).endswith(ending):
-                continue
-            folder = _folder_of(candidate, plain)
-            rank = (self._distance(home, folder), folder.count("/"), candidate)
-            if best is None or rank < best:
-                best, found = rank, candidate
+        candidates = self._candidates_for(text) if quoted or text not in STANDARD_HEADERS else ()
+        ranked = sorted((self._distance(home, folder), folder.count("/"), path, folder) for folder, path in candidates)
+        if len(ranked) > 1 and ranked[0][0] >= _FAR:
+            # No candidate is near: of those about as far, the one whose own includes can be found.
+            near = [rank for rank in ranked if rank[0] <= ranked[0][0] + 1]
+            ranked = sorted(near, key=lambda rank: (self._unknown_includes(rank[2]), rank))
+        found = (ranked[0][3], ranked[0][2]) if ranked else None
+        if found is not None and not quoted and ranked[0][0] >= _FAR and text in _library():
+            found = None
         self._found[key] = found
         return found
+
+    def _candidates_for(self, text: str) -> tuple[tuple[str, str], ...]:
+        """The include folders and paths under which an include's text can be found, wherever it is asked."""
+        known = self._candidates.get(text)
+        if known is None:
+            plain = posixpath.normpath(text)
+            while plain.startswith("../"):
+                plain = plain[3:]
+            ending = "/" + plain.lower()
+            paths = self._by_name.get(plain.rpartition("/")[2].lower(), ())
+            matching = [path for path in paths if ("/" + path.lower()).endswith(ending)]
+            known = self._candidates[text] = tuple((_folder_of(path, text), path) for path in matching)
+        return known
+
+    def _unknown_includes(self, file: str, depth: int = 2) -> int:
+        """How many includes of a file, and of the files it includes, neither the tree nor the stand-in library has."""
+        known = self._unknown.get((file, depth))
+        if known is not None:
+            return known
+        unknown = 0
+        home = file.rpartition("/")[0]
+        for text, _ in self.includes(file):
+            candidates = self._candidates_for(text)
+            if candidates and depth:
+                nearest = min(candidates, key=lambda found: (self._distance(home, found[0]), found[1]))
+                unknown += self._unknown_includes(nearest[1], depth - 1)
+            elif not candidates and text not in _library():
+                unknown += 1
+        self._unknown[file, depth] = unknown
+        return unknown
 
     def _distance(self, home: str, folder: str) -> int:
         key = (home, folder)

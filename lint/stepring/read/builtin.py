@@ -2,8 +2,8 @@
 
 A legacy controller's compiler may be lost, and its headers with it. So nothing here is fatal: a header that is not
 found is passed over, an unknown name in ``#if`` is 0 (as ISO C says), ``#error`` is a remark, and stand-in headers
-declare the standard library. Files are cut into segments once (``segments``), macros are pcpp's (``macros``); this module
-walks the segments, keeps the conditionals and the files apart, and writes line markers.
+declare the standard library. Files are cut into segments once (``segments``), macros are pcpp's (``macros``); this
+module walks the segments, keeps the conditionals and the files apart, and writes line markers.
 """
 
 import os
@@ -232,7 +232,9 @@ def _directive(state: _State, frame: _Frame, directive: Directive) -> None:
     elif name == "define":
         _define_directive(state, frame, directive)
     elif name == "undef":
-        macro = directive.rest.split()[0] if directive.rest else ""
+        if not directive.rest:
+            return
+        macro = directive.rest.split()[0]
         state.table.drop(macro)
         state.plain.clear()
         _sync(state, frame, directive.line)
@@ -498,6 +500,10 @@ def _missing(state: _State, name: str, file: str | None, line: int | None) -> No
 
 def _run(state: _State, frame: _Frame, run: Run) -> None:
     """Put out a run of lines with the macros in it expanded."""
+    if run.open_string:
+        line = run.open_string + frame.offset
+        text = f"{frame.shown}, line {line}: a string literal is not closed on its line."
+        state.say("unterminated", "warning", text, frame.shown, line)
     if frame.carried:
         text = frame.carried + "\n" * max(0, run.line - frame.carried_line - frame.carried.count("\n")) + run.text
         line, frame.carried = frame.carried_line, ""

@@ -1,18 +1,20 @@
-"""Macros: their table, their expansion and the value of ``#if`` expressions, as pcpp does them.
+"""Macros: their table and their expansion, as pcpp does it.
 
-pcpp's ``Preprocessor`` offers ``define``, ``expand_macros`` and an ``Evaluator`` as public methods, and takes any lexer. It
-is used for just these: finding macro uses, files and conditionals is done outside, with text. Three things are added:
-a lexer of preprocessing tokens (ISO C N1570 6.4) that is one regular expression; a table that understands a macro only
-when it is used, and once for all units; and limits, because a few lines of macros can ask for more text than there is
-memory (each level of nesting doubles it).
+pcpp's ``Preprocessor`` offers ``define`` and ``expand_macros`` in public, and takes any lexer. It is used for just
+these: finding macro uses, files and conditionals is done outside, with text. Three things are added: a lexer of
+preprocessing tokens (ISO C N1570 6.4) that is one regular expression; a table that understands a macro only when it is
+used, and once for all units; and limits, because a few lines of macros can ask for more text than there is memory (each
+level of nesting doubles it).
 """
 
 import re
 import time
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from typing import Any
 
 from pcpp import Preprocessor
+
+from stepring.read.conditions import NoValue, value_of
 
 EXPANSION_LIMIT = 400_000
 _TYPES = {
@@ -243,8 +245,7 @@ class Engine(Preprocessor):  # type: ignore[misc]
         self.linemacrodepth = 0
         tokens = self._without_defined(tokens_of(text, line))
         tokens = self._without_defined(self.expand_macros(tokens))
-        written = " ".join(token.value for token in tokens if token.type not in self.t_WS)
-        return _value_of(self.evaluator, written)
+        return _value_of([token.value for token in tokens if not token.value.isspace()]) != 0
 
     def _without_defined(self, tokens: list[Token]) -> list[Token]:
         """``defined X`` and ``defined (X)`` replaced by 1 or 0."""
@@ -266,64 +267,24 @@ class Engine(Preprocessor):  # type: ignore[misc]
         return kept
 
 
-_values: dict[str, bool | str] = {}
+_values: dict[str, int | str] = {}
 
 
-def _value_of(evaluator: Any, written: str) -> bool:
-    """The truth of an expanded expression; it depends on the text alone, since unknown names count as 0."""
+def _value_of(tokens: Sequence[str]) -> int:
+    """An expanded expression's value, remembered: it depends on the tokens alone."""
+    written = " ".join(tokens)
     known = _values.get(written)
     if known is None:
         if len(_values) > 100_000:
             _values.clear()
-        known = _values[written] = _evaluate(evaluator, written)
+        try:
+            known = value_of(tokens)
+        except NoValue as error:
+            known = str(error)
+        _values[written] = known
     if isinstance(known, str):
-        raise ValueError(known)
+        raise NoValue(known)
     return known
-
-
-def _evaluate(evaluator: Any, written: str) -> bool | str:
-    tokens = [token for token in tokens_of(written) if token.type != "CPP_WS"]
-    for token in tokens:
-        found = _INTEGER.fullmatch(token.value)
-        if found is not None:
-            token.value = _plain_integer(found[1], found[2])
-    shift = next((index for index, token in enumerate(tokens) if token.type in ("CPP_LSHIFT", "CPP_RSHIFT")), None)
-    if shift is not None and any(token.type == "CPP_INTEGER" and len(token.value) > 20 for token in tokens):
-        return "a number in it is too large"
-    try:
-        value = evaluator(tokens, functions=_Zero(True), identifiers=_Zero(False))
-        return bool(value.value() != 0)
-    except Exception as error:
-        # The evaluator reports a malformed expression by whatever exception it runs into.
-        return str(error) or type(error).__name__
-
-
-def _plain_integer(digits: str, suffix: str) -> str:
-    """An integer in the form the evaluator reads: decimal, ``U`` where it is unsigned."""
-    lowered = digits.lower()
-    if lowered.startswith("0x"):
-        value = int(lowered, 16)
-    elif lowered.startswith("0b"):
-        value = int(lowered, 2)
-    elif lowered.startswith("0") and lowered.strip("01234567") == "":
-        value = int(lowered, 8)
-    else:
-        value = int(lowered[:40])
-    unsigned = "u" in suffix.lower() or value >= 1 << 63
-    return f"{value & ((1 << 64) - 1)}U" if unsigned else str(value)
-
-
-class _Zero:
-    """Every name has the value 0, every function gives 0 (N1570 6.10.1p4)."""
-
-    def __init__(self, callable_: bool) -> None:
-        self._callable = callable_
-
-    def __contains__(self, name: str) -> bool:
-        return True
-
-    def __getitem__(self, name: str) -> Any:
-        return (lambda argument: 0) if self._callable else 0
 
 
 def joined(tokens: Iterable[Any]) -> str:

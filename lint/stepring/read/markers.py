@@ -1,7 +1,7 @@
 """Line markers: what they look like, and making the files they name absolute.
 
 GNU form: ``# LINE "FILE" FLAGS``; in flags 1 means that a file begins, 2 that it is returned to, 3 that it is a system
-header. ``#line LINE "FILE"`` is the same in ISO C (N1570 6.10.4). Inside the quotes a backslash escapes the next character.
+header. ``#line LINE "FILE"`` is the same in ISO C (N1570 6.10.4). Inside the quotes a backslash escapes what follows.
 Texts in angle brackets (``<built-in>``, ``<command-line>``) are no files.
 """
 
@@ -77,7 +77,7 @@ def split_predefined(text: str) -> tuple[Mapping[str, str], str]:
 
 @lru_cache(maxsize=64)
 def macros_of(text: str) -> Mapping[str, str]:
-    """The macros that a text's ``#define`` and ``#undef`` lines leave behind, by name (with parameters, if it has any)."""
+    """The macros that a text's ``#define`` and ``#undef`` lines leave behind, by name (with its parameters)."""
     macros: dict[str, str] = {}
     for name, body, undefined in _DEFINE.findall(text):
         if undefined:

@@ -1,8 +1,9 @@
 """What a compiler would predefine, for a data model that is known by name only.
 
 A data model fixes the sizes of the integer types (``LP64``: long and pointers have 64 bits; ``LLP64``: long has 32,
-pointers 64; ``ILP32``: all three 32; ``IP16``: int and pointers 16, long 32). The macros are those of ISO C (N1570 6.10.8) and
-the usual GNU ones that say sizes, types and limits, so that headers can ask for them.
+pointers 64; ``ILP32``: all three 32; ``IP16``: int and pointers 16, long 32). The macros are those of ISO C (N1570
+6.10.8) and the usual GNU ones that say sizes, types and limits, so that headers can ask for them. ``__GNUC__`` is among
+them: headers of firmware know a few compilers each and stop at any other, and its dialect is the one that is read.
 """
 
 from collections.abc import Mapping
@@ -46,6 +47,9 @@ def predefined_for(model: str) -> Mapping[str, str]:
         "__STDC_HOSTED__": "1",
         "__DATE__": '"Jan  1 1970"',
         "__TIME__": '"00:00:00"',
+        "__GNUC__": "9",
+        "__GNUC_MINOR__": "0",
+        "__GNUC_PATCHLEVEL__": "0",
         "__CHAR_BIT__": "8",
         "__BYTE_ORDER__": "1234",
         "__ORDER_LITTLE_ENDIAN__": "1234",

@@ -1,7 +1,7 @@
 """One unit's text after preprocessing, by the best means there is.
 
-A ``.i`` file is such a text already. Else the unit's own compiler is asked; where there is none, or it fails or misses a
-header, the built-in preprocessor does the work, with what the compiler predefines and its own headers if it says so.
+A ``.i`` file is such a text already. Else the unit's own compiler is asked; where there is none, or it fails or misses
+a header, the built-in preprocessor does the work, with what the compiler predefines and its own headers if it says so.
 Nothing raises here: what cannot be done becomes a notice, and the unit an empty or shortened text.
 """
 

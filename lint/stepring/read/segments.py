@@ -10,6 +10,7 @@ import re
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from functools import lru_cache
+from itertools import pairwise
 from pathlib import Path
 
 from stepring.gather.text import decode as decode_bytes
@@ -31,17 +32,23 @@ _WORDS = re.compile(
 _DIRECTIVE = re.compile(r"[ \t\f\v]*(?:#|%:)[ \t\f\v]*(\w*)[ \t\f\v]*(.*)", re.DOTALL)
 _GUARD = re.compile(r"!\s*defined\s*\(?\s*(\w+)\s*\)?\s*$")
 _JOINED = "\x00"
+# So many string literals that are not closed are remembered of a file.
+_OPEN_STRINGS = 100
 CONDITIONALS = frozenset(("if", "ifdef", "ifndef"))
 
 
 @dataclass(slots=True)
 class Run:
-    """Lines without a directive. ``line`` is the first one's number; ``text`` ends with a newline."""
+    """Lines without a directive. ``line`` is the first one's number; ``text`` ends with a newline.
+
+    ``open_string`` is the line of the first string literal that is not closed on it, or 0.
+    """
 
     line: int
     text: str
     lines: int
     words: frozenset[str]
+    open_string: int = 0
     _places: dict[str, list[tuple[int, int]]] | None = None
 
     def places(self) -> dict[str, list[tuple[int, int]]]:
@@ -59,8 +66,8 @@ class Run:
 class Directive:
     """One directive. ``rest`` is what follows its name; ``lines`` is how many lines of the file it spans.
 
-    For a conditional's part, ``next`` is the index of the part that follows it and ``end`` that of its ``#endif``; for an
-    ``#else`` without an ``#if`` both are -1. ``macro`` keeps what a ``#define`` was understood as.
+    For a conditional's part, ``next`` is the index of the part that follows it and ``end`` that of its ``#endif``; for
+    an ``#else`` without an ``#if`` both are -1. ``macro`` keeps what a ``#define`` was understood as.
     """
 
     line: int
@@ -102,14 +109,15 @@ def _load(path: str, _changed: int, _size: int) -> SourceFile:
 def cut(text: str, path: str) -> SourceFile:
     """A text's segments."""
     notices: list[Notice] = []
-    lines = _physical_lines(_without_comments(_join_lines(text), path, notices))
+    open_strings: list[int] = []
+    lines = _physical_lines(_without_comments(_join_lines(text), path, notices, open_strings))
     segments: list[Run | Directive] = []
     waiting: list[str] = []
     first = 1
 
     def end_run() -> None:
         if waiting:
-            segments.extend(_run(first, waiting))
+            segments.extend(_run(first, waiting, open_strings))
             waiting.clear()
 
     for number, line in enumerate(lines, 1):
@@ -171,12 +179,14 @@ def _ends_between_tokens(line: str) -> bool:
     )
 
 
-def _without_comments(text: str, path: str, notices: list[Notice]) -> str:
+def _without_comments(text: str, path: str, notices: list[Notice], open_strings: list[int]) -> str:
     """Comments as blanks; one that a directive's line runs into keeps the directive together."""
 
     def blank(found: re.Match[str]) -> str:
         piece = found[0]
         if piece[0] in "\"'":
+            if piece[0] == '"' and (len(piece) == 1 or piece[-1] != '"') and len(open_strings) < _OPEN_STRINGS:
+                open_strings.append(text.count("\n", 0, found.start()) + 1)
             return piece
         if piece.startswith("/*") and (len(piece) < 4 or not piece.endswith("*/")):
             line = text.count("\n", 0, found.start()) + 1
@@ -209,8 +219,8 @@ def _physical_lines(text: str) -> list[str]:
     return spread
 
 
-def _run(first: int, lines: list[str]) -> Iterator[Run]:
-    """A run without the empty lines around it, cut where many empty lines stand inside."""
+def _run(first: int, lines: list[str], open_strings: list[int]) -> Iterator[Run]:
+    """A run without the empty lines around it."""
     start, count = 0, len(lines)
     while start < count and not lines[start].strip():
         start += 1
@@ -219,7 +229,9 @@ def _run(first: int, lines: list[str]) -> Iterator[Run]:
     if start < count:
         text = "\n".join(lines[start:count]) + "\n"
         words = frozenset(_WORDS.findall(text)) - {""}
-        yield Run(first + start, text, count - start, words)
+        last = first + count
+        open_string = next((line for line in open_strings if first + start <= line < last), 0)
+        yield Run(first + start, text, count - start, words, open_string)
 
 
 def _link(segments: list[Run | Directive], path: str) -> Iterator[Notice]:
@@ -238,22 +250,24 @@ def _link(segments: list[Run | Directive], path: str) -> Iterator[Notice]:
             parts[-1].append(index)
             if segment.name == "endif":
                 _close(segments, parts.pop())
+    if parts:
+        line = segments[parts[0][0]].line
+        many = f" (and {len(parts) - 1} inside it)" if len(parts) > 1 else ""
+        said = f"{path}, line {line}: the conditional{many} is not closed by #endif; it ends with the file."
+        yield Notice("unterminated", "warning", said, path, line)
     for open_parts in parts:
-        start = segments[open_parts[0]]
-        said = f"{path}, line {start.line}: the conditional is not closed by #endif; it ends with the file."
-        yield Notice("unterminated", "warning", said, path, start.line)
         _close(segments, [*open_parts, len(segments)])
 
 
 def _close(segments: list[Run | Directive], indices: list[int]) -> None:
-    for index, following in zip(indices, indices[1:], strict=False):
+    for index, following in pairwise(indices):
         segment = segments[index]
         if isinstance(segment, Directive):
             segment.next, segment.end = following, indices[-1]
 
 
 def _guard_of(segments: list[Run | Directive]) -> str | None:
-    """The include guard's macro where the whole file stands in one ``#ifndef`` (or ``#if !defined``) without ``#else``."""
+    """The include guard's macro where the whole file stands in one ``#ifndef`` without ``#else``."""
     if not segments:
         return None
     first = segments[0]
