@@ -611,6 +611,9 @@ def _transitions(work: _Work, chosen: frozenset[str]) -> None:
 
 
 def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapping[str, set[str]]) -> None:
+    if not any(scan.keys[key].read_instances for scan in scans) and not _has_setter(scans, key):
+        _unconditional(work, key)
+        return
     writers = _writers(work, key, scans, callers)
     if not writers:
         return
@@ -666,14 +669,34 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         work.transitions.append(
             TransitionFact(
                 key,
-                move.function.identity,
+                move.function,
                 move.source,
                 tuple(sorted(move.excluded)) if move.source is None else (),
                 target,
-                guard_text(move.function, move.chosen.block, key),
+                guard_text(by_identity[move.function].function, move.chosen.block, key),
                 where,
             )
         )
+
+
+def _has_setter(scans: Sequence[_Scan], key: str) -> bool:
+    """Whether some function stores one of its parameters in the key."""
+    return any(
+        isinstance(statement, Assign)
+        and isinstance(inner := uncast(statement.value), Load)
+        and isinstance(inner.place, VariablePlace)
+        and inner.place.variable.storage == "parameter"
+        for scan in scans
+        for _, statement, _ in scan.keys[key].stores
+    )
+
+
+def _unconditional(work: _Work, key: str) -> None:
+    """Stores in a unit that never looks at the state: from any state to each constant."""
+    for store in work.stores:
+        if store.key == key and not store.fresh:
+            for constant in store.constants:
+                work.transitions.append(TransitionFact(key, store.function, None, (), constant, "", store.where))
 
 
 def _identity(work: _Work, name: str) -> str:

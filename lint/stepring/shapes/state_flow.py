@@ -79,9 +79,12 @@ class Environment(NamedTuple):
 
 @dataclass(frozen=True, slots=True)
 class Move:
-    """A store of a constant: from ``source`` (None: any value but those in ``excluded``) to ``target``."""
+    """A store of a constant by a function (its identity): from ``source`` to ``target``.
 
-    function: Function
+    A source of None is any value but those in ``excluded``.
+    """
+
+    function: str
     source: int | None
     excluded: frozenset[int]
     target: int
@@ -198,7 +201,9 @@ def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Enviro
     if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
         source = environment.source
         known = source.number if source.kind == "known" else None
-        run.setting.moves.add(Move(run.part.function, known, source.excluded, value.number, value.chosen, op.position))
+        run.setting.moves.add(
+            Move(run.part.function.identity, known, source.excluded, value.number, value.chosen, op.position)
+        )
     return environment._replace(state=value)
 
 
