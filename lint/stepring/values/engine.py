@@ -30,12 +30,15 @@ from stepring.values.states import (
     join_optional,
     join_states,
     read_spot,
+    same_state,
 )
 from stepring.values.surroundings import Record, Surroundings
 from stepring.values.types import Cell, Interval
 
 PATIENCE: Final = 2
 """Joins at a loop head before it widens."""
+REMEMBERED: Final = 4
+"""Start states of a callee for which its solution is kept."""
 LIMIT: Final = 60
 """Visits of a loop head after which every value that still changes is taken to be anything."""
 
@@ -51,11 +54,22 @@ class Solution:
 class Engine(Execution):
     """The fixpoint of a function's states, and what is noted of it."""
 
+    def __init__(self, surroundings: Surroundings) -> None:
+        super().__init__(surroundings)
+        self._solved: dict[int, list[tuple[State, Solution]]] = {}
+        self._flows: dict[tuple[int, int], tuple[State, list[Edge], State | None]] = {}
+
     # ------------------------------------------------------------------------------------------------------ fixpoint
 
     def run_body(self, frame: Frame, start: State, stack: tuple[str, ...], record: Record | None) -> State | None:
         """The joined state at the returns of a callee that is run in place."""
-        solution = self.solve(frame, start, stack)
+        memory = self._solved.setdefault(id(frame), [])
+        solution = next((known for before, known in memory if same_state(before, start)), None)
+        if solution is None:
+            before = start.copy()
+            solution = self.solve(frame, start, stack)
+            memory.append((before, solution))
+            del memory[:-REMEMBERED]
         if record is not None:
             self.note(frame, solution, stack, record)
         return solution.leaving
@@ -72,7 +86,7 @@ class Engine(Execution):
             _, block = heappop(waiting)
             queued.discard(block)
             visits[block] = visits.get(block, 0) + 1
-            for target, state in self.flow(frame, block, entries[block], stack, None):
+            for target, state in self.flow(frame, block, entries[block], stack):
                 old = entries.get(target)
                 new = self._arrive(shape, target, old, state, visits.get(target, 0))
                 if new is None:
@@ -118,9 +132,11 @@ class Engine(Execution):
         arrivals: dict[int, State | None] = {}
         back: dict[int, list[State]] = {}
         for block, state in entries.items():
-            for target, arriving in self.flow(frame, block, state, stack, None):
-                if shape.order[target] <= shape.order[block]:
-                    back.setdefault(target, []).append(arriving)
+            terminator = frame.function.blocks[block].terminator
+            if any(shape.order[target] <= shape.order[block] for target in targets_of(terminator)):
+                for target, arriving in self.flow(frame, block, state, stack):
+                    if shape.order[target] <= shape.order[block]:
+                        back.setdefault(target, []).append(arriving)
         for block in sorted(entries, key=shape.order.__getitem__):
             here = arrivals.get(block)
             for state in back.get(block, ()):
@@ -129,8 +145,10 @@ class Engine(Execution):
                 here = start if here is None else join_states(self.places, start, here)
             if here is None:
                 continue
+            if same_state(here, entries[block]):
+                here = entries[block]
             result[block] = here
-            for target, arriving in self.flow(frame, block, here, stack, None):
+            for target, arriving in self.flow(frame, block, here, stack):
                 if shape.order[target] > shape.order[block]:
                     arrivals[target] = join_optional(self.places, arrivals.get(target), arriving)
         return result
@@ -141,8 +159,10 @@ class Engine(Execution):
         for block, state in entries.items():
             terminator = frame.function.blocks[block].terminator
             if isinstance(terminator, Return):
-                view = self.run_statements(frame, block, state, stack, None)
-                if view is not None:
+                self.flow(frame, block, state, stack)
+                after = self._flows[id(frame), block][2]
+                if after is not None:
+                    view = View(frame, after.copy())
                     self.give_result(view, terminator)
                     result = join_optional(self.places, result, view.state)
         return result
@@ -161,12 +181,17 @@ class Engine(Execution):
 
     # ------------------------------------------------------------------------------------------------------ blocks
 
-    def flow(self, frame: Frame, block: int, state: State, stack: tuple[str, ...], record: Record | None) -> list[Edge]:
+    def flow(self, frame: Frame, block: int, state: State, stack: tuple[str, ...]) -> list[Edge]:
         """The states in which control goes on from a block that is entered in ``state``."""
-        view = self.run_statements(frame, block, state, stack, record)
-        if view is None:
-            return []
-        return leave(self.places, view, frame.function.blocks[block].terminator)
+        known = self._flows.get((id(frame), block))
+        if known is not None and known[0] is state:
+            return known[1]
+        view = self.run_statements(frame, block, state, stack, None)
+        terminator = frame.function.blocks[block].terminator
+        edges = leave(self.places, view, terminator) if view is not None else []
+        after = view.state if view is not None and not edges else None
+        self._flows[id(frame), block] = (state, edges, after)
+        return edges
 
     def run_statements(
         self, frame: Frame, block: int, state: State, stack: tuple[str, ...], record: Record | None

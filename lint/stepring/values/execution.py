@@ -47,7 +47,7 @@ from stepring.values.states import (
     store_spot,
 )
 from stepring.values.surroundings import Effect, Record, Surroundings
-from stepring.values.types import Cell, FieldCell, Interval, VariableCell
+from stepring.values.types import Cell, Interval, VariableCell
 
 Edge: TypeAlias = tuple[int, State]
 
@@ -68,7 +68,6 @@ class Execution(ABC):
             surroundings.track_pointees,
         )
         self._inner: dict[tuple[int, int], Frame] = {}
-        self._reached_by: dict[int, tuple[State, State | None]] = {}
 
     @abstractmethod
     def run_body(self, frame: Frame, start: State, stack: tuple[str, ...], record: Record | None) -> State | None:
@@ -125,8 +124,8 @@ class Execution(ABC):
                 view.frame.spot(member_place(place, steps))
         length = len(access.path)
         result: list[Spot] = []
-        for spot in self.places.all():
-            if spot.root == access.root and len(spot.path) > length and _under(access.path, spot.path):
+        for spot in list(self.places.rooted(access.root)):
+            if len(spot.path) > length and _under(access.path, spot.path):
                 if "->" not in spot.path[length:]:
                     result.append(spot)
         if isinstance(kind, IntType) and isinstance(place.type, ArrayType):
@@ -229,13 +228,7 @@ class Execution(ABC):
         inner = self.begin(view, call, body)
         frame = inner.frame
         inner_stack = (*stack, body.identity)
-        memory = self._reached_by.get(id(frame))
-        if record is None and memory is not None and _same(memory[0], inner.state):
-            leaving = memory[1]
-        else:
-            before = inner.state.copy()
-            leaving = self.run_body(frame, inner.state, inner_stack, record)
-            self._reached_by[id(frame)] = (before, leaving)
+        leaving = self.run_body(frame, inner.state, inner_stack, record)
         if leaving is None:
             return None
         after = leaving.copy()
@@ -298,8 +291,7 @@ class Execution(ABC):
 
     def _write_cell(self, view: View, cell: Cell, value: Interval | None, certain: bool) -> None:
         state = view.state
-        member = ("member", cell.struct, *cell.path) if isinstance(cell, FieldCell) else None
-        touched = [spot for spot in self.places.all() if spot.cell == cell or member in spot.buckets]
+        touched = self.places.of_cell(cell)
         if value is None:
             reach = set(touched)
             for spot in touched:
@@ -344,14 +336,6 @@ class Execution(ABC):
             return
         byte = IntType("unsigned char", 8, False, 1)
         self.blur(view, DerefPlace(pointer, byte if number_type(kind) is None else kind), None)
-
-
-def _same(a: State, b: State) -> bool:
-    return (
-        a.values == b.values
-        and a.definitions.keys() == b.definitions.keys()
-        and all(other.value is b.definitions[spot].value for spot, other in a.definitions.items())
-    )
 
 
 def _under(prefix: tuple[str, ...], path: tuple[str, ...]) -> bool:

@@ -10,40 +10,29 @@ if they prove inductive.
 The result holds under the assumptions in ``ProgramValues.assumptions``.
 """
 
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Final
 
 from stepring.meaning.types import (
     ArrayType,
-    Assign,
-    Call,
-    Clobber,
-    CType,
     Function,
-    FunctionName,
     Object,
     StructLayout,
     StructType,
     Variable,
 )
+from stepring.values.callees import Callees
 from stepring.values.engine import FunctionValues, analyse
-from stepring.values.evaluate import compute
-from stepring.values.exposure import Leaks, all_expressions, exposure_of, leaks_of
-from stepring.values.frames import Frame
-from stepring.values.graph import shape_of
-from stepring.values.intervals import FALSE, is_subset, number_type, union, whole, widen
-from stepring.values.library import CONTRACTS
-from stepring.values.scan import places_of, walk_deep
-from stepring.values.spots import Exposure, Places, pointee_cell
+from stepring.values.exposure import Leaks, exposure_of, leaks_of
+from stepring.values.initial import Table, initial_cells, shared_cells
+from stepring.values.intervals import FALSE, is_subset, number_type, union, widen
+from stepring.values.spots import pointee_cell
 from stepring.values.surroundings import Effect, Record, Surroundings
 from stepring.values.types import Cell, FieldCell, Interval, VariableCell
 
 ROUNDS: Final = 3
 """Times that a cell may grow before it is widened."""
-LARGEST: Final = 40
-"""Blocks of a callee that is run in place, at most."""
-Table = dict[Cell, Interval]
 
 ASSUMPTIONS: Final = (
     "Memory that is reached through pointers and was not given a value by code that was read holds zero.",
@@ -51,16 +40,6 @@ ASSUMPTIONS: Final = (
     "of a character type (6.5p7).",
     "Code that was not read calls functions only and stores into no object that was not handed to it.",
 )
-
-
-@dataclass(frozen=True, slots=True)
-class _Written:
-    """What a function stores into, as its text says: cells, through pointers to scalars, or what cannot be told."""
-
-    cells: frozenset[Cell]
-    pointees: bool
-    outward: bool
-    calls: frozenset[str]
 
 
 @dataclass(slots=True)
@@ -85,90 +64,6 @@ class _Logged(Mapping[Cell, Interval]):
     def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
         self.read.add(cell)
         return self.program.value(cell)
-
-
-def resolver(functions: Iterable[Function]) -> Callable[[str, Function], Function | None]:
-    """How a name in a caller leads to a function: a static one of the same file, else the one with external linkage,
-    else a
-    header's."""
-    named: dict[str, list[Function]] = {}
-    for function in functions:
-        named.setdefault(function.name, []).append(function)
-
-    def resolve(name: str, caller: Function) -> Function | None:
-        candidates = named.get(name, ())
-        if not candidates:
-            return None
-        for candidate in candidates:
-            if candidate.position.file == caller.position.file:
-                return candidate
-        outer = [candidate for candidate in candidates if not candidate.static]
-        if outer:
-            return outer[0] if len({candidate.identity for candidate in outer}) == 1 else None
-        inline = [candidate for candidate in candidates if not candidate.position.file.endswith((".c", ".i", ".C"))]
-        return inline[0] if len(inline) == 1 else None
-
-    return resolve
-
-
-def initial_cells(item: Object, exposure: Exposure) -> Table:
-    """What each cell of an object with static storage holds at start (6.7.9p10: zero where nothing is said)."""
-    listed: dict[Cell, Interval] = {}
-    counts: dict[Cell, int] = {}
-    for initial in item.initial:
-        path = tuple("[]" if isinstance(step, int) else "." + step for step in initial.path)
-        cell: Cell = VariableCell(item.variable.identity, path)
-        kind = number_type(initial.value.type)
-        if kind is None:
-            continue
-        value = compute(initial.value, lambda place: whole(place.type))
-        known = listed.get(cell)
-        listed[cell] = value if known is None else union(known, value)
-        counts[cell] = counts.get(cell, 0) + 1
-    result: Table = {}
-    for path, number in _scalar_paths(item.variable.type, exposure):
-        cell = VariableCell(item.variable.identity, path)
-        value = listed.get(cell, FALSE)
-        result[cell] = value if cell in listed and counts[cell] >= number else union(value, FALSE)
-    for cell, value in listed.items():
-        result.setdefault(cell, union(value, FALSE) if "[]" in getattr(cell, "path", ()) else value)
-    return result
-
-
-def _scalar_paths(kind: CType, exposure: Exposure) -> list[tuple[tuple[str, ...], int]]:
-    """The paths to the scalars of a type, and how many objects each stands for."""
-    if isinstance(kind, ArrayType):
-        inner = _scalar_paths(kind.element, exposure)
-        return [(("[]", *path), number * (kind.length or 1 << 30)) for path, number in inner]
-    if isinstance(kind, StructType):
-        found = []
-        for way in exposure.members.get(kind.identity, ()):
-            number = 1
-            previous: CType | None = None
-            for struct, _, step in way:
-                if not struct:
-                    number *= (previous.length if isinstance(previous, ArrayType) else None) or 1 << 30
-                previous = step
-            found.append((tuple("." + name if struct else name for struct, name, _ in way), number))
-        return found
-    return [((), 1)] if number_type(kind) is not None else []
-
-
-def _shared_cells(kind: CType, path: tuple[str, ...], exposure: Exposure) -> list[Cell]:
-    """The field cells under which a part of an exposed object is also known."""
-    while isinstance(kind, ArrayType):
-        kind = kind.element
-        path = path[1:]
-    if not isinstance(kind, StructType):
-        return []
-    for way in exposure.members.get(kind.identity, ()):
-        if tuple("." + name if struct else name for struct, name, _ in way) == path:
-            return [
-                FieldCell(struct, tuple(name for _, name, _ in way[number:]))
-                for number, (struct, _, _) in enumerate(way)
-                if struct
-            ]
-    return []
 
 
 @dataclass(slots=True)
@@ -225,13 +120,14 @@ class ProgramValues:
         closed: bool = False,
         depth: int = 2,
     ) -> None:
-        self.functions = {function.identity: function for function in functions}
         self.private = private
         self.shared = shared
-        self.resolve = resolver(self.functions.values())
         self.exposure = exposure_of(functions, objects, structs or {})
+        self.callees = Callees(functions, objects, self.exposure, steady, foreign)
+        self.functions = self.callees.functions
+        self._hidden = self.callees.hidden
         self.leaks: Leaks = leaks_of(
-            functions, structs or {}, lambda name, caller: self.resolve(name, caller) is not None, closed
+            functions, structs or {}, lambda name, caller: self.callees.resolve(name, caller) is not None, closed
         )
         self.assumptions = ASSUMPTIONS
         self.summaries: Table = {}
@@ -248,8 +144,6 @@ class ProgramValues:
         self._records: dict[str, Record] = {}
         self._late: set[str] = set()
         self._called: set[str] = set()
-        self._hidden = self._find_hidden(functions, objects)
-        self._effects = self._find_effects()
         self._start(objects)
         self._solve()
 
@@ -318,7 +212,7 @@ class ProgramValues:
             summaries if summaries is not None else _Logged(self),
             self.exposure,
             self._effect,
-            self._body,
+            self.callees.body,
             self._steady,
             self._foreign,
             self._depth,
@@ -326,93 +220,12 @@ class ProgramValues:
 
     # ------------------------------------------------------------------------------------------------------ callees
 
-    def _body(self, name: str, caller: Function) -> Function | None:
-        body = self.resolve(name, caller)
-        return body if body is not None and len(body.blocks) <= LARGEST else None
-
     def _effect(self, name: str, caller: Function) -> Effect | None:
-        body = self.resolve(name, caller)
+        body = self.callees.resolve(name, caller)
         if body is None:
             return None
         returned = self.summaries.get(VariableCell(body.identity, ("returned",)))
-        return replace(self._effects[body.identity], returns=returned)
-
-    def _find_hidden(self, functions: Sequence[Function], objects: Sequence[Object]) -> frozenset[str]:
-        """Static functions that are only ever called by name, so that all their calls are seen."""
-        uses: set[str] = set()
-        for function in functions:
-            callees = {
-                id(statement.callee)
-                for block in function.blocks
-                for statement in block.statements
-                if isinstance(statement, Call)
-            }
-            for expression in all_expressions(function):
-                if isinstance(expression, FunctionName) and id(expression) not in callees:
-                    uses.add(expression.name)
-        for item in objects:
-            for initial in item.initial:
-                for part in walk_deep(initial.value):
-                    if isinstance(part, FunctionName):
-                        uses.add(part.name)
-        return frozenset(
-            function.identity
-            for function in functions
-            if function.static and not function.attributes and function.name not in uses
-        )
-
-    def _find_effects(self) -> dict[str, Effect]:
-        written = {identity: self._writes_of(function) for identity, function in self.functions.items()}
-        effects: dict[str, Effect] = {}
-        for identity in written:
-            seen = {identity}
-            waiting = [identity]
-            cells: set[Cell] = set()
-            pointees = outward = False
-            while waiting:
-                here = written[waiting.pop()]
-                cells |= here.cells
-                pointees |= here.pointees
-                outward |= here.outward
-                fresh = here.calls - seen
-                seen |= fresh
-                waiting.extend(fresh)
-            effects[identity] = Effect(
-                dict.fromkeys(cells), through_pointers=pointees, outward=outward, callee=identity
-            )
-        return effects
-
-    def _writes_of(self, function: Function) -> _Written:
-        places = Places({}, self.exposure, self._steady, self._foreign)
-        frame = Frame(places, function)
-        cells: set[Cell] = set()
-        calls: set[str] = set()
-        pointees = outward = False
-        for block in function.blocks:
-            for statement in block.statements:
-                if isinstance(statement, Clobber):
-                    outward = True
-                    continue
-                for place in places_of(statement):
-                    if number_type(place.type) is None:
-                        access = frame.access(place)
-                        outward |= isinstance(statement, (Assign, Call)) and not (access.local and not access.exposed)
-                        continue
-                    spot = frame.spot(place)
-                    pointees |= spot.pointee
-                    if not spot.private and spot.cell is not None:
-                        cells.add(spot.cell)
-                        for bucket in spot.buckets:
-                            if bucket[0] == "member" and isinstance(bucket[1], str):
-                                cells.add(FieldCell(bucket[1], tuple(str(step) for step in bucket[2:])))
-                if isinstance(statement, Call):
-                    name = statement.callee.name if isinstance(statement.callee, FunctionName) else None
-                    body = self.resolve(name, function) if name is not None else None
-                    if body is not None:
-                        calls.add(body.identity)
-                    elif name not in CONTRACTS or CONTRACTS[name].writes or CONTRACTS[name].onward is not None:
-                        outward = True
-        return _Written(frozenset(cells), pointees, outward, frozenset(calls))
+        return replace(self.callees.effects[body.identity], returns=returned)
 
     # ------------------------------------------------------------------------------------------------------ fixpoint
 
@@ -427,7 +240,7 @@ class ProgramValues:
             for cell, value in initial_cells(item, self.exposure).items():
                 self._join_initial(cell, value)
                 if item.variable.identity in self.exposure.variables and isinstance(cell, VariableCell):
-                    for other in _shared_cells(item.variable.type, cell.path, self.exposure):
+                    for other in shared_cells(item.variable.type, cell.path, self.exposure):
                         self._join_initial(other, value)
         self.summaries = dict(self._initial)
 
@@ -506,7 +319,7 @@ class ProgramValues:
             identity = next(iter(waiting))
             del waiting[identity]
             added = self._added[identity] = self._run(identity)
-            changed = self._grow(added, shape_of(self.functions[identity]).thresholds)
+            changed = self._grow(added, self.callees.thresholds(identity))
             if changed:
                 waiting.update(
                     dict.fromkeys(other for other, read in self._read.items() if not changed.isdisjoint(read))
@@ -584,6 +397,3 @@ def summarise(
         functions, objects, private, structs=structs, shared=shared, foreign=foreign, steady=steady, closed=closed,
         depth=depth,
     )  # fmt: skip
-
-
-__all__ = ["ASSUMPTIONS", "ProgramValues", "initial_cells", "resolver", "summarise"]

@@ -130,11 +130,24 @@ class Places:
         self._spots: dict[tuple[object, ...], Spot] = {}
         self._named: dict[tuple[str, tuple[str, ...]], Spot] = {}
         self._buckets: dict[Bucket, list[Spot]] = {}
+        self._by_root: dict[str, list[Spot]] = {}
+        self._by_cell: dict[Cell, list[Spot]] = {}
         self._version = 0
 
     def all(self) -> list[Spot]:
         """Every spot that was named so far."""
         return list(self._spots.values())
+
+    def rooted(self, root: str) -> list[Spot]:
+        """The spots whose access path starts at a variable."""
+        return self._by_root.get(root, [])
+
+    def of_cell(self, cell: Cell) -> list[Spot]:
+        """The spots of a cell, and those that the cell's member of a structure is known under."""
+        found = dict.fromkeys(self._by_cell.get(cell, ()))
+        if isinstance(cell, FieldCell):
+            found.update(dict.fromkeys(self._buckets.get(("member", cell.struct, *cell.path), ())))
+        return list(found)
 
     def named(self, root: str, path: tuple[str, ...]) -> Spot | None:
         """The definite spot with that access path, if some place has named it."""
@@ -181,6 +194,9 @@ class Places:
             default=self._default(access, buckets),
         )
         self._spots[key] = spot
+        self._by_root.setdefault(spot.root, []).append(spot)
+        if cell is not None:
+            self._by_cell.setdefault(cell, []).append(spot)
         if definite:
             self._named.setdefault((access.root, access.path), spot)
             for other in access.depends:

@@ -329,3 +329,12 @@ def join_optional(places: Places, a: State | None, b: State | None) -> State | N
     if a is None or b is None:
         return b if a is None else a
     return join_states(places, a, b)
+
+
+def same_state(a: State, b: State) -> bool:
+    """Whether two states say the same."""
+    return a is b or (
+        a.values == b.values
+        and a.definitions.keys() == b.definitions.keys()
+        and all(by.value is b.definitions[spot].value for spot, by in a.definitions.items())
+    )
