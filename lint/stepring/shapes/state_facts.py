@@ -5,6 +5,7 @@ program are worked out: the places get their original spelling, falls and defaul
 finds the transitions. Coroutines made of ``case __LINE__`` label their cases with line numbers and are marked as such.
 """
 
+import re
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Literal
@@ -59,6 +60,8 @@ from stepring.shapes.state_flow import (
 )
 
 _WIDE = 1 << 63
+# How functions that store a state for others are named (common practice).
+_SETTER = re.compile(r"set|change|state|mode|phase|goto|enter|switch|transit|next|new_|advance|move", re.IGNORECASE)
 
 
 @dataclass(slots=True)
@@ -91,7 +94,7 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
     own = [function for function in unit.functions if function.own]
     getters = _getters(own)
     scans = [_scan(function, getters) for function in own]
-    chosen = _candidates(scans)
+    chosen = _candidates(scans, names)
     work = _Work(unit, read, names, {function.name: function for function in own}, scans)
     for scan in scans:
         _function_facts(work, scan, chosen)
@@ -127,6 +130,7 @@ class _Work:
     calls: list[CallFact] = field(default_factory=list)
     exposed: list[tuple[str, Origin]] = field(default_factory=list)
     bounded: list[str] = field(default_factory=list)
+    setters: dict[str, bool] = field(default_factory=dict)
 
 
 # ------------------------------------------------------------------------------------------------------ first pass
@@ -271,19 +275,41 @@ def _note_exposed(scan: _Scan, expr: Expr, position: Position) -> None:
 # ------------------------------------------------------------------------------------------------------ candidates
 
 
-def _candidates(scans: Sequence[_Scan]) -> frozenset[str]:
-    """The keys worth working out: dispatched on here, or stored as constants where another unit may dispatch on
-    them."""
+def _candidates(scans: Sequence[_Scan], names: Names) -> frozenset[str]:
+    """The keys worth working out: dispatched on here, or holding named constants where another unit may dispatch."""
     chosen: set[str] = set()
+    shared: dict[str, list[_Seen]] = {}
     for scan in scans:
         for key, seen in scan.keys.items():
             if seen.dispatches:
                 if seen.key.scope == "lasting" or any(_carried(scan, seen, block) for block, _ in seen.dispatches):
                     chosen.add(key)
-            elif seen.key.scope == "lasting" and _shared(seen):
-                if any(_constant_store(statement) for _, statement, _ in seen.stores) or seen.tests:
-                    chosen.add(key)
+            elif seen.key.scope == "lasting" and not key.endswith("[]") and _shared(seen):
+                shared.setdefault(key, []).append(seen)
+    chosen.update(key for key, seen in shared.items() if key not in chosen and _holds_names(seen, names))
     return frozenset(chosen)
+
+
+def _holds_names(seen: Sequence[_Seen], names: Names) -> bool:
+    """Whether a key is only ever given constants or copies, and some of the constants have names: no count, no
+    length."""
+    constants: list[Const] = [number for one in seen for number, _ in one.tests]
+    for one in seen:
+        for _, statement, _ in one.stores:
+            inner = uncast(statement.value) if isinstance(statement, Assign) else None
+            if isinstance(inner, Const):
+                constants.append(inner)
+            elif isinstance(inner, Binary):
+                return False
+    if any(isinstance(one.type, IntType) and one.type.enum is not None for one in seen):
+        return bool(constants)
+    if any(const.name is not None for const in constants):
+        return True
+    return any(
+        const.position is not None and const.position.line and names.origin(const.position).spelling.isidentifier()
+        for const in constants
+        if isinstance(const.type, IntType)
+    )
 
 
 def _shared(seen: _Seen) -> bool:
@@ -313,6 +339,8 @@ def _function_facts(work: _Work, scan: _Scan, chosen: frozenset[str]) -> None:
         for _, statement, place in seen.stores:
             work.stores.append(_store(work, scan, seen, statement, place))
     for call, name in scan.calls:
+        if not _may_set(work, name):
+            continue
         for index, argument in enumerate(call.arguments):
             inner = uncast(argument)
             if isinstance(inner, Const) and isinstance(inner.type, IntType):
@@ -325,6 +353,29 @@ def _function_facts(work: _Work, scan: _Scan, chosen: frozenset[str]) -> None:
     for key, position in scan.exposed:
         if key in chosen:
             work.exposed.append((key, work.names.origin(position)))
+
+
+def _may_set(work: _Work, name: str) -> bool:
+    """Whether a function may be a setter: one seen here that stores a parameter, or one elsewhere that is named like
+    one."""
+    known = work.setters.get(name)
+    if known is None:
+        function = work.by_name.get(name)
+        if function is None:
+            known = bool(_SETTER.search(name))
+        else:
+            own = {parameter.identity for parameter in function.parameters}
+            known = any(
+                isinstance(inner, Load)
+                and isinstance(inner.place, VariablePlace)
+                and inner.place.variable.identity in own
+                for block in function.blocks
+                for statement in block.statements
+                if isinstance(statement, Assign)
+                for inner in [uncast(statement.value)]
+            )
+        work.setters[name] = known
+    return known
 
 
 def _store(work: _Work, scan: _Scan, seen: _Seen, statement: Assign | Call | Clobber, place: PlaceKey) -> StoreFact:

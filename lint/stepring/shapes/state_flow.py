@@ -7,14 +7,16 @@ function calls are followed. Method: the classic disjunctive constant propagatio
 so when the bound was met.
 """
 
+import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from typing import Literal, NamedTuple
 
 from stepring.meaning.fold import apply_binary, apply_unary, convert
-from stepring.meaning.show import expr_text
+from stepring.meaning.show import expr_text, statement_text
 from stepring.meaning.types import (
     AddressOf,
+    Assign,
     Branch,
     Call,
     Function,
@@ -22,6 +24,7 @@ from stepring.meaning.types import (
     Load,
     Switch,
     Terminator,
+    VariablePlace,
 )
 from stepring.places import Position
 from stepring.shapes.keys import instance_text, place_key, uncast
@@ -433,7 +436,7 @@ def guard_text(function: Function, block: int, key: str) -> str:
         passed.add(previous)
         terminator = function.blocks[previous].terminator
         if isinstance(terminator, Branch):
-            text = expr_text(terminator.condition)
+            text = _spelled(function, expr_text(terminator.condition))
             parts.append(text if terminator.then == block else f"!({text})")
         elif isinstance(terminator, Switch):
             control = uncast(terminator.value)
@@ -443,9 +446,33 @@ def guard_text(function: Function, block: int, key: str) -> str:
                     break
             labels = [case.name or str(case.low) for case in terminator.cases if case.target == block]
             if labels:
-                parts.append(f"{expr_text(terminator.value)} == {' or '.join(labels)}")
+                parts.append(f"{_spelled(function, expr_text(terminator.value))} == {' or '.join(labels)}")
         block = previous
     return " && ".join(reversed(parts))
+
+
+_TEMPORARY = re.compile(r"%\d+")
+
+
+def _spelled(function: Function, text: str) -> str:
+    """A condition with its temporaries replaced by what they were computed from."""
+    if "%" not in text:
+        return text
+    meaning: dict[str, str] = {}
+    for block in function.blocks:
+        for statement in block.statements:
+            if isinstance(statement, Assign) and isinstance(statement.place, VariablePlace):
+                name, source = statement.place.variable.name, expr_text(statement.value)
+            elif isinstance(statement, Call) and isinstance(statement.result, VariablePlace):
+                name, source = statement.result.variable.name, statement_text(statement).split(" = ", 1)[-1]
+            else:
+                continue
+            if name.startswith("%"):
+                # Several sources: the arms of a choice.
+                meaning[name] = f"{meaning[name]} or {source}" if name in meaning else source
+    for _ in range(4):
+        text = _TEMPORARY.sub(lambda match: meaning.get(match[0], match[0]), text)
+    return text
 
 
 def _targets(terminator: Terminator) -> tuple[int, ...]:
