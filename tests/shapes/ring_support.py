@@ -6,8 +6,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import stepring.read
 from pycparser import c_ast, c_parser
+
+import stepring.read
 from stepring.gather.types import Unit
 from stepring.meaning.models import MODELS
 from stepring.meaning.types import DataModel, Function, Object, StructLayout

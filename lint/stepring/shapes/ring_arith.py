@@ -148,7 +148,7 @@ class Compiler:
             known = self.points.get(key, frozenset()) if key is not None else frozenset()
             target = Ptr(next(iter(known)), Range(0, (1 << 31) - 1, False)) if len(known) == 1 else None
             return lambda env: target
-        unknown = whole(type_, _is_input(place))
+        unknown = whole(type_, is_input(place))
         if key is not None and key[0] == "var" and is_scalar(key) and isinstance(type_, IntType):
             return lambda env: env.get(key, unknown)
         return lambda env: unknown
@@ -170,7 +170,7 @@ class Compiler:
         return lambda env: target
 
 
-def _is_input(place: PlaceExpr) -> bool:
+def is_input(place: PlaceExpr) -> bool:
     """Whether a place holds data from outside: a register at a fixed address, or what a parameter points to."""
     while isinstance(place, MemberPlace | ElementPlace):
         place = place.base
@@ -204,7 +204,8 @@ def _cast(code: Code, source: CType, type_: IntType) -> Code:
             if low <= value.low and value.high <= high:
                 return value
             inside = intervals.convert(Interval(value.low, value.high, 1), type_)
-            return Range(inside.low, inside.high, False) if inside is not None else Range(low, high, False)
+            exact = value.exact and value.high - value.low >= high - low  # then every value of the type is met
+            return Range(inside.low, inside.high, exact) if inside is not None else Range(low, high, False)
         return Range(low, high, False)
 
     return run
@@ -326,9 +327,10 @@ def _slow(
         return known.low
     if op in "+-*" and known.high - known.low > WIDE:
         return whole(type_, False)
-    exact = op in "+-" and (
+    # A constant on one side leaves what is free to take any value free enough for a comparison to go either way.
+    exact = op in ("+", "-", "&", "%", ">>", "/") and (
         (isinstance(a, Range) and a.exact and isinstance(b, int))
-        or (isinstance(b, Range) and b.exact and isinstance(a, int))
+        or (isinstance(b, Range) and b.exact and isinstance(a, int) and op in "+-&")
     )
     return Range(known.low, known.high, exact)
 

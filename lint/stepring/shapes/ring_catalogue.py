@@ -271,6 +271,14 @@ def is_index(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
     return any(key in use.cells and use.reduction != "none" for use in uses)
 
 
+def stride(merged: Catalogue, key: Key) -> int:
+    """What one advance of an index that wraps adds; 0 where that differs or is not known."""
+    moves = merged.moves[key]
+    steps = {advance.by for advance in moves.advances.values()}
+    only = next(iter(steps)) if len(steps) == 1 else None
+    return only if moves.wraps and only else 0
+
+
 def _only_stops(wrap: Wrap) -> bool:
     """A decrement from a comparison with 0 that sets no upper end says nothing."""
     return wrap.form == "decrement" and wrap.limit is None

@@ -193,7 +193,7 @@ def _spread(sight: _Sight) -> None:
 
 
 def sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
-    """The lasting integers that a value is made of by copying, adding, reducing or scaling."""
+    """The lasting integers that a value is made of by copying, adding or reducing."""
     match expr:
         case Load(place=place, type=IntType() as type_):
             found: frozenset[Key] = NOTHING
@@ -204,11 +204,23 @@ def sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
             return found
         case Cast(operand=operand):
             return sources(sight, operand, frame)
-        case Binary(op="+" | "-" | "*" | "&", left=left, right=right):
+        case Binary(op="+" | "-" | "&", left=left, right=right):
             return sources(sight, left, frame) | sources(sight, right, frame)
-        case Binary(op="%" | "<<", left=left):
+        case Binary(op="%", left=left):
             return sources(sight, left, frame)
     return NOTHING
+
+
+def _scaled_sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
+    """The same, through multiplications as well: ``head * size``."""
+    match expr:
+        case Cast(operand=operand):
+            return _scaled_sources(sight, operand, frame)
+        case Binary(op="+" | "-" | "*", left=left, right=right):
+            return _scaled_sources(sight, left, frame) | _scaled_sources(sight, right, frame)
+        case Binary(op="<<", left=left):
+            return _scaled_sources(sight, left, frame)
+    return sources(sight, expr, frame)
 
 
 def _scaled(expr: Expr) -> bool:
@@ -228,7 +240,7 @@ def _scaled(expr: Expr) -> bool:
 def _use(sight: _Sight, touch: Touch) -> Use | None:
     if touch.subscript is None:
         return None
-    cells = sources(sight, touch.subscript, touch.frame)
+    cells = _scaled_sources(sight, touch.subscript, touch.frame)
     if not cells:
         return None
     form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
@@ -268,6 +280,8 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
     facts = CellFacts()
     nodes = [(number, op, key == target) for key in (target, *chain) for number, op in sight.sets.get(key, ())]
     guards = _guards(sight, cell, nodes)
+    if not any(any(True for _ in _steps(sight, op.value, op.frame, cell)) for _, op, _ in nodes):
+        guards = {}  # what is never stepped is never wrapped
     moved = {
         at
         for number, op, _ in nodes
@@ -318,9 +332,12 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
             facts.moves[id(op)] = total
     if not (facts.advances or facts.wraps or facts.resets or facts.copies):
         return None
+    stepping = {
+        at for number, op, _ in nodes if facts.roles.get(id(op)) == "advance" for _, at in guards.get(number, ())
+    }
     for number, op, _ in nodes:
         later = [item.position for item in facts.advances if item.function == op.function]
-        apart = any(at in moved for _, at in guards.get(number, ()))  # either wrap or advance, never both
+        apart = any(at in stepping for _, at in guards.get(number, ()))  # either wrap or advance, never both
         if facts.roles.get(id(op)) != "wrap" or not later:
             continue
         if apart:

@@ -106,12 +106,14 @@ FlatOp: TypeAlias = Set | Touch | Spoil | Outside
 
 @dataclass(slots=True, eq=False)
 class FlatBlock:
-    """Operations, then where control goes; ``frame`` is that of the terminator's expression."""
+    """Operations, then where control goes; ``frame`` is that of the terminator's expression, ``inside`` names the
+    functions that were entered to come here."""
 
     ops: list[FlatOp] = field(default_factory=list)
     end: Jump | Branch | Switch | Return | Stop = field(default_factory=lambda: Stop("open"))
     frame: str = ""
     function: str = ""
+    inside: tuple[str, ...] = ()
 
     def targets(self) -> tuple[int, ...]:
         """The numbers of the blocks that can come next."""
@@ -177,7 +179,8 @@ def return_variable(type_: CType) -> Variable:
 def _place(layout: _Layout, function: Function, frame: str, stack: tuple[str, ...], back: int | None) -> int:
     """Add a function's blocks; returns lead to ``back``. Gives the number of its first block."""
     base = len(layout.blocks)
-    layout.blocks.extend(FlatBlock(frame=frame, function=function.name) for _ in function.blocks)
+    inside = tuple(name.rsplit(":", 1)[-1] for name in stack[1:])
+    layout.blocks.extend(FlatBlock(frame=frame, function=function.name, inside=inside) for _ in function.blocks)
     for number, block in enumerate(function.blocks):
         current = layout.blocks[base + number]
         for statement in block.statements:
@@ -246,7 +249,7 @@ def _called(
         layout.inlined.add(body.identity)
         for parameter, argument in zip(body.parameters, call.arguments, strict=False):
             current.ops.append(Set(VariablePlace(parameter), inner, argument, frame, call.position, function.name))
-        after = FlatBlock(frame=frame, function=function.name)
+        after = FlatBlock(frame=frame, function=function.name, inside=current.inside)
         layout.blocks.append(after)
         number = len(layout.blocks) - 1
         current.end = Jump(_place(layout, body, inner, (*stack, body.identity), number))

@@ -8,6 +8,7 @@ whether it is real. What is reached along certain paths only is a fact with a wi
 although every doubtful path was taken, cannot happen.
 """
 
+import random
 from collections import deque
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
@@ -23,6 +24,8 @@ from stepring.shapes.steps import Pair, Run, Trace, Walk
 
 STATES = 20_000
 """Combinations of values that are looked at when several integers are followed together."""
+NEAR = 2_000
+"""So many of them are looked at in order of distance, before random sequences of calls are tried."""
 ORBIT = 4_200
 """Values of one index that are looked at."""
 RUN_WORK = 30_000
@@ -85,10 +88,18 @@ class Scene:
     writes: Callable[[str], frozenset[Key]]
 
 
-def study(scene: Scene, storage: Key, capacity: int, indices: Sequence[Key], counts: Sequence[Key] = ()) -> Study:
+def study(
+    scene: Scene,
+    storage: Key,
+    capacity: int,
+    indices: Sequence[Key],
+    counts: Sequence[Key],
+    strides: Mapping[Key, int],
+) -> Study:
     """Find out which slots of ``storage`` are accessed and which values the indices take.
 
     ``counts`` are integers that count occupied slots; they are followed to bound them, but they are no indices.
+    ``strides`` are what one advance adds to each index that wraps.
     """
     arrays = frozenset((storage,))
     followed = [*indices, *counts]
@@ -104,9 +115,20 @@ def study(scene: Scene, storage: Key, capacity: int, indices: Sequence[Key], cou
             break
         ranges = {key: known for key in followed for known in (_hull(found.orbits[key]),) if known is not None}
     suspects = [access for access in suspects if access.bad is None]
-    if suspects:
-        _together(scene, arrays, capacity, followed, state - set(followed), found, suspects)
+    pairs = {
+        pair
+        for pair, certain in found.pairs.items()
+        if not certain and pair[0] in strides and is_odd(pair, strides[pair[0]], capacity)
+    }
+    if suspects or pairs:
+        _together(scene, arrays, capacity, followed, state - set(followed), found, suspects, pairs)
     return found
+
+
+def is_odd(pair: Pair, stride: int, capacity: int) -> bool:
+    """Whether an advance does not lead to the slot that follows."""
+    _, _, before, after, by = pair
+    return (before + (by or stride) - after) % capacity != 0
 
 
 def _hull(orbit: Orbit) -> Range | None:
@@ -218,13 +240,14 @@ def _alone(
             _collect(walk, run.touches, (), found, capacity, False, wanted)
             found.complete = found.complete and not run.cut
     else:
-        search = _Search(scene, paces, (index,), capacity, found, ORBIT, ALONE_WORK, wanted)
-        search.go()
+        search = _Search(scene, paces, (index,), capacity, found, ALONE_WORK, wanted)
+        search.start()
+        search.go(ORBIT)
         for state, certain in search.states.items():
             if certain and isinstance(state[0], int):
                 orbit.certain.add(state[0])
             orbit.possible.add(state[0])
-        orbit.complete = not search.cut
+        orbit.complete = search.complete
     found.complete = found.complete and orbit.complete
     return {key for walk in walks for key in walk.state}
 
@@ -238,47 +261,73 @@ class _Search:
     tracked: tuple[Key, ...]
     capacity: int
     found: Study
-    limit: int
     work: int
     wanted: Callable[[Touch], bool] = lambda touch: True
     states: dict[State, bool] = field(default_factory=dict)
     parents: dict[State, tuple[State | None, Trace]] = field(default_factory=dict)
+    sure: deque[State] = field(default_factory=deque)
+    doubtful: deque[State] = field(default_factory=deque)
     cut: bool = False
     stop_at: set[Spot] = field(default_factory=set)
+    pairs: set[Pair] = field(default_factory=set)
 
-    def go(self) -> None:
-        """Look at all states, certain ones first and in order of their distance from the start."""
-        sure: deque[State] = deque()
-        doubtful: deque[State] = deque()
+    @property
+    def complete(self) -> bool:
+        """Whether every state was looked at, along every path."""
+        return not (self.cut or self.sure or self.doubtful)
+
+    def start(self) -> None:
+        """Put the initial states first in the row."""
         for state, certain in self._starts():
             self.states[state] = certain
             self.parents[state] = (None, None)
-            (sure if certain else doubtful).append(state)
-        while sure or doubtful:
-            if self.stop_at and self._all_bad():
+            (self.sure if certain else self.doubtful).append(state)
+
+    def go(self, limit: int) -> None:
+        """Look at states, certain ones first and in order of their distance from the start, up to ``limit`` states."""
+        while self.sure or self.doubtful:
+            if self.settled():
                 self.cut = True
                 return
-            state = sure.popleft() if sure else doubtful.popleft()
-            certain = self.states[state]
-            for pace in self.paces:
-                looks, moves = pace.looks, pace.moves
-                if looks is not None:
-                    run = self._run(looks, state)
-                    _collect(looks, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
-                if moves is None:
-                    continue
-                run = self._run(moves, state)
-                for pair, sure_pair in run.pairs.items():
-                    self.found.pairs[pair] = self.found.pairs.get(pair, False) or (sure_pair and certain)
-                for values, (sure_end, trace) in run.ends.items():
-                    end = tuple(
-                        new if key in moves.reads else old
-                        for key, new, old in zip(self.tracked, values, state, strict=True)
-                    )
-                    self._reach(end, certain and sure_end, state, trace, sure, doubtful)
-            if self.work <= 0 or len(self.states) > self.limit:
-                self.cut = True
+            if self.work <= 0 or len(self.states) > limit:
                 return
+            self._expand(self.sure.popleft() if self.sure else self.doubtful.popleft())
+
+    def wander(self, walks: int, length: int) -> None:
+        """Random sequences of calls from the start: they come to depths that a search in all directions does not."""
+        luck = random.Random(1)
+        starts = [state for state, (before, _) in self.parents.items() if before is None and self.states[state]]
+        for _ in range(walks if starts else 0):
+            state = luck.choice(starts)
+            for _ in range(length):
+                following = [end for end in self._expand(state) if end != state]
+                if not following or self.work <= 0 or self.settled():
+                    break
+                state = luck.choice(following)
+
+    def _expand(self, state: State) -> list[State]:
+        """Run all functions from a state; gives the states that are certainly reached in one call."""
+        certain = self.states[state]
+        found: list[State] = []
+        for pace in self.paces:
+            looks, moves = pace.looks, pace.moves
+            if looks is not None:
+                run = self._run(looks, state)
+                _collect(looks, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
+            if moves is None:
+                continue
+            run = self._run(moves, state)
+            for pair, sure_pair in run.pairs.items():
+                self.found.pairs[pair] = self.found.pairs.get(pair, False) or (sure_pair and certain)
+            for values, (sure_end, trace) in run.ends.items():
+                end = tuple(
+                    new if key in moves.reads else old
+                    for key, new, old in zip(self.tracked, values, state, strict=True)
+                )
+                end = self._reach(end, certain and sure_end, state, trace)
+                if self.states[end] and certain and sure_end:
+                    found.append(end)
+        return found
 
     def _run(self, walk: Walk, state: State) -> Run:
         run = walk.run(state, min(RUN_WORK, max(1, self.work)))
@@ -287,9 +336,14 @@ class _Search:
         self.cut = self.cut or run.cut
         return run
 
-    def _all_bad(self) -> bool:
+    def settled(self) -> bool:
+        """Whether all that was searched for is found."""
+        if not self.stop_at and not self.pairs:
+            return False
         known = (self.found.accesses.get(spot) for spot in self.stop_at)
-        return all(access is not None and access.bad is not None for access in known)
+        return all(access is not None and access.bad is not None for access in known) and all(
+            self.found.pairs.get(pair) for pair in self.pairs
+        )
 
     def _starts(self) -> list[tuple[State, bool]]:
         found: list[State] = [()]
@@ -302,9 +356,7 @@ class _Search:
             found = [(*state, value) for state in found for value in values]
         return [(state, certain) for state in found]
 
-    def _reach(
-        self, end: State, certain: bool, state: State, trace: Trace, sure: deque[State], doubtful: deque[State]
-    ) -> None:
+    def _reach(self, end: State, certain: bool, state: State, trace: Trace) -> State:
         if any(isinstance(value, Range) for value in end):
             end = tuple(
                 _whole(self.scene, key) if isinstance(value, Range) else value
@@ -315,7 +367,8 @@ class _Search:
         if known is None or (certain and not known):
             self.states[end] = certain
             self.parents[end] = (state, trace)
-            (sure if certain else doubtful).append(end)
+            (self.sure if certain else self.doubtful).append(end)
+        return end
 
     def witness(self, state: State, trace: Trace) -> Witness:
         """The stores from the start to a point in a run from ``state``."""
@@ -382,25 +435,33 @@ def _together(
     state: set[Key],
     found: Study,
     suspects: list[Access],
+    pairs: set[Pair],
 ) -> None:
     """Follow the indices with the state that they depend on, and settle the suspects if that comes to an end."""
-    tracked = list(dict.fromkeys([*indices, *sorted(state)]))
+    tracked = list(dict.fromkeys([*indices, *sorted(key for key in state if scene.initial(key) is not None)]))
     paces: list[Pace] = []
     for _ in range(3):
         tracked = [key for key in tracked if scene.types.get(key) is not None]
         if len(tracked) > TOGETHER:
             return
         paces = _paces(scene, arrays, capacity, tracked, {})
-        more = {key for pace in paces for walk in pace.walks for key in walk.state} - set(tracked)
+        more = {key for pace in paces for walk in pace.walks for key in walk.state if scene.initial(key) is not None}
+        more -= set(tracked)
         if not more:
             break
         tracked = [*tracked, *sorted(more)]
     fresh = Study()
-    search = _Search(scene, paces, tuple(tracked), capacity, fresh, STATES, TOGETHER_WORK)
+    search = _Search(scene, paces, tuple(tracked), capacity, fresh, TOGETHER_WORK)
     search.stop_at = {
         (access.touch.position, access.touch.kind, access.touch.function, access.touch.storage) for access in suspects
     }
-    search.go()
+    search.pairs = pairs
+    search.start()
+    search.go(NEAR)
+    if not search.complete and not search.settled():
+        search.wander(12, 4 * capacity + 60)
+    if not search.settled():
+        search.go(STATES)
     for pair, certain in fresh.pairs.items():
         if certain:
             found.pairs[pair] = True
@@ -415,7 +476,7 @@ def _together(
         touch = access.touch
         other = fresh.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
         if other is None:
-            if not search.cut:
+            if search.complete:
                 access.doubtful.clear()
                 access.maybe = None
                 access.settled = True
@@ -423,7 +484,7 @@ def _together(
         if other.bad is not None:
             access.bad = other.bad
             access.certain |= other.certain
-        elif not search.cut:
+        elif search.complete:
             access.certain, access.doubtful = other.certain, other.doubtful
             access.maybe = other.maybe
             access.settled = True

@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
 from stepring.places import Origin, Position
 from stepring.shapes.ring_build import build
-from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances
+from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances, stride
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_filter import ring_functions
 from stepring.shapes.ring_flat import Set, Spoil, Touch
@@ -43,7 +43,10 @@ def find_rings(
     for candidate in candidates(merged):
         studied = None
         if candidate.capacity is not None and candidate.capacity <= LARGEST:
-            studied = study(scene, candidate.storage, candidate.capacity, candidate.indices, candidate.counts)
+            strides = {key: by for key in candidate.indices for by in (stride(merged, key),) if by}
+            studied = study(
+                scene, candidate.storage, candidate.capacity, candidate.indices, candidate.counts, strides
+            )
         found.append(build(merged, candidate, studied, origin))
     return tuple(found)
 
@@ -78,9 +81,8 @@ def _reach(facts: FlatFacts, entered: set[str]) -> tuple[frozenset[Key], frozens
     keys: set[Key] = set()
     structs: set[str] = set()
     arrays: set[Key] = set()
-    own = facts.flat.function.name
     for block in facts.flat.blocks:
-        if block.function != own and block.function in entered:
+        if not entered.isdisjoint(block.inside):
             continue
         for op in block.ops:
             match op:

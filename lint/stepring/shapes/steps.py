@@ -36,7 +36,7 @@ from stepring.meaning.types import (
     VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.ring_arith import Code, Compiler, Env, Ptr, Range, Value, add_offsets, whole
+from stepring.shapes.ring_arith import Code, Compiler, Env, Ptr, Range, Value, add_offsets, is_input, whole
 from stepring.shapes.ring_facts import FlatFacts, control, post_dominators
 from stepring.shapes.ring_flat import FlatOp, Outside, Set, Spoil, Touch
 from stepring.shapes.ring_keys import Key, is_local, is_scalar, place_keys
@@ -133,9 +133,12 @@ class Walk:
         self.compiler = Compiler(self.points, self.follow, ranges)
         self.touched: list[Touch] = []
         self.written: set[Key] = set()
+        self.inputs: set[Key] = set()
         self._slice()
         self.reads = self.written | {key for key in self.needed if key in self.follow}
-        self.state = frozenset(key for key in self.needed if is_scalar(key) and key not in self.follow)
+        self.state = frozenset(
+            key for key in self.needed if is_scalar(key) and key not in self.follow and key not in self.inputs
+        )
         self._compile()
         self._memory: dict[tuple[Value, ...], Run] = {}
 
@@ -241,6 +244,8 @@ class Walk:
                     for key in keys:
                         if isinstance(item.type, IntType):
                             self.types.setdefault(key, item.type)
+                        if is_input(place):
+                            self.inputs.add(key)
                     if isinstance(place, DerefPlace) and len(keys) != 1:
                         pending.append(place.pointer)
                 case Unary(operand=operand) | Cast(operand=operand):

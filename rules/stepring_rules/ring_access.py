@@ -1,0 +1,144 @@
+"""What RB01 and RB02 share: the verdict on every access to a ring's storage, bad ones grouped by their cause."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from stepring.rule import Obligation, Related
+from stepring.shapes.ring_types import CheckedAccess, CheckedStep
+from stepring.shapes.types import Index, Program, Ring
+from stepring_rules.ring_common import (
+    about,
+    cause,
+    checked,
+    declared,
+    is_scaled,
+    mask_cause,
+    shared_capacities,
+    short,
+    story,
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Words:
+    """How a rule puts its three verdicts."""
+
+    rule: str
+    below: bool
+    holds: str
+    why: str
+    advice: str
+
+
+def judged(program: Program, words: Words) -> Iterator[Obligation]:
+    """One obligation for each access of each ring, bad ones with one cause together."""
+    shared = shared_capacities(program)
+    for ring in program.rings:
+        if ring.capacity is None:
+            continue
+        causes = {
+            index.identity: {
+                found
+                for step in index.steps
+                if isinstance(step, CheckedStep) and not is_scaled(ring, index)
+                for found in (cause(ring, index, step, shared),)
+                if found is not None
+            }
+            for index in ring.indices
+        }
+        groups: dict[tuple[object, ...], list[CheckedAccess]] = {}
+        for access in checked(ring):
+            if access.settled:
+                holds = _holds(ring, access, words)
+                yield about(words.rule, ring, "pass", access.where, holds, function=access.function)
+            elif access.bad is not None:
+                if access.below == words.below and not _explained(access, ring, causes, words):
+                    groups.setdefault(_group(ring, access), []).append(access)
+            elif access.cells and not _explained(access, ring, causes, words) and access.maybe_below == words.below:
+                yield about(
+                    words.rule,
+                    ring,
+                    "open",
+                    access.where,
+                    f"It is not settled that every subscript of {ring.storage} here is 0 to {ring.capacity - 1}.",
+                    reason=f"{access.doubt}; the subscript may be {access.maybe}" if access.maybe else access.doubt,
+                    function=access.function,
+                )
+        for group in groups.values():
+            yield _finding(ring, group, words)
+
+
+def _holds(ring: Ring, access: CheckedAccess, words: Words) -> str:
+    range_ = f"{access.range.low} to {access.range.high}" if access.range is not None else "none"
+    return f"{words.holds} {ring.storage} is accessed at {range_}; it has {ring.capacity} slots."
+
+
+def _explained(access: CheckedAccess, ring: Ring, causes: dict[str, set[str]], words: Words) -> bool:
+    """Whether another rule explains why the subscript is outside."""
+    capacity = ring.capacity or 0
+    if access.modulus is not None and access.reduction != "none" and not words.below:
+        if access.modulus != capacity and access.modulus not in (capacity - 1,):
+            return True
+        if access.reduction == "mask" and mask_cause(access.modulus, capacity) is not None:
+            return True
+    silent = {"RB07"} if words.below else {"RB05", "RB06", "RB07"}
+    return any(causes.get(cell, set()) & silent for cell in access.cells)
+
+
+def _group(ring: Ring, access: CheckedAccess) -> tuple[object, ...]:
+    """Accesses with one cause: the index itself leaves the array, or one function computes one bad subscript."""
+    walking = _walking(ring, access)
+    if walking is not None:
+        return ("index", walking.identity)
+    return ("function", access.function, access.cells, access.bad)
+
+
+def _walking(ring: Ring, access: CheckedAccess) -> Index | None:
+    """The index whose own values leave the array, where the access uses it as it is."""
+    for index in ring.indices:
+        if index.identity in access.cells and access.reduction == "none" and access.bad is not None:
+            if any(after == access.bad for step in index.steps for _, after in step.pairs):
+                return index
+    return None
+
+
+def _finding(ring: Ring, group: list[CheckedAccess], words: Words) -> Obligation:
+    first = min(group, key=lambda access: (access.kind != "store", len(access.steps), access.where))
+    capacity = ring.capacity or 0
+    what = f"{ring.storage} has {capacity} slots, 0 to {capacity - 1}, and is accessed at {_subscript(first)}"
+    calls = len(first.steps) - 1
+    name = short(first.index) or "the subscript"
+    walking = _walking(ring, first)
+    if walking is not None:
+        what += f": {short(walking.name)} reaches {first.bad} after {calls} step{'s' if calls != 1 else ''}."
+    elif calls > 0 and first.cells:
+        what += f" when {name} is {_last(first)}."
+    elif first.cells:
+        what += f" at the start, before {name} was ever moved."
+    else:
+        what += "."
+    related = [declared(ring)]
+    related += [Related(other.where, "the same subscript is used here") for other in group if other is not first]
+    return about(
+        words.rule,
+        ring,
+        "fail",
+        first.where,
+        what,
+        "error",
+        why=words.why,
+        advice=words.advice,
+        function=first.function,
+        related=tuple(related),
+        witness=story(first),
+    )
+
+
+def _subscript(access: CheckedAccess) -> str:
+    if access.below and access.bad is not None and access.bad >= 0:
+        return f"{access.bad}, an unsigned number that went below 0"
+    return str(access.bad)
+
+
+def _last(access: CheckedAccess) -> str:
+    return access.steps[-2].values[0][1]

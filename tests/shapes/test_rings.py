@@ -1,0 +1,199 @@
+"""Finding rings: what is one, what only looks like one, and what the inventory says of it."""
+
+import pytest
+from tests.shapes.ring_support import origin
+from tests.support import lower_text
+
+from stepring.shapes.rings import find_rings, ring_functions
+from stepring.shapes.types import Ring
+
+TYPES = "typedef unsigned char uint8_t; typedef unsigned short uint16_t; typedef short int16_t;\n"
+
+
+def rings(text: str) -> list[Ring]:
+    unit = lower_text(TYPES + text)
+    assert not unit.notices
+    kept = ring_functions(unit.functions)
+    return list(find_rings(kept, unit.objects, unit.types.structs, unit.types.model, origin))
+
+
+@pytest.mark.parametrize(
+    ("wrap", "form"),
+    [
+        ("head++; if (head >= 6) head = 0;", "reset"),
+        ("if (++head == 6) head = 0;", "reset"),
+        ("uint8_t next = head + 1; if (next == 6) next = 0; head = next;", "reset"),
+        ("if (head > 4) head = 0; else head++;", "reset"),
+        ("head = (head + 1) % 6;", "modulo"),
+        ("head++; head %= 6;", "modulo"),
+        ("head = head + 1 < 6 ? head + 1 : 0;", "choice"),
+        ("head += 1; if (head >= 6) head -= 6;", "subtract"),
+        ("if (head == 0) head = 6; head--;", "decrement"),
+        ("head = head ? head - 1 : 5;", "decrement"),
+        ("head = (head + 5) % 6;", "modulo"),
+        ("head = following(head);", "modulo"),
+        ("advance(&head);", "reset"),
+    ],
+)
+def test_every_way_to_wrap(wrap: str, form: str) -> None:
+    found = rings(
+        f"""
+        static int16_t grams[6];
+        static uint8_t head;
+        static uint8_t following(uint8_t slot) {{ return (slot + 1) % 6; }}
+        static void advance(uint8_t *slot) {{ if (++*slot >= 6) *slot = 0; }}
+        void put(int16_t sample) {{ grams[head] = sample; {wrap} }}
+        """
+    )
+    assert [(ring.storage, ring.capacity, ring.wrap, ring.scheme) for ring in found] == [
+        ("grams", 6, form, "overwrite")
+    ]
+    index = found[0].indices[0]
+    assert index.orbit == (0, 1, 2, 3, 4, 5)
+    assert {access.exact for access in found[0].accesses} == {(0, 1, 2, 3, 4, 5)}
+    (step,) = index.steps
+    direction = {(after - before) % 6 for before, after in step.pairs}
+    assert direction in ({1}, {5}) and len(step.pairs) == 6
+
+
+@pytest.mark.parametrize(
+    ("text", "scheme"),
+    [
+        (
+            "static uint8_t q[8]; static uint8_t head, tail;"
+            "int put(uint8_t c) { uint8_t next = (head + 1) % 8; if (next == tail) return 0;"
+            " q[head] = c; head = next; return 1; }"
+            "int get(uint8_t *c) { if (head == tail) return 0; *c = q[tail]; tail = (tail + 1) % 8; return 1; }",
+            "one slot empty",
+        ),
+        (
+            "static uint8_t q[8]; static uint8_t head, tail, count;"
+            "int put(uint8_t c) { if (count == 8) return 0; q[head] = c; head = (head + 1) % 8; count++; return 1; }"
+            "int get(uint8_t *c) { if (!count) return 0; *c = q[tail]; tail = (tail + 1) % 8; count--; return 1; }",
+            "count",
+        ),
+        (
+            "static uint8_t q[8]; static uint8_t head, count;"
+            "int put(uint8_t c) { if (count == 8) return 0; q[(head + count) % 8] = c; count++; return 1; }"
+            "int get(uint8_t *c) { if (!count) return 0; *c = q[head]; head = (head + 1) % 8; count--; return 1; }",
+            "count",
+        ),
+        (
+            "static uint8_t q[8]; static uint8_t in, out;"
+            "int put(uint8_t c) { if ((uint8_t)(in - out) >= 8) return 0; q[in & 7] = c; in++; return 1; }"
+            "int get(uint8_t *c) { if (in == out) return 0; *c = q[out & 7]; out++; return 1; }",
+            "difference",
+        ),
+        (
+            "static uint8_t q[8]; static uint8_t head, tail, full;"
+            "int put(uint8_t c) { if (full) return 0; q[head] = c; head = (head + 1) % 8; if (head == tail) full = 1;"
+            " return 1; }"
+            "int get(uint8_t *c) { if (head == tail && !full) return 0; *c = q[tail]; tail = (tail + 1) % 8; full = 0;"
+            " return 1; }",
+            "flag",
+        ),
+        (
+            "static uint8_t q[8]; static uint8_t head, tail;"
+            "void put(uint8_t c) { q[head] = c; head = (head + 1) % 8; }"
+            "uint8_t get(void) { uint8_t c = q[tail]; tail = (tail + 1) % 8; return c; }",
+            "unchecked",
+        ),
+    ],
+)
+def test_how_full_and_empty_are_told_apart(text: str, scheme: str) -> None:
+    (ring,) = rings(text)
+    assert ring.scheme == scheme
+    assert all(access.range is not None and (access.range.low, access.range.high) == (0, 7) for access in ring.accesses)
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        # a cyclic counter over channels: nothing is stored through it
+        "extern void sample(int channel); static uint8_t channel;"
+        "void tick(void) { sample(channel); channel = (channel + 1) % 4; }",
+        # playback of a table
+        "static const uint8_t wave[16] = {1, 2, 3}; static uint8_t at; extern uint8_t out;"
+        "void tick(void) { out = wave[at]; at = (at + 1) % 16; }",
+        # hash probing
+        "static uint8_t table[16]; void insert(uint8_t key) { uint8_t at = key % 16;"
+        " while (table[at]) at = (at + 1) % 16; table[at] = key; }",
+        # a line buffer that starts again with every message
+        "extern void line(uint8_t *text, uint8_t length); static uint8_t text[32]; static uint8_t length;"
+        "void byte(uint8_t c) { if (c == 10) { line(text, length); length = 0; return; }"
+        " text[length++] = c; if (length >= 32) length = 0; }",
+        # a loop over a whole array with an index that happens to last
+        "static uint8_t table[16]; static uint8_t i; void clear(void) { for (i = 0; i < 16; i++) table[i] = 0; }",
+        # a stack
+        "static uint8_t stack[16]; static uint8_t top; void push(uint8_t c) { if (top < 16) stack[top++] = c; }"
+        "uint8_t pop(void) { return top > 0 ? stack[--top] : 0; }",
+        # a clamp
+        "static uint8_t log[16]; static uint8_t used; void note(uint8_t c) { log[used] = c; used++;"
+        " if (used > 15) used = 15; }",
+        # a pseudo-random generator that picks from a table it also fills
+        "static uint16_t seed; static uint8_t salt[8]; void stir(uint8_t c) { seed = seed * 109 + 89;"
+        " salt[seed & 7] ^= c; }",
+    ],
+)
+def test_what_only_looks_like_a_ring(text: str) -> None:
+    assert rings(text) == []
+
+
+def test_rings_in_structures_are_one_whatever_object() -> None:
+    (ring,) = rings(
+        """
+        struct hopper { int16_t line[5]; uint8_t newest; };
+        static struct hopper hoppers[3];
+        void note(struct hopper *h, int16_t sample) { h->line[h->newest] = sample; h->newest = (h->newest + 1) % 5; }
+        void note_all(int16_t sample) { for (int i = 0; i < 3; i++) note(&hoppers[i], sample); }
+        """
+    )
+    assert (ring.storage, ring.kind, ring.capacity) == ("struct hopper.line", "member", 5)
+    assert ring.indices[0].name == "struct hopper.newest"
+
+
+def test_parallel_arrays_are_rings_of_their_own() -> None:
+    found = rings(
+        """
+        static int16_t grams[4]; static uint16_t times[4]; static uint8_t at;
+        void note(int16_t g, uint16_t t) { grams[at] = g; times[at] = t; if (++at == 4) at = 0; }
+        """
+    )
+    assert {ring.storage for ring in found} == {"grams", "times"}
+
+
+def test_a_capacity_that_is_set_at_run_time_is_said() -> None:
+    (ring,) = rings(
+        """
+        struct pipe { uint8_t *data; uint16_t size; uint16_t in; uint16_t out; };
+        int put(struct pipe *p, uint8_t c) {
+            uint16_t next = p->in + 1;
+            if (next >= p->size) next = 0;
+            if (next == p->out) return 0;
+            p->data[p->in] = c; p->in = next; return 1; }
+        int get(struct pipe *p, uint8_t *c) {
+            if (p->in == p->out) return 0;
+            *c = p->data[p->out];
+            if (++p->out >= p->size) p->out = 0;
+            return 1; }
+        """
+    )
+    assert ring.capacity is None and ring.notes
+    assert {index.role for index in ring.indices} == {"write", "read"}
+    assert ring.scheme == "one slot empty"
+
+
+def test_the_unit_stage_keeps_a_small_part() -> None:
+    unit = lower_text(
+        TYPES
+        + """
+        static uint8_t q[8]; static uint8_t head;
+        static int16_t offset; static uint16_t ticks;
+        void put(uint8_t c) { q[head] = c; head = (head + 1) % 8; }
+        void flush(void) { head = 0; }
+        void tick(void) { ticks++; }
+        void set_offset(int16_t value) { offset = value; }
+        int16_t scaled(int16_t value) { return (int16_t)((value - offset) * 3 / 2); }
+        """
+    )
+    assert [function.name for function in ring_functions(unit.functions)] == ["put", "flush"]
