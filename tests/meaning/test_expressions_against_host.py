@@ -9,11 +9,11 @@ import shutil
 from pathlib import Path
 
 import pytest
+from tests.paths.host import KINDS, call_all
+from tests.support import lower_text
 
 from stepring.meaning.types import Cast, IntType, Return, TypedUnit
 from stepring.paths.interpreter import fresh, program, run
-from tests.paths.host import KINDS, call_all
-from tests.support import lower_text
 
 BATCH = 250
 BATCHES = 80 if os.environ.get("STEPRING_MANY") else 9

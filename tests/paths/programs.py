@@ -20,6 +20,8 @@ unsigned long strlen(const char *);
 int abs(int);
 """
 
+Places = tuple[list[str], list[tuple[str, str]], list[tuple[str, str]]]
+
 
 @dataclass
 class Maker:
@@ -94,12 +96,13 @@ def _globals(make: Maker) -> list[str]:
     lines.append(f"enum e_{t} {{ IDLE_{t}, FEED_{t} = {draw.randint(2, 9)}, PURGE_{t} }};")
     lines.append(f"static enum e_{t} mode_{t} = FEED_{t};")
     for base in (f"gs_{t}.", f"gp_{t}->"):
-        make.readable += [f"{base}a", f"{base}b", f"{base}c", f"{base}in.x", f"{base}in.row[@4]", f"{base}by[@4]"]
+        row = "in.row[@4]" if base.endswith(".") else "in.row[@@4]"  # the host checks no last member behind a pointer
+        make.readable += [f"{base}a", f"{base}b", f"{base}c", f"{base}in.x", f"{base}{row}", f"{base}by[@@4]"]
         make.readable += [f"{base}z", f"(*{base}link)", f"{base}w"]
-        make.writable += [(f"{base}a", fields[0]), (f"{base}in.row[@4]", fields[1]), (f"{base}w", "unsigned int")]
-        make.writable += [(f"{base}b", "bits"), (f"{base}c", "bits"), (f"{base}by[@4]", "unsigned char")]
+        make.writable += [(f"{base}a", fields[0]), (f"{base}{row}", fields[1]), (f"{base}w", "unsigned int")]
+        make.writable += [(f"{base}b", "bits"), (f"{base}c", "bits"), (f"{base}by[@@4]", "unsigned char")]
         make.writable += [(f"{base}link[0]", fields[2])]
-    make.readable += [f"text_{t}[@4]", f"(int)mode_{t}", f"PURGE_{t}"]
+    make.readable += [f"text_{t}[@@4]", f"(int)mode_{t}", f"PURGE_{t}"]
     return lines
 
 
@@ -114,16 +117,21 @@ def _leaf(make: Maker) -> str:
 
 
 def _place(make: Maker, place: str) -> str:
-    """A place with its subscript filled in: ``[@8]`` stands for a subscript below 8."""
+    """A place with its subscript filled in: ``[@8]`` stands for a subscript below 8.
+
+    ``[@@8]`` is one that is always in range: the host does not check it.
+    """
     head, mark, tail = place.partition("[@")
     if not mark:
         return place
+    checked = not tail.startswith("@")
+    tail = tail.lstrip("@")
     length, _, rest = tail.partition("]")
     names = [name for name in make.readable if name.isidentifier()]
     index = make.draw.choice(names) if names and make.draw.random() < 0.7 else str(make.draw.randrange(int(length)))
     if index.isdigit():
         return f"{head}[{index}]{rest}"
-    if make.draw.random() < make.careless:
+    if checked and make.draw.random() < make.careless:
         return f"{head}[{index}]{rest}"
     return f"{head}[({index}) & {int(length) - 1}]{rest}"
 
@@ -187,8 +195,9 @@ def _assign(make: Maker) -> str:
     if form < 0.5:
         return f"{target} = {_expression(make, 3)};"
     if form < 0.6:
-        other = _place(make, draw.choice(make.writable)[0])
-        return f"{target} = {other} = {_expression(make, 2)};" if other != target else f"{target} = 1;"
+        other = draw.choice([name for name, _ in make.writable if name.isidentifier()])
+        # Two stores of one expression must not meet, and the second must not decide where the first goes.
+        return f"{target} = {other} = {_expression(make, 2)};" if other not in target else f"{target} = 1;"
     if form < 0.7:
         return f"{target}{draw.choice(('++', '--'))};" if kind in (*NARROW[1:], *UNSIGNED, "bits") else f"{target} = 2;"
     if form < 0.75:
@@ -207,7 +216,7 @@ def _effects(make: Maker) -> str:
     draw = make.draw
     if not make.steppable:
         return ";"
-    name, kind = draw.choice(make.steppable)
+    name, _ = draw.choice(make.steppable)
     saved = make.readable, make.writable
     make.readable = [place for place in make.readable if place != name]
     make.writable = [pair for pair in make.writable if pair[0] != name]
@@ -274,15 +283,15 @@ def _local(make: Maker) -> str:
         make.writable.append((f"{name}[@8]", kind))
         pointer = _new(make, "p")
         text += f" {kind} *{pointer} = &{name}[{draw.randint(0, 4)}];"
-        make.readable += [f"{pointer}[@4]", f"(int)({pointer} - {name})", f"({pointer} > {name})"]
-        make.writable += [(f"{pointer}[@4]", kind), (f"(*({pointer} + {draw.randint(0, 3)}))", kind)]
+        make.readable += [f"{pointer}[@@4]", f"(int)({pointer} - {name})", f"({pointer} > {name})"]
+        make.writable += [(f"{pointer}[@@4]", kind), (f"(*({pointer} + {draw.randint(0, 3)}))", kind)]
         return text
     if form < 0.84:
         name = _new(make, "s")
         literal = f"{{ 1, .w = 77u, .link = &gs_{make.tag}.z }}"
         text = f"struct s_{make.tag} {name} = {draw.choice((f'gs_{make.tag}', f'*gp_{make.tag}', literal))};"
-        make.readable += [f"{name}.a", f"{name}.b", f"{name}.in.row[@4]", f"{name}.by[@4]", f"{name}.w"]
-        make.writable += [(f"{name}.c", "bits"), (f"{name}.w", "unsigned int"), (f"{name}.by[@4]", "unsigned char")]
+        make.readable += [f"{name}.a", f"{name}.b", f"{name}.in.row[@4]", f"{name}.by[@@4]", f"{name}.w"]
+        make.writable += [(f"{name}.c", "bits"), (f"{name}.w", "unsigned int"), (f"{name}.by[@@4]", "unsigned char")]
         return text + f" {name}.in = gs_{make.tag}.in; if ({_expression(make, 1)}) gs_{make.tag} = {name};"
     if form < 0.92:
         name = _new(make, "n")
@@ -356,9 +365,7 @@ def _loop(make: Maker, depth: int) -> str:
     else:
         body = _block(make, depth - 1, 3)
         label = _new(make, f"out_{make.tag}_")
-        text = (
-            f"{{ int {counter} = 0; for (;;) {{ if ({counter}++ >= {most}) goto {label}; {body} }} {label}: ; }}"
-        )
+        text = f"{{ int {counter} = 0; for (;;) {{ if ({counter}++ >= {most}) goto {label}; {body} }} {label}: ; }}"
     make.loops, make.readable = kept
     return text
 
@@ -393,7 +400,7 @@ def _switch(make: Maker, depth: int) -> str:
 # ----------------------------------------------------------------------------------------------------------- functions
 
 
-def _function(make: Maker, name: str, everywhere: tuple[list[str], list[tuple[str, str]], list[tuple[str, str]]]) -> list[str]:
+def _function(make: Maker, name: str, everywhere: Places) -> list[str]:
     draw = make.draw
     kinds = [draw.choice(KINDS), draw.choice(KINDS)]
     make.readable, make.writable, make.steppable = (list(part) for part in everywhere)  # type: ignore[assignment]
@@ -418,13 +425,14 @@ def _function(make: Maker, name: str, everywhere: tuple[list[str], list[tuple[st
 def _struct_functions(make: Maker) -> list[str]:
     t = make.tag
     return [
-        f"static struct s_{t} copy_{t}(struct s_{t} given, unsigned n) {{ given.w += n; given.in.row[1] = n; return given; }}",
+        f"static struct s_{t} copy_{t}(struct s_{t} given, unsigned n) {{",
+        "  given.w += n; given.in.row[1] = n; return given; }",
         f"static unsigned take_{t}(struct s_{t} *at) {{ at->w ^= 5u; return at->w; }}",
         f"static unsigned (*const table_{t}[2])(struct s_{t} *) = {{ take_{t}, 0 }};",
     ]
 
 
-def _entry(make: Maker, everywhere: tuple[list[str], list[tuple[str, str]], list[tuple[str, str]]]) -> list[str]:
+def _entry(make: Maker, everywhere: Places) -> list[str]:
     draw, t = make.draw, make.tag
     make.readable, make.writable, make.steppable = (list(part) for part in everywhere)  # type: ignore[assignment]
     make.labels = []
@@ -434,13 +442,15 @@ def _entry(make: Maker, everywhere: tuple[list[str], list[tuple[str, str]], list
     for function in make.functions:
         lines.append(f"  sum = sum * 31u + (unsigned long){function}(first, second, fuel);")
     lines += [f"  {_statement(make, 3)}" for _ in range(draw.randint(2, 6))]
-    lines.append(f"  struct s_{t} copied = copy_{t}(gs_{t}, 9u); sum += copied.w + copied.in.row[1] + gs_{t}.in.row[1];")
+    lines.append(
+        f"  struct s_{t} copied = copy_{t}(gs_{t}, 9u); sum += copied.w + copied.in.row[1] + gs_{t}.in.row[1];"
+    )
     index = "0" if draw.random() > make.careless else "1"
     lines.append(f"  sum ^= table_{t}[{index}](&gs_{t}) + (copied.link == &gs_{t}.z);")
     for place in dict.fromkeys(make.readable):
         head, mark, tail = place.partition("[@")
         if mark:
-            length, _, rest = tail.partition("]")
+            length, _, rest = tail.lstrip("@").partition("]")
             for index in range(int(length)):
                 lines.append(f"  sum = sum * 31u + (unsigned long){head}[{index}]{rest};")
         else:

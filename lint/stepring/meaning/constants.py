@@ -2,7 +2,7 @@
 
 import re
 
-from stepring.meaning.models import constant_type
+from stepring.meaning.models import constant_type, integer
 from stepring.meaning.types import DataModel, IntType
 
 _INTEGER = re.compile(r"(0[xX][0-9a-fA-F']+|0[bB][01']+|[0-9][0-9']*)([uUlLzZ]*)\Z")
@@ -46,9 +46,37 @@ def _replace(match: "re.Match[str]") -> str:
 
 
 def text(spelling: str) -> str:
-    """The characters of a string literal, adjacent ones already joined by the parser; without the final null."""
+    """The characters of a string literal, adjacent ones already joined by the parser; without the final null.
+
+    Each character of a plain literal stands for one byte; what is beyond ASCII is encoded in UTF-8, as compilers do.
+    """
+    wide = spelling.startswith(("L", "U", 'u"'))
     parts = re.findall(r'(?:u8|[uUL])?"((?:[^"\\]|\\.)*)"', spelling, re.DOTALL)
-    return "".join(_ESCAPE.sub(_replace, part) for part in parts)
+    if wide:
+        return "".join(_ESCAPE.sub(_replace, part) for part in parts)
+    return "".join(_ESCAPE.sub(_replace_by_bytes, _as_bytes(part)) for part in parts)
+
+
+def element_type(model: DataModel, spelling: str) -> IntType:
+    """The type of a string literal's elements, by its prefix (6.4.5p6)."""
+    prefixes = re.findall(r'(u8|[uUL]?)"(?:[^"\\]|\\.)*"', spelling, re.DOTALL)
+    prefix = next((found for found in prefixes if found in ("L", "u", "U")), "")
+    if prefix == "L":
+        wide = ("int", "unsigned short", "long", "unsigned int")
+        return next(type_ for name in wide if (type_ := integer(model, name)).width == model.wchar)
+    if prefix:
+        wanted = 16 if prefix == "u" else 32
+        names = ("unsigned short", "unsigned int", "unsigned long")
+        return next(type_ for name in names if (type_ := integer(model, name)).width == wanted)
+    return integer(model, "char")
+
+
+def _as_bytes(part: str) -> str:
+    return part if part.isascii() else part.encode("utf-8", "surrogateescape").decode("latin-1")
+
+
+def _replace_by_bytes(match: "re.Match[str]") -> str:
+    return _as_bytes(_replace(match)) if match[1][0] in "uU" else _replace(match)
 
 
 def character(spelling: str, signed: bool) -> int:

@@ -21,7 +21,7 @@ from stepring.meaning.builder import (
     saved,
     temporary,
 )
-from stepring.meaning.constants import character, number, text
+from stepring.meaning.constants import character, element_type, number, text
 from stepring.meaning.fold import apply_binary, apply_unary, convert
 from stepring.meaning.models import common, integer, promoted
 from stepring.meaning.scope import (
@@ -345,7 +345,7 @@ def _name(work: Work, node: Any) -> Expr:
 def _constant(work: Work, node: Any) -> Expr:
     at = position(node, work.at)
     if node.type == "string":
-        return TextConst(text(node.value), _pointer(work, integer(work.model, "char")))
+        return TextConst(text(node.value), _pointer(work, element_type(work.model, node.value)))
     if node.type == "char" or node.value[-1:] == "'":
         return Const(character(node.value, work.model.char_signed), int_type(work), at)
     found = number(work.model, node.value)

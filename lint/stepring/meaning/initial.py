@@ -5,7 +5,7 @@ it leaves out is zero. Automatic aggregates are zeroed first and then assigned; 
 list.
 """
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, TypeAlias
 
@@ -25,6 +25,7 @@ from stepring.meaning.types import (
     Const,
     CType,
     ElementPlace,
+    Field,
     FunctionName,
     FunctionType,
     InitialValue,
@@ -33,6 +34,7 @@ from stepring.meaning.types import (
     Object,
     PlaceExpr,
     PointerType,
+    StructLayout,
     StructType,
     TextConst,
     Unknown,
@@ -75,13 +77,11 @@ def _object(walk: _Spread, type_: CType, path: Path, init: Any) -> int:
         return len(text(literal.value)) + 1
     if isinstance(init, c_ast.InitList):
         items = list(init.exprs or ())
-        if isinstance(type_, ArrayType):
-            if len(items) == 1 and _is_string(items[0]) and _is_char(type_.element):
-                return _object(walk, type_, path, items[0])
-            return _array(walk, type_, path, items)
-        if isinstance(type_, StructType):
-            _struct(walk, type_, path, items)
-        elif items:
+        if isinstance(type_, ArrayType) and len(items) == 1 and _is_string(items[0]) and _is_char(type_.element):
+            return _object(walk, type_, path, items[0])
+        if isinstance(type_, ArrayType | StructType):
+            return _fill(walk, type_, path, items, 0, 0, braced=True)[1]
+        if items:
             _object(walk, type_, path, items[0].expr if isinstance(items[0], c_ast.NamedInitializer) else items[0])
         return 0
     if isinstance(init, c_ast.CompoundLiteral) and isinstance(type_, ArrayType):
@@ -90,77 +90,105 @@ def _object(walk: _Spread, type_: CType, path: Path, init: Any) -> int:
     return 0
 
 
-def _array(walk: _Spread, type_: ArrayType, path: Path, items: Sequence[Any]) -> int:
-    at = 0
-    number = 0
-    longest = 0
+def _parts(walk: _Spread, type_: CType) -> tuple[Sequence[tuple[str | int, CType]], int]:
+    """An aggregate's members with their types, or one stand-in for an array's elements; and how many there are.
+
+    A union has one: the first, unless a designator names another.
+    """
+    if isinstance(type_, ArrayType):
+        count = MOST_ELEMENTS if type_.length is None else min(type_.length, MOST_ELEMENTS)
+        return ((0, type_.element),), count
+    layout = walk.scope.file.structs.get(type_.identity) if isinstance(type_, StructType) else None
+    members = tuple((member.name, member.type) for member in layout.fields) if layout is not None else ()
+    return members, min(1, len(members)) if layout is not None and layout.union else len(members)
+
+
+def _fill(
+    walk: _Spread, type_: CType, path: Path, items: Sequence[Any], number: int, at: int, *, braced: bool
+) -> tuple[int, int]:
+    """Give an aggregate's parts from part ``at`` on the items from ``number`` on (6.7.9p17 to p20).
+
+    Without braces of its own it takes as many as it needs and leaves designators to the list around it. Gives the
+    number of the first item left, and the highest part reached plus one.
+    """
+    parts, count = _parts(walk, type_)
+    longest = at
     while number < len(items):
         item = items[number]
         if isinstance(item, c_ast.NamedInitializer):
-            first = item.name[0]
-            last = at
-            expr = getattr(first, "expr", first)  # older parsers give the index itself
-            if isinstance(expr, c_ast.FuncCall) and getattr(expr.name, "name", "") == "__stepring_range":
-                low, high = (_index(walk, bound) for bound in expr.args.exprs)
-                at, last = low or 0, min(high or 0, (low or 0) + MOST_ELEMENTS)
+            if not braced:
+                break
+            number, at = _designated(walk, type_, path, _steps(walk, type_, item.name), item.expr, items, number)
+        elif at >= count:
+            if not braced:
+                break
+            return len(items), longest  # more items than parts: C forbids it, compilers drop them
+        else:
+            name, part = parts[0] if isinstance(type_, ArrayType) else parts[at]
+            inner = (*path, at if isinstance(type_, ArrayType) else name)
+            if _elided(walk, part, item):
+                before = number
+                number, _ = _fill(walk, part, inner, items, number, 0, braced=False)
+                number = max(number, before + 1)
             else:
-                at = last = _index(walk, expr) or 0
-            for index in range(at, last + 1):
-                _designated(walk, type_.element, (*path, index), item.name[1:], item.expr)
-            at = last
-            number += 1
-        elif _elided(walk, type_.element, item):
-            number = _elide(walk, type_.element, (*path, at), items, number)
-        else:
-            _object(walk, type_.element, (*path, at), item)
-            number += 1
-        at += 1
+                _object(walk, part, inner, item)
+                number += 1
+            at += 1
         longest = max(longest, at)
-    return longest
+    return number, longest
 
 
-def _struct(walk: _Spread, type_: StructType, path: Path, items: Sequence[Any]) -> None:
-    layout = walk.scope.file.structs.get(type_.identity)
-    members = layout.fields if layout is not None else ()
-    at = 0
-    number = 0
-    while number < len(items):
-        item = items[number]
-        if isinstance(item, c_ast.NamedInitializer):
-            name = getattr(item.name[0], "name", "")
-            chain = [found for _, found in find_field(walk.scope.file.structs, type_.identity, name)]
-            if chain:
-                at = next((i for i, member in enumerate(members) if member is chain[0] or member == chain[0]), at)
-                inner = (*path, *(found.name for found in chain))
-                _designated(walk, chain[-1].type, inner, item.name[1:], item.expr)
-            number += 1
-        elif at >= len(members):
-            return
-        elif _elided(walk, members[at].type, item):
-            number = _elide(walk, members[at].type, (*path, members[at].name), items, number)
-        else:
-            _object(walk, members[at].type, (*path, members[at].name), item)
-            number += 1
-        at += 1
-        if type_.union and number < len(items) and not isinstance(items[number], c_ast.NamedInitializer):
-            return
-
-
-def _designated(walk: _Spread, type_: CType, path: Path, rest: Sequence[Any], init: Any) -> None:
-    """Follow ``.a[2].b`` down to the object it names."""
-    for step in rest:
+def _steps(walk: _Spread, type_: CType, designators: Sequence[Any]) -> list[tuple[int, int]]:
+    """Designators as (first, last) numbers of parts, level by level; unnamed members on the way are levels too."""
+    steps: list[tuple[int, int]] = []
+    structs = walk.scope.file.structs
+    for designator in designators:
+        expr = getattr(designator, "expr", designator)  # older parsers give the index itself
         if isinstance(type_, StructType):
-            chain = [
-                found for _, found in find_field(walk.scope.file.structs, type_.identity, getattr(step, "name", ""))
-            ]
-            if not chain:
-                return
-            path = (*path, *(found.name for found in chain))
-            type_ = chain[-1].type
+            for owner, found in find_field(structs, type_.identity, getattr(designator, "name", "")):
+                at = structs[owner].fields.index(found)
+                steps.append((at, at))
+                type_ = found.type
         elif isinstance(type_, ArrayType):
-            path = (*path, _index(walk, getattr(step, "expr", step)) or 0)
+            if isinstance(expr, c_ast.FuncCall) and getattr(expr.name, "name", "") == "__stepring_range":
+                low, high = (_index(walk, bound) or 0 for bound in expr.args.exprs)
+                steps.append((low, min(high, low + MOST_ELEMENTS)))
+            else:
+                low = _index(walk, expr) or 0
+                steps.append((low, low))
             type_ = type_.element
-    _object(walk, type_, path, init)
+    return steps
+
+
+def _designated(
+    walk: _Spread,
+    type_: CType,
+    path: Path,
+    steps: Sequence[tuple[int, int]],
+    init: Any,
+    items: Sequence[Any],
+    number: int,
+) -> tuple[int, int]:
+    """Initialise what designators lead to, then go on behind it inside the aggregates passed through (6.7.9p17).
+
+    Gives the number of the first item left and the part of ``type_`` to go on with.
+    """
+    if not steps:
+        return number + 1, 0
+    parts, count = _parts(walk, type_)
+    first, last = steps[0]
+    following = number + 1
+    for at in range(first, last + 1):
+        name, part = parts[0] if isinstance(type_, ArrayType) else parts[at]
+        inner = (*path, at if isinstance(type_, ArrayType) else name)
+        if len(steps) == 1:
+            _object(walk, part, inner, init)
+            continue
+        following, onward = _designated(walk, part, inner, steps[1:], init, items, number)
+        if at == last:
+            following, _ = _fill(walk, part, inner, items, following, onward, braced=False)
+    union = isinstance(type_, StructType) and type_.union
+    return following, count if union else last + 1
 
 
 def _elided(walk: _Spread, type_: CType, item: Any) -> bool:
@@ -173,28 +201,6 @@ def _elided(walk: _Spread, type_: CType, item: Any) -> bool:
         return True
     found: CType = walk.scope.evaluator.type_of(walk.scope, item)
     return not isinstance(found, StructType | UnknownType)
-
-
-def _elide(walk: _Spread, type_: CType, path: Path, items: Sequence[Any], number: int) -> int:
-    """Take as many items as the aggregate needs; returns the number of the first one left."""
-    parts: list[tuple[str | int, CType]] = []
-    if isinstance(type_, ArrayType):
-        parts = [(index, type_.element) for index in range(min(type_.length or 0, MOST_ELEMENTS))]
-    elif isinstance(type_, StructType):
-        layout = walk.scope.file.structs.get(type_.identity)
-        members = layout.fields if layout is not None else ()
-        parts = [(member.name, member.type) for member in (members[:1] if type_.union else members)]
-    if not parts:
-        return number + 1
-    for name, part in parts:
-        if number >= len(items) or isinstance(items[number], c_ast.NamedInitializer):
-            break
-        if _elided(walk, part, items[number]):
-            number = _elide(walk, part, (*path, name), items, number)
-        else:
-            _object(walk, part, (*path, name), items[number])
-            number += 1
-    return number
 
 
 def _index(walk: _Spread, node: Any) -> int | None:
@@ -261,18 +267,27 @@ def initialise(work: Work, target: PlaceExpr, init: Any) -> None:
 def follow(scope: Scope, target: PlaceExpr, path: Path) -> PlaceExpr | None:
     """The place that a path leads to from an object."""
     model = scope.file.model
-    for step in path:
+    for number, step in enumerate(path):
         if isinstance(step, int) and isinstance(target.type, ArrayType):
             target = ElementPlace(target, Const(step, integer(model, "int")), target.type.element)
         elif isinstance(step, str) and isinstance(target.type, StructType):
             layout = scope.file.structs.get(target.type.identity)
             found = layout.field(step) if layout is not None else None
+            if step == "" and layout is not None:
+                found = unnamed_member(scope.file.structs, layout, path[number + 1 :])
             if found is None:
                 return None
             target = MemberPlace(target, target.type.identity, step, found.type, found.volatile)
         else:
             return None
     return target
+
+
+def unnamed_member(structs: Mapping[str, StructLayout], layout: StructLayout, rest: Path) -> Field | None:
+    """The unnamed member through which the rest of a path leads: names below several are distinct (6.7.2.1p13)."""
+    name = next((step for step in rest if isinstance(step, str) and step), "")
+    chain = list(find_field(structs, layout.identity, name))
+    return chain[0][1] if chain else layout.field("")
 
 
 def declare_static(work: Work, variable: Variable, init: Any, at: Position) -> Object:

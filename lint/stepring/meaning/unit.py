@@ -10,7 +10,7 @@ from typing import Any
 from pycparser import c_ast
 
 from stepring.meaning.builder import OpenBlock, Work, close, int_type, successors
-from stepring.meaning.constants import text
+from stepring.meaning.constants import element_type, text
 from stepring.meaning.expressions import place, value
 from stepring.meaning.initial import declare_static, initial_length, initialise
 from stepring.meaning.models import integer
@@ -74,7 +74,7 @@ class Evaluator:
         if where is not None:
             return where.type
         if isinstance(node, c_ast.Constant) and node.type == "string":
-            return ArrayType(integer(scope.file.model, "char"), len(text(node.value)) + 1)
+            return ArrayType(element_type(scope.file.model, node.value), len(text(node.value)) + 1)
         return value(work, node).type
 
     def initial_length(self, scope: Scope, type_: CType, init: Any) -> int | None:

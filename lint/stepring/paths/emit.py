@@ -579,11 +579,11 @@ def _cast(writer: Writer, expr: Cast) -> str:
     match have, want:
         case IntType(), IntType():
             return _to_integer(writer, operand, want, have)
-        case (PointerType() | FunctionType()), IntType(name="_Bool"):
+        case ((PointerType() | FunctionType()), IntType(name="_Bool")):
             return local(writer, f"0 if {operand} == 0 else 1")
         case FunctionType(), PointerType():
             return operand
-        case (PointerType() | FunctionType()), IntType():
+        case ((PointerType() | FunctionType()), IntType()):
             return _to_integer(writer, local(writer, f"address_of({operand})"), want, None)
         case FloatType(), IntType(name="_Bool"):
             return local(writer, f"1 if {operand} != 0.0 else 0")

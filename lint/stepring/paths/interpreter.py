@@ -15,6 +15,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from stepring.meaning.fold import convert
+from stepring.meaning.initial import unnamed_member
 from stepring.meaning.models import integer
 from stepring.meaning.scope import size_of
 from stepring.meaning.types import (
@@ -250,7 +251,7 @@ def _place_of(made: Program, static: Static, path: tuple[str | int, ...]) -> tup
     structs = made.units[static.unit].types.structs
     place: PlaceExpr = VariablePlace(static.variable)
     offset: int | None = 0
-    for step in path:
+    for number, step in enumerate(path):
         if isinstance(place.type, ArrayType) and isinstance(step, int):
             element = place.type.element
             place = ElementPlace(place, Const(step, integer(made.model, "int")), element)
@@ -259,7 +260,7 @@ def _place_of(made: Program, static: Static, path: tuple[str | int, ...]) -> tup
             layout = structs.get(place.type.identity)
             if layout is None:
                 return None
-            found = layout.fields[step] if isinstance(step, int) else layout.field(step)
+            found = unnamed_member(structs, layout, path[number + 1 :]) if step == "" else layout.field(str(step))
             if found is None:
                 return None
             place = MemberPlace(place, place.type.identity, found.name, found.type)
@@ -343,9 +344,9 @@ def run(
     made = units if isinstance(units, Program) else program(units)
     unit, name = _find(made, function)
     kept = memory if memory is not None else Memory(made)
-    made.grow(kept)
     state = _Run(made, kept, externals, volatile, observe)
     code = made.code(unit, name, observe is not None)
+    made.grow(kept)  # making code ready can bring string literals
     if len(arguments) != len(code.parameters):
         raise ValueError(f"{function} takes {len(code.parameters)} arguments and was given {len(arguments)}")
     given = [adopted(item, type_, name, None) for item, (_, type_) in zip(arguments, code.parameters, strict=True)]
