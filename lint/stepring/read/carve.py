@@ -107,7 +107,9 @@ _IDLE_PRAGMA = re.compile(r"(?:GCC|clang|STDC|once\b|message\b|warning\b|diag_|p
 _OLD_STYLE = re.compile(r"[^=;{}]*\([\w\s,]+\)\s*[A-Za-z_][^{}]*;\Z")
 _STRING = re.compile(r'"(?:[^"\\\n]|\\.)*"')
 _ASSIGNS = re.compile(r"(?<![=!<>])=(?!=)")
-_AGGREGATE = re.compile(r"\b(?:struct|union|enum)\b(?![\s\S]*\b(?:struct|union|enum)\b)([\s\S]*)\Z")
+_AGGREGATE = re.compile(r"\b(?:struct|union|enum)\b")
+_NOT_CLOSED = "A declaration that starts here is not closed; it was left out."
+_LONGEST_HEAD = 20_000
 _DECORATION = re.compile(
     r"\b(?:__attribute__|__attribute|__declspec|_Alignas|alignas|__align|__packed__)\s*"
     r"\((?:[^()]|\((?:[^()]|\([^()]*\))*\))*\)|\[\[[^\]]*\]\]"
@@ -228,17 +230,10 @@ def _carve_piece(text: str, source: str, last: bool = False) -> Piece:
     rest = _scan(text, 0, _EVENT, spans, changes, notices, lines)
     if rest is not None and last:
         while rest is not None:
-            file, line, _ = lines.at(_first(text, rest))
-            notices.append(
-                Notice(
-                    "unterminated",
-                    "warning",
-                    "A declaration that starts here is not closed; it was left out.",
-                    file,
-                    line,
-                )
-            )
-            fresh = _FRESH_START.search(text, rest + 1)
+            rest = _first(text, rest)
+            file, line, _ = lines.at(rest)
+            notices.append(Notice("unterminated", "warning", _NOT_CLOSED, file, line))
+            fresh = _FRESH_START.search(text, rest)
             if fresh is None:
                 rest = None
             else:
@@ -310,8 +305,7 @@ def _scan(
                 # only the strict pattern matches a bare line end: a declaration starts although braces are open
                 if depth:
                     file, line, _ = lines.at(_first(text, start))
-                    text_of = "A declaration that starts here is not closed; it was left out."
-                    notices.append(Notice("unterminated", "warning", text_of, file, line))
+                    notices.append(Notice("unterminated", "warning", _NOT_CLOSED, file, line))
                     start, depth, dirty, body = match.end(), 0, False, -1
                 continue
             idle = depth == 0 and _blank(text, start, at)
@@ -355,7 +349,7 @@ def _join_old_style(text: str, spans: list[_Span], start: int, dirty: bool) -> t
         if span.kind != "other":
             break
         if "(" in text[span.start : span.end]:
-            if _OLD_STYLE.match(text[span.start : start].rstrip()):
+            if start - span.start < _LONGEST_HEAD and _OLD_STYLE.match(text[span.start : start].rstrip()):
                 dirty = dirty or any(one.dirty for one in spans[-back:])
                 start = span.start
                 del spans[-back:]
@@ -373,10 +367,10 @@ def _opens_body(head: str) -> bool:
         return False
     if head.count("(") > head.count(")") or head.count("[") > head.count("]"):
         return False
-    aggregate = _AGGREGATE.search(head)
-    if aggregate is None:
+    ends = [keyword.end() for keyword in _AGGREGATE.finditer(head)]
+    if not ends:
         return True
-    tail = _DECORATION.sub(" ", aggregate[1])
+    tail = _DECORATION.sub(" ", head[ends[-1] :])
     return any(c in tail for c in "()*,;")
 
 

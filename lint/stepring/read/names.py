@@ -14,7 +14,7 @@ from functools import lru_cache
 from stepring.read.words import word_set
 
 _IDENTIFIER = re.compile(r"(?:(?<=\.\.\.)|(?<!->)(?<![\w$.]))[A-Za-z_$][\w$]*")
-_TOKEN = re.compile(r"[A-Za-z_$][\w$]*|\.?\d[\w.]*|[()\[\],;=*:@]")
+_TOKEN = re.compile(r"[A-Za-z_$][\w$]*|\.?\d[\w.]*|[()\[\],;=*:@{]")
 _STRING = re.compile(r"\"(?:[^\"\\\n]|\\.)*\"|'(?:[^'\\\n]|\\.)*'")
 _TAG = re.compile(
     r"\b(struct|union|enum)\b(?:\s*__attribute__\s*\(\((?:[^()]|\((?:[^()]|\([^()]*\))*\))*\)\)|\s*\[\[[^\]]*\]\])*"
@@ -91,14 +91,15 @@ def declared_names(text: str, function: bool) -> Declared:
 
 def _without_groups(text: str) -> str:
     """The text without what stands in parentheses, so that a comma in a value is none between enumerators."""
-    return _outside(text, "(", ")") if "(" in text else text
+    return _outside(text, "(", ")", " ") if "(" in text else text
 
 
 def _without_braces(text: str) -> str:
-    return _outside(text, "{", "}")
+    return _outside(text, "{", "}", " { ")
 
 
-def _outside(text: str, opening: str, closing: str) -> str:
+def _outside(text: str, opening: str, closing: str, mark: str) -> str:
+    """The text with a mark in place of each outermost group."""
     depth = 0
     kept: list[str] = []
     for part in re.split(f"([{re.escape(opening)}{re.escape(closing)}])", text):
@@ -106,7 +107,7 @@ def _outside(text: str, opening: str, closing: str) -> str:
             depth += 1
         elif part == closing:
             depth = max(0, depth - 1)
-            kept.append(" ")
+            kept.append(mark if depth == 0 else "")
         elif depth == 0:
             kept.append(part)
     return "".join(kept)
@@ -131,7 +132,7 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                 if before in _TAKES_GROUP:
                     index = _skip_group(tokens, index)
                     if before in ("typeof", "__typeof__", "__typeof", "_Atomic"):
-                        last = ""
+                        last, typed = "", True
                     before = ")"
                     continue
                 inside = tokens[index + 1] if index + 1 < count else ""
@@ -168,7 +169,7 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                     index = _skip_group(tokens, index, "[", "]")
                     before = "]"
                     continue
-            elif token == "*":
+            elif token in ("*", "{") or before in ("struct", "union", "enum"):
                 typed = True
             elif token != "]" and not token[0].isdigit() and token not in _NO_NAMES and token not in _TAKES_GROUP:
                 typed = typed or bool(last)

@@ -18,8 +18,8 @@ from itertools import pairwise
 
 from stepring.places import Origin, Position
 from stepring.read.carve import Change, Chunk, Piece, spelled_file
-from stepring.read.dialect import Cleaned
 from stepring.read.expand import ANY, ANY_STRING, NeedsMore, Place, Token, expand
+from stepring.read.rewrite import Cleaned
 from stepring.read.source import TOKEN, SourceFile, SourceFiles
 from stepring.read.types import Macro
 

@@ -15,9 +15,10 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from pycparser import CParser, c_ast
+from pycparser.c_lexer import CLexer, Token
 
 from stepring.read.carve import Chunk, spelled_file
-from stepring.read.dialect import Cleaned, Operand
+from stepring.read.rewrite import Cleaned, Operand
 
 try:
     from pycparser.c_parser import ParseError
@@ -41,7 +42,8 @@ class Job:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Parsed:
-    """What parsing one job gave: nodes and typeof operands, or the reason why not (with line and column where known)."""
+    """What parsing one job gave: nodes and typeof operands, or the reason why not (with line and column where known).
+    """
 
     nodes: tuple[Any, ...] = ()
     typeofs: dict[str, Any] = field(default_factory=dict)
@@ -63,19 +65,20 @@ def parse_all(jobs: Sequence[Job], parser: CParser | None = None) -> list[Parsed
     with _deep_recursion(), _collector_at_rest():
         for batch in _batches(jobs):
             done = _parse_together(batch, parser) if len(batch) > 1 else None
-            answers.extend(done if done is not None else [parse_one(job, parser) for job in batch])
+            answers.extend(done if done is not None else [parse_one(job) for job in batch])
         parser.parse("")  # lets go of the last text's tokens
     return answers
 
 
-def parse_one(job: Job, parser: CParser) -> Parsed:
+def parse_one(job: Job) -> Parsed:
     """Parse one job on its own."""
+    parser = CParser(lexer=_WatchedLexer)
     with _deep_recursion():
         text = _prefix(job.types, job.cleaned.operands) + f"#pragma {_MARK} 0\n" + _body(job)
         try:
             tree = parser.parse(text, spelled_file(job.chunk.file))
         except ParseError as error:
-            return _failure(str(error), job.chunk)
+            return _failure(str(error), job.chunk, parser.clex)
         except RecursionError:
             return Parsed(error="it is nested too deeply", file=job.chunk.file, line=job.chunk.line)
         except (AssertionError, AttributeError, ValueError, TypeError, IndexError, KeyError) as error:
@@ -168,15 +171,30 @@ def _split_answer(nodes: Sequence[Any], job: Job) -> Parsed:
     return Parsed(tuple(kept), dict(zip(names, values, strict=False)))
 
 
-def _failure(message: str, chunk: Chunk) -> Parsed:
+def _failure(message: str, chunk: Chunk, lexer: Any) -> Parsed:
     match = re.match(r"(.*?):(\d+)(?::(\d+))?: (.*)\Z", message, re.DOTALL)
     if match is None:
-        reason = message.removeprefix(f"{spelled_file(chunk.file)}: ")
-        return Parsed(error=reason, file=chunk.file, line=chunk.line)
+        reason = message.rsplit(": ", 1)[-1]
+        last = lexer.last
+        if last is None:
+            return Parsed(error=reason, file=chunk.file, line=chunk.line)
+        return Parsed(error=f"{reason} near {last.value!r}", file=last.filename, line=last.lineno, column=last.column)
     reason = match[4]
     if reason.startswith("before: "):
         reason = f"the parser stopped before {reason[8:]!r}"
     return Parsed(error=reason, file=match[1], line=int(match[2]), column=int(match[3] or 0))
+
+
+class _WatchedLexer(CLexer):  # type: ignore[misc]
+    """The parser's lexer, which also knows the last token it gave: some of the parser's messages have no place."""
+
+    last: Token | None = None
+
+    def token(self) -> Token | None:
+        token = super().token()
+        if token is not None:
+            self.last = token
+        return token
 
 
 @contextmanager

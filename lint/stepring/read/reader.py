@@ -15,12 +15,14 @@ from typing import Any
 from pycparser import CParser, c_ast
 
 from stepring.places import Notice, Position
+from stepring.read.assembler import lift_assembler
 from stepring.read.carve import Chunk, Piece, carve, spelled_file
-from stepring.read.dialect import Cleaned, clean, lift_assembler
+from stepring.read.dialect import clean
 from stepring.read.infer import Guess, Votes, infer
 from stepring.read.needed import Ownership, Scope, file_scope, needed_chunks, own_chunks
 from stepring.read.origin import OriginFinder
 from stepring.read.parse import Job, Parsed, parse_all, place_of_offset
+from stepring.read.rewrite import Cleaned
 from stepring.read.source import SourceFiles
 from stepring.read.types import Declaration, FunctionPlace, Macro, Preprocessed, ReadUnit
 from stepring.read.words import SPECIAL
