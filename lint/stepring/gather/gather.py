@@ -162,7 +162,7 @@ def _from_database(path: Path, wanted: Sequence[Path] | None, run: _Run) -> set[
         if entry.source in described and _duplicate(entry, run):
             continue
         if not entry.source.is_file():
-            text = f"{entry.source} is named by the compile database {path} and does not exist; it was left out."
+            text = f"{entry.source} is named by {path} and is no file; it was left out."
             run.say(Notice("unreadable-file", "warning", text, str(entry.source)))
             continue
         if _is_text_file(entry.source, run):

@@ -161,8 +161,8 @@ def reduce_options(arguments: Sequence[str], directory: Path) -> Reduced:
                 kept.append(folder_option + value)
         elif file_option is not None:
             value = value_of(file_option)
-            if value and not value.startswith(("@", "-")):
-                file = joined(directory, value)
+            file = joined(directory, value) if value else directory
+            if value and not value.startswith(("@", "-")) and (file.is_file() or not file.exists()):
                 kept.extend((file_option, str(file) if file.is_file() else value))
                 (included if file_option == "-include" else macro_files).append(file if file.is_file() else Path(value))
             elif value:

@@ -71,7 +71,7 @@ class _State:
     complete: bool = True
     notices: list[Notice] = field(default_factory=list)
     said: set[tuple[str, str]] = field(default_factory=set)
-    plain: dict[str, tuple[str, bool]] = field(default_factory=dict)
+    plain: dict[str, tuple[str, bool, int]] = field(default_factory=dict)
     not_found: set[str] = field(default_factory=set)
     found: dict[tuple[str, str | None, int], tuple[str, int] | None] = field(default_factory=dict)
 
@@ -504,6 +504,7 @@ def _run(state: _State, frame: _Frame, run: Run) -> None:
         line = run.open_string + frame.offset
         text = f"{frame.shown}, line {line}: a string literal is not closed on its line."
         state.say("unterminated", "warning", text, frame.shown, line)
+        state.complete = False
     if frame.carried:
         text = frame.carried + "\n" * max(0, run.line - frame.carried_line - frame.carried.count("\n")) + run.text
         line, frame.carried = frame.carried_line, ""
@@ -577,7 +578,12 @@ def _replacement(
         known = state.plain.get(name)
         if known is None:
             known = _plain_expansion(state, frame, name, shown_line)
-        new, goes_on = known
+        new, goes_on, open_brackets = known
+        if open_brackets:
+            closing = _closing(text, end, open_brackets)
+            if closing < 0:
+                return new, end
+            return _expanded(state, frame, text[start : closing + 1], shown_line), closing + 1
         if not goes_on or _bracket_after(text, end) < 0:
             return new, end
     while True:
@@ -602,9 +608,8 @@ def _bracket_after(text: str, place: int) -> int:
     return after if text[after] == "(" else -1
 
 
-def _closing(text: str, opening: int) -> int:
-    """The bracket that closes the one at ``opening``, or -1."""
-    depth = 0
+def _closing(text: str, opening: int, depth: int = 0) -> int:
+    """The bracket that closes the one at ``opening`` (and ``depth`` open ones before it), or -1."""
     for found in _BRACKETS.finditer(text, opening):
         if found[0] == "(":
             depth += 1
@@ -615,10 +620,11 @@ def _closing(text: str, opening: int) -> int:
     return -1
 
 
-def _plain_expansion(state: _State, frame: _Frame, name: str, line: int) -> tuple[str, bool]:
-    """An object-like macro's text, and whether it ends in the name of a function-like one; kept while macros stay."""
+def _plain_expansion(state: _State, frame: _Frame, name: str, line: int) -> tuple[str, bool, int]:
+    """An object-like macro's text, whether it ends in the name of a function-like one, and how many brackets of calls
+    are open at its end; kept while macros stay."""
     new = _expanded(state, frame, name, line)
-    known = new, _ends_in_call(state, new)
+    known = new, _ends_in_call(state, new), _open_brackets(state, new)
     if not state.engine.moving:
         state.plain[name] = known
     return known
@@ -627,6 +633,19 @@ def _plain_expansion(state: _State, frame: _Frame, name: str, line: int) -> tupl
 def _ends_in_call(state: _State, text: str) -> bool:
     found = re.search(r"([A-Za-z_$][\w$]*)\s*$", text)
     return found is not None and found[1] in state.table.names and state.table.definition(found[1]).function_like
+
+
+def _open_brackets(state: _State, text: str) -> int:
+    """How many brackets are open at the end of a text, if one of them opens the call of a function-like macro."""
+    if text.count("(") <= text.count(")"):
+        return 0
+    stack: list[bool] = []
+    for found in _BRACKETS.finditer(text):
+        if found[0] == "(":
+            stack.append(_ends_in_call(state, text[: found.start()]))
+        elif found[0] == ")" and stack:
+            stack.pop()
+    return len(stack) if any(stack) else 0
 
 
 def _expanded(state: _State, frame: _Frame, text: str, line: int) -> str:

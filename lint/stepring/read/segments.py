@@ -148,10 +148,12 @@ def _join_lines(text: str) -> str:
         return text
     joined: list[str] = []
     parts: list[str] = []
-    for line in text.split("\n"):
+    lines = text.split("\n")
+    for number, line in enumerate(lines, 1):
         plain = line.rstrip(" \t") if "\\" in line else line
         if plain.endswith("\\"):
-            if not parts and _ends_between_tokens(plain):
+            following = lines[number][:1] if number < len(lines) else ""
+            if not parts and _ends_between_tokens(plain, following):
                 joined.append(plain[:-1])
             else:
                 parts.append(plain[:-1])
@@ -167,10 +169,10 @@ def _join_lines(text: str) -> str:
     return "\n".join(joined)
 
 
-def _ends_between_tokens(line: str) -> bool:
-    """Whether a continued line is surely no directive and ends with white space outside of literals and comments."""
+def _ends_between_tokens(line: str, following: str) -> bool:
+    """Whether a continued line is surely no directive and no token, literal or comment goes on in the next line."""
     return (
-        line[-2:-1] in (" ", "\t")
+        (line[-2:-1] in ("", " ", "\t", ",", ";", "{", "}", "(", ")") or following in ("", " ", "\t"))
         and not line.lstrip().startswith(("#", "%:"))
         and "//" not in line
         and "'" not in line
@@ -202,7 +204,7 @@ def _without_comments(text: str, path: str, notices: list[Notice], open_strings:
 
     if _JOINED in text:
         text = text.replace(_JOINED, " ")
-    return _COMMENT.sub(blank, text) if "/" in text else text
+    return _COMMENT.sub(blank, text) if "/" in text or '"' in text else text
 
 
 def _physical_lines(text: str) -> list[str]:
