@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from random import Random
 
 import pytest
@@ -15,14 +16,18 @@ from stepring.meaning.types import (
     Call,
     DerefPlace,
     Expr,
+    Field,
     Function,
     IntType,
     Load,
+    Object,
     PlaceExpr,
     PointerStep,
+    StructLayout,
 )  # fmt: skip
 from stepring.values.engine import FunctionValues, analyse
 from stepring.values.intervals import contains, number_type, whole
+from stepring.values.program import summarise
 from stepring.values.scan import expressions_of, walk_deep
 from stepring.values.spots import Exposure
 from stepring.values.surroundings import Surroundings
@@ -30,6 +35,7 @@ from stepring.values.types import Cell, FieldCell, Interval, VariableCell
 
 from .build import (
     BOOL,
+    HERE,
     I8,
     I16,
     INT,
@@ -64,6 +70,9 @@ LOCALS = [local(f"x{number}", kind) for number, kind in enumerate((U8, I8, U16, 
 P, Q, R = local("p", pointer(STRUCT)), parameter("q", pointer(STRUCT)), local("r", pointer(STRUCT))
 BYTE = local("b", pointer(U8))
 WORD = local("w", pointer(U16))
+LAYOUT = StructLayout(
+    STRUCT.identity, False, (Field("head", U8, 0), Field("count", I16, 16), Field("fill", U32, 32)), 8, 4
+)
 OPERATORS = ("+", "-", "*", "/", "%", "<<", ">>", "&", "|", "^", "<", "<=", ">", ">=", "==", "!=")
 
 
@@ -195,7 +204,7 @@ class Maker:
 
         return add
 
-    def function(self) -> Function:
+    def function(self, name: str = "feed") -> Function:
         body = Body()
         if self.pointers:
             body.set(R, address(self.random.choice((ONE, TWO)))).set(P, load(Q))
@@ -205,7 +214,7 @@ class Maker:
         for _ in range(self.random.randrange(3, 9)):
             self.statement(body, self.depth)
         body.give(cast(INT, self.expression(1)))
-        return body.function("feed", [Q], [*LOCALS, P, R, BYTE, WORD, *STATICS, ONE, TWO, MANY, TABLE], returns=INT)
+        return body.function(name, [Q], [*LOCALS, P, R, BYTE, WORD, *STATICS, ONE, TWO, MANY, TABLE], returns=INT)
 
 
 def callee(random: Random) -> Function:
@@ -246,8 +255,6 @@ def scalars() -> list[tuple[Address, Cell, IntType]]:
 
 def check(values: FunctionValues, machine: Machine, activation: Activation, block: int, number: int) -> None:
     """Every value that the statement is about to compute lies in what was found for it."""
-    if not activation.outermost:
-        return
     view = values.before(block, number)
     here = activation.function.blocks[block]
     step = here.statements[number] if number < len(here.statements) else here.terminator
@@ -274,6 +281,64 @@ def check(values: FunctionValues, machine: Machine, activation: Activation, bloc
 @settings(max_examples=250, deadline=None, suppress_health_check=list(HealthCheck))
 def test_what_is_seen_lies_in_what_was_found(pointers: bool, summarised: bool, seed: int) -> None:
     examine(Random(seed), pointers, summarised)
+
+
+@pytest.mark.parametrize("pointers", (False, True), ids=("plain", "pointers"))
+@given(seed=st.integers(0, 2**40))
+@settings(max_examples=150, deadline=None, suppress_health_check=list(HealthCheck))
+def test_a_programs_summaries_hold_whenever_a_function_starts(pointers: bool, seed: int) -> None:
+    examine_program(Random(seed), pointers)
+
+
+def examine_program(random: Random, pointers: bool) -> None:
+    """A few functions that call each other and are called in any order by code that was not read."""
+    inner = callee(random)
+    made = [Maker(random, 2, pointers, callee=True).function(f"feed{number}") for number in range(3)]
+    feeds = [replace(feed, static=False, identity=feed.name) for feed in made]
+    starts: list[tuple[Expr, Address]] = [
+        (address(ONE), (ONE.identity,)),
+        (address(TWO), (TWO.identity,)),
+        (address(element(at(MANY), num(1))), (MANY.identity, 1)),
+    ]
+    driver = Body()
+    for feed, (argument, _) in zip(feeds, starts, strict=True):
+        driver.call(feed.name, argument, returns=INT)
+    functions = [inner, *feeds, driver.function("drive", variables=[ONE, TWO, MANY])]
+    objects = [Object(variable, (), HERE) for variable in (*STATICS, ONE, TWO, MANY, TABLE)]
+    program = summarise(functions, objects, lambda cell: True, structs={STRUCT.identity: LAYOUT})
+    found = {function.identity: program.of(function) for function in functions}
+    lasting = scalars()
+    running = 0
+
+    def look(machine: Machine) -> None:
+        for address_, cell, kind in lasting:
+            value = machine.memory[address_]
+            assert isinstance(value, int)
+            assert contains(program.value(cell) or whole(kind), value), (cell, value, program.value(cell))
+
+    def enter(machine: Machine) -> None:
+        nonlocal running
+        look(machine)
+        if running < 3 and random.random() < 0.7:
+            running += 1
+            which = random.randrange(3)
+            machine.run(feeds[which], (starts[which][1],))
+            running -= 1
+        look(machine)
+
+    def seen(machine: Machine, activation: Activation, block: int, number: int) -> None:
+        check(found[activation.function.identity], machine, activation, block, number)
+
+    memory: dict[Address, Value] = {address_: 0 for address_, _, _ in lasting}
+    for _ in range(6):
+        before = dict(memory)
+        machine = Machine(memory, {"step": inner}, enter, seen)
+        machine.activations = 1
+        running = 0
+        try:
+            enter(machine)
+        except (Undefined, Enough):
+            memory = before
 
 
 def examine(random: Random, pointers: bool, summarised: bool) -> None:
@@ -330,7 +395,7 @@ def examine(random: Random, pointers: bool, summarised: bool) -> None:
         start: Address = random.choice(((ONE.identity,), (TWO.identity,), (MANY.identity, random.randrange(3))))
         machine = Machine(
             memory, {"step": inner} if in_place else {}, outside,
-            lambda m, a, b, n: check(values, m, a, b, n),
+            lambda m, a, b, n: check(values, m, a, b, n) if a.outermost else None,
         )  # fmt: skip
         try:
             results.append(machine.run(function, (start,)))

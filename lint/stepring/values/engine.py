@@ -15,13 +15,15 @@ from heapq import heappop, heappush
 from typing import Final
 
 from stepring.meaning.types import (
+    Call,
     Function,
+    FunctionName,
     Return,
 )
 from stepring.values.execution import Edge, Execution, leave
 from stepring.values.frames import Frame
 from stepring.values.graph import Shape, shape_of, targets_of
-from stepring.values.intervals import UNBOUNDED, number_type, union, whole, widen, within
+from stepring.values.intervals import UNBOUNDED, is_subset, number_type, union, whole, widen, within
 from stepring.values.scan import places_in
 from stepring.values.states import (
     State,
@@ -57,6 +59,7 @@ class Engine(Execution):
     def __init__(self, surroundings: Surroundings) -> None:
         super().__init__(surroundings)
         self._solved: dict[int, list[tuple[State, Solution]]] = {}
+        self._thresholds: dict[str, Sequence[int]] = {}
         self._flows: dict[tuple[int, int], tuple[State, list[Edge], State | None]] = {}
 
     # ------------------------------------------------------------------------------------------------------ fixpoint
@@ -77,6 +80,7 @@ class Engine(Execution):
     def solve(self, frame: Frame, start: State, stack: tuple[str, ...]) -> Solution:
         """The states of a function that is entered in the state ``start``."""
         shape = shape_of(frame.function)
+        thresholds = self._constants(frame.function, stack) if shape.heads else ()
         order = shape.order
         entries: dict[int, State] = {0: start}
         visits: dict[int, int] = {}
@@ -88,7 +92,7 @@ class Engine(Execution):
             visits[block] = visits.get(block, 0) + 1
             for target, state in self.flow(frame, block, entries[block], stack):
                 old = entries.get(target)
-                new = self._arrive(shape, target, old, state, visits.get(target, 0))
+                new = self._arrive(shape.heads, thresholds, target, old, state, visits.get(target, 0))
                 if new is None:
                     continue
                 entries[target] = new
@@ -100,15 +104,37 @@ class Engine(Execution):
                 entries = self._descend(frame, start, entries, shape, stack)
         return Solution(entries, self._leaving(frame, entries, stack))
 
-    def _arrive(self, shape: Shape, target: int, old: State | None, state: State, visits: int) -> State | None:
+    def _constants(self, function: Function, stack: tuple[str, ...]) -> Sequence[int]:
+        """The constants of a function and of the callees that are run in place in it."""
+        known = self._thresholds.get(function.identity)
+        if known is None:
+            values = set(shape_of(function).thresholds)
+            for block in function.blocks:
+                for statement in block.statements:
+                    if isinstance(statement, Call) and isinstance(statement.callee, FunctionName):
+                        body = self.body(statement.callee.name, function, stack)
+                        if body is not None:
+                            values.update(self._constants(body, (*stack, body.identity)))
+            known = self._thresholds[function.identity] = sorted(values)
+        return known
+
+    def _arrive(
+        self,
+        heads: frozenset[int],
+        thresholds: Sequence[int],
+        target: int,
+        old: State | None,
+        state: State,
+        visits: int,
+    ) -> State | None:
         """The target's new state when ``state`` arrives, or None if that brings nothing."""
         if old is None:
             return state
         if includes(self.places, old, state):
             return None
         joined = join_states(self.places, old, state)
-        if target in shape.heads and visits > PATIENCE:
-            self._widen(old, joined, shape.thresholds, visits > LIMIT)
+        if target in heads and visits > PATIENCE:
+            self._widen(old, joined, thresholds, visits > LIMIT)
         return joined
 
     def _widen(self, old: State, new: State, thresholds: Sequence[int], give_up: bool) -> None:
@@ -121,7 +147,12 @@ class Engine(Execution):
             if value == before:
                 continue
             limits = whole(spot.type)
-            wider = limits if give_up else widen(before, value, thresholds)
+            if give_up:
+                new.values[spot] = limits
+                continue
+            # What lasts tends to stay in what its summary says; a bound beyond is sought among the constants.
+            inside = is_subset(value, spot.default) and spot.default != limits
+            wider = spot.default if inside else widen(before, value, thresholds)
             new.values[spot] = within(wider, limits.low, limits.high) or limits
 
     def _descend(

@@ -25,14 +25,17 @@ from stepring.meaning.types import (
 from stepring.values.callees import Callees
 from stepring.values.engine import FunctionValues, analyse
 from stepring.values.exposure import Leaks, exposure_of, leaks_of
+from stepring.values.graph import WIDTHS
 from stepring.values.initial import Table, initial_cells, shared_cells
-from stepring.values.intervals import FALSE, is_subset, number_type, union, widen
+from stepring.values.intervals import FALSE, UNBOUNDED, is_subset, number_type, union, whole, widen, within
 from stepring.values.spots import pointee_cell
 from stepring.values.surroundings import Effect, Record, Surroundings
 from stepring.values.types import Cell, FieldCell, Interval, VariableCell
 
 ROUNDS: Final = 3
 """Times that a cell may grow before it is widened."""
+PATIENCE: Final = 24
+"""Times that a cell may grow before it is taken to hold anything."""
 
 ASSUMPTIONS: Final = (
     "Memory that is reached through pointers and was not given a value by code that was read holds zero.",
@@ -63,7 +66,7 @@ class _Logged(Mapping[Cell, Interval]):
 
     def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
         self.read.add(cell)
-        return self.program.value(cell)
+        return self.program.own(cell)
 
 
 @dataclass(slots=True)
@@ -86,7 +89,7 @@ class _Overlaid(Mapping[Cell, Interval]):
         return len(self.program.summaries)
 
     def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
-        known = self.program.value(cell)
+        known = self.program.own(cell)
         more = self.extra.get(cell)
         return union(known, more) if known is not None and more is not None else known
 
@@ -132,12 +135,13 @@ class ProgramValues:
         self.assumptions = ASSUMPTIONS
         self.summaries: Table = {}
         self._initial: Table = {}
-        self._defined = {item.variable.identity for item in objects}
+        self._types = {item.variable.identity: item.variable.type for item in objects}
         self._foreign = foreign
         self._steady = steady
         self._depth = depth
         self._shared_as: dict[Cell, Cell] = {}
         self._growth: dict[Cell, int] = {}
+        self._ranges: Table = {}
         self._added: dict[str, Table] = {}
         self._read: dict[str, frozenset[Cell]] = {}
         self._found: dict[str, FunctionValues] = {}
@@ -150,7 +154,42 @@ class ProgramValues:
     # ------------------------------------------------------------------------------------------------------ asking
 
     def value(self, cell: Cell) -> Interval | None:
-        """What the cell can hold whenever code of the program starts; None if nothing is known of it."""
+        """What the cell can hold whenever code of the program starts; None if nothing is known of it.
+
+        What may be stored through pointers that lead to the cell's objects is included.
+        """
+        value = self.own(cell)
+        if value is None:
+            return None
+        for other in self._also(cell):
+            more = self.own(other)
+            if more is None:
+                return None
+            value = union(value, more)
+        if cell in self.exposure.cells or any(step in self.exposure.bytes_of for step in self._structs_of(cell)):
+            limits = self._ranges.get(cell)
+            for width in WIDTHS:
+                stored = self.summaries.get(pointee_cell(width))
+                if stored is not None:
+                    fitting = limits is not None and is_subset(stored, limits) and (width > 8 or limits.high < 256)
+                    value = union(value, stored) if fitting else (limits or UNBOUNDED)
+        return value
+
+    def _also(self, cell: Cell) -> list[Cell]:
+        """The cells under which the cell's objects are also reached."""
+        if isinstance(cell, FieldCell):
+            other = self._shared_as.get(cell)
+            return [other] if other is not None and other != cell else []
+        kind = self._types.get(cell.variable)
+        if kind is None or cell.variable not in self.exposure.variables:
+            return []
+        return shared_cells(kind, cell.path, self.exposure)
+
+    def _structs_of(self, cell: Cell) -> list[str]:
+        return [other.struct for other in (cell, *self._also(cell)) if isinstance(other, FieldCell)]
+
+    def own(self, cell: Cell) -> Interval | None:
+        """What is kept under the cell's own name; see ``value`` for all that it can hold."""
         known = self.summaries.get(cell)
         if isinstance(cell, VariableCell) and (cell.variable == "*" or cell.variable in self.functions):
             return known
@@ -162,7 +201,7 @@ class ProgramValues:
             if cell.struct in self.leaks.structs or cell.struct in self.exposure.unions:
                 return None
             return known if known is not None else FALSE
-        if cell.variable not in self._defined:
+        if cell.variable not in self._types:
             return None
         return known if known is not None else FALSE
 
@@ -254,6 +293,8 @@ class ProgramValues:
         found = analyse(function, entry, self.surroundings(summaries))
         for spot in found.engine.places.all():
             if spot.cell is not None:
+                if number_type(spot.type) is not None:
+                    self._ranges[spot.cell] = whole(spot.type)
                 for bucket in spot.buckets:
                     if bucket[0] == "member" and isinstance(bucket[1], str):
                         self._shared_as[spot.cell] = FieldCell(bucket[1], tuple(str(step) for step in bucket[2:]))
@@ -345,8 +386,11 @@ class ProgramValues:
             self._growth[cell] = self._growth.get(cell, 0) + 1
             if self._growth[cell] > ROUNDS and base is not None:
                 joined = widen(base, value, thresholds) or joined
-            if self._growth[cell] > 8 * ROUNDS:
-                joined = Interval(min(joined.low, -(1 << 63)), max(joined.high, (1 << 64) - 1), 1)
+            limits = self._ranges.get(cell)
+            if self._growth[cell] > PATIENCE:
+                joined = limits or UNBOUNDED
+            elif limits is not None:
+                joined = within(joined, limits.low, limits.high) or limits
             self.summaries[cell] = joined
             changed.add(cell)
         return changed
