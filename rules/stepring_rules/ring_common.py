@@ -86,6 +86,8 @@ def cause(ring: Ring, index: Index, step: CheckedStep, shared: Shared) -> str | 
     if step.wrap == "modulo" and limit is not None and limit != capacity:
         return "RB06"
     if step.wrap in ("reset", "choice", "subtract", "decrement") and limit is not None:
+        if step.settled and step.pairs and not step.odd and not leaves(index, capacity) and abs(step.by or 0) == 1:
+            return None  # however it is written, it does what the capacity asks for
         if limit not in (capacity, capacity - 1):
             return "RB06"
         if limit == capacity - 1 and step.odd and is_spare(ring, index):

@@ -147,9 +147,9 @@ def _reader(
 def program_of(made: list[Made]) -> str:
     """All rings in one C program that is driven by the number of a ring."""
     cases = "\n".join(
-        f"case {number}: step_ = {item.direction}; slots_ = {item.capacity}; entry{number}(k);"
-        + (f" if (k % 7 == 0) look{number}((uint8_t)(k / 7 % {min(item.capacity, 250) + 2}));" if item.reads else "")
-        + " break;"
+        f"case {number}: step_ = {item.direction}; slots_ = {item.capacity};"
+        + (f" if (look) look{number}((uint8_t)(look % {min(item.capacity, 250) + 2})); else" if item.reads else "")
+        + f" entry{number}(k); break;"
         for number, item in enumerate(made)
     )
     return (
@@ -161,8 +161,14 @@ def program_of(made: list[Made]) -> str:
 int main(int argc, char **argv) {{
     int which = argc > 1 ? atoi(argv[1]) : 0;
     last_ = -1;
-    for (int k = 0; k < 140000; k++) switch (which) {{
-    {cases}
+    unsigned luck = 12345;
+    for (int k = 0; k < 200000; k++) {{
+        /* The reader with every argument before anything was stored, then at random between the stores. */
+        luck = luck * 1664525u + 1013904223u;
+        unsigned look = k < 310 ? 310 - k : luck >> 24 < 90 ? (luck >> 8 & 0xFFFF) + 1 : 0;
+        switch (which) {{
+        {cases}
+        }}
     }}
     puts(skips_ ? "skips" : "follows");
     return 0;
@@ -185,7 +191,7 @@ def observe(made: list[Made], folder: Path) -> list[str]:
 
 
 def judge(item: Made) -> list[Obligation]:
-    """The failed obligations of error or warning level for one ring."""
+    """The failed obligations for one ring."""
     unit = lower_text(TYPES + item.text.replace("SLOT(", "("))
     assert not unit.notices, (unit.notices, item.text)
     kept = ring_functions(unit.functions)
@@ -195,7 +201,7 @@ def judge(item: Made) -> list[Obligation]:
         found
         for rule in RING_RULES
         for found in rule.check(program)
-        if found.kind == "fail" and found.level in ("error", "warning")
+        if found.kind == "fail"
     ]
 
 
@@ -205,11 +211,13 @@ def disagreements(made: list[Made], folder: Path) -> tuple[list[str], dict[str, 
     counts: dict[str, int] = {}
     for item, seen in zip(made, observe(made, folder), strict=True):
         counts[seen] = counts.get(seen, 0) + 1
-        failed = judge(item)
+        findings = judge(item)
+        failed = [found for found in findings if found.level != "note"]
+        notes = len(findings) - len(failed)  # a last slot that nobody uses is only noted
         bounds = [found for found in failed if found.level == "error"]
         if seen == "leaves" and not failed:
             wrong.append(f"missed: leaves its array\n{item.text}")
-        if seen == "skips" and not failed:
+        if seen == "skips" and not failed and not notes:
             wrong.append(f"missed: skips slots\n{item.text}")
         if seen != "leaves" and bounds:
             wrong.append(f"false: {bounds[0].what}\n{item.text}")

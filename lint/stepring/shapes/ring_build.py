@@ -123,6 +123,7 @@ def _steps(
     origin: Callable[[Position], Origin],
 ) -> Iterator[CheckedStep]:
     capacity = candidate.capacity
+    orbit = studied.orbits.get(key) if studied is not None else None
     for advance in sorted(moves.advances.values(), key=lambda item: item.position):
         wrap = _wrap_of(merged, key, advance, moves)
         free = wrap is None and any(key in use.cells and use.reduction != "none" for use in uses)
@@ -148,7 +149,7 @@ def _steps(
             advance.by,
             wrap.operator if wrap is not None else "",
             tuple(dict.fromkeys(odd)),
-            studied is not None and studied.complete,
+            orbit is not None and orbit.complete,
             len({use.touch.position for use in uses if key in use.cells and use.touch.function == advance.function}),
         )
 
@@ -207,7 +208,7 @@ def _accesses(
         return
     for (position, kind, function, _), found in sorted(studied.accesses.items()):
         use_here = by_place.get((position, kind))
-        yield _access(candidate, found, use_here, function, studied, origin)
+        yield _access(candidate, found, use_here, function, origin)
 
 
 def _index_name(candidate: Candidate, use: Use | None) -> str:
@@ -222,13 +223,12 @@ def _access(
     found: Found,
     use: Use | None,
     function: str,
-    studied: Study,
     origin: Callable[[Position], Origin],
 ) -> CheckedAccess:
     capacity = candidate.capacity or 0
     touch = found.touch
     values = found.certain | found.doubtful
-    complete = studied.complete or found.settled
+    complete = found.settled or not found.cut
     exact: tuple[int, ...] | None = None
     if complete and all(isinstance(value, int) for value in values):
         exact = tuple(sorted(int(value) for value in values))

@@ -30,6 +30,7 @@ ORBIT = 4_200
 """Values of one index that are looked at."""
 RUN_WORK = 30_000
 ALONE_WORK = 80_000
+LOOK_WORK = 50_000
 TOGETHER_WORK = 160_000
 TOGETHER = 8
 """Up to this many integers are followed together."""
@@ -49,7 +50,7 @@ class Witness:
 
 @dataclass(slots=True, eq=False)
 class Access:
-    """What is known of the subscripts of one access."""
+    """What is known of the subscripts of one access; ``cut``: not all ways to it were looked at."""
 
     touch: Touch
     certain: set[int] = field(default_factory=set)
@@ -57,6 +58,7 @@ class Access:
     bad: tuple[int, Witness] | None = None
     maybe: Value = None
     settled: bool = False
+    cut: bool = False
 
 
 @dataclass(slots=True, eq=False)
@@ -75,7 +77,6 @@ class Study:
     accesses: dict[Spot, Access] = field(default_factory=dict)
     orbits: dict[Key, Orbit] = field(default_factory=dict)
     pairs: dict[Pair, bool] = field(default_factory=dict)
-    complete: bool = True
 
 
 @dataclass(frozen=True, slots=True)
@@ -238,7 +239,8 @@ def _alone(
         for walk in walks:
             run = walk.run((whole,), RUN_WORK)
             _collect(walk, run.touches, (), found, capacity, False, wanted)
-            found.complete = found.complete and not run.cut
+            if run.cut:
+                _mark_cut(walk, found)
     else:
         search = _Search(scene, paces, (index,), capacity, found, ALONE_WORK, wanted)
         search.start()
@@ -248,7 +250,7 @@ def _alone(
                 orbit.certain.add(state[0])
             orbit.possible.add(state[0])
         orbit.complete = search.complete
-    found.complete = found.complete and orbit.complete
+        search.look()
     return {key for walk in walks for key in walk.state}
 
 
@@ -293,6 +295,27 @@ class _Search:
                 return
             self._expand(self.sure.popleft() if self.sure else self.doubtful.popleft())
 
+    def look(self) -> None:
+        """Run the accesses of each function from every state, each function with work of its own to spend."""
+        states = sorted(self.states, key=lambda state: not self.states[state])  # certain ones first
+        for pace in self.paces:
+            if pace.looks is None:
+                continue
+            left = LOOK_WORK
+            for state in states:
+                run = pace.looks.run(state, min(RUN_WORK, max(1, left)))
+                left -= run.work or 1
+                run.work = 0
+                _collect(
+                    pace.looks, run.touches, (self, state), self.found, self.capacity, self.states[state], self.wanted
+                )
+                if run.cut or left <= 0:
+                    _mark_cut(pace.looks, self.found)
+                if left <= 0:
+                    break
+            if not self.complete:
+                _mark_cut(pace.looks, self.found)
+
     def wander(self, walks: int, length: int) -> None:
         """Random sequences of calls from the start: they come to depths that a search in all directions does not."""
         luck = random.Random(1)
@@ -311,7 +334,7 @@ class _Search:
         found: list[State] = []
         for pace in self.paces:
             looks, moves = pace.looks, pace.moves
-            if looks is not None:
+            if looks is not None and self.stop_at:
                 run = self._run(looks, state)
                 _collect(looks, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
             if moves is None:
@@ -384,6 +407,13 @@ class _Search:
                 item, position, key, before, after = item
                 stores.append((position, key, before, after))
         return Witness(stores[::-1], len(runs) - 1)
+
+
+def _mark_cut(walk: Walk, found: Study) -> None:
+    for touch in walk.touched:
+        access = found.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
+        if access is not None:
+            access.cut = True
 
 
 def _collect(
