@@ -69,6 +69,7 @@ class DispatchFact:
     """One ``switch`` on a key.
 
     ``carried``: a constant stored while a loop runs reaches this dispatch again (what makes a local variable a state).
+    ``packet``: the object is bytes looked at through a structure, as a received message is.
     """
 
     key: str
@@ -84,6 +85,7 @@ class DispatchFact:
     characters: bool
     line_numbers: bool
     carried: bool
+    packet: bool
     end: int
 
 

@@ -140,37 +140,41 @@ def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
         if label.constant.name is not None and label.constant.name in named
     }
     targets: set[int] = set()
-    family_targets: set[int] = set()
-    stepped = False
+    hits: set[int] = set()
     for constant in _stored_constants(group):
         targets.add(constant.value)
         family = named.get(constant.name or "")
-        if family is not None and family.identity in label_families:
-            family_targets.add(constant.value)
-    for store in group.stores:
-        stepped = stepped or store.stepped
-    hits = (targets & labels) | family_targets
-    if not hits and not stepped:
+        if constant.value in labels or (family is not None and family.identity in label_families):
+            hits.add(constant.value)
+    targets.update(move.target.value for move in group.transitions)
+    hits.update(targets & labels)
+    if not hits or len(targets | labels) < 2 or all(dispatch.packet for dispatch in dispatches):
         return False
-    if len(targets | labels) < 2:
-        return False
-    return stepped or _moves_on(group, labels)
+    return _moves_on(group, dispatches)
 
 
-def _moves_on(group: _Gathered, labels: set[int]) -> bool:
-    """Whether code that knows the present state stores another one that is dispatched on or tested.
+def _moves_on(group: _Gathered, dispatches: Sequence[DispatchFact]) -> bool:
+    """Whether code that knows the present state stores another one that is dispatched on or tested afterwards.
 
-    A message's type, a configuration or a value put into another coding in place is stored from nowhere in
-    particular, or goes to values that nothing looks at again.
+    A message's type or a configuration is stored from nowhere in particular; a value put into another coding in place
+    goes to values that nothing looks at again.
     """
-    known = labels | {test.constant.value for test in group.tests}
-    return any(
-        move.source is not None
-        and move.source in labels
-        and move.source != move.target.value
-        and move.target.value in known
-        for move in group.transitions
-    )
+    labelled: dict[int, set[int]] = {}
+    for number, dispatch in enumerate(dispatches):
+        for label in dispatch.labels:
+            for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1):
+                labelled.setdefault(value, set()).add(number)
+    tested = {test.constant.value for test in group.tests}
+    for move in group.transitions:
+        if move.source is None or move.source == move.target.value or move.source not in labelled:
+            continue
+        if move.target.value in tested:
+            return True
+        from_here = labelled[move.source]
+        for number in labelled.get(move.target.value, ()):
+            if number in from_here or dispatches[number].function != move.function:
+                return True
+    return False
 
 
 def _stored_constants(group: _Gathered) -> Iterable[Constant]:

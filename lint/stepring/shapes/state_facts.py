@@ -27,6 +27,7 @@ from stepring.meaning.types import (
     IntType,
     Load,
     Object,
+    PointerType,
     Return,
     StructLayout,
     StructType,
@@ -565,7 +566,30 @@ def _dispatch(work: _Work, scan: _Scan, seen: _Seen, block: int, switch: Switch)
         characters,
         line_numbers > 0 and line_numbers >= len([label for label in labels if label.constant.value > 1]),
         seen.key.scope == "local" and _carried(scan, seen, block),
+        _is_packet(function, seen.key),
         switch.syntax.end,
+    )
+
+
+def _is_packet(function: Function, key: PlaceKey) -> bool:
+    """Whether the object is reached through a local pointer that was made from a pointer to bytes."""
+    root = key.root
+    if root is None or root.storage != "automatic" or not isinstance(root.type, PointerType):
+        return False
+    made = [
+        statement.value
+        for block in function.blocks
+        for statement in block.statements
+        if isinstance(statement, Assign)
+        and isinstance(statement.place, VariablePlace)
+        and statement.place.variable.identity == root.identity
+    ]
+    return any(
+        isinstance(value, Cast)
+        and isinstance(inner := uncast(value).type, PointerType)
+        and isinstance(inner.to, IntType)
+        and inner.to.width == 8
+        for value in made
     )
 
 
@@ -689,7 +713,7 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         seen = scan.keys.get(key) if scan is not None else None
         return frozenset(seen.instances) if seen is not None else frozenset()
 
-    setting = Setting(key, mentioned, work.by_name.get, writers, instances)
+    setting = Setting(key, mentioned, work.by_name.get, writers, instances, _commits(scans, key))
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)
@@ -728,6 +752,19 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
                 where,
             )
         )
+
+
+def _commits(scans: Sequence[_Scan], key: str) -> frozenset[str]:
+    """The lasting variables that are copied into the state: next states that are committed later."""
+    return frozenset(
+        inner.place.variable.identity
+        for scan in scans
+        for _, statement, _ in scan.keys[key].stores
+        if isinstance(statement, Assign)
+        and isinstance(inner := uncast(statement.value), Load)
+        and isinstance(inner.place, VariablePlace)
+        and inner.place.variable.lasting
+    )
 
 
 def _has_setter(scans: Sequence[_Scan], key: str) -> bool:

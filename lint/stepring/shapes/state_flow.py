@@ -113,6 +113,7 @@ class Setting:
     resolve: Callable[[str], Function | None]
     writers: frozenset[str]
     instances: Callable[[str], frozenset[str]]
+    commits: frozenset[str] = frozenset()
     moves: set[Move] = field(default_factory=set)
     slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
@@ -137,7 +138,7 @@ def flow(
     """Run a function from one source and state; moves gather in ``setting``."""
     part = setting.slices.get((function.identity, instance))
     if part is None:
-        part = make_slice(function, setting.key, instance, setting.resolve, setting.writers)
+        part = make_slice(function, setting.key, instance, setting.resolve, setting.writers, setting.commits)
         setting.slices[function.identity, instance] = part
     start = Environment(source, state, tuple(arguments.get(name, ANY) for name in part.helpers))
     memo_key = (function.identity, instance, start)
@@ -198,16 +199,19 @@ def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterato
 
 
 def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Environment) -> Environment:
+    if op.slot is None or op.commit:
+        _note_move(run, value, environment, op.position)
     if op.slot is not None:
         helpers = environment.helpers
         return environment._replace(helpers=(*helpers[: op.slot], value, *helpers[op.slot + 1 :]))
+    return environment._replace(state=value)
+
+
+def _note_move(run: _Run, value: Value, environment: Environment, at: Position) -> None:
     if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
         source = environment.source
         known = source.number if source.kind == "known" else None
-        run.setting.moves.add(
-            Move(run.part.function.identity, known, source.excluded, value.number, value.chosen, op.position)
-        )
-    return environment._replace(state=value)
+        run.setting.moves.add(Move(run.part.function.identity, known, source.excluded, value.number, value.chosen, at))
 
 
 def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterator[Environment]:

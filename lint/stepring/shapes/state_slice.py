@@ -90,11 +90,13 @@ ANY_TERM = AnyTerm()
 
 
 class StoreOp(NamedTuple):
-    """Store a term in the state (slot None) or in a helper."""
+    """Store a term in the state (slot None) or in a helper; ``commit``: the helper is the state's next value, kept
+    till later."""
 
     slot: int | None
     term: Term
     position: Position
+    commit: bool = False
 
 
 class CallOp(NamedTuple):
@@ -155,9 +157,10 @@ def make_slice(
     instance: str,
     callee_of: Callable[[str], Function | None],
     writers: frozenset[str],
+    commits: frozenset[str],
 ) -> Slice:
     """The slice of a function for one object's state."""
-    maker = _Maker(function, key, instance, callee_of, writers)
+    maker = _Maker(function, key, instance, callee_of, writers, commits)
     names = maker.helpers()
     maker.slots = {name: number for number, name in enumerate(names)}
     ops = [maker.operations(number) for number in range(len(function.blocks))]
@@ -241,6 +244,7 @@ class _Maker:
     instance: str
     callee_of: Callable[[str], Function | None]
     writers: frozenset[str]
+    commits: frozenset[str]
     slots: dict[str, int] | None = None
 
     def is_state(self, place: PlaceExpr) -> bool:
@@ -279,7 +283,7 @@ class _Maker:
                             wanted.extend(_variables(argument))
             if isinstance(block.terminator, Return) and block.terminator.value is not None:
                 wanted.extend(_variables(block.terminator.value))
-        wanted = list(dict.fromkeys(wanted))
+        wanted = list(dict.fromkeys([*wanted, *self.commits]))
         size = -1
         while size != len(wanted):
             size = len(wanted)
@@ -309,7 +313,8 @@ class _Maker:
                 case Assign(place=place, value=value, position=position):
                     slot = self.slot(place)
                     if slot is not None:
-                        found.append(StoreOp(None if slot < 0 else slot, self.term(value), position))
+                        commit = isinstance(place, VariablePlace) and place.variable.identity in self.commits
+                        found.append(StoreOp(None if slot < 0 else slot, self.term(value), position, commit))
                 case Call():
                     found.extend(self.call(statement))
                 case Begin(variable=variable, position=position):
