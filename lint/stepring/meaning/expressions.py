@@ -786,6 +786,8 @@ def _offsetof(work: Work, arguments: list[Any], at: Position) -> Expr:
 
 def _generic(work: Work, node: Any) -> Expr:
     control = work.scope.evaluator.type_of(work.scope, node.expr)
+    if isinstance(control, ArrayType | FunctionType):  # the control decays as any value does (6.3.2.1p3, p4)
+        control = _pointer(work, control.element if isinstance(control, ArrayType) else control)
     fallback = None
     for association in node.associations:
         if association.type is None:
