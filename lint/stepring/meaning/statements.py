@@ -339,7 +339,9 @@ def _declaration(work: Work, node: Any) -> None:
     if isinstance(type_, ArrayType) and type_.length is None and node.init is not None:
         type_ = ArrayType(type_.element, work.scope.evaluator.initial_length(work.scope, type_, node.init))
     static = "static" in node.storage
-    identity = f"{work.file}:{work.function}:{node.name}@{at.line}" if static else f"{node.name}@{at.line}:{at.column}"
+    identity = f"{node.name}@{at.line}:{at.column}"
+    if static:
+        identity = f"{work.file}:{work.function}:{node.name}@{at.line}.{at.column}"
     variable = Variable(
         node.name,
         identity,

@@ -189,7 +189,7 @@ class Variable:
 
     ``identity`` tells it from every other in the program: ``name`` for one with external linkage, ``file:name`` for a
     file's static,
-    ``file:function:name@line`` for a function's own static, ``name@line`` for automatic ones, ``%N`` for
+    ``file:function:name@line.column`` for a function's own static, ``name@line:column`` for automatic ones, ``%N`` for
     temporaries made by lowering.
     """
 
