@@ -60,8 +60,15 @@ CASES = (
         int of_void(void) { int v; nothing_(&v); return v; } static inline int in_line(int v) { return v * v; }
         int use_inline(void) { return in_line(in_line(3)); }
         """,
-        {"odd_(7)": 1, "converted_()": 0, "applied()": 29, "job(0)": 8, "job(1)": -1, "no_job()": None, "fact(20)":
-            2432902008176640000}
+        {
+            "odd_(7)": 1,
+            "converted_()": 0,
+            "applied()": 29,
+            "job(0)": 8,
+            "job(1)": -1,
+            "no_job()": None,
+            "fact(20)": 2432902008176640000,
+        }
         | {"of_void()": 4, "use_inline()": 81},
     ),
 )
@@ -103,12 +110,12 @@ def test_two_statics_of_one_function_on_one_line_are_two_objects() -> None:
 
 def test_units_share_globals_and_keep_statics_to_themselves() -> None:
     hopper = lower_text(
-        "int level = 3; static int own = 1; void fill(int v) { level += v; own++;
-            } int own_of_hopper(void) { return own; }",
+        "int level = 3; static int own = 1; void fill(int v) { level += v; own++; }"
+        "int own_of_hopper(void) { return own; }",
         name="hopper.c",
     )
     auger = lower_text(
-        "extern int level; void fill(int); static int own = 10; int feed(void) { fill(2); own += level; return own; }",
+        "extern int level; void fill(int); static int own = 10;int feed(void) { fill(2); own += level; return own; }",
         name="auger.c",
     )
     made = program([auger, hopper])
@@ -121,8 +128,8 @@ def test_units_share_globals_and_keep_statics_to_themselves() -> None:
 
 
 def test_a_definition_elsewhere_gives_an_array_its_length() -> None:
-    user = lower_text("extern short slots[]; int last(void) { return slots[3]; } int past(void) { return slots[4];
-        }", name="a.c")
+    text = "extern short slots[]; int last(void) { return slots[3]; } int past(void) { return slots[4]; }"
+    user = lower_text(text, name="a.c")
     owner = lower_text("short slots[4] = {1, 2, 3, 44};", name="b.c")
     made = program([user, owner])
     assert run(made, "last").value == 44
