@@ -713,7 +713,10 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         seen = scan.keys.get(key) if scan is not None else None
         return frozenset(seen.instances) if seen is not None else frozenset()
 
-    setting = Setting(key, mentioned, work.by_name.get, writers, instances, _commits(scans, key))
+    first = scans[0].keys[key]
+    storing = {scan.function.identity for scan in scans if scan.keys[key].stores}
+    shared = first.key.scope == "lasting" and (_shared(first) or len(storing) > 1)
+    setting = Setting(key, mentioned, work.by_name.get, writers, instances, _commits(scans, key), shared)
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)

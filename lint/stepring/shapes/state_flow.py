@@ -114,6 +114,8 @@ class Setting:
     writers: frozenset[str]
     instances: Callable[[str], frozenset[str]]
     commits: frozenset[str] = frozenset()
+    # Whether code outside the function that is run can store the state.
+    shared: bool = False
     moves: set[Move] = field(default_factory=set)
     slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
@@ -260,6 +262,9 @@ def _leave(
     test = block.test
     assert test is not None
     if block.cases:
+        if block.again and run.setting.shared:
+            # Between two rounds of a loop other code can have stored anything.
+            environment = environment._replace(state=ENTRY)
         for one in _split_for_switch(run, test, block, environment):
             outcome = _evaluate(run, number, test, one)
             if outcome.kind == "known":
@@ -270,16 +275,16 @@ def _leave(
             else:
                 if outcome.kind == "any":
                     for case in block.cases:
-                        told = _assume(test, one, case.low) if case.low == case.high else one
+                        told = _assume(number, test, one, case.low) if case.low == case.high else one
                         yield case.targets, _sourced(run, test, told)
                 yield block.otherwise, _sourced(run, test, one)
         return
     for one in _split_for_branch(run, test, environment):
         outcome = _evaluate(run, number, test, one)
         if outcome.kind != "known" or outcome.number:
-            yield block.then, _sourced(run, test, _told(test, one, True))
+            yield block.then, _sourced(run, test, _told(number, test, one, True))
         if outcome.kind != "known" or not outcome.number:
-            yield block.otherwise, _sourced(run, test, _told(test, one, False))
+            yield block.otherwise, _sourced(run, test, _told(number, test, one, False))
 
 
 def _split_for_switch(run: _Run, test: Term, block: SliceBlock, environment: Environment) -> Iterator[Environment]:
@@ -378,23 +383,27 @@ def _sourced(run: _Run, test: Term, environment: Environment) -> Environment:
     return environment
 
 
-def _told(test: Term, environment: Environment, true: bool) -> Environment:
+def _told(block: int, test: Term, environment: Environment, true: bool) -> Environment:
     """What an equality test tells of a value that was computed and not known."""
     test = _uncast(test)
     if isinstance(test, UnaryTerm) and test.op == "!":
-        return _told(test.operand, environment, not true)
+        return _told(block, test.operand, environment, not true)
     if isinstance(test, BinaryTerm) and test.op in ("==", "!=") and (test.op == "==") == true:
         for side, other in ((test.left, test.right), (test.right, test.left)):
             number = _uncast(other)
             if isinstance(number, Number):
-                return _assume(side, environment, number.number)
+                return _assume(block, side, environment, number.number)
     return environment
 
 
-def _assume(term: Term, environment: Environment, number: int) -> Environment:
+def _assume(block: int, term: Term, environment: Environment, number: int) -> Environment:
     term = _uncast(term)
     value = _of(term, environment)
-    return _set(term, environment, Value("known", number)) if value is not None and value.kind == "any" else environment
+    if value is None or value.kind != "any":
+        return environment
+    # A helper that held anything is no copy of the state; what the test told it is as good as chosen here.
+    chosen = Chosen(block, None, None) if isinstance(term, HelperTerm) else None
+    return _set(term, environment, Value("known", number, chosen))
 
 
 def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Value:

@@ -136,6 +136,8 @@ class SliceBlock:
     cases: tuple[CaseOp, ...] = ()
     returned: Term | None = None
     leaves: bool = False
+    # A dispatch on the state itself inside a loop.
+    again: bool = False
     position: Position | None = None
 
 
@@ -395,9 +397,33 @@ class _Maker:
             )
         assert isinstance(terminator, Switch)
         cases = tuple(CaseOp(case.low, case.high, onward[case.target]) for case in terminator.cases)
+        inner = test
+        while isinstance(inner, CastTerm):
+            inner = inner.operand
+        again = isinstance(inner, StateTerm) and _returns(self.function, number)
         return SliceBlock(
-            ops, test, (), otherwise=onward[terminator.default], cases=cases, position=terminator.syntax.position
+            ops,
+            test,
+            (),
+            otherwise=onward[terminator.default],
+            cases=cases,
+            again=again,
+            position=terminator.syntax.position,
         )
+
+
+def _returns(function: Function, block: int) -> bool:
+    """Whether control can come to a block again."""
+    seen: set[int] = set()
+    pending = list(successors(function.blocks[block].terminator))
+    while pending:
+        number = pending.pop()
+        if number == block:
+            return True
+        if number not in seen:
+            seen.add(number)
+            pending.extend(successors(function.blocks[number].terminator))
+    return False
 
 
 def _variables(expr: Expr) -> Iterator[str]:
