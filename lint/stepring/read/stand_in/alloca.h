@@ -1,0 +1,2 @@
+/* Stand-in for <alloca.h>. */
+#define alloca(size) __builtin_alloca (size)

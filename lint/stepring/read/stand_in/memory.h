@@ -1,0 +1,2 @@
+/* Stand-in for <memory.h>: the older name of <string.h>. */
+#include <string.h>
