@@ -256,3 +256,19 @@ def test_the_settings_name_the_database(tree: Path) -> None:
     path = write(tree, [entry(tree)], "elsewhere/units.json")
     settings = Settings(compile_commands=path, folder=tree)
     assert sources(gather([], settings=settings, current=tree)) == ["src/auger.c"]
+
+
+def test_a_named_folder_that_the_database_does_not_reach_is_read_by_itself(tree: Path) -> None:
+    (tree / "lib").mkdir()
+    (tree / "lib/ring.c").write_text("int ring;\n")
+    (tree / "link").symlink_to(tree / "src")
+    database = write(tree, [entry(tree)])
+    gathered = gather([tree / "lib", tree / "link"], database=database)
+    assert [(unit.source.name, unit.kind) for unit in gathered.units] == [("ring.c", "source"), ("auger.c", "database")]
+
+
+def test_a_broken_database_leaves_the_folder(tree: Path) -> None:
+    write(tree, "{")
+    gathered = gather([tree])
+    assert kinds(gathered) == ["bad-database"]
+    assert sources(gathered) == ["src/auger.c", "src/hopper.c", "src/shore link.c"]

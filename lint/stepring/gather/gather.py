@@ -76,7 +76,8 @@ def gather(
         described |= _from_database(found, wanted, run)
     for path in present:
         if path.is_dir():
-            if databases.get(path) is None or not described:
+            covered = any(_lies_under(source, [path]) for source in described) if paths else bool(described)
+            if not covered:
                 _from_folder(path, run)
         elif path.suffix == ".i":
             _add_preprocessed(path, run)
