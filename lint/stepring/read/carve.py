@@ -51,6 +51,13 @@ class Chunk:
     typedefs: tuple[str, ...]
     variable: bool
     uses: frozenset[str]
+    marks: tuple[tuple[int, int], ...] = ()
+
+    def piece_offset(self, offset: int) -> int:
+        """The offset in the piece that an offset in ``text`` came from."""
+        index = bisect_right(self.marks, (offset, 1 << 62)) - 1
+        here, there = self.marks[index] if index >= 0 else (0, 0)
+        return self.offset + there + offset - here
 
 
 @dataclass(frozen=True, slots=True)
@@ -402,13 +409,14 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
         if (file, line) == used_place and column <= used_column:
             column = used_column + 1
         body = text[start : span.end]
+        marks: tuple[tuple[int, int], ...] = ()
         if span.dirty or "\n#" in body:
-            body = _plain(body, file, line, column)
+            body, marks = _plain(body, file, line, column)
         head = body
         if span.kind == "function":
             head = text[start : span.body]
             if span.dirty:
-                head = _plain(head, file, line, column)
+                head, _ = _plain(head, file, line, column)
         names = declared_names(head, span.kind == "function") if span.kind != "pragma" else Declared()
         last_break = body.rfind("\n")
         if last_break < 0:
@@ -423,7 +431,7 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
             line,
             column,
             end_line,
-            span.start,
+            start,
             span.end,
             system,
             names.names,
@@ -431,6 +439,7 @@ def _chunks(text: str, spans: list[_Span], lines: _Lines) -> Iterator[Chunk]:
             names.typedefs,
             names.object,
             identifiers(body),
+            marks,
         )
 
 
@@ -442,22 +451,26 @@ def _end_place(body: str, line: int) -> int:
     return int(body[marker + 7 : body.index(" ", marker + 7)]) + body.count("\n", after + 1)
 
 
-def _plain(body: str, file: str, line: int, column: int) -> str:
+def _plain(body: str, file: str, line: int, column: int) -> tuple[str, tuple[tuple[int, int], ...]]:
     """Blank comments and directives; join physical lines that a marker gives the same place, columns kept apart.
 
     A preprocessor may give one line of the source in several physical lines (around a macro of a system header). The
-    parts are put on one line, or, where other lines lie between, get columns that were not used before.
+    parts are put on one line, or, where other lines lie between, get columns that were not used before. Also gives
+    pairs (offset in the result, offset in ``body``), one for each part.
     """
     if "/" in body:
         body = _COMMENT.sub(lambda m: re.sub(r"[^\n]", " ", m[1]) if m[1] else m[0], body)
-    body = re.sub(r"\\\n", " \n", body) if "\\\n" in body else body
+    body = body.replace("\\\n", " \n")
     used: dict[tuple[str, int], int] = {}
     out: list[str] = []
-    at = (file, line)
-    shown = (file, line)
+    marks: list[tuple[int, int]] = []
+    length = taken = 0
+    at = shown = (file, line)
     width = column - 1
     directive_goes_on = False
     for number, part in enumerate(body.split("\n")):
+        start = taken
+        taken += len(part) + 1
         stripped = part.lstrip()
         if number and (stripped.startswith("#") or directive_goes_on):
             marker = _ANY_LINE.match(part)
@@ -468,25 +481,25 @@ def _plain(body: str, file: str, line: int, column: int) -> str:
                 at = (at[0], at[1] + 1)
             continue
         if stripped:
-            if number == 0:
-                out.append(part)
-                width = column - 1 + len(part)
-            else:
-                if at == shown:
-                    part = " " + stripped if not out[-1].endswith(" ") else stripped
-                    out.append(part)
+            indent = part[: len(part) - len(stripped)]
+            lead = indent
+            if number and at == shown:
+                lead = " "
+            elif number:
+                width = 0
+                before = used.get(at, 0)
+                if before and len(indent) <= before:
+                    lead = " " * (before + 1)
+                if at[0] == shown[0] and 0 < at[1] - shown[1] <= 8:
+                    lead = "\n" * (at[1] - shown[1]) + lead
                 else:
-                    before = used.get(at, 0)
-                    if at[0] == shown[0] and 0 < at[1] - shown[1] <= 8:
-                        out.append("\n" * (at[1] - shown[1]))
-                    else:
-                        out.append(f'\n#line {at[1]} "{spelled_file(at[0])}"\n')
-                    width = 0
-                    if len(part) - len(stripped) <= before and before:
-                        part = " " * (before + 1) + stripped
-                    out.append(part)
-                width += len(part)
+                    lead = f'\n#line {at[1]} "{spelled_file(at[0])}"\n' + lead
+            out += (lead, stripped)
+            length += len(lead)
+            marks.append((length, start + len(indent)))
+            length += len(stripped)
+            width += len(lead) - lead.rfind("\n") - 1 + len(stripped)
             shown = at
             used[at] = max(used.get(at, 0), width)
         at = (at[0], at[1] + 1)
-    return "".join(out)
+    return "".join(out), tuple(marks)

@@ -127,6 +127,8 @@ class _Inference:
                 self.votes.add(word, "decoration")
         elif after in STATEMENT_KEYWORDS - {"sizeof", "_Alignof"} and self.braces and before in (";", "{", "}"):
             self.votes.add(word, "decoration")
+        elif after == "}" and self.braces and before in (";", "}"):
+            self.votes.add(word, "decoration")
         elif after == "*":
             self._before_star(index, word)
         elif after == "(" and before == "]":
@@ -202,7 +204,10 @@ class _Inference:
         before = self.at(index - 1)
         follow = self.at(self.pairs.get(index + 1, len(self.words)) + 1)
         if self.braces:
-            if before in (";", "{", "}") and follow == "{":
+            inside = self.words[index + 2 : self.pairs.get(index + 1, index)]
+            if before in (";", "{", "}") and ";" in inside and "{" not in inside:
+                self.votes.add(word, "decoration")  # a statement as an argument
+            elif before in (";", "{", "}") and follow == "{":
                 self.votes.add(word, "loop")
             elif before in (";", "{", "}") and (
                 _name(follow) or follow == "}" or follow in STATEMENT_KEYWORDS - {"sizeof"}
@@ -237,8 +242,9 @@ def _values(words: list[str]) -> set[str]:
 
 
 def _shouts(word: str) -> bool:
-    """Whether a word is all capitals, as macros are."""
-    return len(word) > 2 and word.upper() == word and word.lower() != word
+    """Whether a word is written in capitals (but for a prefix), as macros are."""
+    capitals = sum(map(str.isupper, word))
+    return len(word) > 2 and capitals > 4 * sum(map(str.islower, word))
 
 
 def _pairs(words: list[str]) -> dict[int, int]:

@@ -169,6 +169,8 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                     index = _skip_group(tokens, index, "[", "]")
                     before = "]"
                     continue
+            elif token in ("struct", "union", "enum"):
+                last, typed = "", True  # what stood before a tag declares nothing
             elif token in ("*", "{") or before in ("struct", "union", "enum"):
                 typed = True
             elif token != "]" and not token[0].isdigit() and token not in _NO_NAMES and token not in _TAKES_GROUP:

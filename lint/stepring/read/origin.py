@@ -58,8 +58,8 @@ class MacroHistory:
         self._layers = [piece.changes for piece in pieces]
         self._known: dict[str, list[tuple[int, Change]]] = {}
 
-    def at(self, name: str, layer: int, chunk: Chunk, line: int) -> Macro | None:
-        """The macro of a name as it was on a line of a chunk in the piece ``layer``."""
+    def at(self, name: str, layer: int, offset: int) -> Macro | None:
+        """The macro of a name as it was at an offset of the piece ``layer``."""
         changes = self._known.get(name)
         if changes is None:
             changes = [
@@ -68,13 +68,8 @@ class MacroHistory:
             self._known[name] = changes
         found: Macro | None = None
         for index, change in changes:
-            if index > layer:
+            if index > layer or (index == layer and change.offset >= offset):
                 break
-            if index == layer:
-                if change.offset >= chunk.end_offset:
-                    break
-                if change.offset > chunk.offset and change.line >= line:
-                    continue
             found = change.macro
         return found
 
@@ -232,9 +227,10 @@ class OriginFinder:
             # other declarations may stand before on the same line; their tokens come first there
             at += self._skip_before(source, at, chunk, wanted)
         history, layer = self._history, self._layer.get(chunk, 0)
+        here = chunk.piece_offset(aligned.starts[first])
 
         def lookup(name: str) -> Macro | None:
-            return history.at(name, layer, chunk, low) if history is not None else None
+            return history.at(name, layer, here) if history is not None else None
 
         line = low
         best: list[Token] = []

@@ -23,23 +23,25 @@ class Operand:
 class Cleaned:
     """A declaration's text in ISO C.
 
-    ``falls`` are physical lines (from 0) that carry a fall-through attribute. ``shifts`` are pairs (offset in
-    ``text``, offset in the text before) from which on the two run in step.
+    ``falls`` are physical lines (from 0) that carry a fall-through attribute. ``shifts`` are triples (offset in
+    ``text``, offset in the text before, inserted): from there on the two run in step, or the text was inserted.
     """
 
     text: str
     operands: tuple[Operand, ...] = ()
     attributes: frozenset[str] = frozenset()
     falls: tuple[int, ...] = ()
-    shifts: tuple[tuple[int, int], ...] = ((0, 0),)
+    shifts: tuple[tuple[int, int, bool], ...] = ((0, 0, False),)
 
     def offset_before(self, offset: int) -> int:
         """The offset in the text before cleaning that an offset in ``text`` came from."""
-        index = bisect_right(self.shifts, offset, key=lambda pair: pair[0]) - 1
-        here, there = self.shifts[index]
+        index = bisect_right(self.shifts, offset, key=lambda shift: shift[0]) - 1
+        here, there, inserted = self.shifts[index]
+        if inserted:
+            return there
         moved = there + offset - here
         if index + 1 < len(self.shifts):
-            # inserted text leads to the token it was inserted for
+            # a token that became longer stays inside the one it was
             moved = min(moved, max(there, self.shifts[index + 1][1] - 1))
         return moved
 
@@ -161,7 +163,7 @@ class Rewriting:
         for _, first, _last in self.operands:
             starts[first] = -1
         parts: list[str] = []
-        shifts: list[tuple[int, int]] = [(0, 0)]
+        shifts: list[tuple[int, int, bool]] = [(0, 0, False)]
         here = there = 0
         lines = 0
         fall_lines: list[int] = []
@@ -179,9 +181,10 @@ class Rewriting:
             else:
                 inserted = "" if index in hidden else self._insert(index)
                 if inserted:
+                    shifts.append((here, there, True))
                     parts.append(inserted)
                     here += len(inserted)
-                    shifts.append((here, there))
+                    shifts.append((here, there, False))
                 if index in starts:
                     starts[index] = here
                 text = " " * len(self._piece(index)) if index in hidden else self._piece(index)
@@ -192,7 +195,7 @@ class Rewriting:
                     fall_lines.append(lines)
             there += len(token)
             if len(token_out) != len(token):
-                shifts.append((here, there))
+                shifts.append((here, there, False))
         operands = tuple(
             Operand(name, self._region(first, last), starts.get(first, 0)) for name, first, last in self.operands
         )

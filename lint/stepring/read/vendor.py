@@ -138,6 +138,7 @@ class VendorForms(GnuForms):
         elif word in self.guess.decorations:
             before = self.word(index - 1)
             beside = wordlike(after) or wordlike(before) or before in (")", "]") or (grouped and not self.braces)
+            beside = beside or (after == "}" and before in (";", "}"))
             call = grouped and after == ";" and self.braces and before != "]"
             if beside and before not in (".", "->", "return", "goto") and not call:
                 self.blank(index, end)
