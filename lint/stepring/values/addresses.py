@@ -25,7 +25,7 @@ from stepring.meaning.types import (
 )
 from stepring.values.cells import cell_of
 from stepring.values.intervals import number_type
-from stepring.values.scan import expressions_of, places_of, walk_expression
+from stepring.values.scan import expressions_of, inside_place, places_of, walk_expression
 from stepring.values.types import Cell, FieldCell, VariableCell
 
 
@@ -118,6 +118,22 @@ def is_fixed(pointer: Expr, unassigned: frozenset[str], fixed: Mapping[str, Expr
         identity = pointer.place.variable.identity
         return identity in unassigned or identity in fixed
     return False
+
+
+def keeps_during_call(pointer: Expr, taken: frozenset[str]) -> bool:
+    """Whether a pointer that is passed to a callee has one value while the callee runs: it depends only on the caller's
+    own variables whose address is not taken."""
+    if isinstance(pointer, Cast):
+        return keeps_during_call(pointer.operand, taken)
+    if isinstance(pointer, AddressOf):
+        return all(keeps_during_call(part, taken) for part in inside_place(pointer.place))
+    if isinstance(pointer, PointerStep):
+        return keeps_during_call(pointer.pointer, taken) and keeps_during_call(pointer.steps, taken)
+    if isinstance(pointer, Load) and isinstance(pointer.place, VariablePlace):
+        variable = pointer.place.variable
+        own = variable.storage in ("automatic", "parameter", "temporary")
+        return own and not variable.volatile and variable.identity not in taken
+    return isinstance(pointer, Const)
 
 
 def _fixed_place(place: PlaceExpr, unassigned: frozenset[str], fixed: Mapping[str, Expr]) -> bool:

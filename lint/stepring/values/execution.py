@@ -31,7 +31,7 @@ from stepring.meaning.types import (
     Variable,
     VariablePlace,
 )
-from stepring.values.addresses import facts_of, is_fixed
+from stepring.values.addresses import facts_of, keeps_during_call
 from stepring.values.frames import Binding, Frame
 from stepring.values.intervals import UNBOUNDED, constant, convert, is_subset, number_type, union, whole, within
 from stepring.values.library import CONTRACTS, Contract
@@ -144,36 +144,45 @@ class Execution(ABC):
     def call(self, view: View, call: Call, stack: tuple[str, ...], record: Record | None) -> bool:
         """A call; False if it does not come back."""
         name = call.callee.name if isinstance(call.callee, FunctionName) else None
-        result: Interval | None = None
         body = self.body(name, view.frame.function, stack)
-        if name is not None and body is not None:
-            inner = self.enter(view, call, body, stack, record)
-            if inner is None:
-                return False
-            result = inner
-        else:
-            effect = self.surroundings.effects(name, view.frame.function) if name is not None else None
-            contract = CONTRACTS.get(name) if name is not None and effect is None else None
-            if contract is not None:
-                if not contract.returns:
-                    return False
-                result = self.library(view, call, contract)
-            else:
-                if record is not None:
-                    record.looks.append(view.state.copy())
-                    if effect is not None:
-                        record.pass_to(effect.callee, [view.evaluate(argument) for argument in call.arguments])
-                result = self.outside(view, effect)
-                if effect is not None and not effect.comes_back:
-                    return False
-        if call.result is not None:
-            kind = number_type(call.result.type)
-            if kind is None:
-                self.blur(view, call.result, None)
-            else:
-                value = convert(result, kind) if result is not None and result is not UNBOUNDED else None
-                view.store(call.result, value if value is not None else whole(kind))
+        if name is None or body is None:
+            return self.call_apart(view, call, record)
+        inner = self.enter(view, call, body, stack, record)
+        if inner is None:
+            return False
+        self.keep_result(view, call, inner)
         return True
+
+    def call_apart(self, view: View, call: Call, record: Record | None) -> bool:
+        """A call of what is not run in place (a known effect, the C library, unknown code); False as for ``call``."""
+        name = call.callee.name if isinstance(call.callee, FunctionName) else None
+        effect = self.surroundings.effects(name, view.frame.function) if name is not None else None
+        contract = CONTRACTS.get(name) if name is not None and effect is None else None
+        if contract is not None:
+            if not contract.returns:
+                return False
+            result = self.library(view, call, contract)
+        else:
+            if record is not None:
+                record.looks.append(view.state.copy())
+                if effect is not None:
+                    record.pass_to(effect.callee, [view.evaluate(argument) for argument in call.arguments])
+            result = self.outside(view, effect)
+            if effect is not None and not effect.comes_back:
+                return False
+        self.keep_result(view, call, result)
+        return True
+
+    def keep_result(self, view: View, call: Call, result: Interval | None) -> None:
+        """Store a call's result where it is wanted."""
+        if call.result is None:
+            return
+        kind = number_type(call.result.type)
+        if kind is None:
+            self.blur(view, call.result, None)
+        else:
+            value = convert(result, kind) if result is not None and result is not UNBOUNDED else None
+            view.store(call.result, value if value is not None else whole(kind))
 
     def body(self, name: str | None, caller: Function, stack: tuple[str, ...]) -> Function | None:
         """The body to run in place for a callee, if there is one and the nesting allows it."""
@@ -188,12 +197,11 @@ class Execution(ABC):
         known = self._inner.get(key)
         if known is not None and known.function is body:
             return known
-        caller = facts_of(view.frame.function)
         callee = facts_of(body)
         bindings = {}
         for parameter, argument in zip(body.parameters, call.arguments, strict=False):
             if isinstance(parameter.type, PointerType) and parameter.identity in callee.unassigned:
-                if is_fixed(argument, caller.unassigned, caller.fixed):
+                if keeps_during_call(argument, view.frame.taken):
                     bindings[parameter.identity] = Binding(view.frame, argument)
         frame = Frame(self.places, body, f"{view.frame.prefix}{body.name}#{len(self._inner)}/", bindings)
         self._inner[key] = frame
