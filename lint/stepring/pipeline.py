@@ -28,7 +28,7 @@ from stepring.shapes.machines import find_machines
 from stepring.shapes.positions import positions_of
 from stepring.shapes.rings import find_rings, ring_functions
 from stepring.shapes.state_facts import state_facts
-from stepring.shapes.types import Program, Ring
+from stepring.shapes.types import Machine, Program, Ring
 
 DEFAULT_MODEL = "ILP32"
 Progress = Callable[[int, int, str], None]
@@ -126,9 +126,9 @@ def inspect(paths: Sequence[Path], options: Options, progress: Progress | None =
     gathered = gather(paths, database=options.compile_commands, compilers=options.compilers, settings=settings)
     summaries = list(summarise(gathered.root, gathered.units, options, progress))
     rules = load_rules()
-    program = merge(summaries)
     obligations: list[Obligation] = []
     said: list[Notice] = [*notices, *gathered.notices]
+    program = merge(summaries, said)
     for summary in summaries:
         said.extend(summary.notices)
     for rule in rules:
@@ -186,10 +186,20 @@ def _guarded(worker: Worker, unit: Unit) -> UnitSummary:
         return UnitSummary(unit, model, False, empty, (), (), {}, {}, (), (notice,))
 
 
-def merge(summaries: Sequence[UnitSummary]) -> Program:
-    """The program: machines and rings from all summaries."""
-    machines = find_machines(summary.states for summary in summaries)
-    return Program(machines, merge_rings(summaries))
+def merge(summaries: Sequence[UnitSummary], said: list[Notice]) -> Program:
+    """The program: machines and rings from all summaries. If the search for one kind fails, the other is kept."""
+    complete = all(summary.read for summary in summaries)
+    machines: tuple[Machine, ...] = ()
+    rings: tuple[Ring, ...] = ()
+    try:
+        machines = find_machines((summary.states for summary in summaries), complete=complete)
+    except Exception as trouble:  # what was found of the other kind must not be lost
+        said.append(Notice("internal", "error", f"Machines were not found ({type(trouble).__name__}: {trouble})."))
+    try:
+        rings = merge_rings(summaries)
+    except Exception as trouble:
+        said.append(Notice("internal", "error", f"Rings were not found ({type(trouble).__name__}: {trouble})."))
+    return Program(machines, rings)
 
 
 def merge_rings(summaries: Sequence[UnitSummary]) -> tuple[Ring, ...]:

@@ -35,6 +35,6 @@ def _positions(root: Any) -> Iterator[Position]:
 
 
 @cache
-def _fields(kind: type) -> tuple[str, ...]:
+def _fields(kind: "type[Any]") -> tuple[str, ...]:
     """The members that can lead to a position; types do not."""
     return tuple(item.name for item in fields(kind) if item.name not in ("type", "value_type", "attributes"))
