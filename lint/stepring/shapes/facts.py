@@ -157,3 +157,5 @@ class StateFacts:
     # Keys whose transitions may be incomplete because a bound was met.
     bounded: tuple[str, ...] = ()
     exposed: tuple[tuple[str, Origin], ...] = field(default=())
+    # Functions that give objects their first state, as their names say, each with a function that calls it (or none).
+    starters: tuple[tuple[str, str | None], ...] = ()

@@ -22,6 +22,7 @@ from stepring.shapes.facts import (
     TestFact,
     TransitionFact,
 )
+from stepring.shapes.names import starts_or_runs
 from stepring.shapes.types import (
     Dispatch,
     Label,
@@ -96,6 +97,7 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
         for exposed_key, where in part.exposed:
             if exposed_key in gathered:
                 gathered[exposed_key].exposed.append(where)
+    starters = _starters(facts)
     for group in gathered.values():
         # A header's inline function is seen by many units; its facts count once.
         group.dispatches = _distinct(group.dispatches)
@@ -103,12 +105,34 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
         group.stores = _distinct(group.stores)
         group.transitions = _distinct(group.transitions)
         group.initials = _distinct(group.initials)
+        _settle_starters(group, starters)
         for store in group.stores:
             if store.parameter is not None:
                 for call in _distinct(callers.get(store.function, [])):
                     if call.argument == store.parameter:
                         group.setters.append((store, call))
     return gathered
+
+
+def _starters(facts: Iterable[StateFacts]) -> frozenset[str]:
+    """The functions that are named for setting up and that nothing calls but set-up code or a program's beginning."""
+    callers: dict[str, set[str]] = {}
+    for part in facts:
+        for starter, caller in part.starters:
+            callers.setdefault(starter, set()).update(() if caller is None else (caller,))
+    return frozenset(
+        starter for starter, calling in callers.items() if all(starts_or_runs(caller) for caller in calling)
+    )
+
+
+def _settle_starters(group: _Gathered, starters: frozenset[str]) -> None:
+    """What set-up code stores without looking at the state first is an initial state and no transition."""
+    looking = {dispatch.function for dispatch in group.dispatches} | {test.function for test in group.tests}
+    blind = starters - looking
+    group.stores = [replace(store, fresh=True) if store.function in blind else store for store in group.stores]
+    group.transitions = [
+        move for move in group.transitions if move.source is not None or move.mentioned or move.function not in blind
+    ]
 
 
 def _distinct(items: "Iterable[T]") -> "list[T]":

@@ -22,6 +22,28 @@ _TOKENS = re.compile(
 _NEAR = 3  # lines between two #defines of one group, at most
 _MOST = 256
 
+# How functions are named that run once, before a machine does (common practice), and those that may call them.
+_STARTS = re.compile(
+    r"(?:^|_)(?:init|initiali[sz]e|initiali[sz]ation|setup|set_up|create|construct|constructor|ctor|startup)(?:_|$)",
+    re.IGNORECASE,
+)
+_RUNS = re.compile(r"(?:^|_)(?:main|task|thread)(?:_|$)", re.IGNORECASE)
+
+
+def starts(function: str) -> bool:
+    """Whether a function's name says that it sets things up: ``hopper_init``, ``InitHopper``, ``setup``."""
+    return bool(_STARTS.search(_words(function)))
+
+
+def starts_or_runs(function: str) -> bool:
+    """Whether a function sets things up or is where a program or one of its tasks begins."""
+    return starts(function) or bool(_RUNS.search(_words(function)))
+
+
+def _words(function: str) -> str:
+    """A function's name without its file, camel case told apart by underscores."""
+    return re.sub(r"(?<=[a-z0-9])(?=[A-Z])", "_", function.rsplit(":", 1)[-1])
+
 
 @dataclass(slots=True)
 class Names:

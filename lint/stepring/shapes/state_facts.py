@@ -52,7 +52,7 @@ from stepring.shapes.facts import (
     TransitionFact,
 )
 from stepring.shapes.keys import PlaceKey, is_integral, place_key, uncast
-from stepring.shapes.names import Names, constant_at, constant_of, families
+from stepring.shapes.names import Names, constant_at, constant_of, families, starts
 from stepring.shapes.state_flow import (
     ENTRY,
     Setting,
@@ -111,7 +111,21 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         _families_by_key(names, work),
         tuple(work.bounded),
         tuple(work.exposed),
+        _starters(work),
     )
+
+
+def _starters(work: "_Work") -> tuple[tuple[str, str | None], ...]:
+    """The functions whose names say that they give an object its first state, and who calls them."""
+    own = {scan.function.identity for scan in work.scans}
+    found: dict[tuple[str, str | None], None] = {
+        (store.function, None): None for store in work.stores if store.function in own and starts(store.function)
+    }
+    for scan in work.scans:
+        for _, name in scan.calls:
+            if starts(name):
+                found[_identity(work, name), scan.function.identity] = None
+    return tuple(found)
 
 
 @dataclass(slots=True)
