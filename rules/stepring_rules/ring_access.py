@@ -7,6 +7,7 @@ from stepring.rule import Obligation, Related
 from stepring.shapes.ring_types import CheckedAccess, CheckedStep
 from stepring.shapes.types import Index, Program, Ring
 from stepring_rules.ring_common import (
+    Shared,
     about,
     cause,
     checked,
@@ -36,16 +37,7 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
     for ring in program.rings:
         if ring.capacity is None:
             continue
-        causes = {
-            index.identity: {
-                found
-                for step in index.steps
-                if isinstance(step, CheckedStep) and not is_scaled(ring, index)
-                for found in (cause(ring, index, step, shared),)
-                if found is not None
-            }
-            for index in ring.indices
-        }
+        causes = {index.identity: set(_causes(ring, index, words, shared)) for index in ring.indices}
         groups: dict[tuple[object, ...], list[CheckedAccess]] = {}
         for access in checked(ring):
             if access.settled:
@@ -81,8 +73,20 @@ def _explained(access: CheckedAccess, ring: Ring, causes: dict[str, set[str]], w
             return True
         if access.reduction == "mask" and mask_cause(access.modulus, capacity) is not None:
             return True
-    silent = {"RB07"} if words.below else {"RB05", "RB06", "RB07"}
-    return any(causes.get(cell, set()) & silent for cell in access.cells)
+    return any(causes.get(cell) for cell in access.cells)
+
+
+def _causes(ring: Ring, index: Index, words: Words, shared: Shared) -> Iterator[str]:
+    """The rules that say of an index's step what makes it leave the array at the end that this rule looks at."""
+    for step in index.steps:
+        if not isinstance(step, CheckedStep) or is_scaled(ring, index):
+            continue
+        found = cause(ring, index, step, shared)
+        if words.below:
+            if found == "RB07" and index.low < 0:
+                yield found
+        elif found == "RB06" and step.limit is not None and step.limit > (ring.capacity or 0):
+            yield found
 
 
 def _group(ring: Ring, access: CheckedAccess) -> tuple[object, ...]:

@@ -88,7 +88,7 @@ def _advance(luck: random.Random, slip: bool, i: str, type_: str, n: int) -> tup
     if power or slip:
         forms += ["mask", "free-mask"]
     form = luck.choice(forms)
-    step = luck.choice([1, 1, 2]) if slip else 1
+    step = luck.choice([1, 1, 2]) if slip and n > 3 else 1  # two forward in three slots is one back
     match form:
         case "reset":
             return i, f"{i}++; if ({i} {cmp} {limit}) {i} = {to};", 1

@@ -279,6 +279,17 @@ def stride(merged: Catalogue, key: Key) -> int:
     return only if moves.wraps and only else 0
 
 
+def partners(merged: Catalogue, key: Key, candidate: Candidate) -> list[Key]:
+    """The lasting integers by way of which an index is stepped: ``next`` where ``next = head + 1; ... head = next``."""
+    found = {
+        source
+        for target, source in merged.copied
+        if target == key and source not in candidate.indices and is_scalar(source) and source in merged.moves
+    }
+    known = [source for source in sorted(found) if (source, key) in merged.copied or merged.moves[source].wraps]
+    return known[:2]
+
+
 def _only_stops(wrap: Wrap) -> bool:
     """A decrement from a comparison with 0 that sets no upper end says nothing."""
     return wrap.form == "decrement" and wrap.limit is None

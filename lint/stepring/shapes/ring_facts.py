@@ -27,7 +27,7 @@ from stepring.meaning.types import (
     VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.ring_flat import Flat, FlatBlock, Set, Touch
+from stepring.shapes.ring_flat import Flat, FlatBlock, FlatOp, Outside, Set, Spoil, Touch
 from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
 from stepring.shapes.types import WrapForm
 
@@ -106,6 +106,16 @@ class Comparison:
 
 
 @dataclass(slots=True, eq=False)
+class Table:
+    """A flat function's operations, each with the number of its block: stores by what they store into, and the rest."""
+
+    stores: dict[Key, list[tuple[int, FlatOp]]] = field(default_factory=lambda: defaultdict(list))
+    touches: list[tuple[int, Touch]] = field(default_factory=list)
+    spoils: list[tuple[int, FlatOp]] = field(default_factory=list)
+    calls: list[tuple[int, FlatOp]] = field(default_factory=list)
+
+
+@dataclass(slots=True, eq=False)
 class FlatFacts:
     """The facts of a flat function."""
 
@@ -119,6 +129,36 @@ class FlatFacts:
     cross: dict[tuple[Key, Key], CellFacts]
     copied: set[tuple[Key, Key]]
     stored: frozenset[Key]
+    order: tuple[dict[int, int], dict[int, tuple[int, ...]]] | None = None
+    listed: Table | None = None
+
+    def table(self) -> Table:
+        """The operations by what they do, worked out once."""
+        if self.listed is None:
+            self.listed = Table()
+            for number, block in enumerate(self.flat.blocks):
+                for op in block.ops:
+                    match op:
+                        case Set():
+                            for key in place_keys(op.place, op.place_frame, self.flat.points):
+                                self.listed.stores[key].append((number, op))
+                        case Touch():
+                            self.listed.touches.append((number, op))
+                        case Spoil():
+                            self.listed.spoils.append((number, op))
+                        case Outside():
+                            self.listed.calls.append((number, op))
+                            if op.result is not None:
+                                for key in place_keys(op.result, op.frame, self.flat.points):
+                                    self.listed.stores[key].append((number, op))
+        return self.listed
+
+    def control_order(self) -> tuple[dict[int, int], dict[int, tuple[int, ...]]]:
+        """The post-dominators of the blocks, and the branches that each block depends on; worked out once."""
+        if self.order is None:
+            up = post_dominators(self.flat.blocks)
+            self.order = up, control(self.flat.blocks, up)
+        return self.order
 
 
 def facts_of(flat: Flat) -> FlatFacts:
@@ -147,7 +187,9 @@ def facts_of(flat: Flat) -> FlatFacts:
                     cross[key, other] = crossing
     comparisons = list(_comparisons(sight))
     stored = frozenset(sight.stored)
-    return FlatFacts(flat, cells, uses, plain, comparisons, sight.sources, sight.types, cross, copied, stored)
+    found = FlatFacts(flat, cells, uses, plain, comparisons, sight.sources, sight.types, cross, copied, stored)
+    found.order = sight.order
+    return found
 
 
 # ---------------------------------------------------------------------------------------------------------- sources
@@ -162,7 +204,7 @@ class _Sight:
     types: dict[Key, IntType] = field(default_factory=dict)
     sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
     stored: list[Key] = field(default_factory=list)
-    decides: dict[int, tuple[int, ...]] | None = None
+    order: tuple[dict[int, int], dict[int, tuple[int, ...]]] | None = None
 
 
 def _spread(sight: _Sight) -> None:
@@ -238,8 +280,6 @@ def _scaled(expr: Expr) -> bool:
 
 
 def _use(sight: _Sight, touch: Touch) -> Use | None:
-    if touch.subscript is None:
-        return None
     cells = _scaled_sources(sight, touch.subscript, touch.frame)
     if not cells:
         return None
@@ -471,12 +511,13 @@ def _guards(
             compared[number] = comparison
     if not compared:
         return found
-    if sight.decides is None:
-        sight.decides = control(sight.flat.blocks, post_dominators(sight.flat.blocks))
+    if sight.order is None:
+        up = post_dominators(sight.flat.blocks)
+        sight.order = up, control(sight.flat.blocks, up)
     for number in blocks:
         entries = tuple(
             (compared[branch], compared[branch].position)
-            for branch in sight.decides.get(number, ())
+            for branch in sight.order[1].get(number, ())
             if branch in compared
         )
         if entries:

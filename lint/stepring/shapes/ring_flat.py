@@ -69,7 +69,7 @@ class Touch:
     storage: Key
     element: CType
     pointer: Expr | None
-    subscript: Expr | None
+    subscript: Expr
     frame: str
     kind: TouchKind
     position: Position
@@ -387,13 +387,12 @@ def _touch_places(place: PlaceExpr, kind: TouchKind, at: _At) -> Iterator[Touch]
             yield from _through(pointer, steps, type_, kind, position, at)
             yield from _touch_values(steps, at)
             yield from _touch_values(pointer, at)
-        case DerefPlace(pointer=pointer, type=type_, position=position):
-            yield from _through(pointer, None, type_, kind, position, at)
-            yield from _touch_values(pointer, at)
+        case DerefPlace(pointer=pointer):
+            yield from _touch_values(pointer, at)  # what it points to was looked at where its address was taken
 
 
 def _through(
-    pointer: Expr, steps: Expr | None, element: CType, kind: TouchKind, position: Position | None, at: _At
+    pointer: Expr, steps: Expr, element: CType, kind: TouchKind, position: Position | None, at: _At
 ) -> Iterator[Touch]:
     """An access through a pointer, for each array that the pointer may lead into."""
     for key in targets(pointer, at.frame, at.see.points):

@@ -1,6 +1,6 @@
 """The values that a ring's indices really take, and the slots that are accessed with them.
 
-The one idea: start from the initial values, run every function that uses the ring from every value reached so far,
+The one idea: start from the initial values, run every function that moves an index from every value reached so far,
 until nothing new comes (explicit-state reachability, as in model checking). First each index is followed alone and all
 else counts as unknown; that bounds every subscript from above. Where a subscript then seems to leave the array and the
 way there depends on other state (a count, a flag), the indices are followed together with that state, which settles
@@ -10,9 +10,8 @@ although every doubtful path was taken, cannot happen.
 
 import random
 from collections import deque
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Any
 
 from stepring.meaning.types import IntType
 from stepring.places import Position
@@ -28,12 +27,15 @@ NEAR = 2_000
 """So many of them are looked at in order of distance, before random sequences of calls are tried."""
 ORBIT = 4_200
 """Values of one index that are looked at."""
-RUN_WORK = 30_000
-ALONE_WORK = 80_000
-LOOK_WORK = 50_000
-TOGETHER_WORK = 160_000
+SPREAD = 600
+"""A bounded unknown value of an index is taken apart if it has no more values than this."""
 TOGETHER = 8
 """Up to this many integers are followed together."""
+# Work is counted in operations of the code that is run; a thousand take some milliseconds.
+RUN_WORK = 4_000
+ALONE_WORK = 60_000
+LOOK_WORK = 30_000
+TOGETHER_WORK = 120_000
 
 State = tuple[Value, ...]
 Spot = tuple[Position, str, str, Key]
@@ -79,50 +81,62 @@ class Study:
     pairs: dict[Pair, bool] = field(default_factory=dict)
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(slots=True, eq=False)
 class Scene:
-    """What all studies share: the functions that can be entered, initial values, types, who writes what."""
+    """What all studies share: the functions that can be entered (by what they store into and access), initial values,
+    types, who writes what; and the searches that are done."""
 
     events: Callable[[frozenset[Key], frozenset[Key]], Sequence[FlatFacts]]
     initial: Callable[[Key], tuple[int, ...] | None]
     types: dict[Key, IntType]
     writes: Callable[[str], frozenset[Key]]
+    searches: dict[tuple[object, ...], "Search"] = field(default_factory=dict)
+
+    def whole(self, key: Key) -> Range:
+        """All values of an integer's type."""
+        type_ = self.types.get(key)
+        return Range(type_.low, type_.high, False) if type_ is not None else Range(-(1 << 31), (1 << 32) - 1, False)
 
 
 def study(
     scene: Scene,
     storage: Key,
     capacity: int,
-    indices: Sequence[Key],
+    groups: Sequence[Sequence[Key]],
     counts: Sequence[Key],
     strides: Mapping[Key, int],
 ) -> Study:
     """Find out which slots of ``storage`` are accessed and which values the indices take.
 
-    ``counts`` are integers that count occupied slots; they are followed to bound them, but they are no indices.
-    ``strides`` are what one advance adds to each index that wraps.
+    ``groups`` are the indices, each with the integers that it is stepped by way of. ``counts`` count occupied slots;
+    they are followed to bound them, but they are no indices. ``strides`` are what one advance adds to each index that
+    wraps.
     """
-    arrays = frozenset((storage,))
-    followed = [*indices, *counts]
+    followed = [*groups, *((count,) for count in counts)]
+    keys = list(dict.fromkeys(key for group in followed for key in group))
+    searches = _orbits(scene, capacity, followed)
+    found = Study()
     ranges: dict[Key, Range] = {}
-    for attempt in range(2):
-        found = Study()
-        state: set[Key] = set()
-        for index in followed:
-            others = {key: known for key, known in ranges.items() if key != index}
-            state |= _alone(scene, arrays, capacity, index, followed, others, found)
-        suspects = [access for access in found.accesses.values() if not _fits(access, capacity)]
-        if attempt == 1 or not suspects or len(followed) == 1:
-            break
-        ranges = {key: known for key in followed for known in (_hull(found.orbits[key]),) if known is not None}
-    suspects = [access for access in suspects if access.bad is None]
+    for search in searches:
+        for pair, certain in search.pairs_seen.items():
+            found.pairs[pair] = found.pairs.get(pair, False) or certain
+        for key in search.tracked:
+            if key not in found.orbits:
+                found.orbits[key] = search.orbit(key)
+    ranges = _bounds(found.orbits)
+    state: set[Key] = set()
+    for facts in scene.events(frozenset(), frozenset((storage,))):
+        state |= _look(scene, facts, storage, capacity, searches, ranges, found)
+    suspects = [access for access in found.accesses.values() if access.bad is None and not _fits(access, capacity)]
     pairs = {
         pair
         for pair, certain in found.pairs.items()
         if not certain and pair[0] in strides and is_odd(pair, strides[pair[0]], capacity)
     }
+    if pairs:
+        state |= {key for search in searches for walk in search.movers for key in walk.state}
     if suspects or pairs:
-        _together(scene, arrays, capacity, followed, state - set(followed), found, suspects, pairs)
+        _together(scene, storage, capacity, keys, state - set(keys), found, suspects, pairs)
     return found
 
 
@@ -130,15 +144,6 @@ def is_odd(pair: Pair, stride: int, capacity: int) -> bool:
     """Whether an advance does not lead to the slot that follows."""
     _, _, before, after, by = pair
     return (before + (by or stride) - after) % capacity != 0
-
-
-def _hull(orbit: Orbit) -> Range | None:
-    """Bounds of an orbit, None where the search did not come to an end."""
-    if not orbit.complete or not orbit.possible:
-        return None
-    lows = [value.low if isinstance(value, Range) else int(value) for value in orbit.possible]
-    highs = [value.high if isinstance(value, Range) else int(value) for value in orbit.possible]
-    return Range(min(lows), max(highs), False)
 
 
 def out_of_range(value: Value, capacity: int, kind: str) -> bool:
@@ -153,134 +158,208 @@ def out_of_range(value: Value, capacity: int, kind: str) -> bool:
 
 def _fits(access: Access, capacity: int) -> bool:
     kind = access.touch.kind
-    return not any(out_of_range(value, capacity, kind) for value in access.certain | access.doubtful)
+    return not access.cut and not any(
+        out_of_range(value, capacity, kind) for value in access.certain | access.doubtful
+    )
 
 
-@dataclass(frozen=True, slots=True)
-class Pace:
-    """A function ready to run: ``moves`` for what it does to the followed integers, ``looks`` for its accesses.
-
-    They are apart because an access may depend on more than the integers' new values do, and what a value depends on
-    decides how certain it is. None where there is nothing to see.
-    """
-
-    moves: Walk | None
-    looks: Walk | None
-
-    @property
-    def walks(self) -> tuple[Walk, ...]:
-        """Both, each once."""
-        found = (self.moves, self.looks) if self.moves is not self.looks else (self.looks,)
-        return tuple(walk for walk in found if walk is not None)
+# ---------------------------------------------------------------------------------------------------------- orbits
 
 
-def _paces(
-    scene: Scene, arrays: frozenset[Key], capacity: int, tracked: Sequence[Key], ranges: Mapping[Key, Range]
-) -> list[Pace]:
-    wholes = {key: _whole(scene, key) for key in tracked}
-    found = []
-    for facts in scene.events(frozenset(tracked), arrays):
+def _orbits(scene: Scene, capacity: int, groups: Sequence[Sequence[Key]]) -> list["Search"]:
+    """The values of each index, followed alone; twice where the bounds of the others may help."""
+    searches = [_alone(scene, capacity, tuple(group), {}) for group in groups]
+    for _ in range(2):
+        ranges = _bounds({key: search.orbit(key) for search in searches for key in search.tracked})
+        loose = [number for number, search in enumerate(searches) if search.loose or not search.complete]
+        if not ranges or not loose:
+            break
+        for number in loose:
+            others = {key: known for key, known in ranges.items() if key not in searches[number].tracked}
+            searches[number] = _alone(scene, capacity, searches[number].tracked, others)
+    return searches
 
-        def walk(storage: frozenset[Key], facts: FlatFacts = facts) -> Walk:
-            return Walk(facts, tracked, storage, capacity, wholes, ranges, scene.writes, scene.types)
 
-        looks: Walk | None = walk(arrays)
-        moves: Walk | None = looks
-        if looks is None or looks.idle:
-            continue
-        if looks.touched:
-            moves = walk(frozenset())
-            if moves.idle:
-                moves = None
-            elif moves.branching == looks.branching:
-                moves = looks
-        else:
-            looks = None
-        found.append(Pace(moves, looks))
+def _bounds(orbits: Mapping[Key, Orbit]) -> dict[Key, Range]:
+    """Bounds of all orbits that were searched to the end."""
+    found = {}
+    for key, orbit in orbits.items():
+        if orbit.complete and orbit.possible:
+            lows = [value.low if isinstance(value, Range) else int(value) for value in orbit.possible]
+            highs = [value.high if isinstance(value, Range) else int(value) for value in orbit.possible]
+            found[key] = Range(min(lows), max(highs), False)
     return found
 
 
-def _whole(scene: Scene, key: Key) -> Range:
-    type_ = scene.types.get(key)
-    return Range(type_.low, type_.high, False) if type_ is not None else Range(-(1 << 31), (1 << 32) - 1, False)
+def _alone(scene: Scene, capacity: int, tracked: tuple[Key, ...], ranges: Mapping[Key, Range]) -> "Search":
+    mark = (tracked, capacity, frozenset(ranges.items()))
+    known = scene.searches.get(mark)
+    if known is not None:
+        return known
+    search = scene.searches[mark] = Search(scene, tracked, capacity, ALONE_WORK)
+    search.movers = _movers(scene, tracked, capacity, ranges)
+    advances = [walk.facts.cells[tracked[0]] for walk in search.movers if tracked[0] in walk.facts.cells]
+    whole = scene.whole(tracked[0])
+    if len(tracked) == 1 and whole.high > ORBIT and advances and not any(facts.wraps for facts in advances):
+        # A counter that runs through its whole type: every value counts.
+        search.states[whole,] = False
+        search.parents[whole,] = (None, None)
+        return search
+    search.start()
+    search.go(ORBIT)
+    return search
 
 
-# ---------------------------------------------------------------------------------------------------------- one index
+def _movers(scene: Scene, tracked: tuple[Key, ...], capacity: int, ranges: Mapping[Key, Range]) -> list[Walk]:
+    """The functions that store into the followed integers, ready to run."""
+    wholes = {key: scene.whole(key) for key in tracked}
+    made = [
+        Walk(facts, tracked, frozenset(), True, capacity, wholes, ranges, scene.writes, scene.types)
+        for facts in scene.events(frozenset(tracked), frozenset())
+    ]
+    return [walk for walk in made if not walk.idle]
 
 
-def _alone(
+# ---------------------------------------------------------------------------------------------------------- accesses
+
+
+def _look(
     scene: Scene,
-    arrays: frozenset[Key],
+    facts: FlatFacts,
+    storage: Key,
     capacity: int,
-    index: Key,
-    followed: Sequence[Key],
+    searches: Sequence["Search"],
     ranges: Mapping[Key, Range],
     found: Study,
 ) -> set[Key]:
-    """Follow one index; gives the state that its functions depend on besides.
+    """Look at the accesses of one function, block by block, while the index that each is made of is followed.
 
-    Each access is looked at while the first of the integers that its subscript is made of is followed.
+    Gives the state that the accesses depend on besides.
     """
-    paces = _paces(scene, arrays, capacity, (index,), ranges)
-    walks = [walk for pace in paces for walk in pace.walks]
-    cells = {id(use.touch): use.cells for walk in walks for use in walk.facts.uses}
-
-    def wanted(touch: Touch) -> bool:
-        mine = [key for key in followed if key in cells.get(id(touch), ())]
-        return (mine[0] if mine else followed[0]) == index
-
-    orbit = found.orbits[index] = Orbit()
-    whole = _whole(scene, index)
-    advances = [facts.cells[index] for facts in (walk.facts for walk in walks) if index in facts.cells]
-    free = whole.high > ORBIT and not any(facts.wraps for facts in advances) and any(f.advances for f in advances)
-    if free:
-        # A counter that runs through its whole type: every value counts.
-        orbit.possible.add(whole)
-        for walk in walks:
-            run = walk.run((whole,), RUN_WORK)
-            _collect(walk, run.touches, (), found, capacity, False, wanted)
-            if run.cut:
-                _mark_cut(walk, found)
-    else:
-        search = _Search(scene, paces, (index,), capacity, found, ALONE_WORK, wanted)
-        search.start()
-        search.go(ORBIT)
-        for state, certain in search.states.items():
-            if certain and isinstance(state[0], int):
-                orbit.certain.add(state[0])
-            orbit.possible.add(state[0])
-        orbit.complete = search.complete
-        search.look()
-    return {key for walk in walks for key in walk.state}
+    cells = {id(use.touch): use.cells for use in facts.uses}
+    parts: dict[tuple[int, int], list[int]] = {}
+    for block, touch in facts.table().touches:
+        if touch.storage == storage:
+            mine = [
+                number
+                for number, search in enumerate(searches)
+                if any(key in cells.get(id(touch), ()) for key in search.tracked)
+            ]
+            parts.setdefault((block, mine[0] if mine else 0), []).append(id(touch))
+    state: set[Key] = set()
+    for (_, number), touches in parts.items():
+        search = searches[number]
+        wholes = {key: scene.whole(key) for key in search.tracked}
+        others = {key: known for key, known in ranges.items() if key not in search.tracked}
+        walk = Walk(
+            facts, search.tracked, frozenset(touches), False, capacity, wholes, others, scene.writes, scene.types
+        )
+        state |= walk.state
+        _see(walk, search, found)
+    return state
 
 
-@dataclass(slots=True)
-class _Search:
-    """Reachability over the values of some integers."""
+def _see(walk: Walk, search: "Search", found: Study) -> None:
+    """Run the accesses of a walk from every state that a search has found, certain ones first."""
+    left = LOOK_WORK + 8 * search.capacity
+    cut = not search.complete
+    for state, certain in sorted(search.states.items(), key=lambda item: not item[1]):
+        run = walk.run(state, min(RUN_WORK + 24 * search.capacity, left))
+        left -= run.work or 1
+        run.work = 0  # a remembered run costs nothing more
+        _collect(walk, run, search, state, certain, found)
+        if run.cut or left <= 0:
+            cut = True
+            break
+    if cut:
+        for touch in walk.touched:
+            access = found.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
+            if access is not None:
+                access.cut = True
+
+
+def _collect(walk: Walk, run: Run, search: "Search", state: State, certain: bool, found: Study) -> None:
+    """Add what a run saw to the accesses."""
+    capacity = search.capacity
+    for number, seen in run.touches.items():
+        touch = walk.touched[number]
+        spot = (touch.position, touch.kind, touch.function, touch.storage)
+        access = found.accesses.get(spot)
+        if access is None:
+            access = found.accesses[spot] = Access(touch)
+        for value, (trace, subscript) in seen.certain.items():
+            known = access.certain if certain else access.doubtful
+            if value in known and (access.bad is not None or not certain):
+                continue
+            known.add(value)
+            if not out_of_range(value, capacity, touch.kind):
+                continue
+            if certain and access.bad is None:
+                access.bad = (subscript, search.witness(state, trace))
+            elif not certain and access.maybe is None:
+                access.maybe = subscript
+        for value, (_, subscript) in seen.doubtful.items():
+            if value in access.doubtful:
+                continue
+            access.doubtful.add(value)
+            if access.maybe is None and out_of_range(value, capacity, touch.kind):
+                access.maybe = subscript if subscript is not None else Range(-(1 << 31), (1 << 31) - 1, False)
+
+
+# ---------------------------------------------------------------------------------------------------------- search
+
+
+@dataclass(slots=True, eq=False)
+class Search:
+    """Reachability over the values of some integers, and what was seen on the way.
+
+    ``loose``: an integer got a value of which only bounds are known.
+    """
 
     scene: Scene
-    paces: list[Pace]
     tracked: tuple[Key, ...]
     capacity: int
-    found: Study
     work: int
-    wanted: Callable[[Touch], bool] = lambda touch: True
+    movers: list[Walk] = field(default_factory=list)
+    lookers: list[Walk] = field(default_factory=list)
     states: dict[State, bool] = field(default_factory=dict)
     parents: dict[State, tuple[State | None, Trace]] = field(default_factory=dict)
     sure: deque[State] = field(default_factory=deque)
     doubtful: deque[State] = field(default_factory=deque)
+    pairs_seen: dict[Pair, bool] = field(default_factory=dict)
+    seen: Study = field(default_factory=Study)
+    wanted_spots: set[Spot] = field(default_factory=set)
+    wanted_pairs: Collection[Pair] = ()
     cut: bool = False
-    stop_at: set[Spot] = field(default_factory=set)
-    pairs: set[Pair] = field(default_factory=set)
+    loose: bool = False
 
     @property
     def complete(self) -> bool:
         """Whether every state was looked at, along every path."""
         return not (self.cut or self.sure or self.doubtful)
 
+    def orbit(self, key: Key) -> Orbit:
+        """The values of one of the integers."""
+        number = self.tracked.index(key)
+        orbit = Orbit(complete=self.complete)
+        for state, certain in self.states.items():
+            value = state[number]
+            orbit.possible.add(value)
+            if certain and isinstance(value, int):
+                orbit.certain.add(value)
+        return orbit
+
     def start(self) -> None:
         """Put the initial states first in the row."""
-        for state, certain in self._starts():
+        found: list[State] = [()]
+        certain = True
+        for key in self.tracked:
+            values = self.scene.initial(key)
+            if values is None:
+                values = (0,)
+                certain = False
+            found = [(*state, value) for state in found for value in values]
+        for state in found:
             self.states[state] = certain
             self.parents[state] = (None, None)
             (self.sure if certain else self.doubtful).append(state)
@@ -295,27 +374,6 @@ class _Search:
                 return
             self._expand(self.sure.popleft() if self.sure else self.doubtful.popleft())
 
-    def look(self) -> None:
-        """Run the accesses of each function from every state, each function with work of its own to spend."""
-        states = sorted(self.states, key=lambda state: not self.states[state])  # certain ones first
-        for pace in self.paces:
-            if pace.looks is None:
-                continue
-            left = LOOK_WORK
-            for state in states:
-                run = pace.looks.run(state, min(RUN_WORK, max(1, left)))
-                left -= run.work or 1
-                run.work = 0
-                _collect(
-                    pace.looks, run.touches, (self, state), self.found, self.capacity, self.states[state], self.wanted
-                )
-                if run.cut or left <= 0:
-                    _mark_cut(pace.looks, self.found)
-                if left <= 0:
-                    break
-            if not self.complete:
-                _mark_cut(pace.looks, self.found)
-
     def wander(self, walks: int, length: int) -> None:
         """Random sequences of calls from the start: they come to depths that a search in all directions does not."""
         luck = random.Random(1)
@@ -328,70 +386,72 @@ class _Search:
                     break
                 state = luck.choice(following)
 
+    def settled(self) -> bool:
+        """Whether all that was searched for is found."""
+        if not self.wanted_spots and not self.wanted_pairs:
+            return False
+        known = (self.seen.accesses.get(spot) for spot in self.wanted_spots)
+        return all(access is not None and access.bad is not None for access in known) and all(
+            self.pairs_seen.get(pair) for pair in self.wanted_pairs
+        )
+
     def _expand(self, state: State) -> list[State]:
         """Run all functions from a state; gives the states that are certainly reached in one call."""
         certain = self.states[state]
         found: list[State] = []
-        for pace in self.paces:
-            looks, moves = pace.looks, pace.moves
-            if looks is not None and self.stop_at:
-                run = self._run(looks, state)
-                _collect(looks, run.touches, (self, state), self.found, self.capacity, certain, self.wanted)
-            if moves is None:
-                continue
-            run = self._run(moves, state)
+        for walk in list(self.lookers):
+            run = self._run(walk, state)
+            _collect(walk, run, self, state, certain, self.seen)
+            if run.cut:
+                self.lookers.remove(walk)
+        for walk in list(self.movers):
+            run = self._run(walk, state)
+            if run.cut:
+                self.movers.remove(walk)  # too large to be run from every value
             for pair, sure_pair in run.pairs.items():
-                self.found.pairs[pair] = self.found.pairs.get(pair, False) or (sure_pair and certain)
+                self.pairs_seen[pair] = self.pairs_seen.get(pair, False) or (sure_pair and certain)
             for values, (sure_end, trace) in run.ends.items():
                 end = tuple(
-                    new if key in moves.reads else old
+                    new if key in walk.reads else old
                     for key, new, old in zip(self.tracked, values, state, strict=True)
                 )
-                end = self._reach(end, certain and sure_end, state, trace)
-                if self.states[end] and certain and sure_end:
-                    found.append(end)
+                sure = certain and sure_end and not any(isinstance(value, Range) for value in end)
+                for reached in self._spread(end):
+                    self._reach(reached, sure, state, trace)
+                    if sure:
+                        found.append(reached)
         return found
 
     def _run(self, walk: Walk, state: State) -> Run:
-        run = walk.run(state, min(RUN_WORK, max(1, self.work)))
+        run = walk.run(state, min(RUN_WORK + 24 * self.capacity, max(1, self.work)))
         self.work -= run.work or 1
         run.work = 0  # a remembered run costs nothing more
         self.cut = self.cut or run.cut
         return run
 
-    def settled(self) -> bool:
-        """Whether all that was searched for is found."""
-        if not self.stop_at and not self.pairs:
-            return False
-        known = (self.found.accesses.get(spot) for spot in self.stop_at)
-        return all(access is not None and access.bad is not None for access in known) and all(
-            self.found.pairs.get(pair) for pair in self.pairs
-        )
-
-    def _starts(self) -> list[tuple[State, bool]]:
-        found: list[State] = [()]
-        certain = True
-        for key in self.tracked:
-            values = self.scene.initial(key)
-            if values is None:
-                values = (0,)
-                certain = False
-            found = [(*state, value) for state in found for value in values]
-        return [(state, certain) for state in found]
-
-    def _reach(self, end: State, certain: bool, state: State, trace: Trace) -> State:
-        if any(isinstance(value, Range) for value in end):
-            end = tuple(
-                _whole(self.scene, key) if isinstance(value, Range) else value
+    def _spread(self, end: State) -> list[State]:
+        """A state with an unknown value: one for each value if those are few, else with all values of the type."""
+        unknown = [number for number, value in enumerate(end) if isinstance(value, Range)]
+        if not unknown:
+            return [end]
+        self.loose = True
+        first = unknown[0]
+        value = end[first]
+        if len(unknown) == 1 and value.high - value.low <= SPREAD:
+            return [(*end[:first], item, *end[first + 1 :]) for item in range(value.low, value.high + 1)]
+        return [
+            tuple(
+                self.scene.whole(key) if isinstance(value, Range) else value
                 for key, value in zip(self.tracked, end, strict=True)
             )
-            certain = False
+        ]
+
+    def _reach(self, end: State, certain: bool, state: State, trace: Trace) -> None:
         known = self.states.get(end)
         if known is None or (certain and not known):
             self.states[end] = certain
             self.parents[end] = (state, trace)
             (self.sure if certain else self.doubtful).append(end)
-        return end
 
     def witness(self, state: State, trace: Trace) -> Witness:
         """The stores from the start to a point in a run from ``state``."""
@@ -409,57 +469,12 @@ class _Search:
         return Witness(stores[::-1], len(runs) - 1)
 
 
-def _mark_cut(walk: Walk, found: Study) -> None:
-    for touch in walk.touched:
-        access = found.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
-        if access is not None:
-            access.cut = True
-
-
-def _collect(
-    walk: Walk,
-    touches: Mapping[int, Any],
-    at: tuple[Any, ...],
-    found: Study,
-    capacity: int,
-    certain: bool,
-    wanted: Callable[[Touch], bool],
-) -> None:
-    """Add what a run saw to the accesses; ``at`` is the search and the state that the run started from."""
-    for number, seen in touches.items():
-        touch = walk.touched[number]
-        if not wanted(touch):
-            continue
-        spot = (touch.position, touch.kind, touch.function, touch.storage)
-        access = found.accesses.get(spot)
-        if access is None:
-            access = found.accesses[spot] = Access(touch)
-        for value, (trace, subscript) in seen.certain.items():
-            known = access.certain if certain else access.doubtful
-            if value in known and (access.bad is not None or not certain):
-                continue
-            known.add(value)
-            if not out_of_range(value, capacity, touch.kind):
-                continue
-            if certain and access.bad is None:
-                search, state = at
-                access.bad = (subscript, search.witness(state, trace))
-            elif not certain and access.maybe is None:
-                access.maybe = subscript
-        for value, (_, subscript) in seen.doubtful.items():
-            if value in access.doubtful:
-                continue
-            access.doubtful.add(value)
-            if access.maybe is None and out_of_range(value, capacity, touch.kind):
-                access.maybe = subscript if subscript is not None else Range(-(1 << 31), (1 << 31) - 1, False)
-
-
 # ---------------------------------------------------------------------------------------------------------- together
 
 
 def _together(
     scene: Scene,
-    arrays: frozenset[Key],
+    storage: Key,
     capacity: int,
     indices: list[Key],
     state: set[Key],
@@ -468,53 +483,68 @@ def _together(
     pairs: set[Pair],
 ) -> None:
     """Follow the indices with the state that they depend on, and settle the suspects if that comes to an end."""
+    spots = {
+        (access.touch.position, access.touch.kind, access.touch.function, access.touch.storage): access
+        for access in suspects
+    }
     tracked = list(dict.fromkeys([*indices, *sorted(key for key in state if scene.initial(key) is not None)]))
-    paces: list[Pace] = []
+    search = Search(scene, (), capacity, TOGETHER_WORK)
     for _ in range(3):
         tracked = [key for key in tracked if scene.types.get(key) is not None]
         if len(tracked) > TOGETHER:
             return
-        paces = _paces(scene, arrays, capacity, tracked, {})
-        more = {key for pace in paces for walk in pace.walks for key in walk.state if scene.initial(key) is not None}
-        more -= set(tracked)
+        search = Search(scene, tuple(tracked), capacity, TOGETHER_WORK)
+        search.movers = _movers(scene, search.tracked, capacity, {})
+        search.lookers = _lookers(scene, search.tracked, storage, capacity, set(spots))
+        more = {
+            key
+            for walk in (*search.movers, *search.lookers)
+            for key in walk.state
+            if scene.initial(key) is not None and key not in tracked
+        }
         if not more:
             break
         tracked = [*tracked, *sorted(more)]
-    fresh = Study()
-    search = _Search(scene, paces, tuple(tracked), capacity, fresh, TOGETHER_WORK)
-    search.stop_at = {
-        (access.touch.position, access.touch.kind, access.touch.function, access.touch.storage) for access in suspects
-    }
-    search.pairs = pairs
+    search.wanted_spots = set(spots)
+    search.wanted_pairs = pairs
     search.start()
     search.go(NEAR)
     if not search.complete and not search.settled():
         search.wander(12, 4 * capacity + 60)
     if not search.settled():
         search.go(STATES)
-    for pair, certain in fresh.pairs.items():
+    for pair, certain in search.pairs_seen.items():
         if certain:
             found.pairs[pair] = True
-    for number, index in enumerate(search.tracked):
-        orbit = found.orbits.get(index)
-        if orbit is None:
-            continue
-        for values, certain in search.states.items():
-            if certain and isinstance(values[number], int):
-                orbit.certain.add(values[number])
-    for access in suspects:
-        touch = access.touch
-        other = fresh.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
-        if other is None:
-            if search.complete:
-                access.doubtful.clear()
-                access.maybe = None
-                access.settled = True
-            continue
-        if other.bad is not None:
+    for key in indices:
+        if key in search.tracked and key in found.orbits:
+            found.orbits[key].certain |= search.orbit(key).certain
+    for spot, access in spots.items():
+        other = search.seen.accesses.get(spot)
+        if other is not None and other.bad is not None:
             access.bad = other.bad
             access.certain |= other.certain
         elif search.complete:
-            access.certain, access.doubtful = other.certain, other.doubtful
-            access.maybe = other.maybe
+            access.certain = other.certain if other is not None else set()
+            access.doubtful = other.doubtful if other is not None else set()
+            access.maybe = other.maybe if other is not None else None
             access.settled = True
+
+
+def _lookers(
+    scene: Scene, tracked: tuple[Key, ...], storage: Key, capacity: int, spots: Collection[Spot]
+) -> list[Walk]:
+    """The functions that make the suspect accesses, ready to run."""
+    wholes = {key: scene.whole(key) for key in tracked}
+    found = []
+    for facts in scene.events(frozenset(), frozenset((storage,))):
+        touches = frozenset(
+            id(touch)
+            for _, touch in facts.table().touches
+            if (touch.position, touch.kind, touch.function, touch.storage) in spots
+        )
+        if touches:
+            found.append(
+                Walk(facts, tracked, touches, False, capacity, wholes, {}, scene.writes, scene.types)
+            )
+    return found

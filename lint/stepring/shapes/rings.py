@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
 from stepring.places import Origin, Position
 from stepring.shapes.ring_build import build
-from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances, stride
+from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances, partners, stride
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_filter import ring_functions
 from stepring.shapes.ring_flat import Set, Spoil, Touch
@@ -44,9 +44,8 @@ def find_rings(
         studied = None
         if candidate.capacity is not None and candidate.capacity <= LARGEST:
             strides = {key: by for key in candidate.indices for by in (stride(merged, key),) if by}
-            studied = study(
-                scene, candidate.storage, candidate.capacity, candidate.indices, candidate.counts, strides
-            )
+            groups = [(key, *partners(merged, key, candidate)) for key in candidate.indices]
+            studied = study(scene, candidate.storage, candidate.capacity, groups, candidate.counts, strides)
         found.append(build(merged, candidate, studied, origin))
     return tuple(found)
 

@@ -37,9 +37,9 @@ from stepring.meaning.types import (
 )
 from stepring.places import Position
 from stepring.shapes.ring_arith import Code, Compiler, Env, Ptr, Range, Value, add_offsets, is_input, whole
-from stepring.shapes.ring_facts import FlatFacts, control, post_dominators
+from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_flat import FlatOp, Outside, Set, Spoil, Touch
-from stepring.shapes.ring_keys import Key, is_local, is_scalar, place_keys
+from stepring.shapes.ring_keys import NOTHING, Key, is_local, is_scalar, place_keys
 
 SPLIT = 64
 """A parameter or a range of up to this many values is split into its values."""
@@ -103,18 +103,19 @@ class _Refine:
 class Walk:
     """A flat function made ready to run.
 
-    ``tracked`` are the lasting integers that are followed, in the order of the values that ``run`` takes. ``storage``
-    are the arrays whose accesses matter. ``capacity`` bounds parameters that reach a subscript or an index:
-    a caller is trusted to pass a slot number.
-    ``wholes`` are the values of each tracked integer's type, ``ranges`` bounds of integers that are not tracked, and
-    ``writes`` tells what a function stores into; ``types`` is filled with the types of all that is read.
+    ``tracked`` are the lasting integers that are followed, in the order of the values that ``run`` takes. ``touches``
+    are the accesses that matter, by ``id``; with ``moving`` all stores of tracked integers do as well. ``capacity``
+    bounds parameters that reach a subscript or an index: a caller is trusted to pass a slot number. ``wholes`` are the
+    values of each tracked integer's type, ``ranges`` bounds of integers that are not tracked, and ``writes`` tells what
+    a function stores into; ``types`` is filled with the types of all that is read.
     """
 
     def __init__(
         self,
         facts: FlatFacts,
         tracked: Sequence[Key],
-        storage: frozenset[Key],
+        touches: frozenset[int],
+        moving: bool,
         capacity: int,
         wholes: Mapping[Key, Range],
         ranges: Mapping[Key, Range],
@@ -126,15 +127,16 @@ class Walk:
         self.facts = facts
         self.tracked = tuple(tracked)
         self.follow = frozenset(tracked)
-        self.storage = storage
+        self.touches = touches
+        self.moving = moving
         self.capacity = capacity
         self.writes = writes
         self.points = facts.flat.points
         self.compiler = Compiler(self.points, self.follow, ranges)
         self.touched: list[Touch] = []
-        self.written: set[Key] = set()
         self.inputs: set[Key] = set()
         self._slice()
+        self.written &= self.follow if moving else set(self.needed)
         self.reads = self.written | {key for key in self.needed if key in self.follow}
         self.state = frozenset(
             key for key in self.needed if is_scalar(key) and key not in self.follow and key not in self.inputs
@@ -151,36 +153,31 @@ class Walk:
 
     def _slice(self) -> None:
         blocks = self.facts.flat.blocks
-        self.up = post_dominators(blocks)
-        decides = control(blocks, self.up)
+        self.up, decides = self.facts.control_order()
         needed: dict[Key, None] = {}
         data: set[Key] = set()
         relevant: set[int] = set()
         active: set[int] = set()
         branching: set[int] = set()
-        by_key: dict[Key, list[tuple[int, FlatOp]]] = defaultdict(list)
-        work: list[tuple[int, FlatOp, bool]] = []
-        for number, block in enumerate(blocks):
-            for op in block.ops:
-                match op:
-                    case Set():
-                        for key in place_keys(op.place, op.place_frame, self.points):
-                            by_key[key].append((number, op))
-                            if key in self.follow:
-                                work.append((number, op, True))
-                                self.written.add(key)
-                    case Touch() if op.storage in self.storage:
-                        work.append((number, op, True))
-                    case Spoil() if self._spoiled(op):
-                        work.append((number, op, True))
-                        self.written.update(self.tracked[item] for item in self._spoiled(op))
-                    case Outside():
-                        if op.known and self.writes(op.name) & self.follow:
-                            work.append((number, op, True))
-                            self.written |= self.writes(op.name) & self.follow
-                        if op.result is not None:
-                            for key in place_keys(op.result, op.frame, self.points):
-                                by_key[key].append((number, op))
+        table = self.facts.table()
+        tracked_ops: dict[Key, list[tuple[int, FlatOp]]] = {
+            key: [
+                *table.stores.get(key, ()),
+                *((number, op) for number, op in table.spoils if key in self._filled(op)),
+                *(
+                    (number, op)
+                    for number, op in table.calls
+                    if isinstance(op, Outside) and op.known and key in self.writes(op.name)
+                ),
+            ]
+            for key in self.tracked
+        }
+        self.written = {key for key, ops in tracked_ops.items() if ops}
+        work: list[tuple[int, FlatOp, bool]] = [
+            (number, op, True) for number, op in table.touches if id(op) in self.touches
+        ]
+        if self.moving:
+            work.extend((number, op, True) for ops in tracked_ops.values() for number, op in ops)
         wanted: list[tuple[Key, bool]] = []
         while work or wanted:
             while wanted:
@@ -190,12 +187,13 @@ class Walk:
                 needed[key] = None
                 if as_data:
                     data.add(key)
-                if key in self.follow:
-                    continue
-                work.extend((number, op, as_data) for number, op in by_key.get(key, ()))
+                stores = tracked_ops[key] if key in self.follow else table.stores.get(key, ())
+                work.extend((number, op, as_data) for number, op in stores)
             if not work:
                 break
             number, op, as_data = work.pop()
+            if id(op) in relevant and not as_data:
+                continue
             relevant.add(id(op))
             match op:
                 case Set(value=value, frame=frame):
@@ -223,12 +221,12 @@ class Walk:
         self.relevant = relevant
         self.branching = branching
 
-    def _spoiled(self, op: Spoil) -> tuple[int, ...]:
-        """The numbers of the tracked integers that an operation fills."""
-        return tuple(
-            number
-            for number, key in enumerate(self.tracked)
-            if key in op.keys or (key[0] == "member" and key[1] in op.structs)
+    def _filled(self, op: FlatOp) -> frozenset[Key]:
+        """The tracked integers that an operation fills."""
+        if not isinstance(op, Spoil):
+            return NOTHING
+        return frozenset(
+            key for key in self.tracked if key in op.keys or (key[0] == "member" and key[1] in op.structs)
         )
 
     def _uses(self, expr: Expr, frame: str) -> list[Key]:
@@ -274,7 +272,7 @@ class Walk:
             for op in block.ops:
                 if id(op) in self.relevant:
                     made.ops.append(self._op(op))
-                elif isinstance(op, Outside):
+                elif isinstance(op, Outside) and self.moving:
                     made.ops.append(("rest", None, None, None))
             self._end(made, number)
             for target in made.targets:
@@ -336,12 +334,13 @@ class Walk:
             return "set", key if pointer is None else pointer, code, (roles, op.position, op.function)
         if isinstance(op, Touch):
             self.touched.append(op)
-            zero: Code = lambda env: 0  # noqa: E731
-            subscript = self.compiler.expr(op.subscript, op.frame) if op.subscript is not None else zero
+            subscript = self.compiler.expr(op.subscript, op.frame)
             pointer = self.compiler.expr(op.pointer, op.frame) if op.pointer is not None else None
             return "touch", len(self.touched) - 1, subscript, pointer
         if isinstance(op, Spoil):
-            return "spoil", self._spoiled(op), op.value, op.position
+            filled = self._filled(op)
+            numbers = tuple(number for number, key in enumerate(self.tracked) if key in filled)
+            return "spoil", numbers, op.value, op.position
         result = None
         if op.result is not None:
             key, _ = self.compiler.key(op.result, op.frame)
