@@ -164,6 +164,9 @@ class _Cleaner(VendorForms):
             self._same_type(index)
         elif word == "__auto_type":
             self._auto_type(index)
+        elif word == "_Pragma":
+            if self.word(index - 1) not in ("", ";", "{", "}") and self.word(index + 1) == "(":
+                self.blank(index, self.group_end(index + 1))
         elif word == "__label__":
             end = index
             while end < len(self.words) and self.words[end] != ";":

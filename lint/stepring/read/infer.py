@@ -125,9 +125,9 @@ class _Inference:
                 self.votes.add(word, "type")
             elif before != ")" or self.braces == 0:
                 self.votes.add(word, "decoration")
-        elif after in STATEMENT_KEYWORDS - {"sizeof", "_Alignof"} and self.braces and before in (";", "{", "}"):
-            self.votes.add(word, "decoration")
-        elif after == "}" and self.braces and before in (";", "}"):
+        elif (after in STATEMENT_KEYWORDS - {"sizeof", "_Alignof"} and self.braces and before in (";", "{", "}")) or (
+            after == "}" and self.braces and before in (";", "}")
+        ):
             self.votes.add(word, "decoration")
         elif after == "*":
             self._before_star(index, word)

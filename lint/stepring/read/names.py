@@ -36,7 +36,7 @@ _NO_NAMES = TYPE_WORDS | word_set(
 )
 _TAKES_GROUP = word_set(
     "__attribute__ __attribute __declspec _Alignas alignas __asm__ asm __asm typeof __typeof__ __typeof _Atomic __at"
-    " __align typeof_unqual _Static_assert static_assert __using __interrupt _BitInt"
+    " __align typeof_unqual _Static_assert static_assert __using __interrupt _BitInt _Pragma __pragma"
 )
 
 

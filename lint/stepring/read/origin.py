@@ -153,8 +153,9 @@ class OriginFinder:
         if self._by_file is None:
             self._by_file = {}
             for index, (chunk, _) in enumerate(self._chunks):
-                spans: dict[str, tuple[int, int]] = {spelled_file(chunk.file): (chunk.line, chunk.line)}
-                for one in _physical_lines(chunk, chunk.text):
+                home = spelled_file(chunk.file)
+                spans = {home: (chunk.line, chunk.end_line if chunk.end_line >= chunk.line else chunk.line)}
+                for one in _physical_lines(chunk, chunk.text) if "\n#line " in chunk.text else ():
                     low, high = spans.get(one.file, (one.line, one.line))
                     spans[one.file] = (min(low, one.line), max(high, one.line))
                 for name, (low, high) in spans.items():

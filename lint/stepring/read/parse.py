@@ -42,7 +42,7 @@ class Job:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Parsed:
-    """What parsing one job gave: nodes and typeof operands, or the reason why not (with line and column where known)."""
+    """What parsing one job gave: nodes and typeof operands, or the reason why not, with its place where known."""
 
     nodes: tuple[Any, ...] = ()
     typeofs: dict[str, Any] = field(default_factory=dict)

@@ -47,6 +47,7 @@ class _Context:
     scope: Scope
     types: frozenset[str]
     int_bytes: int
+    own: set[Chunk]
     guess: Guess = field(default_factory=Guess)
 
     def declared_words(self, chunk: Chunk) -> frozenset[str]:
@@ -56,7 +57,11 @@ class _Context:
     def key(self, chunk: Chunk) -> tuple[object, ...]:
         uses = chunk.uses
         return (
-            chunk,
+            chunk.text,
+            chunk.file,
+            chunk.line,
+            chunk.column,
+            chunk in self.own,
             uses & self.types,
             self.declared_words(chunk),
             self.int_bytes,
@@ -122,7 +127,7 @@ class Reader:
         scope = file_scope(pieces)
         own = own_chunks(pieces, self._ownership, pre.unit.kind == "preprocessed")
         chunks = needed_chunks(pieces, scope, own)
-        context = _Context(scope, scope.typedefs | _ALWAYS_TYPES, _int_bytes(pre.predefined))
+        context = _Context(scope, scope.typedefs | _ALWAYS_TYPES, _int_bytes(pre.predefined), own)
         mine = [chunk for chunk in chunks if chunk in own]
         if not pre.complete:
             context.guess = self._guess(mine, context)
@@ -168,25 +173,10 @@ class Reader:
             jobs.append(Job(chunk, cleaned, chunk.uses & (context.types | context.guess.types)))
             keys.append(key)
         for job, key, parsed in zip(jobs, keys, parse_all(jobs, self._parser), strict=True):
-            declaration = None if parsed.error else self._declaration(job, parsed)
+            declaration = None if parsed.error else _declaration(job, parsed, job.chunk in context.own)
             done = _Done(job.cleaned, parsed, declaration, job.chunk.uses & context.guess.types)
             self._done[key] = answers[job.chunk] = done
         return answers
-
-    def _declaration(self, job: Job, parsed: Parsed) -> Declaration:
-        chunk = job.chunk
-        digest = hashlib.blake2b(chunk.text.encode("utf-8", "replace"), digest_size=8).hexdigest()
-        names = tuple(dict.fromkeys((*_node_names(parsed.nodes), *chunk.tags)))
-        return Declaration(
-            key=f"{chunk.file}:{chunk.line}:{chunk.column}:{digest}",
-            kind="function" if chunk.kind == "function" else "other",
-            names=names,
-            own=self._ownership.own(chunk.file),
-            start=Position(spelled_file(chunk.file), chunk.line, chunk.column),
-            nodes=parsed.nodes,
-            typeofs=parsed.typeofs,
-            attributes=job.cleaned.attributes,
-        )
 
     def _unit(
         self,
@@ -228,6 +218,22 @@ class Reader:
             marked_falls=frozenset(falls),
             notices=tuple(notices),
         )
+
+
+def _declaration(job: Job, parsed: Parsed, own: bool) -> Declaration:
+    chunk = job.chunk
+    digest = hashlib.blake2b(chunk.text.encode("utf-8", "replace"), digest_size=8).hexdigest()
+    names = tuple(dict.fromkeys((*_node_names(parsed.nodes), *chunk.tags)))
+    return Declaration(
+        key=f"{chunk.file}:{chunk.line}:{chunk.column}:{digest}",
+        kind="function" if chunk.kind == "function" else "other",
+        names=names,
+        own=own,
+        start=Position(spelled_file(chunk.file), chunk.line, chunk.column),
+        nodes=parsed.nodes,
+        typeofs=parsed.typeofs,
+        attributes=job.cleaned.attributes,
+    )
 
 
 def _node_names(nodes: Iterable[Any]) -> list[str]:

@@ -154,6 +154,7 @@ DROPPED: dict[str, str] = {
     "__bank": "",
     "__rom": "flash",
     "__declspec": "",
+    "__pragma": "",
     "_far": "",
     "_near": "",
     "_interrupt": "interrupt",
@@ -162,7 +163,7 @@ DROPPED: dict[str, str] = {
 """Words that are left out; the value is the attribute word they stand for, if any."""
 
 TAKES_GROUP = word_set(
-    "__swi __svc __interrupt __interrupt__ __using __at __align __aligned __section __bank __declspec __ISR"
+    "__swi __svc __interrupt __interrupt__ __using __at __align __aligned __section __bank __declspec __ISR __pragma"
     " __persistent __sfr __sbit __sfr16 __sfr32"
 )
 """Dropped words whose parenthesised operand (or bare number) goes with them."""
@@ -261,7 +262,7 @@ HANDLED = (
     | ALIGNOF
     | VA_ARG
     | INTERRUPT_MACROS
-    | frozenset({"__auto_type", "__attribute__", "__attribute", "__label__", "__builtin_types_compatible_p", "_at_"})
+    | word_set("__auto_type __attribute__ __attribute __label__ __builtin_types_compatible_p _at_ _Pragma")
 )
 SPECIAL = frozenset(RENAMED) | frozenset(RENAMED_C23) | frozenset(DROPPED) | frozenset(BY_POSITION) | HANDLED
 
