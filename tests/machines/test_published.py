@@ -11,10 +11,10 @@ from collections import Counter
 
 import networkx
 import pytest
+from tests.marks import DATA
 
 from stepring.pipeline import Options, inspect
 from stepring.shapes.types import Machine, Transition
-from tests.marks import DATA
 
 FORMS = DATA / "published"
 
@@ -40,8 +40,7 @@ def spelled(prefix: str, name: str) -> str:
 # ---------------------------------------------------------------------------------------------------------- the TAP
 
 TAP = sorted(
-    (spelled("TAP_", row["state"]), int(row["tms"]), spelled("TAP_", row["next_state"]))
-    for row in rows("jtag_tap.tsv")
+    (spelled("TAP_", row["state"]), int(row["tms"]), spelled("TAP_", row["next_state"])) for row in rows("jtag_tap.tsv")
 )
 
 
@@ -144,8 +143,13 @@ def test_events_that_a_state_excludes(lcp: Machine) -> None:
     assert excluded == [13, 13, 3, 3, 1, 1, 1, 1, 1, 3]
     by_event = Counter(event(step) for step in lcp.transitions)
     assert {name: 10 - count for name, count in by_event.items() if count < 10} == {
-        **dict.fromkeys("RCR_PLUS RCR_MINUS RCA RCN RTR RTA RUC RXJ_PLUS RXJ_MINUS RXR".split(), 2),
-        **{"UP": 8, "DOWN": 2, "TO_PLUS": 5, "TO_MINUS": 5},
+        **dict.fromkeys(
+            ["RCR_PLUS", "RCR_MINUS", "RCA", "RCN", "RTR", "RTA", "RUC", "RXJ_PLUS", "RXJ_MINUS", "RXR"], 2
+        ),
+        "UP": 8,
+        "DOWN": 2,
+        "TO_PLUS": 5,
+        "TO_MINUS": 5,
     }
 
 
