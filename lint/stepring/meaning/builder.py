@@ -4,6 +4,7 @@ Lowering functions take a ``Work`` as their first argument and append to its cur
 is still lowered (it may hold labels), into a block that nothing jumps to.
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -81,6 +82,9 @@ class Work:
     dead_blocks: set[int] = field(default_factory=set)
     temporaries: int = 0
     effects: dict[int, bool] = field(default_factory=dict)
+    # Names whose address is taken somewhere in the function: a call or a store through a pointer can change them.
+    addressed: frozenset[str] = frozenset()
+    stored: dict[int, frozenset[str]] = field(default_factory=dict)
     at: Position = field(default_factory=lambda: Position("", 0))
     notices: list[Notice] = field(default_factory=list)
 
@@ -157,14 +161,19 @@ def saved(work: Work, expr: Expr, at: Position | None = None) -> Expr:
     return Load(place, expr.type)
 
 
-def reads_memory(expr: Expr) -> bool:
-    """Whether an expression's value depends on memory that a statement could change (temporaries are written once)."""
+def reads_memory(expr: Expr, steady: Callable[[Variable], bool] = lambda variable: False) -> bool:
+    """Whether an expression's value depends on memory that a statement could change.
+
+    Temporaries are written once; ``steady`` says of which other variables it is known that they stay.
+    """
     stack: list[Any] = [expr]
     while stack:
         node = stack.pop()
         if isinstance(node, Load):
             place = node.place
-            if not (isinstance(place, VariablePlace) and place.variable.storage == "temporary"):
+            if not isinstance(place, VariablePlace):
+                return True
+            if place.variable.storage != "temporary" and not steady(place.variable):
                 return True
         for name in ("operand", "left", "right", "pointer", "steps", "index", "base", "place"):
             child = getattr(node, name, None)

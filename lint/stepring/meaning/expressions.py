@@ -17,6 +17,7 @@ from stepring.meaning.builder import (
     int_type,
     jump,
     new_block,
+    reads_memory,
     resume,
     saved,
     temporary,
@@ -244,7 +245,7 @@ def place(work: Work, node: Any) -> PlaceExpr | None:
                         work, PointerStep(other, pointer, other.type, position(subscript, work.at)), position(node)
                     )
             if has_effects(work, subscript):
-                pointer = saved(work, pointer)
+                pointer = kept(work, pointer, subscript)
             index = arithmetic(work, value(work, subscript))
             whole = pointer.type if isinstance(pointer.type, PointerType) else _pointer(work, int_type(work))
             return deref(
@@ -428,7 +429,7 @@ def _binary(work: Work, node: Any) -> Expr:
         return _logical(work, node)
     left = value(work, node.left)
     if has_effects(work, node.right):
-        left = saved(work, left)
+        left = kept(work, left, node.right)
     right = value(work, node.right)
     return binary(work, node.op, left, right, position(node, work.at))
 
@@ -597,7 +598,7 @@ def assignment(work: Work, node: Any, *, wanted: bool) -> Expr:
         emit(work, Clobber((), "a store that could not be resolved", at))
         return result
     if has_effects(work, node.rvalue):
-        target = settled(work, target)
+        target = settled(work, target, node.rvalue)
     if node.op == "=":
         new = value(work, node.rvalue)
     else:
@@ -634,21 +635,77 @@ def _volatile(where: PlaceExpr) -> bool:
                 return False
 
 
-def settled(work: Work, where: PlaceExpr) -> PlaceExpr:
-    """The same place, with the values that lead to it saved from later side effects."""
+def settled(work: Work, where: PlaceExpr, *later: Any) -> PlaceExpr:
+    """The same place, with the values that lead to it kept from what the nodes evaluated later do."""
     match where:
         case MemberPlace(base=base, struct=struct, name=name, type=type_, volatile=volatile):
-            return MemberPlace(settled(work, base), struct, name, type_, volatile)
+            return MemberPlace(settled(work, base, *later), struct, name, type_, volatile)
         case ElementPlace(base=base, index=index, type=type_, position=at):
-            return ElementPlace(settled(work, base), saved(work, index), type_, at)
+            return ElementPlace(settled(work, base, *later), kept(work, index, *later), type_, at)
         case DerefPlace(
             pointer=PointerStep(pointer=pointer, steps=steps, type=step_type, position=step_at), type=type_, position=at
         ):
-            moved = PointerStep(saved(work, pointer), saved(work, steps), step_type, step_at)
+            moved = PointerStep(kept(work, pointer, *later), kept(work, steps, *later), step_type, step_at)
             return DerefPlace(moved, type_, at)
         case DerefPlace(pointer=pointer, type=type_, position=at):
-            return DerefPlace(saved(work, pointer), type_, at)
+            return DerefPlace(kept(work, pointer, *later), type_, at)
     return where
+
+
+def kept(work: Work, expr: Expr, *later: Any) -> Expr:
+    """A value kept from what the nodes evaluated later do: saved where they could change it.
+
+    The address of a place stays the address of that place, so that ``q->slots[q->head++]`` is still an element of the
+    member ``slots``.
+    """
+    if isinstance(expr, AddressOf):
+        return AddressOf(settled(work, expr.place, *later), expr.type)
+    changed = frozenset[str]().union(*(_stored(work, node) for node in later))
+
+    def steady(variable: Variable) -> bool:
+        return (
+            variable.storage in ("automatic", "parameter")
+            and not variable.volatile
+            and isinstance(variable.type, IntType | FloatType | PointerType)
+            and variable.name not in work.addressed
+            and variable.name not in changed
+        )
+
+    return saved(work, expr) if reads_memory(expr, steady) else expr
+
+
+def _stored(work: Work, node: Any) -> frozenset[str]:
+    """The names that evaluating a node stores into directly."""
+    known = work.stored.get(id(node))
+    if known is None:
+        names: set[str] = set()
+        stack = [node]
+        while stack:
+            item = stack.pop()
+            targets: list[Any] = []
+            if isinstance(item, c_ast.Assignment):
+                targets = [item.lvalue]
+            elif isinstance(item, c_ast.UnaryOp) and item.op in ("++", "--", "p++", "p--"):
+                targets = [item.expr]
+            elif isinstance(item, c_ast.FuncCall) and item.args is not None:
+                if getattr(item.name, "name", "").startswith("__stepring_"):
+                    targets = item.args.exprs
+            names.update(target.name for target in targets if isinstance(target, c_ast.ID))
+            stack.extend(child for child in item if child is not None)
+        known = work.stored[id(node)] = frozenset(names)
+    return known
+
+
+def addressed_names(body: Any) -> frozenset[str]:
+    """The names whose address is taken with ``&`` somewhere in a function's body."""
+    names: set[str] = set()
+    stack = [body]
+    while stack:
+        item = stack.pop()
+        if isinstance(item, c_ast.UnaryOp) and item.op == "&" and isinstance(item.expr, c_ast.ID):
+            names.add(item.expr.name)
+        stack.extend(child for child in item if child is not None)
+    return frozenset(names)
 
 
 def step(work: Work, node: Any, *, wanted: bool) -> Expr:
@@ -686,9 +743,8 @@ def call(work: Work, node: Any, *, wanted: bool) -> Expr:
     type_ = callee.type.to if isinstance(callee.type, PointerType) else callee.type
     if not isinstance(type_, FunctionType):
         type_ = FunctionType(int_type(work), None)
-    later = [any(has_effects(work, other) for other in arguments[index + 1 :]) for index in range(len(arguments))]
-    if later and any(has_effects(work, item) for item in arguments):
-        callee = saved(work, callee) if not isinstance(callee, FunctionName) else callee
+    if any(has_effects(work, item) for item in arguments):
+        callee = kept(work, callee, *arguments)
     values: list[Expr] = []
     for index, item in enumerate(arguments):
         argument = value(work, item)
@@ -698,7 +754,8 @@ def call(work: Work, node: Any, *, wanted: bool) -> Expr:
             argument = arithmetic(work, argument)
         elif isinstance(argument.type, FloatType) and argument.type.name == "float":
             argument = converted(work, argument, FloatType("double", work.model.double))
-        values.append(saved(work, argument) if later[index] else argument)
+        later = arguments[index + 1 :]
+        values.append(kept(work, argument, *later) if any(has_effects(work, other) for other in later) else argument)
     returns = type_.returns
     result = temporary(work, returns) if wanted and not isinstance(returns, VoidType) else None
     emit(work, Call(callee, tuple(values), result, at))

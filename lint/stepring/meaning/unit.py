@@ -11,7 +11,7 @@ from pycparser import c_ast
 
 from stepring.meaning.builder import OpenBlock, Work, close, int_type, successors
 from stepring.meaning.constants import element_type, text
-from stepring.meaning.expressions import place, value
+from stepring.meaning.expressions import addressed_names, place, value
 from stepring.meaning.initial import declare_static, initial_length, initialise
 from stepring.meaning.models import integer
 from stepring.meaning.scope import (
@@ -187,7 +187,7 @@ def lower_function(scope: Scope, node: Any, declaration: Declaration) -> tuple[F
     assert isinstance(symbol, FunctionSymbol)
     type_: FunctionType = symbol.type
     top = Scope(scope.file, scope, {}, {}, declaration.typeofs, scope.evaluator)
-    work = Work(top, name, at.file, type_.returns, at=at)
+    work = Work(top, name, at.file, type_.returns, at=at, addressed=addressed_names(node.body))
     work.blocks.append(OpenBlock())
     work.reached.add(0)
     parameters = _parameters(work, node, type_)
