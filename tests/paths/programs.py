@@ -112,7 +112,7 @@ def _globals(make: Maker) -> list[str]:
 def _leaf(make: Maker) -> str:
     draw = make.draw
     if draw.random() < 0.2 or not make.readable:
-        return draw.choice(("0", "1", "3", "7u", "-2", "100", "0x1fu", "255", "5L", "'A'", "1000"))
+        return draw.choice(("0", "1", "3", "7u", "(-2)", "100", "0x1fu", "255", "5L", "'A'", "1000"))
     return _place(make, draw.choice(make.readable))
 
 

@@ -276,6 +276,8 @@ class Memory:
                         raise KeyError(f"{path!r} goes through a pointer that points to nothing known")
                     cells, offset, where = pointer[0], pointer[1], where.to
                 elif isinstance(where, ArrayType):
+                    if where.length is not None and index >= where.length:
+                        raise KeyError(f"{path!r} leaves an array of {where.length} elements")
                     where = where.element
                 else:
                     raise KeyError(f"{path!r} subscripts what is no array")
@@ -297,7 +299,7 @@ class Memory:
         return self.cells[number], self.program.statics[number].variable.type
 
 
-_START = re.compile(r"[^.\[\]>-]*(?:\.[ch]\b[^.\[\]>-]*)*")
+_START = re.compile(r"(?:.*:)?\w*(?:@[\d.]+)?")
 _STEP = re.compile(r"\[(\d+)\]|(\.|->)(\w+)")
 
 
