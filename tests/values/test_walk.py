@@ -10,8 +10,8 @@ from hypothesis import strategies as st
 from tests.support import lower_text
 
 from stepring.meaning.types import Function, StructType, TypedUnit
-from stepring.values.intervals import constant, contains
 from stepring.values.callees import resolver
+from stepring.values.intervals import constant, contains
 from stepring.values.spots import Exposure
 from stepring.values.surroundings import Surroundings
 from stepring.values.types import Cell, FieldCell, Interval, VariableCell

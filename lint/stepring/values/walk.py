@@ -19,6 +19,7 @@ from stepring.meaning.types import (
     Branch,
     Call,
     Cast,
+    Clobber,
     DerefPlace,
     ElementPlace,
     Expr,
@@ -44,7 +45,7 @@ from stepring.values.scan import expressions_of, inside_place, parts_of, places_
 from stepring.values.spots import Spot
 from stepring.values.states import State, View, read_spot
 from stepring.values.surroundings import Effect, Surroundings
-from stepring.values.types import Cell, Interval
+from stepring.values.types import Cell, FieldCell, Interval
 
 EventKind = Literal["store", "access", "branch", "call", "return"]
 Ending = Literal["returned", "stopped", "bounded", "cut"]
@@ -115,14 +116,15 @@ class _Activation:
 
 @dataclass(slots=True, eq=False)
 class _Path:
-    """One path so far. ``disturbed`` is None once unknown code may have changed every cell."""
+    """One path so far. ``disturbed`` are the cells that it stored into and what their spots share with others that may be
+    the same; None once anything may have been changed."""
 
     state: State
     activations: list[_Activation]
     taints: dict[Spot, frozenset[Cell]] = field(default_factory=dict)
     visits: dict[tuple[int, int], int] = field(default_factory=dict)
     events: _Chain | None = None
-    disturbed: set[Cell] | None = field(default_factory=set)
+    disturbed: set[object] | None = field(default_factory=set)
 
     def copy(self, state: State) -> "_Path":
         return _Path(
@@ -176,7 +178,7 @@ class _Walker:
             if spot.cell is None or not (spot.tracked and spot.definite) or spot in path.state.values:
                 continue
             value = self.start.get(spot.cell)
-            if value is not None and spot.cell not in path.disturbed:
+            if value is not None and path.disturbed.isdisjoint((spot.cell, *spot.buckets)):
                 path.state.values[spot] = value
 
     def finish(self, path: _Path, returned: Interval | None, ended: Ending) -> Walk:
@@ -275,6 +277,8 @@ class _Walker:
             self.accesses(path, here, expression)
         if not isinstance(statement, Assign):
             self.engine.execute(view, statement, (), None)
+            if isinstance(statement, Clobber):
+                self.upset(path)
             return True
         depends = self.taint(path, here.frame, statement.value)
         value = view.evaluate(statement.value) if number_type(statement.place.type) is not None else None
@@ -282,6 +286,8 @@ class _Walker:
         self.engine.assign(view, statement)
         spot = here.frame.spot(statement.place)
         self.changed(path, spot, depends)
+        if number_type(statement.place.type) is None:
+            self.upset(path)
         event = Event("store", name, depth, statement.position, statement.place, spot.cell, value, depends)
         self.say(path, event)
         return True
@@ -293,9 +299,7 @@ class _Walker:
             if depends - self.taint_of(path, other):
                 path.taints[other] = depends | self.taint_of(path, other)
         if path.disturbed is not None:
-            for one in (spot, *self.places.aliases(spot)):
-                if one.cell is not None:
-                    path.disturbed.add(one.cell)
+            path.disturbed.update((spot.cell, *spot.buckets))
 
     def call(self, path: _Path, here: _Activation, call: Call) -> bool:
         """A call: a callee's body is walked through, other code has its effect."""
@@ -318,11 +322,11 @@ class _Walker:
         comes_back = self.engine.call_apart(view, call, None)
         path.state = view.state
         effect = self.engine.surroundings.effects(name, here.frame.function) if name is not None else None
-        if effect is not None and not effect.outward:
+        contract = CONTRACTS.get(name) if name is not None and effect is None else None
+        if effect is not None and not effect.outward and not effect.through_pointers:
             self.affected(path, effect)
-        elif effect is not None or name not in CONTRACTS:
-            path.disturbed = None
-            self.fresh(path, lambda spot: not spot.private)
+        elif contract is None or contract.writes or contract.onward is not None:
+            self.upset(path)
         value = view.read(call.result) if call.result is not None and number_type(call.result.type) else None
         if call.result is not None:
             path.taints[here.frame.spot(call.result)] = NOTHING
@@ -331,11 +335,18 @@ class _Walker:
         )
         return comes_back
 
+    def upset(self, path: _Path) -> None:
+        """Anything that lasts may have been changed."""
+        path.disturbed = None
+        self.fresh(path, lambda spot: not spot.private)
+
     def affected(self, path: _Path, effect: Effect) -> None:
         """A callee that was not walked through stored into some cells."""
         for cell in effect.writes:
             if path.disturbed is not None:
                 path.disturbed.add(cell)
+                if isinstance(cell, FieldCell):
+                    path.disturbed.add(("member", cell.struct, *cell.path))
         written = {spot for cell in effect.writes for spot in self.places.of_cell(cell)}
         self.fresh(path, written.__contains__)
 
