@@ -10,15 +10,16 @@ from pycparser import CParser, c_ast
 
 from stepring.read.carve import Chunk, Piece, carve, marker_file
 from stepring.read.dialect import clean_whole_unit
+from stepring.read.kept import Kept
 from stepring.read.names import declared_names
 
 
 def chunks_of(text: str) -> list[Chunk]:
-    return [chunk for piece in carve(text, "/barge/a.c", {}) for chunk in piece.chunks]
+    return [chunk for piece in carve(text, "/barge/a.c", Kept(1 << 20)) for chunk in piece.chunks]
 
 
 def notices_of(text: str) -> list[str]:
-    return [notice.kind for piece in carve(text, "/barge/a.c", {}) for notice in piece.notices]
+    return [notice.kind for piece in carve(text, "/barge/a.c", Kept(1 << 20)) for notice in piece.notices]
 
 
 def test_each_declaration_is_one_chunk_at_its_place() -> None:
@@ -122,7 +123,7 @@ def test_declared_names(text: str, names: str, tags: str, typedefs: str, variabl
 
 def test_macros_are_collected_with_their_places() -> None:
     text = "#define A 1\n#define F(x, ...) g(x, __VA_ARGS__)\n#undef A\nint f(void)\n{\n#define A 2\n  return A;\n}\n"
-    [piece] = carve(text, "/barge/a.c", {})
+    [piece] = carve(text, "/barge/a.c", Kept(1 << 20))
     assert [(change.line, change.macro and change.macro.body) for change in piece.changes["A"]] == [
         (1, "1"),
         (3, None),
@@ -137,7 +138,7 @@ def test_macros_are_collected_with_their_places() -> None:
 
 def test_headers_are_carved_once() -> None:
     header = '# 1 "/barge/a.h" 1\nint shared(int);\n'
-    pieces: dict[str, Piece] = {}
+    pieces: Kept[str, Piece] = Kept(1 << 20)
     first = carve(f'# 1 "/barge/a.c"\n{header}# 2 "/barge/a.c" 2\nint a;\n', "/barge/a.c", pieces)
     second = carve(f'# 1 "/barge/b.c"\n{header}# 2 "/barge/b.c" 2\nint b;\n', "/barge/b.c", pieces)
     shared = [chunk for piece in first for chunk in piece.chunks if chunk.names == ("shared",)]
@@ -186,7 +187,7 @@ def test_bad_text_costs_only_itself(bad: str, kind: str | None) -> None:
 
 
 def test_notices_name_the_line() -> None:
-    pieces = carve("int a;\n\nint bad(void) {\n  x\n\nint good(void)\n{ return 1; }\n", "/barge/a.c", {})
+    pieces = carve("int a;\n\nint bad(void) {\n  x\n\nint good(void)\n{ return 1; }\n", "/barge/a.c", Kept(1 << 20))
     [notice] = [notice for piece in pieces for notice in piece.notices]
     assert (notice.file, notice.line) == ("/barge/a.c", 3)
 

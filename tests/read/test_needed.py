@@ -3,6 +3,7 @@
 from pathlib import Path
 
 from stepring.read.carve import carve
+from stepring.read.kept import Kept
 from stepring.read.needed import Ownership, file_scope, needed_chunks, own_chunks
 
 UNIT = """\
@@ -36,7 +37,7 @@ int run(void)
 
 
 def names(text: str, root: str, foreign: bool = False) -> set[str]:
-    pieces = carve(text, "/barge/auger.c", {})
+    pieces = carve(text, "/barge/auger.c", Kept(1 << 20))
     own = own_chunks(pieces, Ownership(Path(root)), foreign)
     chunks = needed_chunks(pieces, file_scope(pieces), own)
     places = [(chunk.file, chunk.line) for chunk in chunks]
@@ -68,6 +69,6 @@ def test_members_do_not_pull_in_functions_of_their_name() -> None:
 def test_every_declaration_of_a_name_is_kept() -> None:
     header = '# 1 "/usr/x.h" 1\nint f(int);\nint f(int) __attribute__((pure));\n'
     text = header + '# 1 "/barge/a.c" 2\nint g(void) { return f(1); }\n'
-    pieces = carve(text, "/barge/a.c", {})
+    pieces = carve(text, "/barge/a.c", Kept(1 << 20))
     own = own_chunks(pieces, Ownership(Path("/barge")), False)
     assert [chunk.line for chunk in needed_chunks(pieces, file_scope(pieces), own)] == [1, 2, 1]

@@ -9,12 +9,13 @@ from pycparser import c_ast
 
 from stepring.read.carve import Chunk, carve
 from stepring.read.dialect import clean
+from stepring.read.kept import Kept
 from stepring.read.parse import Job, Parsed, parse_all, place_of_offset
 
 
 def jobs_of(text: str, types: str = "") -> list[Job]:
     known = frozenset(types.split())
-    chunks = [chunk for piece in carve(text, "/barge/a.c", {}) for chunk in piece.chunks]
+    chunks = [chunk for piece in carve(text, "/barge/a.c", Kept(1 << 20)) for chunk in piece.chunks]
     return [Job(chunk, clean(chunk.text), chunk.uses & known) for chunk in chunks]
 
 

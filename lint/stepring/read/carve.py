@@ -20,6 +20,7 @@ from functools import cache
 from typing import Literal
 
 from stepring.places import Notice
+from stepring.read.kept import Kept
 from stepring.read.names import Declared, declared_names, identifiers
 from stepring.read.types import Macro
 
@@ -145,8 +146,8 @@ def spelled_file(name: str) -> str:
     return name.replace("\\", "/").replace('"', "'").replace("\n", " ")
 
 
-def carve(text: str, source: str, pieces: dict[str, Piece]) -> list[Piece]:
-    """Split preprocessed text into carved pieces, in order; ``pieces`` is the cache of the run, keyed by text.
+def carve(text: str, source: str, pieces: Kept[str, Piece]) -> list[Piece]:
+    """Split preprocessed text into carved pieces, in order; ``pieces`` holds those of the run, by text.
 
     ``source`` names the file of text before the first line marker.
     """
@@ -159,13 +160,13 @@ def carve(text: str, source: str, pieces: dict[str, Piece]) -> list[Piece]:
         taken = 1
         if piece is None:
             piece = _carve_piece(here, source)
-            pieces[here] = piece
+            pieces.put(here, piece, len(here))
         while piece.open and at + taken < len(texts):
             # a declaration goes on past an #include: take twice as much, so that the work stays linear
             taken = min(taken * 2, len(texts) - at)
             here = "".join(texts[at : at + taken])
             piece = pieces.get(here) or _carve_piece(here, source)
-            pieces[here] = piece
+            pieces.put(here, piece, len(here))
         if piece.open:
             piece = _carve_piece(here, source, last=True)
         carved.append(piece)

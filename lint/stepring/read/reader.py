@@ -19,6 +19,7 @@ from stepring.read.assembler import lift_assembler
 from stepring.read.carve import Chunk, Piece, carve, spelled_file
 from stepring.read.dialect import clean
 from stepring.read.infer import Guess, Votes, infer
+from stepring.read.kept import Kept
 from stepring.read.needed import Ownership, Scope, file_scope, needed_chunks, own_chunks
 from stepring.read.origin import OriginFinder
 from stepring.read.parse import Job, Parsed, parse_all, place_of_offset
@@ -27,6 +28,9 @@ from stepring.read.source import SourceFiles
 from stepring.read.types import Declaration, FunctionPlace, Macro, Preprocessed, ReadUnit
 from stepring.read.words import SPECIAL
 
+_PIECE_BYTES = 48_000_000
+_TREE_BYTES = 12_000_000
+"""Bytes of text whose pieces, and whose trees (some fifty times as large), are held for units to come."""
 _ALWAYS_TYPES = frozenset({"__builtin_va_list"})
 
 
@@ -109,8 +113,8 @@ class Reader:
     def __init__(self, root: Path) -> None:
         self.root = root
         self._ownership = Ownership(root)
-        self._pieces: dict[str, Piece] = {}
-        self._done: dict[tuple[object, ...], _Done] = {}
+        self._pieces: Kept[str, Piece] = Kept(_PIECE_BYTES)
+        self._done: Kept[tuple[object, ...], _Done] = Kept(_TREE_BYTES)
         self._sources = SourceFiles()
         self._parser = CParser()
 
@@ -175,7 +179,8 @@ class Reader:
         for job, key, parsed in zip(jobs, keys, parse_all(jobs, self._parser), strict=True):
             declaration = None if parsed.error else _declaration(job, parsed, job.chunk in context.own)
             done = _Done(job.cleaned, parsed, declaration, job.chunk.uses & context.guess.types)
-            self._done[key] = answers[job.chunk] = done
+            self._done.put(key, done, len(job.chunk.text))
+            answers[job.chunk] = done
         return answers
 
     def _unit(

@@ -26,9 +26,10 @@ _FALL_PART = re.compile(
     r'"(?:[^"\\\n]|\\.)*"|\'(?:[^\'\\\n]|\\.)*\'|(/\*(?:[^*]|\*(?!/))*(?:\*/)?|//[^\n]*)|([A-Za-z_]\w*)'
 )
 _FALL_COMMENT = re.compile(
-    r"\bfall(?:s|ing|en)?\b[\s\-_*]*(?:\w+[\s\-_*]+){0,3}?(?:through|thru|into|throu|down|over|to)\b"
-    r"|\bfall(?:s)?(?:through|thru)\b|\bno\s+break\b|\b(?:intentional|deliberate)(?:ly)?\b.{0,20}\bbreak\b"
-    r"|\bbreak\b.{0,30}\b(?:omitted|left out|missing)\b|\bpass(?:es)?[\s-]+through\b|\bdrop[\s-]+through\b",
+    r"\bfall(?:s|ing|en)?\b[\s\-_*]*(?:\w+[\s\-_*]+){0,3}?(?:through|thru|throu|into)\b|\bfalls?(?:through|thru)\b"
+    r"|\b(?:fall|continue|run)s?\b[\s*]+(?:\w+[\s*]+){0,2}?(?:in)?to\b[\s*]+(?:\w+[\s*]+){0,2}?(?:next|default|case)\b"
+    r"|\bno\s+break\b|\b(?:intentional|deliberate)(?:ly)?\b.{0,20}\bbreak\b|\bdrop(?:s|ping)?[\s-]+through\b"
+    r"|\bbreak\b.{0,30}\b(?:omitted|left out|missing)\b",
     re.IGNORECASE | re.DOTALL,
 )
 _FALL_WORD = re.compile(r"(?:\A|_)fall_?thr(?:ough|u)(?:\Z|_)", re.IGNORECASE)
