@@ -64,6 +64,7 @@ class Catalogue:
     entered: list[FlatFacts]
     writers: dict[str, frozenset[Key]]
     structs: Mapping[str, StructLayout]
+    written: set[Key] = field(default_factory=set)
 
 
 @dataclass(frozen=True, slots=True)
@@ -151,6 +152,8 @@ def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, K
         for reset in found.resets:
             moves.resets.setdefault(reset.position, reset)
         moves.copies.update(found.copies)
+    merged.written.update(touch.storage for touch in facts.plain if touch.kind == "store")
+    merged.written.update(use.touch.storage for use in facts.uses if use.touch.kind == "store")
     for use in facts.uses:
         touch = use.touch
         merged.elements.setdefault(touch.storage, touch)
@@ -226,8 +229,8 @@ def candidates(merged: Catalogue) -> Iterator[Candidate]:
         if storage in merged.constant or not uses:
             continue
         capacity = merged.lengths.get(storage) if storage[-1] != "*" else None
-        if capacity is not None and capacity < 2:
-            continue
+        if capacity is not None and capacity < 2 and _open_ended(merged, storage):
+            capacity = None
         found = _candidate(merged, storage, uses, capacity)
         if found is not None:
             yield found
@@ -246,7 +249,7 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
     if not indices and not followers:
         return None
     stores = {key for use in uses if use.touch.kind != "load" for key in use.cells}
-    if not any(key in stores for key in (*indices, *followers)):
+    if not any(key in stores for key in (*indices, *followers)) and not _from_hardware(merged, storage):
         return None
     if all(_linear(merged, key, uses) for key in indices) and not followers:
         return None
@@ -257,6 +260,18 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
     if not indices and not followers:
         return None
     return Candidate(storage, capacity, (*indices, *followers), tuple(counts))
+
+
+def _open_ended(merged: Catalogue, storage: Key) -> bool:
+    """Whether a member array of one element stands for as many as the allocation has room for: it comes last."""
+    layout = merged.structs.get(storage[1]) if storage[0] == "member" else None
+    return layout is not None and bool(layout.fields) and layout.fields[-1].name == storage[2]
+
+
+def _from_hardware(merged: Catalogue, storage: Key) -> bool:
+    """Whether an array of one file is never stored into by code, nor given a value: hardware fills it."""
+    item = merged.objects.get(storage[:2])
+    return not (item is None or item.initial or item.variable.storage == "global" or storage in merged.written)
 
 
 def is_index(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:

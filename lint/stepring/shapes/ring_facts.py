@@ -24,6 +24,7 @@ from stepring.meaning.types import (
     IntType,
     Load,
     Unary,
+    UnknownType,
     VariablePlace,
 )
 from stepring.places import Position
@@ -213,12 +214,13 @@ def _spread(sight: _Sight) -> None:
     stored: dict[Key, None] = {}
     for number, block in enumerate(flat.blocks):
         for op in block.ops:
-            if isinstance(op, Set) and isinstance(op.place.type, IntType):
+            if isinstance(op, Set) and isinstance(op.place.type, IntType | UnknownType):
                 for key in place_keys(op.place, op.place_frame, flat.points):
                     sight.sets[key].append((number, op))
                     if not is_local(key):
                         stored[key] = None
-                        sight.types[key] = op.place.type
+                        if isinstance(op.place.type, IntType):
+                            sight.types[key] = op.place.type
     sight.stored = list(stored)
     pending = True
     while pending:
@@ -237,10 +239,10 @@ def _spread(sight: _Sight) -> None:
 def sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
     """The lasting integers that a value is made of by copying, adding or reducing."""
     match expr:
-        case Load(place=place, type=IntType() as type_):
+        case Load(place=place, type=IntType() | UnknownType() as type_):
             found: frozenset[Key] = NOTHING
             for key in place_keys(place, frame, sight.flat.points):
-                if not is_local(key):
+                if not is_local(key) and isinstance(type_, IntType):
                     sight.types.setdefault(key, type_)
                 found |= sight.sources.get(key, NOTHING) if is_local(key) else frozenset((key,))
             return found

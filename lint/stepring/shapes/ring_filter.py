@@ -34,6 +34,7 @@ from stepring.meaning.types import (
     StructType,
     Switch,
     Unary,
+    UnknownType,
     Variable,
     VariablePlace,
 )
@@ -72,8 +73,13 @@ def ring_functions(functions: Sequence[Function]) -> tuple[Function, ...]:
         subscripts |= scan.subscripts
         moved |= scan.moved
     # A member, or a variable with external linkage, may be moved in another unit.
-    indices = {name for name in subscripts if name in moved or name[0] == "member" or ":" not in name[1]}
+    indices = {
+        name for name in subscripts if name in moved or name[0] == "member" or (name[0] == "var" and ":" not in name[1])
+    }
     indices |= {name for scan in scans for name in scan.wrapped}
+    # A helper that moves an index and gives the slot: what subscripts with its result is part of the ring.
+    indices |= {("call", function.name) for function, scan in zip(functions, scans, strict=True) if scan.moved}
+    moved |= {name for name in indices if name[0] == "call"}
     kept = {
         number
         for number, scan in enumerate(scans)
@@ -169,7 +175,7 @@ def _assign(look: _Look, place: PlaceExpr, value: Expr) -> None:
         return
     if isinstance(place.type, StructType):
         look.scan.structs.add(place.type.identity)
-    if not isinstance(place.type, IntType):
+    if not isinstance(place.type, IntType | UnknownType):
         return
     name = _name(place)
     if name is None:
@@ -213,11 +219,14 @@ def _call(look: _Look, call: Call) -> None:
         if isinstance(inner, AddressOf) and isinstance(inner.place.type, IntType):
             name = _name(inner.place)
             if name is not None:
+                made_of.add(name)
                 look.scan.stored.add(name)
                 look.scan.moved.add(name)
         to = inner.type.to if isinstance(inner.type, PointerType) else None
         if isinstance(to, StructType) and isinstance(call.callee, FunctionName) and "mem" in call.callee.name:
             look.scan.structs.add(to.identity)
+    if isinstance(call.callee, FunctionName):
+        made_of.add(("call", call.callee.name))
     if call.result is not None:
         _place(look, call.result)
         if isinstance(call.result, VariablePlace) and not call.result.variable.lasting and made_of:
@@ -271,7 +280,7 @@ def _sources(look: _Look, expr: Expr) -> Iterator[_Name]:
     match expr:
         case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
             yield from look.made_of.get(variable.identity, ())
-        case Load(place=place, type=IntType()):
+        case Load(place=place, type=IntType() | UnknownType()):
             name = _name(place)
             if name is not None:
                 yield name

@@ -234,6 +234,10 @@ def _called(
 ) -> FlatBlock:
     """A call: the callee's blocks and a block to come back to, or an ``Outside``."""
     name = call.callee.name if isinstance(call.callee, FunctionName) else ""
+    atomic = _atomic(call, name, frame, function.name)
+    if atomic is not None:
+        current.ops.extend(atomic)
+        return current
     body = layout.resolve(function, name) if name else None
     if body is not None and (
         body.identity in stack
@@ -265,6 +269,26 @@ def _called(
             Set(VariablePlace(_ARGUMENT), frame, argument, frame, call.position, function.name)
         )  # keeps the argument's own subscripts in sight
     return current
+
+
+def _atomic(call: Call, name: str, frame: str, function: str) -> list[FlatOp] | None:
+    """The generic functions of ``<stdatomic.h>`` (7.17.7) and the compilers' own of that kind, as loads and stores."""
+    plain = name.removeprefix("__c11_").removeprefix("__").removesuffix("_explicit").removesuffix("_n")
+    if plain not in ("atomic_load", "atomic_store") or not call.arguments:
+        return None
+    pointer = call.arguments[0]
+    while isinstance(pointer, Cast):
+        pointer = pointer.operand
+    if not isinstance(pointer.type, PointerType):
+        return None
+    place = pointer.place if isinstance(pointer, AddressOf) else DerefPlace(pointer, pointer.type.to, call.position)
+    if plain == "atomic_store":
+        if len(call.arguments) < 2:
+            return None
+        return [Set(place, frame, call.arguments[1], frame, call.position, function)]
+    if call.result is None:
+        return []
+    return [Set(call.result, frame, Load(place, place.type, call.position), frame, call.position, function)]
 
 
 _ARGUMENT = Variable("argument", "<argument>", PointerType(StructType("<argument>"), 0), "temporary")
@@ -421,7 +445,8 @@ def _touch_values(expr: Expr, at: _At) -> Iterator[Touch]:
         case Binary(left=left, right=right) | PointerDistance(left=left, right=right):
             yield from _touch_values(left, at)
             yield from _touch_values(right, at)
-        case PointerStep(pointer=pointer, steps=steps, type=PointerType(to=to), position=position):
+        case PointerStep(pointer=pointer, steps=steps, type=type_, position=position):
+            to = type_.to if isinstance(type_, PointerType) else type_
             yield from _through(pointer, steps, to, "address", position, at)
             yield from _touch_values(pointer, at)
             yield from _touch_values(steps, at)

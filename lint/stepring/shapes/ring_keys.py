@@ -29,6 +29,7 @@ from stepring.meaning.types import (
     PointerType,
     StructLayout,
     StructType,
+    UnknownType,
     VariablePlace,
     VoidType,
 )
@@ -76,7 +77,7 @@ def targets(pointer: Expr, frame: str, points: Points) -> frozenset[Key]:
             return targets(inner, frame, points)
         case Cast(operand=operand, type=type_) if _same_step(operand.type, type_):
             return targets(operand, frame, points)
-        case Load(place=place, type=PointerType()):
+        case Load(place=place, type=PointerType() | UnknownType()):
             found: set[Key] = set()
             for key in place_keys(place, frame, points):
                 known = points.get(key)
