@@ -76,7 +76,6 @@ class Work:
     continues: list[int] = field(default_factory=list)
     switches: list[OpenSwitch] = field(default_factory=list)
     labels: dict[str, int] = field(default_factory=dict)
-    taken_labels: list[str] = field(default_factory=list)
     computed_gotos: list[int] = field(default_factory=list)
     depth: int = 0
     dead_blocks: set[int] = field(default_factory=set)

@@ -688,12 +688,24 @@ def _stored(work: Work, node: Any) -> frozenset[str]:
             elif isinstance(item, c_ast.UnaryOp) and item.op in ("++", "--", "p++", "p--"):
                 targets = [item.expr]
             elif isinstance(item, c_ast.FuncCall) and item.args is not None:
-                if getattr(item.name, "name", "").startswith("__stepring_"):
+                if isinstance(item.name, c_ast.ID) and item.name.name.startswith("__stepring_"):
                     targets = item.args.exprs
             names.update(target.name for target in targets if isinstance(target, c_ast.ID))
             stack.extend(child for child in item if child is not None)
         known = work.stored[id(node)] = frozenset(names)
     return known
+
+
+def taken_labels(body: Any) -> tuple[str, ...]:
+    """The labels whose address is taken in a function's body, also in the initialisers of its statics."""
+    names: list[str] = []
+    stack = [body]
+    while stack:
+        item = stack.pop()
+        if isinstance(item, c_ast.FuncCall) and getattr(item.name, "name", "") == "__stepring_label":
+            names.extend(argument.name for argument in item.args.exprs)
+        stack.extend(child for child in item if child is not None)
+    return tuple(sorted(set(names)))
 
 
 def addressed_names(body: Any) -> frozenset[str]:
@@ -794,7 +806,6 @@ def _choose(work: Work, arguments: list[Any], at: Position) -> Expr:
 
 
 def _label_address(work: Work, arguments: list[Any], at: Position) -> Expr:
-    work.taken_labels.append(arguments[0].name)
     return Unknown(_pointer(work, VoidType()), "a label's address")
 
 
@@ -804,6 +815,16 @@ def _computed_goto(work: Work, arguments: list[Any], at: Position) -> Expr:
     finish(work, Stop("a computed goto"))
     resume(work, new_block(work))
     return Unknown(VoidType(), "a computed goto")
+
+
+def _va_start(work: Work, arguments: list[Any], at: Position) -> Expr:
+    places = tuple(found for item in arguments[:1] if (found := place(work, item)) is not None)
+    emit(work, Clobber(places, "the variable arguments", at))
+    return Unknown(VoidType(), "the variable arguments")
+
+
+def _va_end(work: Work, arguments: list[Any], at: Position) -> Expr:
+    return Unknown(VoidType(), "the variable arguments")
 
 
 def _va_arg(work: Work, arguments: list[Any], at: Position) -> Expr:
@@ -865,6 +886,8 @@ _SPECIAL: dict[str, Callable[[Work, list[Any], Position], Expr]] = {
     "__stepring_label": _label_address,
     "__stepring_goto": _computed_goto,
     "__stepring_va_arg": _va_arg,
+    **dict.fromkeys(("va_start", "__builtin_va_start", "va_copy", "__builtin_va_copy"), _va_start),
+    **dict.fromkeys(("va_end", "__builtin_va_end"), _va_end),
     "offsetof": _offsetof,
     "__builtin_offsetof": _offsetof,
 }

@@ -4,6 +4,7 @@ Functions that several units share (inline ones of a header) are lowered once fo
 function that cannot be lowered costs itself and is reported.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -11,7 +12,7 @@ from pycparser import c_ast
 
 from stepring.meaning.builder import OpenBlock, Work, close, int_type, successors
 from stepring.meaning.constants import element_type, text
-from stepring.meaning.expressions import addressed_names, place, value
+from stepring.meaning.expressions import addressed_names, place, taken_labels, value
 from stepring.meaning.initial import declare_static, initial_length, initialise
 from stepring.meaning.models import integer
 from stepring.meaning.scope import (
@@ -192,7 +193,7 @@ def lower_function(scope: Scope, node: Any, declaration: Declaration) -> tuple[F
     work.reached.add(0)
     parameters = _parameters(work, node, type_)
     statement(work, node.body)
-    _join_labels(work)
+    _join_labels(work, taken_labels(node.body) if work.computed_gotos else ())
     static = symbol.static or "static" in node.decl.storage
     function = Function(
         name,
@@ -232,11 +233,11 @@ def _parameters(work: Work, node: Any, type_: FunctionType) -> tuple[Variable, .
     return tuple(found)
 
 
-def _join_labels(work: Work) -> None:
+def _join_labels(work: Work, taken: Sequence[str]) -> None:
     """A computed goto can lead to every label whose address is taken."""
     if not work.computed_gotos:
         return
-    targets = [work.labels[name] for name in work.taken_labels if name in work.labels]
+    targets = [work.labels[name] for name in taken if name in work.labels]
     int_ = int_type(work)
     at = work.at
     for number in work.computed_gotos:
