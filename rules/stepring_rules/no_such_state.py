@@ -8,7 +8,7 @@ from collections.abc import Iterator
 
 from stepring.places import Origin
 from stepring.rule import Level, Obligation, Related, Rule
-from stepring.shapes.types import Machine, Program, State
+from stepring.shapes.types import STEPPED, Machine, Program, State
 from stepring_rules.machine_common import about, is_bound, main_dispatch, short
 
 
@@ -36,10 +36,13 @@ def _stores(machine: Machine) -> Iterator[tuple[Origin, str, int]]:
                 yield store.where, short(store.function), value
     lines = {(where.file, where.line, value) for where, value in seen}
     values = {state.name: state.value for state in machine.states}
+    # A step from a known state (``state++``) stores a known value; other computed stores may be corrected later on.
+    stepped = {(store.where.file, store.where.line) for store in machine.stores if store.why_unknown == STEPPED}
     for step in machine.transitions:
         value = values[step.target]
-        if (step.where.file, step.where.line, value) not in lines:
-            lines.add((step.where.file, step.where.line, value))
+        place = (step.where.file, step.where.line)
+        if place in stepped and (*place, value) not in lines:
+            lines.add((*place, value))
             yield step.where, short(step.function), value
 
 

@@ -24,6 +24,7 @@ from stepring.shapes.facts import (
 )
 from stepring.shapes.names import starts_or_runs
 from stepring.shapes.types import (
+    STEPPED,
     Dispatch,
     Label,
     Machine,
@@ -252,6 +253,7 @@ def _machine(
         not why,
         tuple(dict.fromkeys(why)),
         family.identity.split("@", 1)[0] if family is not None else "",
+        key.scope == "lasting",
     )
 
 
@@ -382,7 +384,7 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
     for store in sorted(group.stores, key=lambda store: store.where):
         if store in setters or (store.copied and not store.constants):
             continue
-        unknown = store.why_unknown or ("arithmetic on its own value" if store.stepped else "")
+        unknown = store.why_unknown or (STEPPED if store.stepped else "")
         yield StateStore(
             store.function,
             store.where,

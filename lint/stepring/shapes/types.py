@@ -71,6 +71,9 @@ class Dispatch:
     control_high: int
 
 
+STEPPED = "arithmetic on its own value"
+
+
 @dataclass(frozen=True, slots=True)
 class StateStore:
     """A store into the state variable.
@@ -122,6 +125,8 @@ class Machine:
     complete: bool
     why_incomplete: tuple[str, ...]
     family: str
+    # Whether the variable outlives the function; one that lives in a loop alone ends with it.
+    lasting: bool = True
 
     def state(self, name: str) -> State:
         """The state of that name; ``KeyError`` if there is none."""
