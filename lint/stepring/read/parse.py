@@ -28,6 +28,7 @@ except ImportError:  # older releases kept it elsewhere
 _MARK = "stepring_chunk"
 _OPERAND = "__stepring_operand"
 _BATCH_BYTES = 120_000
+_MUCH_TEXT = 20_000
 _DEPTH = 24_000
 
 
@@ -61,7 +62,7 @@ def parse_all(jobs: Sequence[Job], parser: CParser | None = None) -> list[Parsed
     answers: list[Parsed] = []
     if not jobs:
         return answers
-    with _deep_recursion(), _collector_at_rest():
+    with _deep_recursion(), _collector_at_rest(sum(len(job.cleaned.text) for job in jobs)):
         for batch in _batches(jobs):
             done = _parse_together(batch, parser) if len(batch) > 1 else None
             answers.extend(done if done is not None else [parse_one(job) for job in batch])
@@ -197,15 +198,19 @@ class _WatchedLexer(CLexer):  # type: ignore[misc]
 
 
 @contextmanager
-def _collector_at_rest() -> Iterator[None]:
-    """No garbage collection while parsing: it makes no cycles, and walking the growing trees doubles the time."""
+def _collector_at_rest(size: int) -> Iterator[None]:
+    """No garbage collection while parsing: trees hold no cycles, and walking the growing trees doubles the time.
+
+    After much text the trees are moved out of the collector's sight for good; they go by reference counts.
+    """
     was_on = gc.isenabled()
     gc.disable()
     try:
         yield
     finally:
         if was_on:
-            gc.freeze()
+            if size > _MUCH_TEXT:
+                gc.freeze()
             gc.enable()
 
 
