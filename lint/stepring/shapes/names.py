@@ -7,7 +7,7 @@ are enumerations, or
 """
 
 import re
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 from stepring.meaning.constants import character, number
@@ -28,6 +28,13 @@ _STARTS = re.compile(
     re.IGNORECASE,
 )
 _RUNS = re.compile(r"(?:^|_)(?:main|task|thread)(?:_|$)", re.IGNORECASE)
+# How functions that store a state for others are named (common practice).
+_SETS = re.compile(r"set|change|state|mode|phase|goto|enter|switch|transit|next|new_|advance|move", re.IGNORECASE)
+
+
+def sets(function: str) -> bool:
+    """Whether a function's name says that it may be a setter of a state."""
+    return bool(_SETS.search(function))
 
 
 def starts(function: str) -> bool:
@@ -97,6 +104,15 @@ def _evaluate(names: Names, body: str, depth: int) -> int | None:
             if match[1] in _TYPE_WORDS:
                 tokens.append(match[1])
                 continue
+            called = names.macros.get(match[1])
+            if called is not None and called.parameters is not None:
+                expanded = _expanded(called, body, at)
+                value = _evaluate(names, expanded[0], depth + 1) if expanded is not None and depth < 20 else None
+                if value is None or expanded is None:
+                    return None
+                tokens.append(value)
+                at = expanded[1]
+                continue
             inner = macro_value(names, match[1], depth + 1)
             if inner is None:
                 return None
@@ -118,6 +134,35 @@ def _evaluate(names: Names, body: str, depth: int) -> int | None:
     return value if rest == len(tokens) else None
 
 
+def _expanded(macro: Macro, body: str, at: int) -> tuple[str, int] | None:
+    """A function-like macro's replacement with the arguments that stand at ``at``, and where the call ends."""
+    opening = body.find("(", at)
+    if opening < 0 or body[at:opening].strip() or macro.parameters is None:
+        return None
+    depth = 0
+    arguments: list[str] = []
+    start = opening + 1
+    for end in range(opening, len(body)):
+        if body[end] == "(":
+            depth += 1
+        elif body[end] == ")":
+            depth -= 1
+        if depth == 0 or (depth == 1 and body[end] == ","):
+            arguments.append(body[start:end].strip())
+            start = end + 1
+        if depth == 0:
+            return _substituted(macro, arguments, end + 1)
+    return None
+
+
+def _substituted(macro: Macro, arguments: Sequence[str], end: int) -> tuple[str, int] | None:
+    if macro.parameters is None or len(arguments) != len(macro.parameters):
+        return None
+    values = dict(zip(macro.parameters, arguments, strict=True))
+    return _WORD.sub(lambda match: f"({values[match[0]]})" if match[0] in values else match[0], macro.body), end
+
+
+_WORD = re.compile(r"[A-Za-z_]\w*")
 _TYPE_WORDS = frozenset({"int", "unsigned", "signed", "long", "short", "char", "uint8_t", "uint16_t", "uint32_t"})
 _PRECEDENCE = {"|": 1, "^": 2, "&": 3, "<<": 4, ">>": 4, "+": 5, "-": 5, "*": 6, "/": 6, "%": 6}
 
