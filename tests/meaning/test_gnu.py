@@ -69,6 +69,29 @@ CASES = (
         | {"checked(3)": 3},
     ),
     Case(
+        "packed structures",
+        """
+        struct __attribute__((packed)) frame { unsigned char kind; unsigned mass; unsigned short crc; };
+        typedef struct { char a; struct { char b; int c; } in; } __attribute__((packed)) outer_t;
+        struct loose { char a; int b; }; struct { int n : 3; unsigned m : 31; char z; } __attribute__((packed)) bits_;
+        unsigned char raw_[7] = {1, 2, 0, 0, 0, 9, 1}; int frame_(int i) { struct frame f;
+            __builtin_memcpy(&f, raw_, 7); return
+            i == 0 ? (int)sizeof f : i == 1 ? (int)f.mass : i == 2 ? f.crc : i == 3 ? (int)sizeof(outer_t) : i == 4
+            ? (int)sizeof(struct loose) : (int)sizeof bits_; }
+        int packed_bits(void) { bits_.n = -1; bits_.m = 0x40000001; bits_.z = 5;
+            return (bits_.m == 0x40000001) * 10 + bits_.z; }
+        """,
+        {
+            "frame_(0)": 7,
+            "frame_(1)": 2,
+            "frame_(2)": 265,
+            "frame_(3)": 9,
+            "frame_(4)": 8,
+            "frame_(5)": 6,
+            "packed_bits()": 15,
+        },
+    ),
+    Case(
         "structures found from their members",
         """
         struct link { struct link *next; }; struct job { int mass; struct link link; }; struct job a_ = {3}, b_ = {4};

@@ -314,3 +314,34 @@ def test_a_static_function_is_found_by_its_name_or_identity() -> None:
     assert (run(made, "a").value, run(made, "b").value) == (1, 2)
     with pytest.raises(KeyError, match=r"a\.c:own, b\.c:own"):
         run(made, "own")
+
+
+def test_a_constant_with_the_sign_bit_is_what_compilers_make_of_it() -> None:
+    made = barge("""int mask = 1 << 31; const unsigned bits = 1u << 31 | 1 << 31; int step(int e) { switch (e) {
+    case 1 << 31: return 1; default: return mask & (1 << 31) ? 2 : 3; } }""")
+    assert fresh(made).read("mask") == -(1 << 31)
+    assert (run(made, "step", (-(1 << 31),)).value, run(made, "step", (0,)).value) == (1, 2)
+
+
+def test_an_initialiser_that_is_not_understood_leaves_only_its_part_unknown() -> None:
+    made = barge(
+        "int zero; struct { int a, b; } s = {1, 1 / 0}; int a(void) { return s.a; } int b(void) { return s.b; }"
+    )
+    assert run(made, "a").value == 1
+    assert run(made, "b").kind == "stopped"
+
+
+def test_an_object_that_is_too_large_is_not_kept() -> None:
+    made = barge(
+        "char flash[0x40000000]; int small = 3; int own(void) { return small; } int far(int i) { return flash[i]; }"
+    )
+    for _ in range(2):
+        assert run(made, "own").value == 3
+        outcome = run(made, "far", (5,))
+        assert (outcome.kind, "too large" in outcome.reason) == ("stopped", True)
+    assert run(barge("int deep(void) { char t[0x40000000]; t[0] = 1; return t[0]; }"), "deep").kind == "stopped"
+
+
+def test_a_parameter_without_a_name_takes_an_argument() -> None:
+    made = barge("int second(int, int b) { return b; } int step(void) { return second(4, 5); }")
+    assert run(made, "step").value == 5

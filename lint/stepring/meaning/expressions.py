@@ -23,7 +23,7 @@ from stepring.meaning.builder import (
     temporary,
 )
 from stepring.meaning.constants import character, element_type, number, text
-from stepring.meaning.fold import apply_binary, apply_unary, convert
+from stepring.meaning.fold import apply_constant, apply_unary, convert
 from stepring.meaning.models import common, integer, promoted
 from stepring.meaning.scope import (
     EnumConstant,
@@ -467,7 +467,7 @@ def negated(work: Work, steps: Expr) -> Expr:
 
 def _folded(op: str, left: Expr, right: Expr, type_: CType, at: Position) -> Expr:
     if isinstance(left, Const) and isinstance(right, Const):
-        result = apply_binary(op, left.value, right.value, type_)
+        result = apply_constant(op, left.value, right.value, type_)
         if result is not None:
             return Const(result, type_, left.position or at)
     return Binary(op, left, right, type_, at)  # type: ignore[arg-type]

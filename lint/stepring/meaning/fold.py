@@ -84,6 +84,18 @@ def apply_binary(op: str, left: int, right: int, type_: CType) -> int | None:
     return None
 
 
+def apply_constant(op: str, left: int, right: int, type_: CType) -> int | None:
+    """A binary operator on constants, as compilers fold it: ``1 << 31`` sets the sign bit.
+
+    C leaves that undefined (6.5.7p4), but every compiler of the trade gives a constant the bits that stand there.
+    """
+    result = apply_binary(op, left, right, type_)
+    if result is None and op == "<<" and left >= 0 and isinstance(type_, IntType) and 0 <= right < type_.width:
+        bits = left << right
+        return convert(bits, type_) if bits >> type_.width == 0 else None
+    return result
+
+
 def _settle(value: int, type_: CType) -> int | None:
     """Unsigned results wrap; a signed result that does not fit is undefined (6.5p5)."""
     if not isinstance(type_, IntType):
@@ -110,5 +122,5 @@ def fold(expr: Expr) -> int | None:
         case Binary(op=op, left=left, right=right, type=type_):
             a = fold(left)
             b = fold(right)
-            return None if a is None or b is None else apply_binary(op, a, b, type_)
+            return None if a is None or b is None else apply_constant(op, a, b, type_)
     return None

@@ -72,6 +72,7 @@ class DeclarationIndex:
     ordinary: dict[str, Any] = field(default_factory=dict)
     tags: dict[str, Any] = field(default_factory=dict)
     enumerators: dict[str, Any] = field(default_factory=dict)
+    packed: set[int] = field(default_factory=set)
 
 
 @dataclass(slots=True)
@@ -89,6 +90,8 @@ class FileScope:
     built: dict[int, str] = field(default_factory=dict)
     enum_types: dict[int, IntType] = field(default_factory=dict)
     building: set[int] = field(default_factory=set)
+    # The nodes of structures whose members stand side by side without padding.
+    packed: set[int] = field(default_factory=set)
 
 
 @dataclass(slots=True)
@@ -140,7 +143,17 @@ def index_declaration(declaration: Declaration) -> DeclarationIndex:
                 if known is None or getattr(node, "init", None) is not None:
                     index.ordinary[node.name] = node
             index_tags(node.type, index.tags, index.enumerators, node.name or "")
+            if "packed" in declaration.attributes:
+                index.packed.update(_outermost_structs(node.type))
     return index
+
+
+def _outermost_structs(node: Any) -> Iterator[int]:
+    """The structure that a declaration declares; the attribute does not reach those inside it."""
+    while isinstance(node, c_ast.TypeDecl | c_ast.PtrDecl | c_ast.ArrayDecl):
+        node = node.type
+    if isinstance(node, c_ast.Struct | c_ast.Union):
+        yield id(node)
 
 
 def index_tags(node: Any, tags: dict[str, Any], enumerators: dict[str, Any], hint: str = "") -> None:
@@ -453,6 +466,7 @@ def lay_out(scope: Scope, node: Any, name: str, union: bool) -> StructLayout:
     offset = 0
     largest = 0
     alignment = 1
+    packed = id(node) in scope.file.packed
     fields: list[Field] = []
     for member in node.decls or ():
         if not isinstance(member, c_ast.Decl):
@@ -460,7 +474,7 @@ def lay_out(scope: Scope, node: Any, name: str, union: bool) -> StructLayout:
         type_ = build(scope, member.type, member.name or "")
         quals = qualifiers(scope, member)
         size = size_of(scope.file.structs, type_)
-        align = align_of(scope.file.structs, scope.file.model, type_)
+        align = 1 if packed else align_of(scope.file.structs, scope.file.model, type_)
         start = 0 if union else offset
         bits = constant(scope, member.bitsize) if member.bitsize is not None else None
         if bits is not None and isinstance(type_, IntType):
@@ -468,7 +482,7 @@ def lay_out(scope: Scope, node: Any, name: str, union: bool) -> StructLayout:
             if bits == 0:
                 offset = -(-offset // unit) * unit
                 continue
-            if start // unit != (start + bits - 1) // unit:
+            if not packed and start // unit != (start + bits - 1) // unit:
                 start = -(-start // unit) * unit
             end = start + bits
             # A bit-field has its own width; its rank stays the declared type's (6.3.1.1p2 reads it by value).

@@ -112,6 +112,7 @@ def file_scope(unit: ReadUnit, model: DataModel, meanings: Meanings) -> Scope:
     tags: dict[str, Any] = {}
     enumerators: dict[str, Any] = {}
     attributes: dict[str, frozenset[str]] = {}
+    packed: set[int] = set()
     for declaration in unit.declarations:
         index = meanings.indexes.get(declaration.key)
         if index is None:
@@ -120,10 +121,11 @@ def file_scope(unit: ReadUnit, model: DataModel, meanings: Meanings) -> Scope:
             ordinary.setdefault(name, []).append((node, declaration))
         tags.update(index.tags)
         enumerators.update(index.enumerators)
+        packed |= index.packed
         if declaration.attributes:
             for name in declaration.names:
                 attributes[name] = attributes.get(name, frozenset()) | declaration.attributes
-    scope = Scope(FileScope(model, ordinary, tags, enumerators, attributes))
+    scope = Scope(FileScope(model, ordinary, tags, enumerators, attributes, packed=packed))
     scope.evaluator = Evaluator()
     return scope
 
@@ -215,16 +217,19 @@ def _parameters(work: Work, node: Any, type_: FunctionType) -> tuple[Variable, .
     declared = node.decl.type.args.params if getattr(node.decl.type, "args", None) is not None else []
     by_name = {item.name: item for item in node.param_decls or ()}
     found: list[Variable] = []
-    for item in declared:
+    for number, item in enumerate(declared):
         item = by_name.get(item.name, item) if isinstance(item, c_ast.ID) else item
-        name = getattr(item, "name", None)
-        if not name:
+        if isinstance(item, c_ast.EllipsisParam):
             continue
         kind: CType = integer(work.model, "int")
         quals: dict[str, bool] = {}
-        if isinstance(item, c_ast.Decl):
-            kind = adjusted(work.model, build(work.scope, item.type, name))
+        if isinstance(item, c_ast.Decl | c_ast.Typename):
+            kind = adjusted(work.model, build(work.scope, item.type, item.name or ""))
             quals = qualifiers(work.scope, item)
+        if isinstance(kind, VoidType):
+            continue
+        # A parameter without a name still takes an argument.
+        name = getattr(item, "name", None) or f"parameter {number + 1}"
         at = position(item, work.at)
         variable = Variable(name, f"{name}@{at.line}:{at.column}", kind, "parameter", **quals, position=at)
         work.scope.symbols[name] = variable

@@ -9,8 +9,8 @@ import struct
 from typing import Any
 
 from stepring.meaning.fold import convert
-from stepring.meaning.types import CType, FloatType, IntType, PointerType
-from stepring.paths.memory import Cells, FunctionPointer, address_of, new_cells
+from stepring.meaning.types import CType, FloatType, IntType, PointerType, StructType
+from stepring.paths.memory import Blob, Cells, FunctionPointer, address_of, new_cells
 from stepring.paths.types import Undefined, Unsettled
 from stepring.places import Position
 
@@ -188,4 +188,6 @@ def adopted(value: Any, type_: CType, name: str, position: Position | None) -> A
             return single(value) if width == 32 else float(value)
         case PointerType() if isinstance(value, int):
             return convert(value, type_)
+        case StructType() if not isinstance(value, Blob):
+            raise Unsettled(f"{name} was given no structure as its result", position)
     return value

@@ -51,7 +51,7 @@ from stepring.meaning.types import (
 )
 from stepring.paths.arithmetic import adopted
 from stepring.paths.library import BUILTINS
-from stepring.paths.memory import Cells, FunctionPointer, Memory, new_cells, write_value
+from stepring.paths.memory import LARGEST, Cells, FunctionPointer, Memory, forget, new_cells, write_value
 from stepring.paths.translate import Code, Enter, Leave, translate
 from stepring.paths.types import Event, Externals, Outcome, Undefined, Unsettled
 from stepring.places import Position
@@ -69,7 +69,8 @@ _NOWHERE = Position("", 0)
 class Static:
     """An object with static storage: its size in bytes (None: not known) and what it holds at start.
 
-    ``defined`` is False for one whose definition no unit holds; ``text`` is a string literal's bytes.
+    ``defined`` is False for one whose definition no unit holds; ``text`` is a string literal's bytes. ``why`` says why
+    nothing of the object can be kept, where that is so.
     """
 
     variable: Variable
@@ -78,6 +79,7 @@ class Static:
     initial: tuple[InitialValue, ...] = ()
     defined: bool = False
     text: bytes | None = None
+    why: str = ""
 
 
 @dataclass(slots=True, eq=False)
@@ -200,6 +202,11 @@ def program(units: Sequence[TypedUnit]) -> Program:
                     static = made.statics[made.static_number(number, variable)]
                     if static.size is None:
                         static.size = size_of(unit.types.structs, variable.type)
+    for static in made.statics:
+        if static.size is not None and static.size > LARGEST:
+            # Accesses are then compared with the bounds, and say why they do not go on.
+            static.why = f"{static.variable.name} has {static.size} bytes, which is too large to be kept"
+            static.size = None
     return made
 
 
@@ -209,8 +216,11 @@ def _cells_of(memory: Memory, static: Static) -> Cells:
     if size is None and static.defined:
         element = variable.type.element if isinstance(variable.type, ArrayType) else variable.type
         size = size_of(memory.program.structs, element) or 0  # a tentative array of unknown length has one (6.9.2p5)
+    if static.why:
+        size = 0
     cells = new_cells(variable.name, size or 0, memory.next_static, zero=static.defined)
     memory.next_static += ((size or 0) + 31) // 16 * 16
+    cells.why = static.why
     if not static.defined:
         cells.why = f"{variable.name} is defined in no unit that was read"
     if static.text is not None:
@@ -223,7 +233,9 @@ def _initialise(made: Program, memory: Memory, number: int) -> None:
     """Store the initial value of a static object: integers at once, the rest as assignments that are run."""
     static = made.statics[number]
     cells = memory.cells[number]
-    later: list[Statement] = []
+    if cells.size == 0:
+        return
+    later: list[tuple[Statement, PlaceExpr, int | None]] = []
     for item in static.initial:
         place = _place_of(made, static, item.path)
         if place is None:
@@ -231,18 +243,23 @@ def _initialise(made: Program, memory: Memory, number: int) -> None:
         if isinstance(item.value, Const) and isinstance(place[0].type, IntType) and place[1] is not None:
             write_value(cells, place[1], place[0].type, item.value.value)
         else:
-            later.append(_start_statement(made, static, place[0], item.value, item.position))
+            later.append((_start_statement(made, static, place[0], item.value, item.position), *place))
     if later:
         code = made.starts.get(number)
         if code is None:
             type_ = FunctionType(VoidType(), ())
-            block = Block(tuple(later), Return(None, _NOWHERE))
-            function = Function("start", "start", type_, (), (), (block,), _NOWHERE, 0, True, False)
+            blocks = tuple(Block((statement,), Return(None, _NOWHERE)) for statement, _, _ in later)
+            function = Function("start", "start", type_, (), (), blocks, _NOWHERE, 0, True, False)
             code = made.starts[number] = translate(made, static.unit, function, watched=False)
         for missing in made.statics[len(memory.cells) :]:
             memory.cells.append(_cells_of(memory, missing))
-        run_ = _Run(made, memory, None, None, None)
-        code.blocks[0][0]([memory.cells, run_, None])
+        values = [memory.cells, _Run(made, memory, None, None, None), None]
+        for (block, _, _), (_, place_, offset) in zip(code.blocks, later, strict=True):
+            try:
+                block(values)
+            except (Undefined, Unsettled) as trouble:
+                size = size_of(made.units[static.unit].types.structs, place_.type)
+                forget(cells, offset or 0, size if offset is not None and size else cells.size, trouble.reason)
     cells.frozen = cells.frozen or (static.variable.const and static.defined)
 
 
@@ -345,7 +362,11 @@ def run(
     unit, name = _find(made, function)
     kept = memory if memory is not None else Memory(made)
     state = _Run(made, kept, externals, volatile, observe)
-    code = made.code(unit, name, observe is not None)
+    try:
+        code = made.code(unit, name, observe is not None)
+    except RecursionError:
+        at = made.functions[unit][name].position
+        return Outcome("stopped", None, f"{name} has expressions that are nested too deeply", at, name, None, 0)
     made.grow(kept)  # making code ready can bring string literals
     if len(arguments) != len(code.parameters):
         raise ValueError(f"{function} takes {len(code.parameters)} arguments and was given {len(arguments)}")
@@ -403,7 +424,10 @@ def _close(memory: Memory, frame: _Frame) -> None:
 
 def _loop(state: _Run, stack: list[_Frame], code: Code, arguments: Sequence[Any], steps: int) -> Outcome:
     """Run blocks until the first call returns or something ends the run."""
-    frame = _open(state, code, arguments)
+    try:
+        frame = _open(state, code, arguments)
+    except Unsettled as end:
+        return Outcome("stopped", None, end.reason, code.position, code.name, None, 0)
     stack.append(frame)
     blocks, values, number = code.blocks, frame.values, 0
     left = steps
@@ -442,6 +466,9 @@ def _loop(state: _Run, stack: list[_Frame], code: Code, arguments: Sequence[Any]
     except Undefined as end:
         where = end.position or at
         return Outcome("undefined", None, end.reason, where, frame.code.name, end.fault, steps - left)
+    except RecursionError:
+        reason = "a function that is called here has expressions that are nested too deeply"
+        return Outcome("stopped", None, reason, at, frame.code.name, None, steps - left)
     except Unsettled as end:
         return Outcome("stopped", None, end.reason, end.position or at, frame.code.name, None, steps - left)
 

@@ -63,8 +63,14 @@ class Blob:
     pointers: dict[int, Any]
 
 
+LARGEST = 1 << 26
+"""The size in bytes of the largest object that is kept."""
+
+
 def new_cells(name: str, size: int, address: int, *, zero: bool = False) -> Cells:
-    """A new object; its value is zero or indeterminate."""
+    """A new object; its value is zero or indeterminate. ``Unsettled`` if it is too large to be kept."""
+    if size > LARGEST:
+        raise Unsettled(f"{name} has {size} bytes, which is too large to be kept")
     return Cells(name, size, bytearray(size), None if zero else bytearray(size), address)
 
 
