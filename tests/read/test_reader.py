@@ -115,6 +115,10 @@ MISSING = [
     ('static THREAD(feeder(struct pt *p)) { return 1; } int w SECTION(".x"); unsigned char buf[4] ALIGN(4);', "THREAD"),
     ("ISR(TIMER1_vect) { ticks++; } volatile u32 ticks;", "u32"),
     ('int f(void) { port_t v = PORT; asmv("mov %0" : "=r" (v)); return v; }', "port_t"),
+    ("END_CASE static err_t g(void) { return 0; } END_CASE Suite *all(void) { return 0; }", "Suite err_t"),
+    ("char *EXPORTED name(void) { return 0; } void SETUP(9) start(void) { Py_BEGIN_WAIT go(1); Py_END_WAIT }", ""),
+    ("void f(void) { ON_EXIT(goto out;) g(); out: h(); }", ""),
+    ("typedef size_t count_t; count_t f(char *p, size_t n) { return (char *) (uptr_t) n - p; }", "size_t uptr_t"),
 ]
 
 
