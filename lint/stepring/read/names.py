@@ -148,7 +148,7 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
                     names.append(last)
                     taken = True
                 if function and taken:
-                    return names, False
+                    return [_after_decoration(tokens, index, end) or names[0]], False
             depth += 1
         elif token == ")":
             depth -= 1
@@ -185,6 +185,15 @@ def _declarators(text: str, function: bool) -> tuple[list[str], bool]:
         names.append(last)
         is_object = is_object or typed
     return (names[:1] if function else names), is_object
+
+
+def _after_decoration(tokens: list[str], index: int, end: int) -> str:
+    """The second of two names with parentheses, where only its list holds a type: the first was a decoration."""
+    if end + 1 >= len(tokens) or tokens[end + 1] != "(" or tokens[end] in _NO_NAMES or tokens[end] in _TAKES_GROUP:
+        return ""
+    first, second = tokens[index:end], tokens[end : _skip_group(tokens, end + 1)]
+    typed = TYPE_WORDS.isdisjoint(first) and not TYPE_WORDS.isdisjoint(second)
+    return tokens[end] if typed and tokens[end][0] not in "()[]," else ""
 
 
 def _skip_group(tokens: list[str], index: int, opening: str = "(", closing: str = ")") -> int:
