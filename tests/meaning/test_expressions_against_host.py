@@ -5,7 +5,10 @@ The compiler checks for undefined behaviour itself; where it stops, the interpre
 
 import os
 import random
+import re
 import shutil
+import subprocess
+from collections.abc import Mapping
 from pathlib import Path
 
 import pytest
@@ -28,12 +31,12 @@ WIDTHS = {"_Bool": 1, "char": 8, "signed char": 8, "unsigned char": 8, "short": 
 }
 
 
-def variables(draw: random.Random) -> list[tuple[str, str, int]]:
+def variables(draw: random.Random, widths: Mapping[str, int] = WIDTHS) -> list[tuple[str, str, int]]:
     """(name, type, value): two of every type, with values at and near the limits more often than others."""
     found = []
     for number, name in enumerate(KINDS * 2):
         unsigned = "unsigned" in name or name == "_Bool"
-        width = WIDTHS[name]
+        width = widths[name]
         low = 0 if unsigned else -(1 << (width - 1))
         high = (1 << width) - 1 if unsigned else (1 << (width - 1)) - 1
         near = [low, low + 1, high, high - 1, 0, 1, 2, 3, 7, 8, min(high, 31), min(high, 100)]
@@ -120,3 +123,39 @@ def test_batch(seed: int, tmp_path: Path) -> None:
         assert kind_of(unit, f"e{number}") == KINDS[kind], body
     # Most must have come through, or the test shows little.
     assert stopped < BATCH * 0.4
+
+
+@pytest.mark.skipif(shutil.which("gcc") is None, reason="the host has no gcc")
+@pytest.mark.parametrize("seed", range(100, 100 + BATCHES // 2))
+def test_constant_batch_with_32_bit_long(seed: int, tmp_path: Path) -> None:
+    """The same with constants for variables, in another data model: the compiler only has to agree, not to link."""
+    draw = random.Random(seed)
+    declared = variables(draw, {**WIDTHS, "long": 32, "unsigned long": 32})
+    constants = {name: f"(({type_}){value & (1 << 64) - 1}ull)" for name, type_, value in declared}
+    bodies = []
+    while len(bodies) < BATCH:
+        body = expression(draw, list(constants), draw.randint(2, 4)).replace("KEEP(", "(")
+        if "," not in body:  # no constant expression has a comma operator (6.6p3)
+            bodies.append(re.sub(r"\bv\d+\b", lambda name: constants[name[0]], body))
+    kinds = ", ".join(f"{name}: {number}" for number, name in enumerate(KINDS))
+    text = "".join(
+        f"long long e{i}(void) {{ return {body}; }} int k{i}(void) {{ return _Generic(({body}), {kinds}); }}\n"
+        for i, body in enumerate(bodies)
+    )
+    unit = lower_text(text, "ILP32")
+    assert not unit.notices
+    made = program([unit])
+    claims = []
+    for number, body in enumerate(bodies):
+        outcome = run(made, f"e{number}")
+        if outcome.kind == "returned":
+            kind = run(made, f"k{number}").value
+            value = f"(long long){outcome.value & (1 << 64) - 1}ull"
+            claims.append(f'_Static_assert((long long)({body}) == {value}, "value of {number}");')
+            claims.append(f'_Static_assert(_Generic(({body}), {kinds}) == {kind}, "type of {number}");')
+    assert len(claims) > BATCH
+    source = tmp_path / "claims.c"
+    source.write_text("\n".join(claims) + "\n")
+    command = ["gcc", "-std=gnu11", "-m32", "-w", "-fsyntax-only", str(source)]
+    done = subprocess.run(command, capture_output=True, text=True)
+    assert done.returncode == 0, done.stderr[:2000]
