@@ -80,6 +80,7 @@ class Callees:
         self._foreign = foreign
         self._weights: dict[str, int] = {}
         self._constants: dict[str, Sequence[int]] = {}
+        self._all: Sequence[int] | None = None
         self.hidden = self._find_hidden(functions, objects)
         self.effects = self._find_effects()
 
@@ -130,8 +131,19 @@ class Callees:
             if function.static and not function.attributes and function.name not in uses
         )
 
+    def reached_from(self, roots: Sequence[str]) -> frozenset[str]:
+        """The functions that some functions call, directly or not, themselves included."""
+        seen = set(roots)
+        waiting = list(roots)
+        while waiting:
+            fresh = self._calls.get(waiting.pop(), frozenset()) - seen
+            seen |= fresh
+            waiting.extend(fresh)
+        return frozenset(seen)
+
     def _find_effects(self) -> dict[str, Effect]:
         written = {identity: self._writes_of(function) for identity, function in self.functions.items()}
+        self._calls = {identity: found.calls for identity, found in written.items()}
         effects: dict[str, Effect] = {}
         for identity in written:
             seen = {identity}
@@ -201,3 +213,11 @@ class Callees:
                             waiting.append(body.identity)
             known = self._constants[identity] = sorted(values)
         return known
+
+    def all_thresholds(self) -> Sequence[int]:
+        """The constants of all functions."""
+        if self._all is None:
+            self._all = sorted(
+                {value for function in self.functions.values() for value in shape_of(function).thresholds}
+            )
+        return self._all

@@ -163,10 +163,12 @@ class Execution(ABC):
                 return False
             result = self.library(view, call, contract)
         else:
-            if record is not None:
+            if record is not None and effect is not None:
+                arguments = [view.evaluate(argument) for argument in call.arguments]
+                record.enter(effect.callee, arguments, self.deviations(view.state))
+                record.pass_to(effect.callee, arguments)
+            if record is not None and (effect is None or effect.outward):
                 record.looks.append(view.state.copy())
-                if effect is not None:
-                    record.pass_to(effect.callee, [view.evaluate(argument) for argument in call.arguments])
             result = self.outside(view, effect)
             if effect is not None and not effect.comes_back:
                 return False

@@ -47,9 +47,10 @@ ASSUMPTIONS: Final = (
 
 @dataclass(slots=True)
 class _Logged(Mapping[Cell, Interval]):
-    """The summaries as one analysis reads them; what it reads is noted."""
+    """The summaries as one analysis reads them, with some cells holding more; what it reads is noted."""
 
     program: "ProgramValues"
+    extra: Table = field(default_factory=dict)
     read: set[Cell] = field(default_factory=set)
 
     def __getitem__(self, cell: Cell) -> Interval:
@@ -66,29 +67,6 @@ class _Logged(Mapping[Cell, Interval]):
 
     def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
         self.read.add(cell)
-        return self.program.own(cell)
-
-
-@dataclass(slots=True)
-class _Overlaid(Mapping[Cell, Interval]):
-    """The summaries with some cells holding more."""
-
-    program: "ProgramValues"
-    extra: Table
-
-    def __getitem__(self, cell: Cell) -> Interval:
-        value = self.get(cell)
-        if value is None:
-            raise KeyError(cell)
-        return value
-
-    def __iter__(self) -> Iterator[Cell]:
-        return iter(self.program.summaries)
-
-    def __len__(self) -> int:
-        return len(self.program.summaries)
-
-    def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
         known = self.program.own(cell)
         more = self.extra.get(cell)
         return union(known, more) if known is not None and more is not None else known
@@ -120,6 +98,7 @@ class ProgramValues:
         shared: Callable[[Cell], bool] = lambda cell: False,
         foreign: Callable[[Cell], bool] = lambda cell: False,
         steady: Callable[[Cell], bool] = lambda cell: False,
+        interrupts: Callable[[Function], bool] = lambda function: False,
         closed: bool = False,
         depth: int = 2,
     ) -> None:
@@ -141,13 +120,21 @@ class ProgramValues:
         self._depth = depth
         self._shared_as: dict[Cell, Cell] = {}
         self._growth: dict[Cell, int] = {}
+        self._passed: dict[tuple[str, Cell], int] = {}
         self._ranges: Table = {}
         self._added: dict[str, Table] = {}
         self._read: dict[str, frozenset[Cell]] = {}
         self._found: dict[str, FunctionValues] = {}
         self._records: dict[str, Record] = {}
+        self._between: dict[str, Table] = {}
+        self._stored: Table = {}
         self._late: set[str] = set()
         self._called: set[str] = set()
+        self._interrupts = self.callees.reached_from(
+            [function.identity for function in self.functions.values() if interrupts(function)]
+        )
+        # A store by an interrupt is seen under every name of the object.
+        self._interrupted = {cell for name in self._interrupts for cell in self.callees.effects[name].writes}
         self._start(objects)
         self._solve()
 
@@ -205,47 +192,59 @@ class ProgramValues:
             return None
         return known if known is not None else FALSE
 
+    def seen(self, cell: Cell) -> Interval | None:
+        """What an interrupt can find in the cell: what it holds when code starts or, if it is shared, is ever given."""
+        value, stored = self.value(cell), self._stored.get(cell)
+        return union(value, stored) if value is not None and stored is not None else value
+
     def of(self, function: Function) -> FunctionValues:
-        """The function's values, whoever calls it: with what the summaries allow, and with what is on its way between
-        two
-        states that other code sees where a caller calls it then."""
+        """The function's values, whoever calls it: with what the summaries allow, and with what a caller has not yet
+        finished changing where it calls it in between."""
         known = self._found.get(function.identity)
         if known is None:
             known = self._found[function.identity] = self._final(function)
         return known
 
     def _final(self, function: Function) -> FunctionValues:
-        entered = [
-            record.entered[function.identity]
-            for identity, record in self._records.items()
-            if function.identity in record.entered and self._counts(identity)
-        ]
-        extra: Table = {}
+        extra: Table = dict(self._between.get(function.identity, {}))
         arguments: list[Interval] | None = None
-        for given, cells in entered:
-            for cell, value in cells.items():
-                for name in (cell, self._shared_as.get(cell, cell)):
-                    known = extra.get(name)
-                    extra[name] = value if known is None else union(known, value)
+        for identity, record in self._records.items():
+            entered = record.entered.get(function.identity)
+            if entered is None or not self._counts(identity):
+                continue
+            for cell, value in (*entered[1].items(), *self._between.get(identity, {}).items()):
+                for name in {cell, self._shared_as.get(cell, cell)}:
+                    extra[name] = union(extra[name], value) if name in extra else value
+            given = entered[0]
             arguments = given if arguments is None else [union(a, b) for a, b in zip(arguments, given, strict=False)]
-        entry = self._entry(function, set()) if function.identity in self._called else None
+        entry: Table = {}
         if function.identity in self._hidden and arguments is not None:
-            if entry is None:
-                entry = {}
-                for parameter, value in zip(function.parameters, arguments, strict=False):
-                    _enter(entry, parameter, value)
-            else:
-                for parameter, value in zip(function.parameters, arguments, strict=False):
-                    cell = VariableCell(parameter.identity)
-                    if cell in entry:
-                        _enter(entry, parameter, union(entry[cell], value))
-        return analyse(function, entry, self.surroundings(_Overlaid(self, extra) if extra else None))
+            for parameter, value in zip(function.parameters, arguments, strict=False):
+                _enter(entry, parameter, value)
+        summaries = _Logged(self, self._overlay(function.identity, extra))
+        inside = function.identity in self._interrupts
+        return analyse(function, entry, self.surroundings(summaries, inside_interrupt=inside))
+
+    def _overlay(self, identity: str, between: Table) -> Table:
+        """What cells can hold beyond their summaries when a function starts."""
+        if identity not in self._interrupts or not self._stored:
+            return between
+        extra = dict(self._stored)
+        for cell, value in between.items():
+            extra[cell] = union(extra[cell], value) if cell in extra else value
+        return extra
 
     def _counts(self, identity: str) -> bool:
         """Whether the function is ever started in a state that the summaries describe."""
         return identity not in self._hidden or identity in self._called
 
-    def surroundings(self, summaries: Mapping[Cell, Interval] | None = None) -> Surroundings:
+    def _changes(self, cell: Cell) -> bool:
+        """Whether the cell may change between two statements of a function that interrupts can stop."""
+        return cell in self._interrupted or self._foreign(cell)
+
+    def surroundings(
+        self, summaries: Mapping[Cell, Interval] | None = None, *, inside_interrupt: bool = False
+    ) -> Surroundings:
         """What a function's analysis may assume of this program."""
         return Surroundings(
             summaries if summaries is not None else _Logged(self),
@@ -253,7 +252,7 @@ class ProgramValues:
             self._effect,
             self.callees.body,
             self._steady,
-            self._foreign,
+            self._foreign if inside_interrupt else self._changes,
             self._depth,
         )
 
@@ -264,7 +263,8 @@ class ProgramValues:
         if body is None:
             return None
         returned = self.summaries.get(VariableCell(body.identity, ("returned",)))
-        return replace(self.callees.effects[body.identity], returns=returned)
+        # As long as no return of it is known the call does not come back; finding one brings its callers here again.
+        return replace(self.callees.effects[body.identity], returns=returned, comes_back=returned is not None)
 
     # ------------------------------------------------------------------------------------------------------ fixpoint
 
@@ -288,9 +288,10 @@ class ProgramValues:
         self._initial[cell] = value if known is None else union(known, value)
 
     def _analyse(self, function: Function) -> tuple[FunctionValues, frozenset[Cell]]:
-        summaries = _Logged(self)
+        summaries = _Logged(self, self._overlay(function.identity, self._between.get(function.identity, {})))
         entry = self._entry(function, summaries.read)
-        found = analyse(function, entry, self.surroundings(summaries))
+        inside = function.identity in self._interrupts
+        found = analyse(function, entry, self.surroundings(summaries, inside_interrupt=inside))
         for spot in found.engine.places.all():
             if spot.cell is not None:
                 if number_type(spot.type) is not None:
@@ -314,8 +315,9 @@ class ProgramValues:
                     _enter(entry, parameter, value)
         return entry
 
-    def _contribution(self, function: Function, record: Record) -> Table:
+    def _contribution(self, function: Function, found: FunctionValues) -> Table:
         """What a run of the function adds to the summaries."""
+        record = found.record
         added: Table = {}
 
         def add(cell: Cell, value: Interval) -> None:
@@ -328,10 +330,7 @@ class ProgramValues:
         if not self._counts(function.identity):
             # All calls of it were run in place, on the callers' states; nothing else calls it.
             return added
-        cells = dict(record.left)
-        for cell, value in record.stored.items():
-            if self.shared(cell):
-                cells[cell] = union(cells[cell], value) if cell in cells else value
+        cells = record.left
         for cell, value in cells.items():
             add(cell, value)
             other = self._shared_as.get(cell)
@@ -339,8 +338,8 @@ class ProgramValues:
                 add(other, value)
         for width, value in record.pointees.items():
             add(pointee_cell(width), value)
-        if record.returned is not None:
-            add(VariableCell(function.identity, ("returned",)), record.returned)
+        if found.solution.leaving is not None:
+            add(VariableCell(function.identity, ("returned",)), record.returned or FALSE)
         return added
 
     def _run(self, identity: str) -> Table:
@@ -352,23 +351,78 @@ class ProgramValues:
             if callee not in self._called:
                 self._called.add(callee)
                 self._late.add(callee)
-        return self._contribution(function, found.record)
+        return self._contribution(function, found)
 
-    def _solve(self) -> None:
-        waiting = dict.fromkeys(self.functions)
+    def _pass_on(self) -> set[str]:
+        """Tell callees that are not run in place what their callers have not finished changing, and interrupts what is
+        stored at all; the functions that learn something new."""
+        between, stored = self._smaller_tables()
+        told: set[str] = set()
+        for callee, table in between.items():
+            if self._raise(self._between.setdefault(callee, {}), table, callee):
+                told.add(callee)
+        if self._raise(self._stored, stored, "*"):
+            told |= self._interrupts
+        return told
+
+    def _passes(self, record: Record, own: Table) -> dict[str, Table]:
+        """What callees that are not run in place find in cells beyond their summaries."""
+        return {callee: self._joined(own, record.entered[callee][1]) for callee in record.arguments}
+
+    def _shared_stores(self, identity: str, record: Record) -> Table:
+        if identity in self._interrupts:
+            return {}
+        return self._joined({}, {cell: value for cell, value in record.stored.items() if self.shared(cell)})
+
+    def _joined(self, own: Table, cells: Table) -> Table:
+        """Tables joined, each cell also under the name that pointers to its structure share."""
+        result = dict(own)
+        for cell, value in cells.items():
+            for name in {cell, self._shared_as.get(cell, cell)}:
+                result[name] = union(result[name], value) if name in result else value
+        return result
+
+    def _raise(self, table: Table, added: Table, key: str) -> bool:
+        """Add to a table; whether it grew."""
+        grew = False
+        thresholds = self.callees.all_thresholds()
+        for cell, value in added.items():
+            known = table.get(cell)
+            if known is not None and is_subset(value, known):
+                continue
+            grew = True
+            number = self._passed[key, cell] = self._passed.get((key, cell), 0) + 1
+            table[cell] = value if known is None else self._grown(cell, known, value, number, thresholds)
+        return grew
+
+    def _grown(self, cell: Cell, known: Interval, value: Interval, number: int, thresholds: Sequence[int]) -> Interval:
+        """A cell's range when it grows for the ``number``-th time."""
+        limits = self._ranges.get(cell)
+        if number > PATIENCE:
+            return limits or UNBOUNDED
+        joined = (widen(known, value, thresholds) if number > ROUNDS else None) or union(known, value)
+        return (within(joined, limits.low, limits.high) or limits) if limits is not None else joined
+
+    def _settle(self, waiting: dict[str, None]) -> None:
+        """Run functions until the summaries do not grow."""
         while waiting:
             identity = next(iter(waiting))
             del waiting[identity]
             added = self._added[identity] = self._run(identity)
             changed = self._grow(added, self.callees.thresholds(identity))
             if changed:
-                waiting.update(
-                    dict.fromkeys(other for other, read in self._read.items() if not changed.isdisjoint(read))
-                )
+                readers = (other for other, read in self._read.items() if not changed.isdisjoint(read))
+                waiting.update(dict.fromkeys(readers))
             waiting.update(dict.fromkeys(callee for callee in self._late if callee in self.functions))
             self._late.clear()
-        if self._growth:
-            for _ in range(2):
+
+    def _solve(self) -> None:
+        waiting = dict.fromkeys(self.functions)
+        while waiting:
+            self._settle(waiting)
+            waiting = dict.fromkeys(name for name in self._pass_on() if name in self.functions)
+        if self._growth or self._passed:
+            for _ in range(3):
                 if not self._shrink():
                     break
 
@@ -382,40 +436,77 @@ class ProgramValues:
                 if known is None:
                     self.summaries[cell] = base
                 continue
-            joined = value if base is None else union(base, value)
-            self._growth[cell] = self._growth.get(cell, 0) + 1
-            if self._growth[cell] > ROUNDS and base is not None:
-                joined = widen(base, value, thresholds) or joined
-            limits = self._ranges.get(cell)
-            if self._growth[cell] > PATIENCE:
-                joined = limits or UNBOUNDED
-            elif limits is not None:
-                joined = within(joined, limits.low, limits.high) or limits
+            number = self._growth[cell] = self._growth.get(cell, 0) + 1
+            joined = value if base is None else self._grown(cell, base, value, number, thresholds)
             self.summaries[cell] = joined
             changed.add(cell)
         return changed
 
     def _shrink(self) -> bool:
-        """Replace widened summaries by what was really added, if that is inductive; whether anything changed."""
+        """Replace widened ranges by what was really added, if that is inductive; whether anything changed."""
         smaller: Table = dict(self._initial)
         for added in self._added.values():
             for cell, value in added.items():
                 known = smaller.get(cell, FALSE if isinstance(cell, FieldCell) else None)
                 smaller[cell] = value if known is None else union(known, value)
+        between, stored = self._smaller_tables()
         changed = {cell for cell, value in self.summaries.items() if smaller.get(cell, value) != value}
-        if not changed:
+        again = [
+            identity
+            for identity, read in self._read.items()
+            if not changed.isdisjoint(read)
+            or between.get(identity, {}) != self._between.get(identity, {})
+            or (identity in self._interrupts and stored != self._stored)
+        ]
+        if not again:
             return False
-        before = (self.summaries, dict(self._added), dict(self._read), dict(self._records))
+        before = (
+            self.summaries, self._between, self._stored, dict(self._added), dict(self._read), dict(self._records)
+        )  # fmt: skip
         self.summaries = {cell: smaller.get(cell, value) for cell, value in self.summaries.items()}
-        for identity in [name for name, read in self._read.items() if not changed.isdisjoint(read)]:
-            added = self._run(identity)
-            self._added[identity] = added
-            for cell, value in added.items():
-                known = self.summaries.get(cell, FALSE if isinstance(cell, FieldCell) else None)
-                if not is_subset(value, known) or self._late:
-                    self.summaries, self._added, self._read, self._records = before
-                    return False
-        return True
+        self._between, self._stored = between, stored
+        for identity in again:
+            added = self._added[identity] = self._run(identity)
+            held = all(
+                is_subset(value, self.summaries.get(cell, FALSE if isinstance(cell, FieldCell) else None))
+                for cell, value in added.items()
+            )
+            if not held or self._late:
+                break
+        else:
+            if not self._more_passed():
+                return True
+        self._late.clear()
+        self.summaries, self._between, self._stored, self._added, self._read, self._records = before
+        return False
+
+    def _more_passed(self) -> bool:
+        """Whether the last runs pass on more than is assumed."""
+        between, stored = self._smaller_tables()
+        return any(
+            not is_subset(value, self._between.get(callee, {}).get(cell))
+            for callee, table in between.items()
+            for cell, value in table.items()
+        ) or any(not is_subset(value, self._stored.get(cell)) for cell, value in stored.items())
+
+    def _smaller_tables(self) -> tuple[dict[str, Table], Table]:
+        """What is passed to callees and shown to interrupts, from the last run of every function."""
+        between: dict[str, Table] = {}
+        stored: Table = {}
+        waiting = [identity for identity in self._records if self._counts(identity)]
+        for identity in waiting:
+            for cell, value in self._shared_stores(identity, self._records[identity]).items():
+                stored[cell] = union(stored[cell], value) if cell in stored else value
+        while waiting:
+            identity = waiting.pop()
+            for callee, table in self._passes(self._records[identity], between.get(identity, {})).items():
+                known = between.setdefault(callee, {})
+                grown = {cell for cell, value in table.items() if not is_subset(value, known.get(cell))}
+                for cell in grown:
+                    known[cell] = union(known[cell], table[cell]) if cell in known else table[cell]
+                if grown and callee in self._records:
+                    waiting.append(callee)
+        return between, stored
 
 
 def summarise(
@@ -427,17 +518,28 @@ def summarise(
     shared: Callable[[Cell], bool] = lambda cell: False,
     foreign: Callable[[Cell], bool] = lambda cell: False,
     steady: Callable[[Cell], bool] = lambda cell: False,
+    interrupts: Callable[[Function], bool] = lambda function: False,
     closed: bool = False,
     depth: int = 2,
 ) -> ProgramValues:
     """The inductive ranges of a program's lasting cells.
 
-    ``private`` says of a cell that only the given functions store into it. ``shared``: an interrupt can look at the
-    cell between any two statements. ``foreign``: one may store into it at any moment. ``steady``: a volatile cell
-    into which only the given functions store, from one context. ``closed``: the functions are the whole program, so
-    calls through pointers lead to them. ``depth``: how deep callees are run in place.
+    ``private`` says of a cell that only the given functions store into it. ``interrupts``: the functions that can run
+    between any two statements of the others; what they store into is taken to change at any moment elsewhere.
+    ``shared``: the cells that interrupts look at; they find all that is ever stored there. ``foreign``: cells that
+    still other code may store into at any moment. ``steady``: volatile cells into which only the given functions
+    store. ``closed``: the functions are the whole program, so calls through pointers lead to them. ``depth``: how
+    deep callees are run in place.
     """
     return ProgramValues(
-        functions, objects, private, structs=structs, shared=shared, foreign=foreign, steady=steady, closed=closed,
+        functions,
+        objects,
+        private,
+        structs=structs,
+        shared=shared,
+        foreign=foreign,
+        steady=steady,
+        interrupts=interrupts,
+        closed=closed,
         depth=depth,
-    )  # fmt: skip
+    )

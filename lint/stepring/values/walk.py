@@ -116,7 +116,8 @@ class _Activation:
 
 @dataclass(slots=True, eq=False)
 class _Path:
-    """One path so far. ``disturbed`` are the cells that it stored into and what their spots share with others that may be
+    """One path so far. ``disturbed`` are the cells that it stored into and what their spots share with others that
+    may be
     the same; None once anything may have been changed."""
 
     state: State
