@@ -121,7 +121,11 @@ class StoreFact:
 
 @dataclass(frozen=True, slots=True)
 class TransitionFact:
-    """A step of a key's value, taken by a function: from a value (or ``OTHER``) to a constant."""
+    """A step of a key's value, taken by a function: from a value (or ``OTHER``) to a constant.
+
+    ``stored_by`` is the function that stores it, which may be a setter. ``through`` names a function of another unit
+    and the number of its argument: the step is one only if that function stores its argument in the key.
+    """
 
     key: str
     function: str
@@ -130,6 +134,8 @@ class TransitionFact:
     target: Constant
     guard: str
     where: Origin
+    stored_by: str
+    through: tuple[str, int] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -141,6 +147,16 @@ class CallFact:
     constant: Constant
     function: str
     where: Origin
+
+
+@dataclass(frozen=True, slots=True)
+class ForwardFact:
+    """A call that hands on the caller's own parameter (its number) as an argument."""
+
+    callee: str
+    argument: int
+    caller: str
+    parameter: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,3 +175,4 @@ class StateFacts:
     exposed: tuple[tuple[str, Origin], ...] = field(default=())
     # Functions that give objects their first state, as their names say, each with a function that calls it (or none).
     starters: tuple[tuple[str, str | None], ...] = ()
+    forwards: tuple[ForwardFact, ...] = ()

@@ -16,6 +16,7 @@ from stepring.shapes.facts import (
     Constant,
     DispatchFact,
     Family,
+    ForwardFact,
     KeyFact,
     StateFacts,
     StoreFact,
@@ -81,7 +82,10 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
             group.initials.extend(key.initials)
             group.starts_zero = group.starts_zero or key.starts_zero
     callers: dict[str, list[CallFact]] = {}
+    forwards: dict[tuple[str, int], list[ForwardFact]] = {}
     for part in facts:
+        for forward in part.forwards:
+            forwards.setdefault((forward.callee, forward.argument), []).append(forward)
         for call in part.calls:
             callers.setdefault(call.callee, []).append(call)
         for dispatch in part.dispatches:
@@ -107,12 +111,33 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
         group.transitions = _distinct(group.transitions)
         group.initials = _distinct(group.initials)
         _settle_starters(group, starters)
-        for store in group.stores:
-            if store.parameter is not None:
-                for call in _distinct(callers.get(store.function, [])):
-                    if call.argument == store.parameter:
-                        group.setters.append((store, call))
+        _settle_setters(group, callers, forwards)
     return gathered
+
+
+def _settle_setters(
+    group: _Gathered, callers: Mapping[str, list[CallFact]], forwards: Mapping[tuple[str, int], list[ForwardFact]]
+) -> None:
+    """The calls that store a constant through a setter, or through functions that hand it on to one; steps through
+    functions that turned out to be no setters go."""
+    entries: set[tuple[str, int]] = set()
+    for store in group.stores:
+        if store.parameter is None:
+            continue
+        reached = {(store.function, store.parameter)}
+        pending = list(reached)
+        while pending:
+            entry = pending.pop()
+            for call in _distinct(callers.get(entry[0], [])):
+                if call.argument == entry[1]:
+                    group.setters.append((store, call))
+            for forward in forwards.get(entry, ()):
+                outer = (forward.caller, forward.parameter)
+                if outer not in reached:
+                    reached.add(outer)
+                    pending.append(outer)
+        entries |= reached
+    group.transitions = [move for move in group.transitions if move.through is None or move.through in entries]
 
 
 def _starters(facts: Iterable[StateFacts]) -> frozenset[str]:
@@ -394,7 +419,7 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
             store.fresh,
         )
     for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
-        yield StateStore(call.function, call.where, named([call.constant]), "", _short(store.function))
+        yield StateStore(call.function, call.where, named([call.constant]), "", _short(call.callee))
 
 
 def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transition]:
@@ -418,10 +443,11 @@ def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transiti
             for state in real:
                 if state.value not in move.mentioned:
                     yield from step(state, move.target.value, move.function, move.guard, move.where)
-    followed = {(move.function, move.target.value) for move in group.transitions}
+    followed = {(move.function, move.stored_by, move.target.value) for move in group.transitions}
+    followed |= {(move.function, move.through[0], move.target.value) for move in group.transitions if move.through}
     for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
-        if (store.function, call.constant.value) in followed or store.fresh:
+        if store.fresh or (call.function, store.function, call.constant.value) in followed:
             continue
         # A setter called from another file: from which state is not known, so from any.
         for state in real:
-            yield from step(state, call.constant.value, call.function, f"calls {_short(store.function)}", call.where)
+            yield from step(state, call.constant.value, call.function, f"calls {_short(call.callee)}", call.where)

@@ -5,9 +5,8 @@ program are worked out: the places get their original spelling, falls and defaul
 finds the transitions. Coroutines made of ``case __LINE__`` label their cases with line numbers and are marked as such.
 """
 
-import re
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 from stepring.meaning.builder import successors
@@ -44,6 +43,7 @@ from stepring.shapes.facts import (
     Constant,
     DispatchFact,
     Family,
+    ForwardFact,
     KeyFact,
     LabelFact,
     StateFacts,
@@ -52,7 +52,8 @@ from stepring.shapes.facts import (
     TransitionFact,
 )
 from stepring.shapes.keys import PlaceKey, is_integral, place_key, uncast
-from stepring.shapes.names import Names, constant_at, constant_of, families, starts
+from stepring.shapes.names import Names, constant_at, constant_of, families, sets, starts
+from stepring.shapes.state_aliases import Alias, copies, getters, working_copies, working_parameters
 from stepring.shapes.state_flow import (
     ENTRY,
     Setting,
@@ -61,8 +62,6 @@ from stepring.shapes.state_flow import (
 )
 
 _WIDE = 1 << 63
-# How functions that store a state for others are named (common practice).
-_SETTER = re.compile(r"set|change|state|mode|phase|goto|enter|switch|transit|next|new_|advance|move", re.IGNORECASE)
 
 
 @dataclass(slots=True)
@@ -85,6 +84,7 @@ class _Scan:
     function: Function
     keys: dict[str, _Seen]
     copies: dict[str, PlaceKey]
+    aliases: tuple[Alias, ...]
     calls: list[tuple[Call, str]]
     exposed: list[tuple[str, Position]]
 
@@ -93,8 +93,9 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
     """What the unit says about state variables."""
     names = Names(read.macros, unit.types, read.origin)
     own = [function for function in unit.functions if function.own]
-    getters = _getters(own)
-    scans = [_scan(function, getters) for function in own]
+    known = getters(own)
+    handed = working_parameters(own)
+    scans = [_scan(function, known, handed.get(function.identity, ())) for function in own]
     chosen = _candidates(scans, names)
     work = _Work(unit, read, names, {function.name: function for function in own}, scans)
     for scan in scans:
@@ -105,13 +106,14 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         tuple(work.keys.values()),
         tuple(work.dispatches),
         tuple(work.tests),
-        tuple(work.stores),
+        tuple(store for store, _ in work.stores),
         tuple(dict.fromkeys(work.transitions)),
         tuple(work.calls),
         _families_by_key(names, work),
         tuple(work.bounded),
         tuple(work.exposed),
         _starters(work),
+        tuple(work.forwards),
     )
 
 
@@ -119,7 +121,7 @@ def _starters(work: "_Work") -> tuple[tuple[str, str | None], ...]:
     """The functions whose names say that they give an object its first state, and who calls them."""
     own = {scan.function.identity for scan in work.scans}
     found: dict[tuple[str, str | None], None] = {
-        (store.function, None): None for store in work.stores if store.function in own and starts(store.function)
+        (store.function, None): None for store, _ in work.stores if store.function in own and starts(store.function)
     }
     for scan in work.scans:
         for _, name in scan.calls:
@@ -140,36 +142,21 @@ class _Work:
     keys: dict[str, KeyFact] = field(default_factory=dict)
     dispatches: list[DispatchFact] = field(default_factory=list)
     tests: list[TestFact] = field(default_factory=list)
-    stores: list[StoreFact] = field(default_factory=list)
+    # Each store with its place in the text that was parsed.
+    stores: list[tuple[StoreFact, Position]] = field(default_factory=list)
     transitions: list[TransitionFact] = field(default_factory=list)
     calls: list[CallFact] = field(default_factory=list)
     exposed: list[tuple[str, Origin]] = field(default_factory=list)
     bounded: list[str] = field(default_factory=list)
     setters: dict[str, bool] = field(default_factory=dict)
+    forwards: list[ForwardFact] = field(default_factory=list)
 
 
 # ------------------------------------------------------------------------------------------------------ first pass
 
 
-def _getters(functions: Iterable[Function]) -> dict[str, PlaceKey]:
-    """Functions that only return a lasting place's value."""
-    found: dict[str, PlaceKey] = {}
-    for function in functions:
-        if len(function.blocks) != 1 or function.blocks[0].statements:
-            continue
-        end = function.blocks[0].terminator
-        if isinstance(end, Return) and end.value is not None:
-            inner = uncast(end.value)
-            if isinstance(inner, Load):
-                key = place_key(inner.place, function.identity)
-                if key is not None and key.scope == "lasting" and is_integral(inner.place):
-                    found[function.name] = key
-    return found
-
-
-def _scan(function: Function, getters: Mapping[str, PlaceKey]) -> _Scan:
-    copies = _copies(function, getters)
-    scan = _Scan(function, {}, copies, [], [])
+def _scan(function: Function, known: Mapping[str, PlaceKey], handed: tuple[Alias, ...]) -> _Scan:
+    scan = _Scan(function, {}, copies(function, known), (*working_copies(function), *handed), [], [])
     for number, block in enumerate(function.blocks):
         for statement in block.statements:
             if isinstance(statement, Assign):
@@ -189,57 +176,31 @@ def _scan(function: Function, getters: Mapping[str, PlaceKey]) -> _Scan:
                         _note_store(scan, number, statement, place)
         end = block.terminator
         if isinstance(end, Switch):
-            key = _tested_key(scan, end.value)
-            if key is not None:
-                seen = _seen(scan, key[0], key[1])
+            for key, type_ in _tested_keys(scan, end.value):
+                seen = _seen(scan, key, type_)
                 seen.dispatches.append((number, end))
-                seen.read_instances.add(key[0].instance)
+                seen.read_instances.add(key.instance)
         elif isinstance(end, Branch):
             _note_tests(scan, end.condition, end.position)
     return scan
 
 
-def _copies(function: Function, getters: Mapping[str, PlaceKey]) -> dict[str, PlaceKey]:
-    """Variables that only ever hold a copy of one lasting place."""
-    found: dict[str, PlaceKey | None] = {}
-    for block in function.blocks:
-        for statement in block.statements:
-            name: str | None = None
-            key: PlaceKey | None = None
-            if isinstance(statement, Assign) and isinstance(statement.place, VariablePlace):
-                variable = statement.place.variable
-                if variable.lasting:
-                    continue
-                name = variable.identity
-                inner = uncast(statement.value)
-                if isinstance(inner, Load):
-                    key = place_key(inner.place, function.identity)
-                    if key is not None and key.scope != "lasting":
-                        key = found.get(key.instance)
-            elif isinstance(statement, Call) and isinstance(statement.result, VariablePlace):
-                name = statement.result.variable.identity
-                if isinstance(statement.callee, FunctionName):
-                    key = getters.get(statement.callee.name)
-            if name is None:
-                continue
-            if name in found and found[name] != key:
-                key = None
-            found[name] = key
-    return {name: key for name, key in found.items() if key is not None}
-
-
-def _tested_key(scan: _Scan, expr: Expr) -> tuple[PlaceKey, object] | None:
+def _tested_keys(scan: _Scan, expr: Expr) -> tuple[tuple[PlaceKey, object], ...]:
+    """The keys whose value an expression is; a parameter can stand for several."""
     inner = uncast(expr)
     if not isinstance(inner, Load):
-        return None
+        return ()
     if isinstance(inner.place, VariablePlace):
-        copied = scan.copies.get(inner.place.variable.identity)
-        if copied is not None:
-            return copied, inner.type
+        name = inner.place.variable.identity
+        aliased = tuple((alias.key, inner.type) for alias in scan.aliases if alias.variable == name)
+        if aliased:
+            return aliased
+        if name in scan.copies:
+            return ((scan.copies[name], inner.type),)
     if not is_integral(inner.place):
-        return None
+        return ()
     key = place_key(inner.place, scan.function.identity)
-    return None if key is None else (key, inner.place.type)
+    return () if key is None else ((key, inner.place.type),)
 
 
 def _seen(scan: _Scan, key: PlaceKey, type_: object) -> _Seen:
@@ -263,10 +224,11 @@ def _note_tests(scan: _Scan, condition: Expr, position: Position) -> None:
     elif isinstance(condition, Binary) and condition.op in ("==", "!=", "<", "<=", ">", ">="):
         for side, other in ((condition.left, condition.right), (condition.right, condition.left)):
             number = uncast(other)
-            key = _tested_key(scan, side)
-            if key is not None and key[0].scope != "parameter":
-                seen = _seen(scan, key[0], key[1])
-                seen.read_instances.add(key[0].instance)
+            for key, type_ in _tested_keys(scan, side):
+                if key.scope == "parameter":
+                    continue
+                seen = _seen(scan, key, type_)
+                seen.read_instances.add(key.instance)
                 if isinstance(number, Const) and condition.op in ("==", "!="):
                     seen.tests.append((number, condition.position or position))
 
@@ -308,6 +270,8 @@ def _candidates(scans: Sequence[_Scan], names: Names) -> frozenset[str]:
 def _holds_names(seen: Sequence[_Seen], names: Names) -> bool:
     """Whether a key is only ever given constants or copies, and some of the constants have names: no count, no
     length."""
+    if any(_stores_parameter(one) for one in seen):
+        return True
     constants: list[Const] = [number for one in seen for number, _ in one.tests]
     for one in seen:
         for _, statement, _ in one.stores:
@@ -324,6 +288,17 @@ def _holds_names(seen: Sequence[_Seen], names: Names) -> bool:
         const.position is not None and const.position.line and names.origin(const.position).spelling.isidentifier()
         for const in constants
         if isinstance(const.type, IntType)
+    )
+
+
+def _stores_parameter(seen: _Seen) -> bool:
+    """Whether some store gives the key a parameter's value, as setters do."""
+    return any(
+        isinstance(statement, Assign)
+        and isinstance(inner := uncast(statement.value), Load)
+        and isinstance(inner.place, VariablePlace)
+        and inner.place.variable.storage == "parameter"
+        for _, statement, _ in seen.stores
     )
 
 
@@ -351,8 +326,10 @@ def _function_facts(work: _Work, scan: _Scan, chosen: frozenset[str]) -> None:
         for number, position in seen.tests:
             where = work.names.origin(position)
             work.tests.append(TestFact(key, function.identity, constant_of(work.names, number, where), where))
-        for _, statement, place in seen.stores:
-            work.stores.append(_store(work, scan, seen, statement, place))
+        for block, statement, place in seen.stores:
+            store = _store(work, scan, seen, statement, place)
+            store = replace(store, fresh=True) if _before_all(scan, seen, block) else store
+            work.stores.append((store, statement.position))
     for call, name in scan.calls:
         if not _may_set(work, name):
             continue
@@ -365,32 +342,55 @@ def _function_facts(work: _Work, scan: _Scan, chosen: frozenset[str]) -> None:
                     callee = work.by_name.get(name)
                     identity = callee.identity if callee is not None else name
                     work.calls.append(CallFact(identity, index, constant, function.identity, where))
+            elif isinstance(inner, Load) and isinstance(inner.place, VariablePlace):
+                _note_forward(work, function, inner.place.variable, name, index)
     for key, position in scan.exposed:
         if key in chosen:
             work.exposed.append((key, work.names.origin(position)))
 
 
+def _note_forward(work: _Work, function: Function, variable: Variable, name: str, argument: int) -> None:
+    """A parameter that is handed on as it came."""
+    for number, parameter in enumerate(function.parameters):
+        if parameter.identity == variable.identity and not _assigned(function, variable):
+            work.forwards.append(ForwardFact(_identity(work, name), argument, function.identity, number))
+
+
+def _before_all(scan: _Scan, seen: _Seen, block: int) -> bool:
+    """Whether a local variable is given its first value: no dispatch on it comes before the store."""
+    return seen.key.scope == "local" and not any(
+        block in _reach_after(scan.function, dispatch) for dispatch, _ in seen.dispatches
+    )
+
+
 def _may_set(work: _Work, name: str) -> bool:
-    """Whether a function may be a setter: one seen here that stores a parameter, or one elsewhere that is named like
-    one."""
+    """Whether a function may be a setter: one seen here that stores a parameter or hands it on to one that may be, or
+    one elsewhere that is named like one."""
     known = work.setters.get(name)
     if known is None:
         function = work.by_name.get(name)
-        if function is None:
-            known = bool(_SETTER.search(name))
-        else:
-            own = {parameter.identity for parameter in function.parameters}
-            known = any(
-                isinstance(inner, Load)
-                and isinstance(inner.place, VariablePlace)
-                and inner.place.variable.identity in own
-                for block in function.blocks
-                for statement in block.statements
-                if isinstance(statement, Assign)
-                for inner in [uncast(statement.value)]
-            )
-        work.setters[name] = known
+        work.setters[name] = False  # for one that calls itself
+        known = work.setters[name] = sets(name) if function is None else _stores_own(work, function)
     return known
+
+
+def _stores_own(work: _Work, function: Function) -> bool:
+    own = {parameter.identity for parameter in function.parameters}
+
+    def is_own(value: Expr) -> bool:
+        inner = uncast(value)
+        return (
+            isinstance(inner, Load) and isinstance(inner.place, VariablePlace) and inner.place.variable.identity in own
+        )
+
+    statements = [statement for block in function.blocks for statement in block.statements]
+    return any(isinstance(statement, Assign) and is_own(statement.value) for statement in statements) or any(
+        isinstance(statement, Call)
+        and isinstance(statement.callee, FunctionName)
+        and any(is_own(argument) for argument in statement.arguments)
+        and _may_set(work, statement.callee.name)
+        for statement in statements
+    )
 
 
 def _store(work: _Work, scan: _Scan, seen: _Seen, statement: Assign | Call | Clobber, place: PlaceKey) -> StoreFact:
@@ -704,7 +704,9 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         _unconditional(work, key)
         return
     writers = _writers(work, key, scans, callers)
-    if not writers:
+    first = scans[0].keys[key]
+    outside = first.key.scope == "lasting" and _shared(first)
+    if not writers and not (outside and any(_asks_others(work, scan) for scan in scans)):
         return
     mentioned = frozenset(
         value
@@ -727,10 +729,19 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         seen = scan.keys.get(key) if scan is not None else None
         return frozenset(seen.instances) if seen is not None else frozenset()
 
-    first = scans[0].keys[key]
     storing = {scan.function.identity for scan in scans if scan.keys[key].stores}
     shared = first.key.scope == "lasting" and (_shared(first) or len(storing) > 1)
-    setting = Setting(key, mentioned, work.by_name.get, writers, instances, _commits(scans, key), shared)
+    setting = Setting(
+        key,
+        mentioned,
+        work.by_name.get,
+        writers,
+        instances,
+        _commits(scans, key),
+        shared=shared,
+        outside=outside,
+        aliases=_aliases(scans, key),
+    )
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)
@@ -755,20 +766,61 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         setting.moves,
         key=lambda move: (move.at, move.source is None, move.source or 0, move.target, move.chosen.block),
     ):
+        if first.key.scope == "local" and move.source is None and not move.excluded:
+            continue  # a local variable has no state before its first value
         here = move.chosen.position if move.chosen.position is not None and move.chosen.position.line else move.at
         where = work.names.origin(here)
         target = constant_at(work.names, move.target, move.chosen.position, move.chosen.name, where)
         work.transitions.append(
             TransitionFact(
                 key,
-                move.function,
+                move.chosen.function,
                 move.source,
                 tuple(sorted(move.excluded)) if move.source is None else (),
                 target,
-                guard_text(by_identity[move.function].function, move.chosen.block, key),
+                _guard(by_identity[move.chosen.function], move.chosen.block, key),
                 where,
+                move.function,
+                move.through,
             )
         )
+    if not setting.bounded:
+        _settle_stores(work, key, setting)
+
+
+def _guard(scan: _Scan, block: int, key: str) -> str:
+    standing = frozenset(alias.variable for alias in scan.aliases if alias.key.key == key)
+    return guard_text(scan.function, block, key, standing)
+
+
+def _settle_stores(work: _Work, key: str, setting: Setting) -> None:
+    """Stores of computed values whose every value was seen: what they store is known after all."""
+    for number, (store, at) in enumerate(work.stores):
+        if store.key != key or store.parameter is not None or len(store.constants) == 1:
+            continue
+        seen = setting.stored.get((store.function, at))
+        if not seen or None in seen:
+            continue
+        values = sorted((one for one in seen if one is not None), key=lambda one: (one[0], one[1].block))
+        constants = dict.fromkeys(
+            constant_at(work.names, value, chosen.position, chosen.name, store.where) for value, chosen in values
+        )
+        work.stores[number] = (replace(store, constants=tuple(constants), why_unknown="", stepped=False), at)
+
+
+def _asks_others(work: _Work, scan: _Scan) -> bool:
+    """Whether a function calls what may be a setter in another unit."""
+    return any(name not in work.by_name and sets(name) for _, name in scan.calls)
+
+
+def _aliases(scans: Sequence[_Scan], key: str) -> dict[tuple[str, str], frozenset[str]]:
+    found: dict[tuple[str, str], set[str]] = {}
+    for scan in scans:
+        for alias in scan.aliases:
+            if alias.key.key == key:
+                way = "" if alias.anywhere else alias.key.instance
+                found.setdefault((scan.function.identity, way), set()).add(alias.variable)
+    return {way: frozenset(names) for way, names in found.items()}
 
 
 def _commits(scans: Sequence[_Scan], key: str) -> frozenset[str]:
@@ -786,22 +838,16 @@ def _commits(scans: Sequence[_Scan], key: str) -> frozenset[str]:
 
 def _has_setter(scans: Sequence[_Scan], key: str) -> bool:
     """Whether some function stores one of its parameters in the key."""
-    return any(
-        isinstance(statement, Assign)
-        and isinstance(inner := uncast(statement.value), Load)
-        and isinstance(inner.place, VariablePlace)
-        and inner.place.variable.storage == "parameter"
-        for scan in scans
-        for _, statement, _ in scan.keys[key].stores
-    )
+    return any(_stores_parameter(scan.keys[key]) for scan in scans)
 
 
 def _unconditional(work: _Work, key: str) -> None:
     """Stores in a unit that never looks at the state: from any state to each constant."""
-    for store in work.stores:
+    for store, _ in work.stores:
         if store.key == key and not store.fresh:
             for constant in store.constants:
-                work.transitions.append(TransitionFact(key, store.function, None, (), constant, "", store.where))
+                function, where = store.function, store.where
+                work.transitions.append(TransitionFact(key, function, None, (), constant, "", where, function))
 
 
 def _identity(work: _Work, name: str) -> str:
@@ -953,7 +999,7 @@ def _families_by_key(names: Names, work: _Work) -> tuple[Family, ...]:
     by_key: dict[str, list[Constant]] = {}
     for dispatch in work.dispatches:
         by_key.setdefault(dispatch.key, []).extend(label.constant for label in dispatch.labels)
-    for store in work.stores:
+    for store, _ in work.stores:
         by_key.setdefault(store.key, []).extend(store.constants)
     found: dict[str, Family] = {}
     for constants in by_key.values():

@@ -8,7 +8,7 @@ so when the bound was met.
 """
 
 import re
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Literal, NamedTuple
 
@@ -35,6 +35,7 @@ from stepring.shapes.state_slice import (
     HelperTerm,
     Number,
     Op,
+    OutsideOp,
     Slice,
     SliceBlock,
     StateTerm,
@@ -49,8 +50,9 @@ MOST_DEPTH = 3
 
 
 class Chosen(NamedTuple):
-    """Where a constant was chosen: the function's block, the place, its enumerator's name."""
+    """Where a constant was chosen: the function (its identity) and block, the place, its enumerator's name."""
 
+    function: str
     block: int
     position: Position | None
     name: str | None
@@ -84,7 +86,8 @@ class Environment(NamedTuple):
 class Move:
     """A store of a constant by a function (its identity): from ``source`` to ``target``.
 
-    A source of None is any value but those in ``excluded``.
+    A source of None is any value but those in ``excluded``. ``through`` is set where the constant is handed to a
+    function of another unit, as its argument of that number: a store if that function turns out to be a setter.
     """
 
     function: str
@@ -93,6 +96,7 @@ class Move:
     target: int
     chosen: Chosen
     at: Position
+    through: tuple[str, int] | None = None
 
 
 class Exit(NamedTuple):
@@ -114,9 +118,14 @@ class Setting:
     writers: frozenset[str]
     instances: Callable[[str], frozenset[str]]
     commits: frozenset[str] = frozenset()
-    # Whether code outside the function that is run can store the state.
+    # Whether code outside the function that is run can store the state, and whether functions of other units can.
     shared: bool = False
+    outside: bool = False
+    # Variables that stand for the state in a function, by the function and the instance ("" for any).
+    aliases: Mapping[tuple[str, str], frozenset[str]] = field(default_factory=dict)
     moves: set[Move] = field(default_factory=set)
+    # What each store was seen to store, by function and place; None among them is a value that is not known.
+    stored: dict[tuple[str, Position], set[tuple[int, Chosen] | None]] = field(default_factory=dict)
     slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
     followed: set[str] = field(default_factory=set)
@@ -140,9 +149,23 @@ def flow(
     """Run a function from one source and state; moves gather in ``setting``."""
     part = setting.slices.get((function.identity, instance))
     if part is None:
-        part = make_slice(function, setting.key, instance, setting.resolve, setting.writers, setting.commits)
+        known_as = [setting.aliases.get((function.identity, way), frozenset()) for way in (instance, "")]
+        aliases = frozenset().union(*known_as)
+        part = make_slice(
+            function,
+            setting.key,
+            instance,
+            setting.resolve,
+            setting.writers,
+            setting.commits,
+            aliases,
+            setting.outside,
+        )
         setting.slices[function.identity, instance] = part
-    start = Environment(source, state, tuple(arguments.get(name, ANY) for name in part.helpers))
+    # A parameter that stands for the state is what it stands for, where no caller says otherwise.
+    unknown = [state if slot in part.aliases else ANY for slot in range(len(part.helpers))]
+    helpers = tuple(arguments.get(name, unknown[slot]) for slot, name in enumerate(part.helpers))
+    start = Environment(source, state, helpers)
     memo_key = (function.identity, instance, start)
     known = setting.memo.get(memo_key)
     if known is not None:
@@ -196,6 +219,10 @@ class _Run:
 def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterator[Environment]:
     if isinstance(op, CallOp):
         yield from _call(run, block, op, environment)
+    elif isinstance(op, OutsideOp):
+        for number, term in enumerate(op.arguments):
+            _note_move(run, _evaluate(run, block, term, environment), environment, op.position, (op.name, number))
+        yield environment
     else:
         yield _store(run, block, op, _evaluate(run, block, op.term, environment), environment)
 
@@ -203,17 +230,26 @@ def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterato
 def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Environment) -> Environment:
     if op.slot is None or op.commit:
         _note_move(run, value, environment, op.position)
+    if op.slot is None:
+        seen = run.setting.stored.setdefault((run.part.function.identity, op.position), set())
+        if value.kind == "any":
+            seen.add(None)
+        elif value.kind == "known" and value.chosen is not None:
+            seen.add((value.number, value.chosen))
     if op.slot is not None:
         helpers = environment.helpers
         return environment._replace(helpers=(*helpers[: op.slot], value, *helpers[op.slot + 1 :]))
     return environment._replace(state=value)
 
 
-def _note_move(run: _Run, value: Value, environment: Environment, at: Position) -> None:
+def _note_move(
+    run: _Run, value: Value, environment: Environment, at: Position, through: tuple[str, int] | None = None
+) -> None:
     if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
         source = environment.source
         known = source.number if source.kind == "known" else None
-        run.setting.moves.add(Move(run.part.function.identity, known, source.excluded, value.number, value.chosen, at))
+        function = run.part.function.identity
+        run.setting.moves.add(Move(function, known, source.excluded, value.number, value.chosen, at, through))
 
 
 def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterator[Environment]:
@@ -232,7 +268,9 @@ def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterat
     }
     exits = flow(setting, callee, instance, environment.source, environment.state, arguments, run.depth + 1)
     for leaving in exits or {Exit(environment.source, environment.state, ANY)}:
-        after = environment._replace(source=leaving.source, state=leaving.state)
+        # A function that only works on a copy leaves the state as it was until its result is stored.
+        state = leaving.state if callee.identity in setting.writers else environment.state
+        after = environment._replace(source=leaving.source, state=state)
         yield _store(run, block, result, leaving.returned, after) if op.slot is not None else after
 
 
@@ -271,20 +309,20 @@ def _leave(
                 targets = next(
                     (case.targets for case in block.cases if case.low <= outcome.number <= case.high), block.otherwise
                 )
-                yield targets, _sourced(run, test, one)
+                yield targets, _sourced(run, test, one, block.position)
             else:
                 if outcome.kind == "any":
                     for case in block.cases:
-                        told = _assume(number, test, one, case.low) if case.low == case.high else one
-                        yield case.targets, _sourced(run, test, told)
-                yield block.otherwise, _sourced(run, test, one)
+                        told = _assume(run, number, test, one, case.low) if case.low == case.high else one
+                        yield case.targets, _sourced(run, test, told, block.position)
+                yield block.otherwise, _sourced(run, test, one, block.position)
         return
     for one in _split_for_branch(run, test, environment):
         outcome = _evaluate(run, number, test, one)
         if outcome.kind != "known" or outcome.number:
-            yield block.then, _sourced(run, test, _told(number, test, one, True))
+            yield block.then, _sourced(run, test, _told(run, number, test, one, True))
         if outcome.kind != "known" or not outcome.number:
-            yield block.otherwise, _sourced(run, test, _told(number, test, one, False))
+            yield block.otherwise, _sourced(run, test, _told(run, number, test, one, False))
 
 
 def _split_for_switch(run: _Run, test: Term, block: SliceBlock, environment: Environment) -> Iterator[Environment]:
@@ -373,43 +411,50 @@ def _tested(term: Term) -> Iterator[Term]:
         yield from _tested(term.right)
 
 
-def _sourced(run: _Run, test: Term, environment: Environment) -> Environment:
-    """At a dispatch or test of the state (or a copy of it) its value becomes the source of what follows."""
+def _sourced(run: _Run, test: Term, environment: Environment, at: Position | None = None) -> Environment:
+    """At a dispatch or test of the state (or a copy of it) its value becomes the source of what follows.
+
+    ``at`` is the place of a dispatch: there a constant in a working copy has become the state.
+    """
     for term in _tested(test):
         value = _of(term, environment)
-        if value is None or value.kind == "any" or (isinstance(term, HelperTerm) and value.chosen is not None):
-            continue  # a constant meant for the state is no copy of it
+        if value is None or value.kind == "any":
+            continue
+        if isinstance(term, HelperTerm) and value.chosen is not None:
+            if term.slot not in run.part.aliases or at is None:
+                continue  # a constant meant for the state is no copy of it
+            _note_move(run, value, environment, at)
         return environment._replace(source=value._replace(chosen=None))
     return environment
 
 
-def _told(block: int, test: Term, environment: Environment, true: bool) -> Environment:
+def _told(run: _Run, block: int, test: Term, environment: Environment, true: bool) -> Environment:
     """What an equality test tells of a value that was computed and not known."""
     test = _uncast(test)
     if isinstance(test, UnaryTerm) and test.op == "!":
-        return _told(block, test.operand, environment, not true)
+        return _told(run, block, test.operand, environment, not true)
     if isinstance(test, BinaryTerm) and test.op in ("==", "!=") and (test.op == "==") == true:
         for side, other in ((test.left, test.right), (test.right, test.left)):
             number = _uncast(other)
             if isinstance(number, Number):
-                return _assume(block, side, environment, number.number)
+                return _assume(run, block, side, environment, number.number)
     return environment
 
 
-def _assume(block: int, term: Term, environment: Environment, number: int) -> Environment:
+def _assume(run: _Run, block: int, term: Term, environment: Environment, number: int) -> Environment:
     term = _uncast(term)
     value = _of(term, environment)
     if value is None or value.kind != "any":
         return environment
     # A helper that held anything is no copy of the state; what the test told it is as good as chosen here.
-    chosen = Chosen(block, None, None) if isinstance(term, HelperTerm) else None
+    chosen = Chosen(run.part.function.identity, block, None, None) if isinstance(term, HelperTerm) else None
     return _set(term, environment, Value("known", number, chosen))
 
 
 def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Value:
     match term:
         case Number(number=number, position=position, name=name):
-            return Value("known", number, Chosen(block, position, name))
+            return Value("known", number, Chosen(run.part.function.identity, block, position, name))
         case StateTerm():
             return environment.state
         case HelperTerm(slot=slot):
@@ -420,13 +465,13 @@ def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Va
         case UnaryTerm(op=op, operand=operand, type=type_):
             value = _evaluate(run, block, operand, environment)
             result = apply_unary(op, value.number, type_) if value.kind == "known" else None
-            return ANY if result is None else Value("known", result, Chosen(block, None, None))
+            return ANY if result is None else _computed(run, block, result)
         case BinaryTerm(op=op, left=left, right=right, type=type_):
             a = _evaluate(run, block, left, environment)
             b = _evaluate(run, block, right, environment)
             if a.kind == "known" and b.kind == "known":
                 result = apply_binary(op, a.number, b.number, type_)
-                return ANY if result is None else Value("known", result, Chosen(block, None, None))
+                return ANY if result is None else _computed(run, block, result)
             if op in ("==", "!="):
                 for known, rest in ((a, b), (b, a)):
                     if known.kind == "known" and rest.kind == "other" and known.number in rest.excluded:
@@ -434,8 +479,13 @@ def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Va
     return ANY
 
 
-def guard_text(function: Function, block: int, key: str) -> str:
-    """The conditions under which control comes to a block, up to the dispatch on the state, as C text."""
+def _computed(run: _Run, block: int, result: int) -> Value:
+    return Value("known", result, Chosen(run.part.function.identity, block, None, None))
+
+
+def guard_text(function: Function, block: int, key: str, standing: frozenset[str] = frozenset()) -> str:
+    """The conditions under which control comes to a block, up to the dispatch on the state, as C text; ``standing`` are
+    variables that stand for the state."""
     before: dict[int, list[int]] = {}
     for number, item in enumerate(function.blocks):
         for target in _targets(item.terminator):
@@ -455,7 +505,7 @@ def guard_text(function: Function, block: int, key: str) -> str:
             control = uncast(terminator.value)
             if isinstance(control, Load):
                 found = place_key(control.place, function.identity)
-                if found is not None and found.key == key:
+                if found is not None and (found.key == key or found.instance in standing):
                     break
             labels = [case.name or str(case.low) for case in terminator.cases if case.target == block]
             if labels:

@@ -35,6 +35,7 @@ from stepring.meaning.types import (
 )
 from stepring.places import Position
 from stepring.shapes.keys import place_key, uncast
+from stepring.shapes.names import sets
 
 MOST_HELPERS = 64
 
@@ -108,7 +109,15 @@ class CallOp(NamedTuple):
     slot: int | None
 
 
-Op: TypeAlias = StoreOp | CallOp
+class OutsideOp(NamedTuple):
+    """Hand constants to a function of another unit, which may be a setter."""
+
+    name: str
+    arguments: tuple[Term, ...]
+    position: Position
+
+
+Op: TypeAlias = StoreOp | CallOp | OutsideOp
 
 
 class CaseOp(NamedTuple):
@@ -151,6 +160,8 @@ class Slice:
     blocks: dict[int, SliceBlock]
     entry: tuple[int, ...]
     live: dict[int, frozenset[int]]
+    # The helpers that stand for the state: a dispatch on one makes its value the state.
+    aliases: frozenset[int]
 
 
 def make_slice(
@@ -160,9 +171,14 @@ def make_slice(
     callee_of: Callable[[str], Function | None],
     writers: frozenset[str],
     commits: frozenset[str],
+    aliases: frozenset[str] = frozenset(),
+    outside: bool = False,
 ) -> Slice:
-    """The slice of a function for one object's state."""
-    maker = _Maker(function, key, instance, callee_of, writers, commits)
+    """The slice of a function for one object's state; ``aliases`` are variables that stand for it there.
+
+    ``outside`` says that functions of other units can store it.
+    """
+    maker = _Maker(function, key, instance, callee_of, writers, commits, aliases, outside)
     names = maker.helpers()
     maker.slots = {name: number for number, name in enumerate(names)}
     ops = [maker.operations(number) for number in range(len(function.blocks))]
@@ -174,7 +190,8 @@ def make_slice(
     }
     onward = {number: _onward(function, number, keep) for number in range(len(function.blocks))}
     blocks = {number: maker.block(number, ops[number], tests[number], onward) for number in keep}
-    return Slice(function, names, blocks, onward[0], _liveness(blocks))
+    standing = frozenset(number for number, name in enumerate(names) if name in aliases)
+    return Slice(function, names, blocks, onward[0], _liveness(blocks), standing)
 
 
 def _onward(function: Function, start: int, keep: set[int]) -> tuple[int, ...]:
@@ -208,7 +225,7 @@ def _liveness(blocks: dict[int, SliceBlock]) -> dict[int, frozenset[int]]:
                 if term is not None:
                     after |= set(_slots(term))
             for op in reversed(block.ops):
-                if op.slot is not None and op.slot >= 0:
+                if not isinstance(op, OutsideOp) and op.slot is not None and op.slot >= 0:
                     after.discard(op.slot)
                 for term in (op.term,) if isinstance(op, StoreOp) else op.arguments:
                     after |= set(_slots(term))
@@ -247,6 +264,8 @@ class _Maker:
     callee_of: Callable[[str], Function | None]
     writers: frozenset[str]
     commits: frozenset[str]
+    aliases: frozenset[str]
+    outside: bool
     slots: dict[str, int] | None = None
 
     def is_state(self, place: PlaceExpr) -> bool:
@@ -285,7 +304,7 @@ class _Maker:
                             wanted.extend(_variables(argument))
             if isinstance(block.terminator, Return) and block.terminator.value is not None:
                 wanted.extend(_variables(block.terminator.value))
-        wanted = list(dict.fromkeys([*wanted, *self.commits]))
+        wanted = list(dict.fromkeys([*sorted(self.aliases), *wanted, *self.commits]))
         size = -1
         while size != len(wanted):
             size = len(wanted)
@@ -346,6 +365,12 @@ class _Maker:
             yield CallOp(callee, call, tuple(self.term(argument) for argument in call.arguments), slot)
         elif slot is not None:
             yield StoreOp(None if slot < 0 else slot, ANY_TERM, call.position)
+        elif self.outside and callee is None and sets(name):
+            constants = tuple(
+                self.term(argument) if isinstance(uncast(argument), Const) else ANY_TERM for argument in call.arguments
+            )
+            if any(constant != ANY_TERM for constant in constants):
+                yield OutsideOp(name, constants, call.position)
 
     def term(self, expr: Expr) -> Term:
         """An expression as a term; what holds neither the state nor a helper nor constants alone is any value."""
