@@ -6,8 +6,9 @@ from typing import Any
 import pytest
 from tests.support import lower_text
 
+from stepring.meaning.models import integer
 from stepring.paths.interpreter import Program, fresh, program, run
-from stepring.paths.memory import Memory
+from stepring.paths.memory import Memory, write_value
 from stepring.paths.types import Event
 
 BARGE = """
@@ -144,8 +145,8 @@ def test_a_wrong_call_is_refused() -> None:
         ("bounds", "int t[3] = {0}; return t[n + 2];"),
         ("bounds", "int t[3] = {0}; return t[n - 2];"),
         ("bounds", "int t[3] = {0}, *p = t; return p[n + 2];"),
-        ("bounds", "int t[3] = {0}, *p = t + 3; p += n; return 0;"),
-        ("bounds", "int t[3] = {0}, *p = t; p -= n; return 0;"),
+        ("pointer", "int t[3] = {0}, *p = t + 3; p += n; return 0;"),
+        ("pointer", "int t[3] = {0}, *p = t; p -= n; return 0;"),
         ("bounds", "int t[2][3] = {{0}}; return t[0][n + 2];"),
         ("bounds", "struct { int a[2], b; } s = {{0}}; int *p = s.a; return p[n + 1];"),
         ("bounds", "int v = n, *p = &v; return p[1];"),
@@ -345,3 +346,37 @@ def test_an_object_that_is_too_large_is_not_kept() -> None:
 def test_a_parameter_without_a_name_takes_an_argument() -> None:
     made = barge("int second(int, int b) { return b; } int step(void) { return second(4, 5); }")
     assert run(made, "step").value == 5
+
+
+@pytest.mark.parametrize(
+    "body",
+    [
+        "int t[n]; t[0] = 1; return t[0];",
+        "int t[n], *p = t; p++; return 0;",
+        "int t[n]; memset(t, 0, 4); return 0;",
+        "for (int i = 0; i < n; i++) { int t[n]; t[i] = i; } return 0;",
+        "return elsewhere[n];",
+        "unsigned char *p = elsewhere; return *++p;",
+        "struct hidden *h = given; return h->n;",
+        "struct hidden *h = given; h++; return 0;",
+    ],
+)
+def test_what_has_no_known_size_is_not_called_undefined(body: str) -> None:
+    text = "extern unsigned char elsewhere[]; struct hidden; extern struct hidden *given;"
+    text += "void *memset(void *, int, int);"
+    outcome = run(barge(f"{text} int step(int n) {{ {body} }}"), "step", (3,))
+    assert outcome.kind == "stopped", outcome
+
+
+def test_what_a_function_without_body_may_have_set_is_not_called_indeterminate() -> None:
+    made = barge("void measure(int *); int step(void) { int v; measure(&v); return v; }")
+    outcome = run(made, "step", externals={"measure": lambda arguments: 0})
+    assert (outcome.kind, "measure may have set it" in outcome.reason) == ("stopped", True)
+    memory = fresh(made)
+
+    def measure(arguments: Sequence[Any]) -> int:
+        cells, offset, *_ = arguments[0]
+        write_value(cells, offset, integer(made.model, "int"), 77)
+        return 0
+
+    assert run(made, "step", externals={"measure": measure}, memory=memory).value == 77

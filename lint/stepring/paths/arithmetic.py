@@ -102,8 +102,10 @@ def stepped(pointer: Any, steps: int, size: int, text: str, position: Position |
     cells, offset, low, high = pointer
     moved = offset + steps * size
     if not low <= moved <= high:
+        if cells.size == 0 and cells.why:
+            raise Unsettled(f"{text} cannot be reached: {cells.why}", position)
         where = f"bytes {low} to {high} of {cells.name}"
-        raise Undefined("bounds", f"{text} makes a pointer to byte {moved}; the array is {where}", position)
+        raise Undefined("pointer", f"{text} makes a pointer to byte {moved}; the array is {where}", position)
     return (cells, moved, low, high)
 
 
@@ -137,7 +139,9 @@ def pointer_order(left: Any, right: Any, text: str, position: Position | None) -
 def renewed(cells: Cells) -> Cells:
     """A new life of a variable: the old object is gone."""
     cells.alive = False
-    return new_cells(cells.name, cells.size, cells.address)
+    fresh = new_cells(cells.name, cells.size, cells.address)
+    fresh.why = cells.why if cells.size == 0 else ""
+    return fresh
 
 
 # -------------------------------------------------------------------------------------------------------------- reals

@@ -180,8 +180,11 @@ def _variable(writer: Writer, variable: Variable) -> Where:
         slot = writer.slots[variable.identity]
         if variable.identity not in writer.cells:
             return Where(slot=slot)
-        size = size_of_type(writer, variable.type) or 0
-        return Where(local(writer, f"f[{slot}]"), 0, "", "0", str(size))
+        size = size_of_type(writer, variable.type)
+        cells = local(writer, f"f[{slot}]")
+        if size is None:
+            return Where(cells, 0, "", "0", f"{cells}.size", checked=True)
+        return Where(cells, 0, "", "0", str(size))
     number = writer.program.static_number(writer.unit, variable)
     size = writer.program.statics[number].size
     own = size_of_type(writer, variable.type)

@@ -114,8 +114,11 @@ def _open(state: Run, code: Code, arguments: Sequence[Any]) -> _Frame:
     values: list[Any] = [memory.cells, state, None] + [None] * (code.width - 3)
     top = memory.top
     for resident in code.residents:
-        values[resident.slot] = new_cells(resident.name, resident.size, memory.top)
-        memory.top += (resident.size + 31) // 16 * 16
+        size = resident.size or 0
+        cells = values[resident.slot] = new_cells(resident.name, size, memory.top)
+        memory.top += (size + 31) // 16 * 16
+        if resident.size is None:
+            cells.why = f"the size of {resident.name} is not known here"
     for (slot, type_), given in zip(code.parameters, arguments, strict=True):
         if isinstance(values[slot], Cells):
             if given is not None:
@@ -227,6 +230,10 @@ def _outside_call(state: Run, name: str, call: Enter) -> Any:
             result = given(name, call.arguments)
         else:
             raise Unsettled(f"{name} has no body in the units that were read", call.position)
+        for argument in call.arguments:
+            # It may have set what it was given a pointer to: such bits are unknown now, not indeterminate.
+            if argument.__class__ is tuple and argument[0].known is not None and not argument[0].why:
+                argument[0].why = f"{name} may have set it"
     if call.result is None:
         return None
     return adopted(result, call.result, name, call.position)

@@ -70,6 +70,8 @@ def _bytes(run: Any, pointer: Any, what: str, at: Position) -> Iterator[int]:
         if not low <= offset < high:
             raise outside(cells, offset, 1, low, high, what, at)
         if cells.known is not None and cells.known[offset] != 0xFF:
+            if what == "memcmp":  # padding may be compared; what comes out is then not specified (6.2.6.1p6)
+                raise Unsettled(f"memcmp compares bytes of {cells.name} that were never set", at)
             raise unset(cells, f"{what}'s argument", at)
         yield cells.data[offset]
         offset += 1

@@ -83,11 +83,11 @@ class Enter:
 
 @dataclass(frozen=True, slots=True)
 class Resident:
-    """A variable that needs memory: its place in the frame, its name and its size."""
+    """A variable that needs memory: its place in the frame, its name and its size; None where that is not known."""
 
     slot: int
     name: str
-    size: int
+    size: int | None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -294,7 +294,7 @@ def translate(program: Any, unit: int, function: Function, *, watched: bool) -> 
             continue
         slot = writer.slots[identity] = FIRST_SLOT + len(writer.slots)
         if identity in writer.cells:
-            residents.append(Resident(slot, variable.name, size_of_type(writer, variable.type) or 0))
+            residents.append(Resident(slot, variable.name, size_of_type(writer, variable.type)))
     text: list[str] = []
     costs: list[tuple[int, Position]] = []
     pending: list[tuple[Call | None, tuple[Statement, ...], Block]] = [

@@ -26,10 +26,11 @@ Fault = Literal[
     "arguments",
 ]
 """What is undefined: a signed result that does not fit (6.5p5), a shift count or a shifted value out of range (6.5.7),
-division by zero (6.5.5p5), an access or a pointer outside its array (6.5.6p8), a null pointer used (6.5.3.2p4), a value
-read before it was set (6.3.2.1p2), an object used after its life (6.2.4p2), pointers into different objects compared
-or subtracted (6.5.6p9, 6.5.8p5), a real that its integer type cannot hold (6.3.1.4p1), a constant object changed
-(6.7.3p6), a copy whose ends overlap (7.24.2.1), a call with the wrong number of arguments (6.5.2.2p6)."""
+division by zero (6.5.5p5), an access outside its array (6.5.6p8), a null pointer used (6.5.3.2p4), a value read before
+it was set (6.3.2.1p2), an object used after its life (6.2.4p2), a pointer made outside its array, or pointers into
+different objects compared or subtracted (6.5.6p8, p9, 6.5.8p5), a real that its integer type cannot hold (6.3.1.4p1),
+a constant object changed (6.7.3p6), a copy whose ends overlap (7.24.2.1), a call with the wrong number of arguments
+(6.5.2.2p6)."""
 
 
 class Undefined(Exception):
