@@ -91,13 +91,17 @@ class Callees:
         weight = self._weight(body)
         return body if weight <= (HEAVIEST if body.static else LIGHT) else None
 
+    def size(self, identity: str) -> int:
+        """The size of a function itself, in statements and blocks."""
+        return sum(1 + len(block.statements) for block in self.functions[identity].blocks)
+
     def _weight(self, function: Function) -> int:
         """The size of a function with the callees that are run in place in it; a recursive one is too heavy."""
         known = self._weights.get(function.identity)
         if known is not None:
             return known
         self._weights[function.identity] = HEAVIEST + 1
-        weight = sum(1 + len(block.statements) for block in function.blocks)
+        weight = self.size(function.identity)
         for block in function.blocks:
             for statement in block.statements:
                 if isinstance(statement, Call) and isinstance(statement.callee, FunctionName):

@@ -10,8 +10,9 @@ if they prove inductive.
 The result holds under the assumptions in ``ProgramValues.assumptions``.
 """
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from heapq import heapify, heappop, heappush
 from typing import Final
 
 from stepring.meaning.types import (
@@ -199,7 +200,7 @@ class ProgramValues:
 
     def of(self, function: Function) -> FunctionValues:
         """The function's values, whoever calls it: with what the summaries allow, and with what a caller has not yet
-        finished changing where it calls it in between."""
+        finished changing where it calls it."""
         known = self._found.get(function.identity)
         if known is None:
             known = self._found[function.identity] = self._final(function)
@@ -403,24 +404,30 @@ class ProgramValues:
         joined = (widen(known, value, thresholds) if number > ROUNDS else None) or union(known, value)
         return (within(joined, limits.low, limits.high) or limits) if limits is not None else joined
 
-    def _settle(self, waiting: dict[str, None]) -> None:
-        """Run functions until the summaries do not grow."""
-        while waiting:
-            identity = next(iter(waiting))
-            del waiting[identity]
+    def _settle(self, start: Iterable[str]) -> None:
+        """Run functions until the summaries do not grow, small ones first: what they make grow settles before large ones
+        read it."""
+        waiting = set(start)
+        queue = [(self.callees.size(identity), identity) for identity in waiting]
+        heapify(queue)
+        while queue:
+            _, identity = heappop(queue)
+            waiting.discard(identity)
             added = self._added[identity] = self._run(identity)
             changed = self._grow(added, self.callees.thresholds(identity))
-            if changed:
-                readers = (other for other, read in self._read.items() if not changed.isdisjoint(read))
-                waiting.update(dict.fromkeys(readers))
-            waiting.update(dict.fromkeys(callee for callee in self._late if callee in self.functions))
+            readers = (
+                {other for other, read in self._read.items() if not changed.isdisjoint(read)} if changed else set()
+            )
+            for fresh in (readers | (self._late & self.functions.keys())) - waiting:
+                waiting.add(fresh)
+                heappush(queue, (self.callees.size(fresh), fresh))
             self._late.clear()
 
     def _solve(self) -> None:
-        waiting = dict.fromkeys(self.functions)
+        waiting = set(self.functions)
         while waiting:
             self._settle(waiting)
-            waiting = dict.fromkeys(name for name in self._pass_on() if name in self.functions)
+            waiting = self._pass_on() & self.functions.keys()
         if self._growth or self._passed:
             for _ in range(3):
                 if not self._shrink():
