@@ -13,7 +13,7 @@ from tests.support import lower_text
 from stepring.paths.interpreter import fresh, program, run
 
 BATCH = 25
-BATCHES = 200 if os.environ.get("STEPRING_MANY") else 12
+BATCHES = 200 if os.environ.get("STEPRING_MANY") else 8
 ARGUMENTS = ((0, 0), (1, -1), (7, 300), (-128, 2147483647))
 
 
