@@ -405,8 +405,8 @@ class ProgramValues:
         return (within(joined, limits.low, limits.high) or limits) if limits is not None else joined
 
     def _settle(self, start: Iterable[str]) -> None:
-        """Run functions until the summaries do not grow, small ones first: what they make grow settles before large ones
-        read it."""
+        """Run functions until the summaries do not grow, small ones first: what they make grow settles before large
+        ones read it."""
         waiting = set(start)
         queue = [(self.callees.size(identity), identity) for identity in waiting]
         heapify(queue)
