@@ -42,7 +42,11 @@ def never_left(program: Program) -> Iterator[Obligation]:
                     states=trap,
                 )
                 continue
-            level: Level = "note" if any(is_final(name) for name in trap) else "warning"
+            # Where only start states lie outside, the trap is the machine at work after its start.
+            at_work = all(
+                state.name in trap or state.initial for state in machine.states if state.labelled or state.stored
+            )
+            level: Level = "note" if at_work or any(is_final(name) for name in trap) else "warning"
             ways_in = [step for step in machine.transitions if step.target in trap and step.source not in trap]
             yield about(
                 "SM04",
