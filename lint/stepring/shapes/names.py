@@ -101,9 +101,6 @@ def _evaluate(names: Names, body: str, depth: int) -> int | None:
             return None
         at = match.end()
         if match[1]:
-            if match[1] in _TYPE_WORDS:
-                tokens.append(match[1])
-                continue
             called = names.macros.get(match[1])
             if called is not None and called.parameters is not None:
                 expanded = _expanded(called, body, at)
@@ -114,9 +111,8 @@ def _evaluate(names: Names, body: str, depth: int) -> int | None:
                 at = expanded[1]
                 continue
             inner = macro_value(names, match[1], depth + 1)
-            if inner is None:
-                return None
-            tokens.append(inner)
+            # What has no value can only be the name of a type, in a cast.
+            tokens.append(match[1] if inner is None else inner)
         elif match[2]:
             found = number(names.model, match[2])
             if not isinstance(found, tuple):
@@ -163,7 +159,6 @@ def _substituted(macro: Macro, arguments: Sequence[str], end: int) -> tuple[str,
 
 
 _WORD = re.compile(r"[A-Za-z_]\w*")
-_TYPE_WORDS = frozenset({"int", "unsigned", "signed", "long", "short", "char", "uint8_t", "uint16_t", "uint32_t"})
 _PRECEDENCE = {"|": 1, "^": 2, "&": 3, "<<": 4, ">>": 4, "+": 5, "-": 5, "*": 6, "/": 6, "%": 6}
 
 
@@ -172,9 +167,9 @@ def _without_casts(tokens: list[str | int]) -> list[str | int]:
     number_ = 0
     while number_ < len(tokens):
         end = number_ + 1
-        while tokens[number_] == "(" and end < len(tokens) and tokens[end] in _TYPE_WORDS:
+        while tokens[number_] == "(" and end < len(tokens) and str(tokens[end]).isidentifier():
             end += 1
-        if end > number_ + 1 and end < len(tokens) and tokens[end] == ")":
+        if end > number_ + 1 and end + 1 < len(tokens) and tokens[end] == ")":
             number_ = end + 1
             continue
         out.append(tokens[number_])
