@@ -10,8 +10,8 @@ if they prove inductive.
 The result holds under the assumptions in ``ProgramValues.assumptions``.
 """
 
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import replace
 from heapq import heapify, heappop, heappush
 from typing import Final
 
@@ -27,16 +27,12 @@ from stepring.values.callees import Callees
 from stepring.values.engine import FunctionValues, analyse
 from stepring.values.exposure import Leaks, exposure_of, leaks_of
 from stepring.values.graph import WIDTHS
+from stepring.values.growth import Growth
 from stepring.values.initial import Table, initial_cells, shared_cells
-from stepring.values.intervals import FALSE, UNBOUNDED, is_subset, number_type, union, whole, widen, within
+from stepring.values.intervals import FALSE, UNBOUNDED, is_subset, number_type, union, whole
 from stepring.values.spots import pointee_cell
-from stepring.values.surroundings import Effect, Record, Surroundings
+from stepring.values.surroundings import Effect, Logged, Record, Surroundings
 from stepring.values.types import Cell, FieldCell, Interval, VariableCell
-
-ROUNDS: Final = 3
-"""Times that a cell may grow before it is widened."""
-PATIENCE: Final = 24
-"""Times that a cell may grow before it is taken to hold anything."""
 
 ASSUMPTIONS: Final = (
     "Memory that is reached through pointers and was not given a value by code that was read holds zero.",
@@ -44,33 +40,6 @@ ASSUMPTIONS: Final = (
     "of a character type (6.5p7).",
     "Code that was not read calls functions only and stores into no object that was not handed to it.",
 )
-
-
-@dataclass(slots=True)
-class _Logged(Mapping[Cell, Interval]):
-    """The summaries as one analysis reads them, with some cells holding more; what it reads is noted."""
-
-    program: "ProgramValues"
-    extra: Table = field(default_factory=dict)
-    read: set[Cell] = field(default_factory=set)
-
-    def __getitem__(self, cell: Cell) -> Interval:
-        value = self.get(cell)
-        if value is None:
-            raise KeyError(cell)
-        return value
-
-    def __iter__(self) -> Iterator[Cell]:
-        return iter(self.program.summaries)
-
-    def __len__(self) -> int:
-        return len(self.program.summaries)
-
-    def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
-        self.read.add(cell)
-        known = self.program.own(cell)
-        more = self.extra.get(cell)
-        return union(known, more) if known is not None and more is not None else known
 
 
 def _enter(entry: Table, parameter: Variable, value: Interval) -> None:
@@ -120,9 +89,8 @@ class ProgramValues:
         self._steady = steady
         self._depth = depth
         self._shared_as: dict[Cell, Cell] = {}
-        self._growth: dict[Cell, int] = {}
-        self._passed: dict[tuple[str, Cell], int] = {}
         self._ranges: Table = {}
+        self._growth = Growth(self._ranges)
         self._added: dict[str, Table] = {}
         self._read: dict[str, frozenset[Cell]] = {}
         self._found: dict[str, FunctionValues] = {}
@@ -222,7 +190,7 @@ class ProgramValues:
         if function.identity in self._hidden and arguments is not None:
             for parameter, value in zip(function.parameters, arguments, strict=False):
                 _enter(entry, parameter, value)
-        summaries = _Logged(self, self._overlay(function.identity, extra))
+        summaries = Logged(self.own, self._overlay(function.identity, extra))
         inside = function.identity in self._interrupts
         return analyse(function, entry, self.surroundings(summaries, inside_interrupt=inside))
 
@@ -248,7 +216,7 @@ class ProgramValues:
     ) -> Surroundings:
         """What a function's analysis may assume of this program."""
         return Surroundings(
-            summaries if summaries is not None else _Logged(self),
+            summaries if summaries is not None else Logged(self.own),
             self.exposure,
             self._effect,
             self.callees.body,
@@ -289,7 +257,7 @@ class ProgramValues:
         self._initial[cell] = value if known is None else union(known, value)
 
     def _analyse(self, function: Function) -> tuple[FunctionValues, frozenset[Cell]]:
-        summaries = _Logged(self, self._overlay(function.identity, self._between.get(function.identity, {})))
+        summaries = Logged(self.own, self._overlay(function.identity, self._between.get(function.identity, {})))
         entry = self._entry(function, summaries.read)
         inside = function.identity in self._interrupts
         found = analyse(function, entry, self.surroundings(summaries, inside_interrupt=inside))
@@ -358,11 +326,12 @@ class ProgramValues:
         """Tell callees that are not run in place what their callers have not finished changing, and interrupts what is
         stored at all; the functions that learn something new."""
         between, stored = self._smaller_tables()
+        constants = self.callees.all_thresholds()
         told: set[str] = set()
         for callee, table in between.items():
-            if self._raise(self._between.setdefault(callee, {}), table, callee):
+            if self._growth.extend(self._between.setdefault(callee, {}), table, callee, constants):
                 told.add(callee)
-        if self._raise(self._stored, stored, "*"):
+        if self._growth.extend(self._stored, stored, "*", constants):
             told |= self._interrupts
         return told
 
@@ -382,27 +351,6 @@ class ProgramValues:
             for name in {cell, self._shared_as.get(cell, cell)}:
                 result[name] = union(result[name], value) if name in result else value
         return result
-
-    def _raise(self, table: Table, added: Table, key: str) -> bool:
-        """Add to a table; whether it grew."""
-        grew = False
-        thresholds = self.callees.all_thresholds()
-        for cell, value in added.items():
-            known = table.get(cell)
-            if known is not None and is_subset(value, known):
-                continue
-            grew = True
-            number = self._passed[key, cell] = self._passed.get((key, cell), 0) + 1
-            table[cell] = value if known is None else self._grown(cell, known, value, number, thresholds)
-        return grew
-
-    def _grown(self, cell: Cell, known: Interval, value: Interval, number: int, thresholds: Sequence[int]) -> Interval:
-        """A cell's range when it grows for the ``number``-th time."""
-        limits = self._ranges.get(cell)
-        if number > PATIENCE:
-            return limits or UNBOUNDED
-        joined = (widen(known, value, thresholds) if number > ROUNDS else None) or union(known, value)
-        return (within(joined, limits.low, limits.high) or limits) if limits is not None else joined
 
     def _settle(self, start: Iterable[str]) -> None:
         """Run functions until the summaries do not grow, small ones first: what they make grow settles before large
@@ -428,7 +376,7 @@ class ProgramValues:
         while waiting:
             self._settle(waiting)
             waiting = self._pass_on() & self.functions.keys()
-        if self._growth or self._passed:
+        if self._growth.times:
             for _ in range(3):
                 if not self._shrink():
                     break
@@ -443,8 +391,8 @@ class ProgramValues:
                 if known is None:
                     self.summaries[cell] = base
                 continue
-            number = self._growth[cell] = self._growth.get(cell, 0) + 1
-            joined = value if base is None else self._grown(cell, base, value, number, thresholds)
+            number = self._growth.count("", cell)
+            joined = value if base is None else self._growth.grown(cell, base, value, number, thresholds)
             self.summaries[cell] = joined
             changed.add(cell)
         return changed

@@ -1,6 +1,6 @@
 """What the analysis of one function is told of the rest of the program, and what is noted of it for the rest."""
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 
 from stepring.meaning.types import (
@@ -112,3 +112,31 @@ class Record:
             if not spot.tracked:
                 known = self.left.get(spot.cell)
                 self.left[spot.cell] = value if known is None else union(known, value)
+
+
+@dataclass(slots=True)
+class Logged(Mapping[Cell, Interval]):
+    """The summaries as one analysis reads them, with some cells holding more; what it reads is noted
+    (and is all that iterating gives)."""
+
+    own: Callable[[Cell], Interval | None]
+    extra: dict[Cell, Interval] = field(default_factory=dict)
+    read: set[Cell] = field(default_factory=set)
+
+    def __getitem__(self, cell: Cell) -> Interval:
+        value = self.get(cell)
+        if value is None:
+            raise KeyError(cell)
+        return value
+
+    def __iter__(self) -> Iterator[Cell]:
+        return iter(self.read)
+
+    def __len__(self) -> int:
+        return len(self.read)
+
+    def get(self, cell: Cell, default: object = None) -> Interval | None:  # type: ignore[override]
+        self.read.add(cell)
+        known = self.own(cell)
+        more = self.extra.get(cell)
+        return union(known, more) if known is not None and more is not None else known

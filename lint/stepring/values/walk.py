@@ -11,7 +11,7 @@ the cell is no dependence.
 
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
-from typing import Final, Literal
+from typing import Literal
 
 from stepring.meaning.types import (
     AddressOf,
@@ -37,6 +37,7 @@ from stepring.meaning.types import (
 )
 from stepring.places import Position
 from stepring.values.engine import Engine
+from stepring.values.events import NOTHING, Ending, Event, Walk
 from stepring.values.execution import leave, result_place
 from stepring.values.frames import Frame
 from stepring.values.intervals import number_type, union
@@ -46,54 +47,6 @@ from stepring.values.spots import Spot
 from stepring.values.states import State, View, read_spot
 from stepring.values.surroundings import Effect, Surroundings
 from stepring.values.types import Cell, FieldCell, Interval
-
-EventKind = Literal["store", "access", "branch", "call", "return"]
-Ending = Literal["returned", "stopped", "bounded", "cut"]
-NOTHING: Final[frozenset[Cell]] = frozenset()
-
-
-@dataclass(frozen=True, slots=True)
-class Event:
-    """One thing that happened on a walk.
-
-    - ``store``: ``value`` was stored in ``place``.
-    - ``access``: an element was read, written or had its address taken (``use``); ``value`` is the subscript's,
-    ``place`` the   element's, ``cell`` the array's elements or, through a pointer, the cell that holds the pointer.
-    - ``branch``: ``value`` is the condition's or the control's; ``taken`` is the block that the walk went on at and
-    ``decided`` whether   the values left only that one.
-    - ``call``: of ``name``, which was not walked through; ``value`` is its result's.
-    - ``return``: from ``function`` with ``value``.
-
-    ``depends`` are the tracked cells that the value was computed from. ``depth`` counts the callees around it.
-    """
-
-    kind: EventKind
-    function: str
-    depth: int
-    position: Position | None
-    place: PlaceExpr | None = None
-    cell: Cell | None = None
-    value: Interval | None = None
-    depends: frozenset[Cell] = NOTHING
-    use: Literal["load", "store", "address"] | None = None
-    decided: bool = False
-    taken: int | None = None
-    name: str | None = None
-
-
-@dataclass(frozen=True, slots=True)
-class Walk:
-    """One path: its events in order, and what the cells held at its end.
-
-    ``ended``: ``returned``; ``stopped`` (a function that does not return); ``bounded`` (a block was entered too often);
-    ``cut`` (the walk's other paths were given up because there are too many; this one is unfinished).
-    """
-
-    events: tuple[Event, ...]
-    cells: Mapping[Cell, Interval]
-    depends: Mapping[Cell, frozenset[Cell]]
-    returned: Interval | None
-    ended: Ending
 
 
 @dataclass(frozen=True, slots=True)
