@@ -191,6 +191,31 @@ OTHERS = {
             }
         }
     """,
+    "a level that is turned up or down": """
+        struct blower { int level; };
+        void blow(int level);
+        void louder(struct blower *b, int up)
+        {
+            int level = b->level;
+            if (up) {
+                switch (level) {
+                case 1: level = 4; break;
+                case 4: level = 16; break;
+                case 16: level = 60; break;
+                default: return;
+                }
+            } else {
+                switch (level) {
+                case 60: level = 16; break;
+                case 16: level = 4; break;
+                case 4: level = 1; break;
+                default: return;
+                }
+            }
+            b->level = level;
+            blow(level);
+        }
+    """,
     "a counter that picks a channel": """
         static unsigned char channel;
         int a, b, c; int sample(int n);

@@ -69,7 +69,8 @@ class DispatchFact:
     """One ``switch`` on a key.
 
     ``carried``: a constant stored while a loop runs reaches this dispatch again (what makes a local variable a state).
-    ``packet``: the object is bytes looked at through a structure, as a received message is.
+    ``packet``: the object is bytes looked at through a structure, as a received message is. ``working``: a copy is
+    dispatched on that is changed and stored back.
     """
 
     key: str
@@ -86,6 +87,7 @@ class DispatchFact:
     line_numbers: bool
     carried: bool
     packet: bool
+    working: bool
     end: int
 
 

@@ -59,7 +59,9 @@ def place_key(place: PlaceExpr, function: str) -> PlaceKey | None:
 def _variable_key(variable: Variable, function: str) -> PlaceKey:
     if variable.lasting:
         return PlaceKey(variable.identity, variable.identity, variable.name, "variable", "lasting", variable)
-    key = f"{function}:{variable.identity}"
+    # Functions of several programs in one tree can have one name.
+    file = variable.position.file if variable.position is not None else ""
+    key = f"{file}:{function}:{variable.identity}"
     scope: Literal["local", "parameter"] = "parameter" if variable.storage == "parameter" else "local"
     return PlaceKey(key, variable.identity, variable.name, "variable", scope, variable)
 

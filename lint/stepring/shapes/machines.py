@@ -52,34 +52,39 @@ class _Gathered:
     initials: list[Constant] = field(default_factory=list)
     starts_zero: bool = False
     setters: list[tuple[StoreFact, CallFact]] = field(default_factory=list)
+    # The family of each constant's name in the units that speak of the key; other units can have the same names.
+    named: dict[str, Family] = field(default_factory=dict)
 
 
 def find_machines(facts: Iterable[StateFacts], *, complete: bool = True) -> tuple[Machine, ...]:
     """The machines of a program, in the order of their places; ``complete`` says that all of it was read."""
     facts = list(facts)
     gathered = _gather(facts)
-    families: dict[str, Family] = {}
-    for part in facts:
-        for family in part.families:
-            families.setdefault(family.identity, family)
-    named = {member.name: family for family in families.values() for member in family.members if member.name}
     stored_in: dict[str, dict[str, str]] = {}
     for group in gathered.values():
         for constant in _stored_constants(group):
             if constant.name is not None and group.key.kind == "member":
                 stored_in.setdefault(constant.name, {})[group.key.key] = group.key.shown
-    machines = [_machine(group, named, complete, stored_in) for group in gathered.values() if is_machine(group, named)]
+    machines = [_machine(group, complete, stored_in) for group in gathered.values() if is_machine(group)]
     return tuple(sorted(machines, key=lambda machine: (machine.where, machine.identity)))
 
 
 def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
     gathered: dict[str, _Gathered] = {}
+    families: dict[str, Family] = {}
     for part in facts:
+        by_name = {
+            member.name: families.setdefault(family.identity, family)
+            for family in part.families
+            for member in family.members
+            if member.name is not None
+        }
         for key in part.keys:
             group = gathered.setdefault(key.key, _Gathered(key))
             if group.key.low < key.low or group.key.high > key.high:
                 group.key = key
             group.initials.extend(key.initials)
+            group.named.update((name, family) for name, family in by_name.items() if name not in group.named)
             group.starts_zero = group.starts_zero or key.starts_zero
     callers: dict[str, list[CallFact]] = {}
     forwards: dict[tuple[str, int], list[ForwardFact]] = {}
@@ -168,8 +173,9 @@ def _distinct(items: "Iterable[T]") -> "list[T]":
 # ------------------------------------------------------------------------------------------------------ recognition
 
 
-def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
+def is_machine(group: _Gathered) -> bool:
     """Whether a key that is dispatched on is a state."""
+    named = group.named
     dispatches = [dispatch for dispatch in group.dispatches if not dispatch.line_numbers]
     if not dispatches or group.key.scope == "parameter":
         return False
@@ -189,6 +195,9 @@ def is_machine(group: _Gathered, named: Mapping[str, Family]) -> bool:
         for label in dispatch.labels
         if label.constant.name is not None and label.constant.name in named
     }
+    unnamed = all(label.constant.name is None for dispatch in dispatches for label in dispatch.labels)
+    if unnamed and all(dispatch.working for dispatch in dispatches):
+        return False  # a level that is turned up or down: a gain, a speed
     targets: set[int] = set()
     hits: set[int] = set()
     for constant in _stored_constants(group):
@@ -237,11 +246,9 @@ def _stored_constants(group: _Gathered) -> Iterable[Constant]:
 # ------------------------------------------------------------------------------------------------------ one machine
 
 
-def _machine(
-    group: _Gathered, named: Mapping[str, Family], complete: bool, stored_in: Mapping[str, Mapping[str, str]]
-) -> Machine:
+def _machine(group: _Gathered, complete: bool, stored_in: Mapping[str, Mapping[str, str]]) -> Machine:
     key = group.key
-    family = _family(group, named)
+    family = _family(group)
     states = tuple(_elsewhere(state, group.key, stored_in) for state in _states(group, family))
     by_value = {state.value: state for state in states}
     why: list[str] = []
@@ -286,13 +293,13 @@ def _short(function: str) -> str:
     return function.rsplit(":", 1)[-1]
 
 
-def _family(group: _Gathered, named: Mapping[str, Family]) -> Family | None:
+def _family(group: _Gathered) -> Family | None:
     """The group of constants that most of the machine's labels come from."""
     votes: dict[str, int] = {}
     found: dict[str, Family] = {}
     for dispatch in group.dispatches:
         for label in dispatch.labels:
-            family = named.get(label.constant.name or "")
+            family = group.named.get(label.constant.name or "")
             if family is not None:
                 votes[family.identity] = votes.get(family.identity, 0) + 1
                 found[family.identity] = family
@@ -418,7 +425,7 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
             None,
             store.fresh,
         )
-    for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
+    for _, call in sorted(group.setters, key=lambda pair: pair[1].where):
         yield StateStore(call.function, call.where, named([call.constant]), "", _short(call.callee))
 
 

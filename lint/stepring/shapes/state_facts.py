@@ -581,7 +581,18 @@ def _dispatch(work: _Work, scan: _Scan, seen: _Seen, block: int, switch: Switch)
         line_numbers > 0 and line_numbers >= len([label for label in labels if label.constant.value > 1]),
         seen.key.scope == "local" and _carried(scan, seen, block),
         _is_packet(function, seen.key),
+        _is_working(scan, switch.value),
         switch.syntax.end,
+    )
+
+
+def _is_working(scan: _Scan, value: Expr) -> bool:
+    """Whether a dispatch is on a local variable that stands for the state."""
+    inner = uncast(value)
+    return (
+        isinstance(inner, Load)
+        and isinstance(inner.place, VariablePlace)
+        and inner.place.variable.identity in {alias.variable for alias in scan.aliases if not alias.anywhere}
     )
 
 
@@ -795,11 +806,13 @@ def _guard(scan: _Scan, block: int, key: str) -> str:
 
 def _settle_stores(work: _Work, key: str, setting: Setting) -> None:
     """Stores of computed values whose every value was seen: what they store is known after all."""
+    # All of a local variable's values are seen from its function's start; a store that is not reached stores nothing.
+    key_is_local = any(scan.keys[key].key.scope == "local" for scan in work.scans if key in scan.keys)
     for number, (store, at) in enumerate(work.stores):
         if store.key != key or store.parameter is not None or len(store.constants) == 1:
             continue
-        seen = setting.stored.get((store.function, at))
-        if not seen or None in seen:
+        seen = setting.stored.get((store.function, at), set())
+        if None in seen or (not seen and not key_is_local):
             continue
         values = sorted((one for one in seen if one is not None), key=lambda one: (one[0], one[1].block))
         constants = dict.fromkeys(
