@@ -90,7 +90,7 @@ def cause(ring: Ring, index: Index, step: CheckedStep, shared: Shared) -> str | 
             return None  # however it is written, it does what the capacity asks for
         if limit not in (capacity, capacity - 1):
             return "RB06"
-        if limit == capacity - 1 and step.odd and is_spare(ring, index):
+        if limit == capacity - 1 and step.odd and is_spare(ring, limit):
             return "RB06"
     if step.odd and not leaves(index, capacity):
         return "RB03"
@@ -108,15 +108,13 @@ def mask_cause(limit: int, capacity: int) -> str | None:
     return "RB06"
 
 
-def is_spare(ring: Ring, index: Index) -> bool:
-    """Whether the last slot is left out by everybody: an array with one slot more than the ring uses."""
-    last = (ring.capacity or 0) - 1
-    touched = any(access.exact is not None and last in access.exact for access in checked(ring))
-    known = all(access.exact is not None for access in checked(ring))
+def is_spare(ring: Ring, limit: int) -> bool:
+    """Whether the slots from ``limit`` on are left out by everybody: an array with more slots than the ring uses."""
+    touched = any(access.exact is not None and max(access.exact, default=0) >= limit for access in checked(ring))
     agree = all(
-        step.limit == last for other in ring.indices if other.role != "count" for step in other.steps if step.limit
+        step.limit == limit for other in ring.indices if other.role != "count" for step in other.steps if step.limit
     )
-    return known and agree and not touched
+    return agree and not touched
 
 
 def leaves(index: Index, capacity: int) -> bool:

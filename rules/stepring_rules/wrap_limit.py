@@ -14,6 +14,7 @@ from stepring_rules.ring_common import (
     about,
     checked,
     declared,
+    is_spare,
     mask_cause,
     once,
     shared_capacities,
@@ -60,10 +61,10 @@ def _differs(access: CheckedAccess, capacity: int) -> bool:
 def _wrong(program: Program, turn: Turn, limit: int, where: Origin, function: str) -> Obligation:
     ring, capacity, step = turn.ring, turn.capacity, turn.step
     name = short(turn.index.name)
-    spare = limit == capacity - 1 and step.limit == limit
+    spare = limit < capacity and step.limit == limit and is_spare(ring, limit)
     what = f"{name} is wrapped at {limit}, but {ring.storage} has {capacity} slots"
     if spare:
-        what += f"; slot {limit} is never used"
+        what += f"; slot {limit} is never used" if limit == capacity - 1 else f"; slots {limit} on are never used"
     size = ring.element_size
     other = _owner(program, ring, limit)
     related = [declared(ring)]

@@ -104,7 +104,7 @@ def _advance(luck: random.Random, slip: bool, i: str, type_: str, n: int) -> tup
             less = luck.choice([n, n - 1]) if slip else n
             return i, f"{i} += 1; if ({i} >= {limit}) {i} -= {less};", 1
         case "down":
-            return i, f"if ({i} == 0) {i} = {limit}; {i}--;", -1
+            return i, f"if ({i} == 0) {i} = {max(limit, 2)}; {i}--;", -1
         case "exclusive":
             return i, f"if ({i} {cmp} {limit - 1}) {i} = {to}; else {i}++;", 1
         case "mask":
@@ -116,9 +116,7 @@ def _advance(luck: random.Random, slip: bool, i: str, type_: str, n: int) -> tup
     return f"{i} & {mask}", f"{i}++;", 1
 
 
-def _reader(
-    luck: random.Random, number: int, slip: bool, i: str, array: str, taken: str, n: int, free: bool
-) -> str:
+def _reader(luck: random.Random, number: int, slip: bool, i: str, array: str, taken: str, n: int, free: bool) -> str:
     """A function that gets the sample ``back`` steps ago, or all of them."""
     guard = f"if (back >= {n}) return 0;"
     if free or luck.random() < 0.3:
@@ -197,12 +195,7 @@ def judge(item: Made) -> list[Obligation]:
     kept = ring_functions(unit.functions)
     rings = find_rings(kept, unit.objects, unit.types.structs, unit.types.model, origin)
     program = Program((), rings)
-    return [
-        found
-        for rule in RING_RULES
-        for found in rule.check(program)
-        if found.kind == "fail"
-    ]
+    return [found for rule in RING_RULES for found in rule.check(program) if found.kind == "fail"]
 
 
 def disagreements(made: list[Made], folder: Path) -> tuple[list[str], dict[str, int]]:

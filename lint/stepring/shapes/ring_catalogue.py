@@ -26,7 +26,7 @@ from stepring.meaning.types import (
     StructType,
 )
 from stepring.places import Position
-from stepring.shapes.ring_facts import Advance, Comparison, FlatFacts, Reset, Use, Wrap, facts_of
+from stepring.shapes.ring_facts import Advance, Comparison, FlatFacts, Reset, Use, Wrap, complete, facts_of
 from stepring.shapes.ring_flat import Flat, Outside, Spoil, Touch, flatten
 from stepring.shapes.ring_keys import Key, inner_structs, is_scalar, targets
 
@@ -104,6 +104,12 @@ def catalogue(
     known: dict[Key, Object] = {("var", item.variable.identity): item for item in objects}
     pointers = _pointers(objects)
     facts = [facts_of(flatten(function, resolve, contained, pointers)) for function in functions]
+    used = {key for item in facts for use in item.uses for key in use.cells}
+    walked = {use.touch.storage for item in facts for use in item.uses}
+    for item in facts:
+        touched = {touch.storage for touch in item.plain} | {use.touch.storage for use in item.uses}
+        if item.stored & used or touched & walked:
+            complete(item)
     merged = Catalogue(
         facts, defaultdict(Moves), defaultdict(list), {}, {}, {}, [], set(), set(), known, [], {}, structs
     )
@@ -248,6 +254,8 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
     ]
     if not indices and not followers:
         return None
+    if storage[-1] == "*" and not any(_far(merged, key) for key in indices):
+        return None
     stores = {key for use in uses if use.touch.kind != "load" for key in use.cells}
     if not any(key in stores for key in (*indices, *followers)) and not _from_hardware(merged, storage):
         return None
@@ -260,6 +268,12 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
     if not indices and not followers:
         return None
     return Candidate(storage, capacity, (*indices, *followers), tuple(counts))
+
+
+def _far(merged: Catalogue, key: Key) -> bool:
+    """Whether an index has a wrap with a limit set at run time, or one larger than what lengths are compared with."""
+    wraps = merged.moves[key].wraps.values()
+    return not wraps or any(is_solid(wrap) and (wrap.limit is None or wrap.limit > 3) for wrap in wraps)
 
 
 def _open_ended(merged: Catalogue, storage: Key) -> bool:
@@ -279,11 +293,23 @@ def is_index(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
     moves = merged.moves.get(key)
     if moves is None or not moves.advances:
         return False
-    if moves.wraps:
-        return not all(_only_stops(wrap) for wrap in moves.wraps.values())
-    if moves.both_ways:
+    movers = {advance.function for advance in moves.advances.values()}
+    if any(is_solid(wrap) and (wrap.inner or wrap.function in movers) for wrap in moves.wraps.values()):
+        return True
+    if moves.both_ways or any(is_solid(wrap) for wrap in moves.wraps.values()):
         return False
     return any(key in use.cells and use.reduction != "none" for use in uses)
+
+
+def is_solid(wrap: Wrap) -> bool:
+    """Whether a wrap has an end to come back from: a limit that is no flag, a mask of low bits."""
+    if wrap.form == "decrement":
+        return wrap.limit is not None and wrap.limit > 1
+    if wrap.form == "mask":
+        return wrap.limit is None or 1 < wrap.limit <= 1 << 24
+    if wrap.limit is None or wrap.form == "modulo":
+        return wrap.operator != "!="
+    return wrap.limit > (1 if wrap.operator == "!=" else 0)
 
 
 def stride(merged: Catalogue, key: Key) -> int:
@@ -305,14 +331,10 @@ def partners(merged: Catalogue, key: Key, candidate: Candidate) -> list[Key]:
     return known[:2]
 
 
-def _only_stops(wrap: Wrap) -> bool:
-    """A decrement from a comparison with 0 that sets no upper end says nothing."""
-    return wrap.form == "decrement" and wrap.limit is None
-
-
 def _masters(merged: Catalogue, key: Key, uses: Sequence[Use]) -> Iterator[Key]:
     for target, source in merged.copied:
-        if target == key and merged.moves.get(source) is not None and merged.moves[source].wraps:
+        same = key[0] == source[0] == "var" or key[:2] == source[:2]
+        if target == key and same and source in merged.moves and merged.moves[source].wraps:
             if is_index(merged, source, uses):
                 yield source
 

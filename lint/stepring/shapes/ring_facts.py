@@ -11,7 +11,7 @@ and Warren, 1987); any other constant is a reset.
 from collections import defaultdict
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import Literal, TypeAlias
 
 import networkx
 
@@ -20,6 +20,7 @@ from stepring.meaning.types import (
     Binary,
     Branch,
     Cast,
+    Const,
     Expr,
     IntType,
     Load,
@@ -32,6 +33,8 @@ from stepring.shapes.ring_flat import Flat, FlatBlock, FlatOp, Outside, Set, Spo
 from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
 from stepring.shapes.types import WrapForm
 
+Order: TypeAlias = tuple[dict[int, int], dict[int, tuple[int, ...]]]
+"""Post-dominators of blocks, and the branches that blocks depend on."""
 COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
 Role = Literal["advance", "wrap", "before", "instead", "reset", "copy", "other"]
 """What an operation is to an index; a wrap comes after the advance, ``before`` it (as counting down needs it), or
@@ -42,7 +45,8 @@ Role = Literal["advance", "wrap", "before", "instead", "reset", "copy", "other"]
 class Wrap:
     """A wrap: its form, the constant it speaks of (None at run time), the operator, its place.
 
-    ``limit`` is N of ``% N`` or ``>= N``, the mask plus one, or the value that a decrement comes back from.
+    ``limit`` is N of ``% N`` or ``>= N``, the mask plus one, or the value that a decrement comes back from. ``inner``:
+    it is done to a copy of the index.
     """
 
     form: WrapForm
@@ -50,6 +54,7 @@ class Wrap:
     operator: str
     position: Position
     function: str
+    inner: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,6 +111,20 @@ class Comparison:
     moved: bool
 
 
+@dataclass(slots=True)
+class _Sight:
+    """A flat function with what was found of it so far."""
+
+    flat: Flat
+    sources: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    types: dict[Key, IntType] = field(default_factory=dict)
+    sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
+    stored: list[Key] = field(default_factory=list)
+    order: Order | None = None
+    close: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    compared: dict[int, Comparison] | None = None
+
+
 @dataclass(slots=True, eq=False)
 class Table:
     """A flat function's operations, each with the number of its block: stores by what they store into, and the rest."""
@@ -120,17 +139,17 @@ class Table:
 class FlatFacts:
     """The facts of a flat function."""
 
+    sight: _Sight
     flat: Flat
-    cells: dict[Key, CellFacts]
     uses: list[Use]
     plain: list[Touch]
-    comparisons: list[Comparison]
     sources: dict[Key, frozenset[Key]]
     types: dict[Key, IntType]
-    cross: dict[tuple[Key, Key], CellFacts]
-    copied: set[tuple[Key, Key]]
     stored: frozenset[Key]
-    order: tuple[dict[int, int], dict[int, tuple[int, ...]]] | None = None
+    cells: dict[Key, CellFacts] = field(default_factory=dict)
+    comparisons: list[Comparison] = field(default_factory=list)
+    cross: dict[tuple[Key, Key], CellFacts] = field(default_factory=dict)
+    copied: set[tuple[Key, Key]] = field(default_factory=set)
     listed: Table | None = None
 
     def table(self) -> Table:
@@ -154,19 +173,15 @@ class FlatFacts:
                                     self.listed.stores[key].append((number, op))
         return self.listed
 
-    def control_order(self) -> tuple[dict[int, int], dict[int, tuple[int, ...]]]:
+    def control_order(self) -> Order:
         """The post-dominators of the blocks, and the branches that each block depends on; worked out once."""
-        if self.order is None:
-            up = post_dominators(self.flat.blocks)
-            self.order = up, control(self.flat.blocks, up)
-        return self.order
+        return control_order(self.sight)
 
 
 def facts_of(flat: Flat) -> FlatFacts:
-    """Collect the facts of a flat function."""
+    """Collect the first facts of a flat function: sources and subscripts. ``complete`` adds the rest."""
     sight = _Sight(flat)
     _spread(sight)
-    cells = {key: found for key in sight.stored for found in (_cell(sight, key),) if found is not None}
     uses: list[Use] = []
     plain: list[Touch] = []
     for block in flat.blocks:
@@ -177,35 +192,27 @@ def facts_of(flat: Flat) -> FlatFacts:
                     plain.append(op)
                 else:
                     uses.append(use)
-    cross: dict[tuple[Key, Key], CellFacts] = {}
-    copied: set[tuple[Key, Key]] = set()
+    return FlatFacts(sight, flat, uses, plain, sight.sources, sight.types, frozenset(sight.stored))
+
+
+def complete(facts: FlatFacts) -> None:
+    """Add what happens to the integers that the function stores into, and the comparisons of any."""
+    sight = facts.sight
     for key in sight.stored:
+        found = _cell(sight, key)
+        if found is not None:
+            facts.cells[key] = found
         for _, op in sight.sets[key]:
             for other in sources(sight, op.value, op.frame) - {key}:
-                copied.add((key, other))
-                crossing = _cell(sight, key, other) if (key, other) not in cross else None
-                if crossing is not None and crossing.advances:
-                    cross[key, other] = crossing
-    comparisons = list(_comparisons(sight))
-    stored = frozenset(sight.stored)
-    found = FlatFacts(flat, cells, uses, plain, comparisons, sight.sources, sight.types, cross, copied, stored)
-    found.order = sight.order
-    return found
+                facts.copied.add((key, other))
+                if (key, other) not in facts.cross:
+                    crossing = _cell(sight, key, other)
+                    if crossing is not None and crossing.advances:
+                        facts.cross[key, other] = crossing
+    facts.comparisons = list(_comparisons(sight))
 
 
 # ---------------------------------------------------------------------------------------------------------- sources
-
-
-@dataclass(slots=True)
-class _Sight:
-    """A flat function with what was found of it so far."""
-
-    flat: Flat
-    sources: dict[Key, frozenset[Key]] = field(default_factory=dict)
-    types: dict[Key, IntType] = field(default_factory=dict)
-    sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
-    stored: list[Key] = field(default_factory=list)
-    order: tuple[dict[int, int], dict[int, tuple[int, ...]]] | None = None
 
 
 def _spread(sight: _Sight) -> None:
@@ -283,10 +290,59 @@ def _scaled(expr: Expr) -> bool:
 
 def _use(sight: _Sight, touch: Touch) -> Use | None:
     cells = _scaled_sources(sight, touch.subscript, touch.frame)
+    if cells:
+        cells &= _close(sight, touch.subscript, touch.frame, ())
     if not cells:
         return None
     form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
     return Use(touch, cells, form, modulus, at, _scaled(touch.subscript))
+
+
+def _close(sight: _Sight, expr: Expr, frame: str, seen: tuple[Key, ...]) -> frozenset[Key]:
+    """The lasting integers that an expression is near to: their value, or a copy that was stepped or reduced.
+
+    A local that starts from something else and only adds up what came from a lasting integer is not near to it.
+    """
+    match expr:
+        case Load(place=place):
+            found: frozenset[Key] = NOTHING
+            for key in place_keys(place, frame, sight.flat.points):
+                found |= _close_local(sight, key, seen) if is_local(key) else frozenset((key,))
+            return found
+        case Cast(operand=operand):
+            return _close(sight, operand, frame, seen)
+        case Binary(op="+" | "&" | "*", left=left, right=right):
+            return _close(sight, left, frame, seen) | _close(sight, right, frame, seen)
+        case Binary(op="-" | "%" | "<<", left=left):
+            return _close(sight, left, frame, seen)
+    return NOTHING
+
+
+def _close_local(sight: _Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key]:
+    known = sight.close.get(key)
+    if known is not None or key in seen:
+        return known or NOTHING
+    seen = (*seen, key)
+    found: frozenset[Key] = NOTHING
+    constants: list[int] = []
+    for number, op in sight.sets.get(key, ()):
+        if fold(op.value) is not None:
+            constants.append(number)
+            continue
+        found |= _close(sight, op.value, op.frame, seen)
+    if found and constants:
+        compared, decides = _compared(sight), control_order(sight)[1]
+        for number in constants:
+            if not any(
+                found & (compared[branch].left | compared[branch].right)
+                for branch in decides.get(number, ())
+                if branch in compared
+            ):
+                found = NOTHING
+                break
+    if len(seen) == 1:
+        sight.close[key] = found
+    return found
 
 
 def _reduction(sight: _Sight, expr: Expr, frame: str, depth: int) -> tuple[WrapForm, int | None, Position | None]:
@@ -331,24 +387,24 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
         for _, at in guards.get(number, ())
     }
     signs: set[int] = set()
-    bare: list[tuple[int, Set, int, bool]] = []
+    bare: list[tuple[int, Set, int, bool, bool]] = []
     for number, op, direct in nodes:
         steps = list(_steps(sight, op.value, op.frame, cell))
         for form, limit, operator, at in _reductions(sight, op.value, op.frame, cell):
-            facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function))
+            facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function, not direct))
             facts.roles[id(op)] = "wrap"
-        value = fold(op.value)
+        value = written(op.value)
         if steps:
             total = None if None in steps else sum(step for step in steps if step is not None)
             if total is not None and not guards.get(number):
                 signs.add(1 if total > 0 else -1)
-            bare.append((number, op, 0 if total is None else total, total is None))
+            bare.append((number, op, 0 if total is None else total, total is None, direct))
         elif value is not None:
             _constant_store(facts, op, value, guards.get(number, ()), direct, moved)
         elif direct and cell not in sources(sight, op.value, op.frame):
             facts.copies.append(op.position)
             facts.roles[id(op)] = "copy"
-    for number, op, total, unknown in bare:
+    for number, op, total, unknown, direct in bare:
         guard = guards.get(number, ())
         sign = 1 if total > 0 else -1
         if guard and not unknown and (-sign in signs or (abs(total) > 1 and not signs)):
@@ -360,13 +416,16 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
                         comparison.operator,
                         at,
                         op.function,
+                        not direct,
                     )
                 )
             facts.roles[id(op)] = "wrap"
-        elif guard and unknown:
+        elif unknown and (same := [item for item in guard if _by_limit(sight, op, item[0], cell)]):
             # head += n; if (head >= size) head -= size;
-            for comparison, at in guard:
-                facts.wraps.append(Wrap("subtract", comparison.constant, comparison.operator, at, op.function))
+            for comparison, at in same:
+                facts.wraps.append(
+                    Wrap("subtract", comparison.constant, comparison.operator, at, op.function, not direct)
+                )
             facts.roles[id(op)] = "wrap"
         else:
             facts.advances.append(Advance(None if unknown else total, op.position, op.function))
@@ -389,6 +448,15 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
     return facts
 
 
+def _by_limit(sight: _Sight, op: Set, comparison: Comparison, cell: Key) -> bool:
+    """Whether what is subtracted is what the cell was compared with."""
+    limit = comparison.right if cell in comparison.left else comparison.left
+    expr = op.value
+    while isinstance(expr, Cast):
+        expr = expr.operand
+    return isinstance(expr, Binary) and expr.op == "-" and bool(limit) and sources(sight, expr.right, op.frame) == limit
+
+
 def _constant_store(
     facts: CellFacts,
     op: Set,
@@ -406,15 +474,25 @@ def _constant_store(
         if limit is not None and value not in (0, 1) and limit > 1 and abs(limit - value) <= 1:
             facts.roles[id(op)] = "other"  # a clamp: the index stays at its end
             return
+        if value < -1 and isinstance(op.place.type, IntType):
+            value += 1 << op.place.type.width  # as it was written, before the type cut it off
         low = limit is not None and limit in (0, 1, -1) and value > 1
         form: WrapForm = "decrement" if low else "choice" if _temporary(op) else "reset"
         if low:
             limit = value + 1 if at in moved or comparison.operator in ("<", ">=") else value
-        facts.wraps.append(Wrap(form, limit, comparison.operator, at, op.function))
+        facts.wraps.append(Wrap(form, limit, comparison.operator, at, op.function, not direct))
         facts.roles[id(op)] = "wrap"
     if not guard and direct:
         facts.resets.append(Reset(value, op.position, op.function))
         facts.roles[id(op)] = "reset"
+
+
+def written(expr: Expr) -> int | None:
+    """A constant as it was written: ``at = 200`` is 200 even where the type of ``at`` cannot hold it."""
+    inner = expr
+    while isinstance(inner, Cast):
+        inner = inner.operand
+    return inner.value if isinstance(inner, Const) else fold(expr)
 
 
 def _temporary(op: Set) -> bool:
@@ -504,27 +582,41 @@ def _guards(
     blocks = {number for number, _, _ in nodes}
     if len(sight.flat.blocks) == 1:
         return found
-    compared: dict[int, Comparison] = {}
-    for number, block in enumerate(sight.flat.blocks):
-        comparison = _comparison(sight, block)
-        if comparison is None:
-            continue
-        if (cell in comparison.left) != (cell in comparison.right):
-            compared[number] = comparison
+    compared = {
+        number: comparison
+        for number, comparison in _compared(sight).items()
+        if (cell in comparison.left) != (cell in comparison.right)
+    }
     if not compared:
         return found
-    if sight.order is None:
-        up = post_dominators(sight.flat.blocks)
-        sight.order = up, control(sight.flat.blocks, up)
+    decides = control_order(sight)[1]
     for number in blocks:
         entries = tuple(
-            (compared[branch], compared[branch].position)
-            for branch in sight.order[1].get(number, ())
-            if branch in compared
+            (compared[branch], compared[branch].position) for branch in decides.get(number, ()) if branch in compared
         )
         if entries:
             found[number] = entries
     return found
+
+
+def _compared(sight: _Sight) -> dict[int, Comparison]:
+    """The comparisons of lasting integers, by the block that they end."""
+    if sight.compared is None:
+        sight.compared = {
+            number: comparison
+            for number, block in enumerate(sight.flat.blocks)
+            for comparison in (_comparison(sight, block),)
+            if comparison is not None
+        }
+    return sight.compared
+
+
+def control_order(sight: _Sight) -> Order:
+    """The post-dominators of the blocks, and the branches that each block depends on; worked out once."""
+    if sight.order is None:
+        up = post_dominators(sight.flat.blocks)
+        sight.order = up, control(sight.flat.blocks, up)
+    return sight.order
 
 
 def _comparison(sight: _Sight, block: FlatBlock) -> Comparison | None:
@@ -565,10 +657,7 @@ def _moved(sight: _Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
 
 
 def _comparisons(sight: _Sight) -> Iterator[Comparison]:
-    for block in sight.flat.blocks:
-        comparison = _comparison(sight, block)
-        if comparison is not None:
-            yield comparison
+    yield from _compared(sight).values()
 
 
 def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:

@@ -6,7 +6,7 @@ move one, or store into one are kept, with the small helpers they call and, for 
 """
 
 from collections import defaultdict
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 
 from stepring.meaning.fold import fold
@@ -39,18 +39,24 @@ from stepring.meaning.types import (
     VariablePlace,
 )
 
-SMALL = 40
+SMALL = 15
 """A callee of up to this many blocks counts as a helper."""
-LARGE = 400
+LARGE = 200
 """A caller of more blocks than this is not kept for the sake of its static callee."""
-LEVELS = 3
+LEVELS = 2
 
 _Name = tuple[str, ...]
 
 
 @dataclass(slots=True)
 class _Scan:
-    """What one look at a function shows."""
+    """What one look at a function shows.
+
+    ``compared`` are integers compared with an upper end, ``emptied`` those compared with 0; ``reset`` are set to 0 or
+    1, ``filled`` to more; ``ups`` and ``downs`` are moved so, ``turned`` reduced at their update. ``reduced`` are
+    brought into range where they subscript, ``via`` moved by way of a call; ``reads`` tell the caller something.
+    ``turns`` says that the function compares or reduces something, as helpers that wrap do.
+    """
 
     subscripts: set[_Name] = field(default_factory=set)
     arrays: set[_Name] = field(default_factory=set)
@@ -59,7 +65,16 @@ class _Scan:
     wrapped: set[_Name] = field(default_factory=set)
     stored: set[_Name] = field(default_factory=set)
     reset: set[_Name] = field(default_factory=set)
+    filled: set[_Name] = field(default_factory=set)
     compared: set[_Name] = field(default_factory=set)
+    emptied: set[_Name] = field(default_factory=set)
+    ups: set[_Name] = field(default_factory=set)
+    downs: set[_Name] = field(default_factory=set)
+    reads: set[_Name] = field(default_factory=set)
+    reduced: set[_Name] = field(default_factory=set)
+    via: set[tuple[_Name, str]] = field(default_factory=set)
+    turned: set[_Name] = field(default_factory=set)
+    turns: bool = False
     structs: set[str] = field(default_factory=set)
     calls: set[str] = field(default_factory=set)
 
@@ -67,62 +82,61 @@ class _Scan:
 def ring_functions(functions: Sequence[Function]) -> tuple[Function, ...]:
     """The functions of a unit that could be part of a ring, in their order."""
     scans = [_scan(function) for function in functions]
-    subscripts: set[_Name] = set()
-    moved: set[_Name] = set()
-    for scan in scans:
-        subscripts |= scan.subscripts
-        moved |= scan.moved
-    # A member, or a variable with external linkage, may be moved in another unit.
-    indices = {
-        name for name in subscripts if name in moved or name[0] == "member" or (name[0] == "var" and ":" not in name[1])
-    }
-    indices |= {name for scan in scans for name in scan.wrapped}
+    helpers = {function.name for function, scan in zip(functions, scans, strict=True) if scan.turns}
     # A helper that moves an index and gives the slot: what subscripts with its result is part of the ring.
-    indices |= {("call", function.name) for function, scan in zip(functions, scans, strict=True) if scan.moved}
-    moved |= {name for name in indices if name[0] == "call"}
+    givers = {("call", function.name) for function, scan in zip(functions, scans, strict=True) if scan.moved}
+    subscripts = {name for scan in scans for name in scan.subscripts}
+    moved = {name for scan in scans for name in scan.moved}
+    wrapped = {name for scan in scans for name in scan.wrapped | scan.reduced}
+    wrapped |= {name for scan in scans for name, callee in scan.via if callee in helpers}
+    strong = (subscripts & moved & wrapped) | (subscripts & givers)
+    # Wrapped here, used in another unit: only where there is a wrap that can be nothing else.
+    strong |= {
+        name
+        for scan in scans
+        for name in scan.moved & scan.turned
+        if name[0] == "member" or ":" not in name[1]
+    }
+    owners = {name[1] for name in strong if name[0] == "member"}
+    indices = strong | {name for scan in scans for name in scan.stored if name[0] == "member" and name[1] in owners}
+    walked = {array for scan in scans for array, name in scan.indexed if name in strong}
     kept = {
         number
         for number, scan in enumerate(scans)
-        if scan.subscripts & indices or scan.stored & indices or scan.wrapped
+        if scan.subscripts & indices or scan.stored & indices or scan.arrays & walked or scan.structs & owners
     }
-    walked = {array for scan in scans for array, name in scan.indexed if name in indices and name in moved}
-    kept |= {number for number, scan in enumerate(scans) if scan.arrays & walked}
-    owners = {name[1] for name in indices if name[0] == "member" and name in moved}
-    kept |= {number for number, scan in enumerate(scans) if scan.structs & owners}
-    return tuple(functions[number] for number in sorted(_with_neighbours(functions, scans, kept)))
+    asked = {callee for scan in scans for name, callee in scan.via if name in indices}
+    asked |= {name[1] for name in strong if name[0] == "call"}
+    kept |= _callers(functions, scans, kept)
+    for number, (function, scan) in enumerate(zip(functions, scans, strict=True)):
+        tells = (scan.reads | scan.compared | scan.emptied) & indices
+        if len(function.blocks) <= SMALL and (function.name in asked or tells):
+            kept.add(number)
+    return tuple(functions[number] for number in sorted(kept))
 
 
-def _with_neighbours(functions: Sequence[Function], scans: list[_Scan], kept: set[int]) -> set[int]:
-    """Add the callers of static functions, then small callees, to some levels."""
+def _callers(functions: Sequence[Function], scans: list[_Scan], kept: set[int]) -> set[int]:
+    """The callers of static functions, to some levels: what they check, their callees need not check again."""
     by_name: dict[str, list[int]] = defaultdict(list)
     for number, function in enumerate(functions):
-        by_name[function.name].append(number)
+        if function.static:
+            by_name[function.name].append(number)
     callers: dict[int, list[int]] = defaultdict(list)
     for number, scan in enumerate(scans):
         for name in scan.calls:
             for callee in by_name.get(name, ()):
                 callers[callee].append(number)
-    edge = set(kept)
+    found: set[int] = set()
+    edge = kept
     for _ in range(LEVELS):
         edge = {
             caller
             for number in edge
-            if functions[number].static
             for caller in callers[number]
-            if caller not in kept and len(functions[caller].blocks) <= LARGE
+            if caller not in kept and caller not in found and len(functions[caller].blocks) <= LARGE
         }
-        kept |= edge
-    edge = set(kept)
-    for _ in range(LEVELS):
-        edge = {
-            callee
-            for number in edge
-            for name in scans[number].calls
-            for callee in by_name.get(name, ())
-            if callee not in kept and len(functions[callee].blocks) <= SMALL
-        }
-        kept |= edge
-    return kept
+        found |= edge
+    return found
 
 
 # ---------------------------------------------------------------------------------------------------------- one look
@@ -155,15 +169,21 @@ def _scan(function: Function) -> _Scan:
             end = block.terminator
             match end:
                 case Branch(condition=value):
+                    look.scan.turns = True
                     _expr(look, value)
                     _compare(look, value)
                 case Switch(value=value):
                     _expr(look, value)
                 case Return(value=result) if result is not None:
+                    look.scan.turns = look.scan.turns or _reduced(result)
+                    _read(look, result)
                     _expr(look, result)
     scan = look.scan
-    # What is moved, compared and given a constant in one function can be wrapped by a comparison.
-    scan.wrapped |= scan.moved & scan.compared & scan.reset
+    # What is moved, compared with an end and set to the other end in one function can be wrapped by the comparison;
+    # so can what is moved up and down, as ``i += 1; if (i >= N) i -= N;`` does.
+    scan.wrapped |= scan.moved & ((scan.compared & scan.reset) | (scan.emptied & scan.filled))
+    scan.wrapped |= scan.compared & scan.ups & scan.downs
+    scan.wrapped |= scan.turned & scan.moved
     return scan
 
 
@@ -182,18 +202,30 @@ def _assign(look: _Look, place: PlaceExpr, value: Expr) -> None:
         return
     made_of = frozenset(_sources(look, value))
     look.scan.stored.add(name)
-    if fold(value) is not None:
-        look.scan.reset.add(name)
+    _constant(look, (name,), value)
+    look.scan.via |= {(name, other[1]) for other in made_of if other[0] == "call"}
+    if made_of and _reduced(value):
+        look.scan.turns = True
+        look.scan.turned.add(name)
     if made_of and _moves(look, value):
         look.scan.moved.add(name)
-        if name in made_of and _reduced(value):
-            look.scan.wrapped.add(name)
+        (look.scan.downs if _falls(value) else look.scan.ups).add(name)
     elif made_of:
         look.scan.moved |= made_of & look.scan.stored
 
 
+def _constant(look: _Look, names: Iterable[_Name], value: Expr) -> None:
+    known = fold(value)
+    if known is not None:
+        (look.scan.reset if known in (0, 1) else look.scan.filled).update(names)
+
+
 def _copy(look: _Look, variable: Variable, value: Expr) -> None:
     made_of = frozenset(_sources(look, value))
+    _constant(look, look.made_of.get(variable.identity, ()), value)
+    if _reduced(value):
+        look.scan.reduced.update(made_of)
+        look.scan.turns = True
     if made_of:
         look.made_of[variable.identity] = look.made_of.get(variable.identity, frozenset()) | made_of
     if _moves(look, value):
@@ -220,6 +252,8 @@ def _call(look: _Look, call: Call) -> None:
             name = _name(inner.place)
             if name is not None:
                 made_of.add(name)
+                if isinstance(call.callee, FunctionName):
+                    look.scan.via.add((name, call.callee.name))
                 look.scan.stored.add(name)
                 look.scan.moved.add(name)
         to = inner.type.to if isinstance(inner.type, PointerType) else None
@@ -238,11 +272,24 @@ def _call(look: _Look, call: Call) -> None:
 def _compare(look: _Look, expr: Expr) -> None:
     match expr:
         case Binary(left=left, right=right):
-            look.scan.compared |= set(_sources(look, left)) | set(_sources(look, right))
+            names = set(_sources(look, left)) | set(_sources(look, right))
+            empty = 0 in (fold(left), fold(right))
+            (look.scan.emptied if empty else look.scan.compared).update(names)
         case Unary(operand=operand) | Cast(operand=operand):
             _compare(look, operand)
         case Load():
-            look.scan.compared |= set(_sources(look, expr))
+            look.scan.emptied.update(_sources(look, expr))
+
+
+def _read(look: _Look, expr: Expr) -> None:
+    """Note what a function tells its caller of lasting integers."""
+    look.scan.reads.update(_sources(look, expr))
+    match expr:
+        case Binary(left=left, right=right):
+            _read(look, left)
+            _read(look, right)
+        case Unary(operand=operand) | Cast(operand=operand):
+            _read(look, operand)
 
 
 def _arrays(look: _Look, pointer: Expr) -> frozenset[_Name]:
@@ -294,23 +341,34 @@ def _sources(look: _Look, expr: Expr) -> Iterator[_Name]:
 
 
 def _moves(look: _Look, expr: Expr) -> bool:
-    """Whether something is added, or reduced, on the way to the value."""
+    """Whether something is added on the way to the value."""
     match expr:
         case Cast(operand=operand):
             return _moves(look, operand)
-        case Binary(op="+" | "-" | "%" | "&"):
+        case Binary(op="+" | "-"):
             return True
+        case Binary(op="%" | "&", left=left, right=right):
+            return _moves(look, left) or _moves(look, right)
         case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
             return variable.identity in look.sums
     return False
+
+
+def _falls(expr: Expr) -> bool:
+    while isinstance(expr, Cast):
+        expr = expr.operand
+    return isinstance(expr, Binary) and expr.op == "-"
 
 
 def _reduced(expr: Expr) -> bool:
     match expr:
         case Cast(operand=operand):
             return _reduced(operand)
-        case Binary(op="%" | "&"):
+        case Binary(op="%"):
             return True
+        case Binary(op="&", left=left, right=right):
+            mask = fold(right) if fold(right) is not None else fold(left)
+            return mask is None or 0 < mask < 1 << 24
     return False
 
 
@@ -318,6 +376,8 @@ def _place(look: _Look, place: PlaceExpr) -> None:
     match place:
         case ElementPlace(base=base, index=index):
             found = tuple(_sources(look, index))
+            if _reduced(index):
+                look.scan.reduced.update(found)
             look.scan.subscripts.update(found)
             array = _name(base)
             if array is not None:
@@ -342,6 +402,8 @@ def _expr(look: _Look, expr: Expr) -> None:
             _expr(look, right)
         case PointerStep(pointer=pointer, steps=steps):
             found = tuple(_sources(look, steps))
+            if _reduced(steps):
+                look.scan.reduced.update(found)
             look.scan.subscripts.update(found)
             for array in _arrays(look, pointer):
                 look.scan.arrays.add(array)

@@ -13,11 +13,12 @@ from collections import deque
 from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 
+from stepring.meaning.fold import fold
 from stepring.meaning.types import IntType
 from stepring.places import Position
 from stepring.shapes.ring_arith import Range, Value
 from stepring.shapes.ring_facts import FlatFacts
-from stepring.shapes.ring_flat import Touch
+from stepring.shapes.ring_flat import Set, Spoil, Touch
 from stepring.shapes.ring_keys import Key
 from stepring.shapes.steps import Pair, Run, Trace, Walk
 
@@ -35,6 +36,7 @@ TOGETHER = 8
 RUN_WORK = 4_000
 ALONE_WORK = 60_000
 LOOK_WORK = 30_000
+STUDY_WORK = 120_000
 TOGETHER_WORK = 120_000
 
 State = tuple[Value, ...]
@@ -79,14 +81,23 @@ class Study:
     accesses: dict[Spot, Access] = field(default_factory=dict)
     orbits: dict[Key, Orbit] = field(default_factory=dict)
     pairs: dict[Pair, bool] = field(default_factory=dict)
+    work: int = STUDY_WORK
 
 
 @dataclass(slots=True, eq=False)
 class Scene:
-    """What all studies share: the functions that can be entered (by what they store into and access), initial values,
-    types, who writes what; and the searches that are done."""
+    """What all studies share: functions by the integers they store into and the arrays they access, initial values,
+    types, who writes what; and the searches that are done.
+
+    ``events`` are the functions that can be entered from outside, with all that they call. ``homes`` are those in
+    whose text the stores and accesses stand, and whether they can be entered: less to run, but what a caller checks
+    before the call is not known there. ``depths`` tells how many calls deep a store or access (``array`` before the
+    key) is seen in its home.
+    """
 
     events: Callable[[frozenset[Key], frozenset[Key]], Sequence[FlatFacts]]
+    homes: Callable[[frozenset[Key], frozenset[Key]], Sequence[tuple[FlatFacts, bool]]]
+    depths: Mapping[tuple[Key, Position], int]
     initial: Callable[[Key], tuple[int, ...] | None]
     types: dict[Key, IntType]
     writes: Callable[[str], frozenset[Key]]
@@ -114,9 +125,50 @@ def study(
     """
     followed = [*groups, *((count,) for count in counts)]
     keys = list(dict.fromkeys(key for group in followed for key in group))
-    searches = _orbits(scene, capacity, followed)
+    found, state = _first(scene, storage, capacity, followed, None)
+    if _is_clean(found, strides, capacity):
+        return found
+    if not all(entered for _, entered in scene.homes(frozenset(keys), frozenset((storage,)))):
+        suspects = {spot for spot, access in found.accesses.items() if not _fits(access, capacity)}
+        better, state = _first(scene, storage, capacity, followed, suspects)
+        _merge(found, better, capacity)
+    unsettled = [access for access in found.accesses.values() if access.bad is None and not _fits(access, capacity)]
+    pairs = {
+        pair
+        for pair, certain in found.pairs.items()
+        if not certain and pair[0] in strides and is_odd(pair, strides[pair[0]], capacity)
+    }
+    if unsettled or pairs:
+        _together(scene, storage, capacity, keys, state - set(keys), found, unsettled, pairs)
+    return found
+
+
+def _merge(found: Study, better: Study, capacity: int) -> None:
+    """Add what running the functions that can be entered has shown."""
+    for spot, access in better.accesses.items():
+        known = found.accesses.get(spot)
+        if known is None or access.bad is not None or _fits(access, capacity):
+            found.accesses[spot] = access
+    for pair, certain in better.pairs.items():
+        found.pairs[pair] = found.pairs.get(pair, False) or certain
+    for key, orbit in better.orbits.items():
+        orbit.certain |= found.orbits[key].certain
+        if orbit.complete or not found.orbits[key].complete:
+            found.orbits[key] = orbit
+        else:
+            found.orbits[key].certain |= orbit.certain
+
+
+def _first(
+    scene: Scene, storage: Key, capacity: int, followed: Sequence[Sequence[Key]], suspects: set[Spot] | None
+) -> tuple[Study, set[Key]]:
+    """Each index followed alone, then each access; and the state that matters besides.
+
+    By the functions in whose text things stand; or, for some ``suspects`` only, by those that can be entered.
+    """
+    home = suspects is None
+    searches = _orbits(scene, capacity, followed, home)
     found = Study()
-    ranges: dict[Key, Range] = {}
     for search in searches:
         for pair, certain in search.pairs_seen.items():
             found.pairs[pair] = found.pairs.get(pair, False) or certain
@@ -124,20 +176,23 @@ def study(
             if key not in found.orbits:
                 found.orbits[key] = search.orbit(key)
     ranges = _bounds(found.orbits)
-    state: set[Key] = set()
-    for facts in scene.events(frozenset(), frozenset((storage,))):
-        state |= _look(scene, facts, storage, capacity, searches, ranges, found)
-    suspects = [access for access in found.accesses.values() if access.bad is None and not _fits(access, capacity)]
-    pairs = {
-        pair
-        for pair, certain in found.pairs.items()
-        if not certain and pair[0] in strides and is_odd(pair, strides[pair[0]], capacity)
-    }
-    if pairs:
-        state |= {key for search in searches for walk in search.movers for key in walk.state}
-    if suspects or pairs:
-        _together(scene, storage, capacity, keys, state - set(keys), found, suspects, pairs)
-    return found
+    state = {key for search in searches for walk in search.movers for key in walk.state}
+    for facts, entered in _sources(scene, frozenset(), frozenset((storage,)), home):
+        state |= _look(scene, facts, entered, storage, suspects, searches, ranges, found)
+    return found, state
+
+
+def _sources(
+    scene: Scene, keys: frozenset[Key], arrays: frozenset[Key], home: bool
+) -> Sequence[tuple[FlatFacts, bool]]:
+    return scene.homes(keys, arrays) if home else [(facts, True) for facts in scene.events(keys, arrays)]
+
+
+def _is_clean(found: Study, strides: Mapping[Key, int], capacity: int) -> bool:
+    """Whether every subscript fits and every advance leads to the next slot, even along doubtful paths."""
+    return all(_fits(access, capacity) for access in found.accesses.values()) and not any(
+        pair[0] in strides and is_odd(pair, strides[pair[0]], capacity) for pair in found.pairs
+    )
 
 
 def is_odd(pair: Pair, stride: int, capacity: int) -> bool:
@@ -166,9 +221,9 @@ def _fits(access: Access, capacity: int) -> bool:
 # ---------------------------------------------------------------------------------------------------------- orbits
 
 
-def _orbits(scene: Scene, capacity: int, groups: Sequence[Sequence[Key]]) -> list["Search"]:
+def _orbits(scene: Scene, capacity: int, groups: Sequence[Sequence[Key]], home: bool) -> list["Search"]:
     """The values of each index, followed alone; twice where the bounds of the others may help."""
-    searches = [_alone(scene, capacity, tuple(group), {}) for group in groups]
+    searches = [_alone(scene, capacity, tuple(group), {}, home) for group in groups]
     for _ in range(2):
         ranges = _bounds({key: search.orbit(key) for search in searches for key in search.tracked})
         loose = [number for number, search in enumerate(searches) if search.loose or not search.complete]
@@ -176,7 +231,7 @@ def _orbits(scene: Scene, capacity: int, groups: Sequence[Sequence[Key]]) -> lis
             break
         for number in loose:
             others = {key: known for key, known in ranges.items() if key not in searches[number].tracked}
-            searches[number] = _alone(scene, capacity, searches[number].tracked, others)
+            searches[number] = _alone(scene, capacity, searches[number].tracked, others, home)
     return searches
 
 
@@ -191,13 +246,19 @@ def _bounds(orbits: Mapping[Key, Orbit]) -> dict[Key, Range]:
     return found
 
 
-def _alone(scene: Scene, capacity: int, tracked: tuple[Key, ...], ranges: Mapping[Key, Range]) -> "Search":
-    mark = (tracked, capacity, frozenset(ranges.items()))
+def _alone(
+    scene: Scene, capacity: int, tracked: tuple[Key, ...], ranges: Mapping[Key, Range], home: bool
+) -> "Search":
+    mark = (tracked, capacity, frozenset(ranges.items()), home)
     known = scene.searches.get(mark)
     if known is not None:
         return known
     search = scene.searches[mark] = Search(scene, tracked, capacity, ALONE_WORK)
-    search.movers = _movers(scene, tracked, capacity, ranges)
+    search.movers = _movers(scene, tracked, capacity, ranges, home)
+    if home:
+        for facts, _ in scene.homes(frozenset(tracked), frozenset()):
+            for key, values in (_resets(scene, facts, tracked) or {}).items():
+                search.resets.update((tracked.index(key), value) for value in values)
     advances = [walk.facts.cells[tracked[0]] for walk in search.movers if tracked[0] in walk.facts.cells]
     whole = scene.whole(tracked[0])
     if len(tracked) == 1 and whole.high > ORBIT and advances and not any(facts.wraps for facts in advances):
@@ -210,14 +271,43 @@ def _alone(scene: Scene, capacity: int, tracked: tuple[Key, ...], ranges: Mappin
     return search
 
 
-def _movers(scene: Scene, tracked: tuple[Key, ...], capacity: int, ranges: Mapping[Key, Range]) -> list[Walk]:
+def _movers(
+    scene: Scene, tracked: tuple[Key, ...], capacity: int, ranges: Mapping[Key, Range], home: bool
+) -> list[Walk]:
     """The functions that store into the followed integers, ready to run."""
     wholes = {key: scene.whole(key) for key in tracked}
-    made = [
-        Walk(facts, tracked, frozenset(), True, capacity, wholes, ranges, scene.writes, scene.types)
-        for facts in scene.events(frozenset(tracked), frozenset())
-    ]
-    return [walk for walk in made if not walk.idle]
+    found = []
+    for facts, entered in _sources(scene, frozenset(tracked), frozenset(), home):
+        if home and _resets(scene, facts, tracked) is not None:
+            continue
+        walk = Walk(facts, tracked, frozenset(), True, capacity, wholes, ranges, scene.writes, scene.types)
+        walk.sure = entered
+        if not walk.idle:
+            found.append(walk)
+    return found
+
+
+def _resets(scene: Scene, facts: FlatFacts, tracked: tuple[Key, ...]) -> dict[Key, set[int]] | None:
+    """The constants that a function's own text stores into the followed integers, if it does nothing else to them.
+
+    It need not be run then: it can lead from every state to those constants.
+    """
+    found: dict[Key, set[int]] = {}
+    table = facts.table()
+    for key in tracked:
+        for number, op in (*table.stores.get(key, ()), *table.spoils):
+            filled = isinstance(op, Spoil) and (key in op.keys or (key[0] == "member" and key[1] in op.structs))
+            if isinstance(op, Spoil) and not filled:
+                continue
+            deep = len(facts.flat.blocks[number].inside)
+            place: Key = key if not isinstance(op, Spoil) or key in op.keys else ("struct", key[1])
+            if deep > scene.depths.get((place, op.position), deep):
+                continue
+            value = op.value if isinstance(op, Spoil) else fold(op.value) if isinstance(op, Set) else None
+            if value is None:
+                return None
+            found.setdefault(key, set()).add(value)
+    return found
 
 
 # ---------------------------------------------------------------------------------------------------------- accesses
@@ -226,8 +316,9 @@ def _movers(scene: Scene, tracked: tuple[Key, ...], capacity: int, ranges: Mappi
 def _look(
     scene: Scene,
     facts: FlatFacts,
+    entered: bool,
     storage: Key,
-    capacity: int,
+    suspects: set[Spot] | None,
     searches: Sequence["Search"],
     ranges: Mapping[Key, Range],
     found: Study,
@@ -239,7 +330,14 @@ def _look(
     cells = {id(use.touch): use.cells for use in facts.uses}
     parts: dict[tuple[int, int], list[int]] = {}
     for block, touch in facts.table().touches:
-        if touch.storage == storage:
+        if touch.storage != storage:
+            continue
+        if suspects is None:
+            deep = len(facts.flat.blocks[block].inside)
+            looked = deep <= scene.depths.get((("array", *storage), touch.position), deep)
+        else:
+            looked = (touch.position, touch.kind, touch.function, touch.storage) in suspects
+        if looked:
             mine = [
                 number
                 for number, search in enumerate(searches)
@@ -252,8 +350,9 @@ def _look(
         wholes = {key: scene.whole(key) for key in search.tracked}
         others = {key: known for key, known in ranges.items() if key not in search.tracked}
         walk = Walk(
-            facts, search.tracked, frozenset(touches), False, capacity, wholes, others, scene.writes, scene.types
+            facts, search.tracked, frozenset(touches), False, search.capacity, wholes, others, scene.writes, scene.types
         )
+        walk.sure = entered
         state |= walk.state
         _see(walk, search, found)
     return state
@@ -261,16 +360,18 @@ def _look(
 
 def _see(walk: Walk, search: "Search", found: Study) -> None:
     """Run the accesses of a walk from every state that a search has found, certain ones first."""
-    left = LOOK_WORK + 8 * search.capacity
+    left = min(LOOK_WORK + 8 * search.capacity, found.work)
+    found.work -= left
     cut = not search.complete
     for state, certain in sorted(search.states.items(), key=lambda item: not item[1]):
         run = walk.run(state, min(RUN_WORK + 24 * search.capacity, left))
         left -= run.work or 1
         run.work = 0  # a remembered run costs nothing more
-        _collect(walk, run, search, state, certain, found)
+        _collect(walk, run, search, state, certain and walk.sure, found)
         if run.cut or left <= 0:
             cut = True
             break
+    found.work += max(0, left)
     if cut:
         for touch in walk.touched:
             access = found.accesses.get((touch.position, touch.kind, touch.function, touch.storage))
@@ -328,6 +429,7 @@ class Search:
     doubtful: deque[State] = field(default_factory=deque)
     pairs_seen: dict[Pair, bool] = field(default_factory=dict)
     seen: Study = field(default_factory=Study)
+    resets: set[tuple[int, int]] = field(default_factory=set)
     wanted_spots: set[Spot] = field(default_factory=set)
     wanted_pairs: Collection[Pair] = ()
     cut: bool = False
@@ -403,19 +505,21 @@ class Search:
             run = self._run(walk, state)
             _collect(walk, run, self, state, certain, self.seen)
             if run.cut:
-                self.lookers.remove(walk)
+                self.lookers = [other for other in self.lookers if other is not walk]
+        for number, value in self.resets:
+            self._reach((*state[:number], value, *state[number + 1 :]), False, state, None)
         for walk in list(self.movers):
             run = self._run(walk, state)
             if run.cut:
-                self.movers.remove(walk)  # too large to be run from every value
+                self.movers = [other for other in self.movers if other is not walk]  # too large to go on with
             for pair, sure_pair in run.pairs.items():
-                self.pairs_seen[pair] = self.pairs_seen.get(pair, False) or (sure_pair and certain)
+                self.pairs_seen[pair] = self.pairs_seen.get(pair, False) or (sure_pair and certain and walk.sure)
             for values, (sure_end, trace) in run.ends.items():
                 end = tuple(
                     new if key in walk.reads else old
                     for key, new, old in zip(self.tracked, values, state, strict=True)
                 )
-                sure = certain and sure_end and not any(isinstance(value, Range) for value in end)
+                sure = certain and sure_end and walk.sure and not any(isinstance(value, Range) for value in end)
                 for reached in self._spread(end):
                     self._reach(reached, sure, state, trace)
                     if sure:
@@ -494,7 +598,7 @@ def _together(
         if len(tracked) > TOGETHER:
             return
         search = Search(scene, tuple(tracked), capacity, TOGETHER_WORK)
-        search.movers = _movers(scene, search.tracked, capacity, {})
+        search.movers = _movers(scene, search.tracked, capacity, {}, False)
         search.lookers = _lookers(scene, search.tracked, storage, capacity, set(spots))
         more = {
             key

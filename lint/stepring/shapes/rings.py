@@ -6,7 +6,7 @@ functions from every index value that can be reached. What a report shows is a `
 the evidence that the rules need (``ring_types``).
 """
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
 from stepring.places import Origin, Position
@@ -63,13 +63,54 @@ def _scene(merged: Catalogue) -> Scene:
             if keys & tracked or touched & arrays or structs & members
         ]
 
+    places, depths = _places(merged)
+
+    def homes(tracked: frozenset[Key], arrays: frozenset[Key]) -> list[tuple[FlatFacts, bool]]:
+        members = {key[1] for key in tracked if key[0] == "member"}
+        keys = {*tracked, *(("struct", name) for name in members), *(("array", *key) for key in arrays)}
+        found = dict.fromkeys(number for key in keys for number in places.get(key, ()))
+        return [(merged.facts[number], merged.facts[number].flat.function.name in names) for number in sorted(found)]
+
     def initial(key: Key) -> tuple[int, ...] | None:
         return _initial(merged, key)
 
     def writes(name: str) -> frozenset[Key]:
         return merged.writers.get(name, frozenset())
 
-    return Scene(events, initial, merged.types, writes)
+    return Scene(events, homes, depths, initial, merged.types, writes)
+
+
+def _places(merged: Catalogue) -> tuple[dict[Key, list[int]], dict[tuple[Key, Position], int]]:
+    """For each lasting integer, structure (``struct``) and array (``array``): the functions in whose text it is stored
+    into or accessed.
+
+    A helper that has a pointer for a parameter knows only through its callers what it stores into. Also gives how deep
+    in calls the place is seen first.
+    """
+    depths: dict[tuple[Key, Position], int] = {}
+    entries: list[tuple[Key, Position, int, int]] = []
+    for number, facts in enumerate(merged.facts):
+        for block in facts.flat.blocks:
+            depth = len(block.inside)
+            for op in block.ops:
+                keys: Iterable[Key] = ()
+                match op:
+                    case Spoil():
+                        keys = (*op.keys, *(("struct", name) for name in op.structs))
+                    case Touch():
+                        keys = (("array", *op.storage),)
+                    case Set():
+                        keys = place_keys(op.place, op.place_frame, facts.flat.points)
+                for key in keys:
+                    if key[0] != "local":
+                        entries.append((key, op.position, depth, number))
+                        mark = (key, op.position)
+                        depths[mark] = min(depth, depths.get(mark, depth))
+    found: dict[Key, list[int]] = {}
+    for key, position, depth, number in entries:
+        if depth == depths[key, position]:
+            found.setdefault(key, []).append(number)
+    return found, depths
 
 
 def _reach(facts: FlatFacts, entered: set[str]) -> tuple[frozenset[Key], frozenset[str], frozenset[Key]]:

@@ -129,6 +129,7 @@ class Walk:
         self.follow = frozenset(tracked)
         self.touches = touches
         self.moving = moving
+        self.sure = True
         self.capacity = capacity
         self.writes = writes
         self.points = facts.flat.points
