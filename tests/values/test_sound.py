@@ -139,7 +139,9 @@ class Maker:
 
     def statement(self, body: Body, depth: int) -> None:
         choice = self.random.random()
-        if choice < 0.55 or depth == 0:
+        if choice < 0.06:
+            self.renamed(body)
+        elif choice < 0.55 or depth == 0:
             target = self.place()
             body.set(target, cast(target.type, self.expression()))
         elif choice < 0.65 and self.pointers:
@@ -165,6 +167,22 @@ class Maker:
                 (cuts[2], cuts[3] - 1, self.statements(depth - 1)),
             ]
             body.switch(cast(INT, self.expression(1)), cases, self.statements(depth - 1))
+
+    def renamed(self, body: Body) -> None:
+        """Store through a pointer or index, change that, and load through it again."""
+        name, kind = self.random.choice(MEMBERS)
+        if self.pointers and self.random.random() < 0.5:
+            place = arrow(load(P), name, kind)
+            body.set(P, self.random.choice((load(Q), address(ONE), address(TWO))))
+            body.set(place, self.random.randrange(20, 30))
+            body.set(P, self.random.choice((load(Q), load(R), address(ONE), address(TWO))))
+        else:
+            chosen = self.random.choice(LOCALS)
+            place = member(element(at(MANY), cast(INT, load(chosen))), name, kind)
+            body.set(chosen, self.random.randrange(3)).set(place, self.random.randrange(20, 30))
+            body.set(chosen, self.random.randrange(3))
+        target = self.random.choice(LOCALS)
+        body.set(target, cast(target.type, load(place)))
 
     def loop(self, body: Body, depth: int) -> None:
         inner = self.statements(depth - 1)
@@ -283,14 +301,28 @@ def test_what_is_seen_lies_in_what_was_found(pointers: bool, summarised: bool, s
     examine(Random(seed), pointers, summarised)
 
 
+@pytest.mark.parametrize("interrupted", (False, True), ids=("alone", "interrupted"))
 @pytest.mark.parametrize("pointers", (False, True), ids=("plain", "pointers"))
 @given(seed=st.integers(0, 2**40))
-@settings(max_examples=150, deadline=None, suppress_health_check=list(HealthCheck))
-def test_a_programs_summaries_hold_whenever_a_function_starts(pointers: bool, seed: int) -> None:
-    examine_program(Random(seed), pointers)
+@settings(max_examples=80, deadline=None, suppress_health_check=list(HealthCheck))
+def test_a_programs_summaries_hold_whenever_a_function_starts(pointers: bool, interrupted: bool, seed: int) -> None:
+    examine_program(Random(seed), pointers, interrupted)
 
 
-def examine_program(random: Random, pointers: bool) -> None:
+def interrupt(random: Random, pointers: bool) -> Function:
+    """A function that only stores into a few lasting places."""
+    maker = Maker(random, 0, False, callee=False)
+    body = Body()
+    for variable in LOCALS:
+        body.set(variable, random.choice((0, 1, 5)))
+    for _ in range(2):
+        target = random.choice((at(random.choice(STATICS)), member(at(ONE), *random.choice(MEMBERS))))
+        body.set(target, cast(target.type, maker.expression(1)))
+    made = body.function("tick", variables=[*LOCALS, *STATICS, ONE, TWO, MANY, TABLE])
+    return replace(made, static=False, identity="tick")
+
+
+def examine_program(random: Random, pointers: bool, interrupted: bool) -> None:
     """A few functions that call each other and are called in any order by code that was not read."""
     inner = callee(random)
     made = [Maker(random, 2, pointers, callee=True).function(f"feed{number}") for number in range(3)]
@@ -304,8 +336,14 @@ def examine_program(random: Random, pointers: bool) -> None:
     for feed, (argument, _) in zip(feeds, starts, strict=True):
         driver.call(feed.name, argument, returns=INT)
     functions = [inner, *feeds, driver.function("drive", variables=[ONE, TWO, MANY])]
+    tick = interrupt(random, pointers)
+    if interrupted:
+        functions.append(tick)
     objects = [Object(variable, (), HERE) for variable in (*STATICS, ONE, TWO, MANY, TABLE)]
-    program = summarise(functions, objects, lambda cell: True, structs={STRUCT.identity: LAYOUT})
+    program = summarise(
+        functions, objects, lambda cell: True, structs={STRUCT.identity: LAYOUT},
+        interrupts=lambda function: function is tick, shared=lambda cell: interrupted,
+    )  # fmt: skip
     found = {function.identity: program.of(function) for function in functions}
     lasting = scalars()
     running = 0
@@ -327,6 +365,8 @@ def examine_program(random: Random, pointers: bool) -> None:
         look(machine)
 
     def seen(machine: Machine, activation: Activation, block: int, number: int) -> None:
+        if interrupted and activation.function is not tick and random.random() < 0.1:
+            machine.run(tick, ())
         check(found[activation.function.identity], machine, activation, block, number)
 
     memory: dict[Address, Value] = {address_: 0 for address_, _, _ in lasting}
