@@ -6,13 +6,14 @@ reader; the order of summaries is that of the units, whatever the number of jobs
 is said.
 """
 
+import os
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass, replace
 from pathlib import Path
 
 from stepring.gather.gather import gather
-from stepring.gather.settings import Settings
+from stepring.gather.settings import Settings, find_settings, read_settings
 from stepring.gather.types import Unit
 from stepring.meaning.models import MODELS, model_from_macros
 from stepring.meaning.types import DataModel, Function, Object, StructLayout
@@ -122,7 +123,8 @@ class Worker:
 
 def inspect(paths: Sequence[Path], options: Options, progress: Progress | None = None) -> Outcome:
     """Inspect the C below ``paths`` and judge every rule. Bad input becomes notices; nothing is raised for it."""
-    settings, notices = Settings(), ()
+    settings, notices = project_settings(paths)
+    options = replace(options, data_model=options.data_model or settings.data_model)
     gathered = gather(paths, database=options.compile_commands, compilers=options.compilers, settings=settings)
     summaries = list(summarise(gathered.root, gathered.units, options, progress))
     rules = load_rules()
@@ -141,7 +143,22 @@ def inspect(paths: Sequence[Path], options: Options, progress: Progress | None =
         tuple(dict.fromkeys(said)),
         coverage(summaries, len(gathered.units)),
         tuple(sorted({summary.model.name for summary in summaries if summary.read})),
+        settings.fail_level,
     )
+
+
+def project_settings(paths: Sequence[Path]) -> tuple[Settings, tuple[Notice, ...]]:
+    """The settings of the nearest ``stepring.toml`` at or above what is inspected, else of the current folder's if that
+    holds what is inspected."""
+    here = Path.cwd()
+    named = [os.path.normpath(here / path) for path in paths] or [str(here)]
+    start = Path(os.path.commonpath(named))
+    found = find_settings(start)
+    if found is None and start.is_relative_to(here):
+        found = find_settings(here)
+    if found is None:
+        return Settings(), ()
+    return read_settings(found, frozenset(MODELS))
 
 
 def summarise(root: Path, units: Sequence[Unit], options: Options, progress: Progress | None) -> Iterator[UnitSummary]:

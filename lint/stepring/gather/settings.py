@@ -6,7 +6,7 @@ can never name a program. TOML 1.0, read with the standard library.
 
 import re
 import tomllib
-from collections.abc import Callable
+from collections.abc import Callable, Collection
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -46,8 +46,11 @@ def find_settings(start: Path) -> Path | None:
     return start / SETTINGS_NAME if (start / SETTINGS_NAME).is_file() else None
 
 
-def read_settings(path: Path) -> tuple[Settings, tuple[Notice, ...]]:
-    """The settings of a file; each mistake gives a notice with its line, and the rest counts."""
+def read_settings(path: Path, models: Collection[str] = ()) -> tuple[Settings, tuple[Notice, ...]]:
+    """The settings of a file; each mistake gives a notice with its line, and the rest counts.
+
+    ``models`` are the names of the data models there are (none: any name is taken).
+    """
     try:
         text = path.read_bytes().decode("utf-8-sig")
         table = tomllib.loads(text)
@@ -86,6 +89,9 @@ def read_settings(path: Path) -> tuple[Settings, tuple[Notice, ...]]:
         test, form = _KEYS[key]
         if not test(value):
             complain(key, f"{key} has to be {form}.")
+            continue
+        if key == "data-model" and models and value not in models:
+            complain(key, f"{key} has to be one of {', '.join(sorted(models))}.")
             continue
         values[key] = value
     database = values.get("compile-commands")

@@ -29,7 +29,11 @@ def notice_sentences(notices: Iterable[Notice], base: Path | None = None) -> lis
 
 
 def _sentence(one: Notice, base: Path | None) -> str:
-    place = ""
-    if one.file:
-        place = shown_path(one.file, base) + (f", line {one.line}" if one.line else "") + ": "
-    return f"{one.level}: {place}{printable(one_sentence(one.text))}"
+    """The sentence with its place, which is said once: many notices name their file themselves."""
+    if not one.file:
+        return f"{one.level}: {printable(one_sentence(one.text))}"
+    shown = shown_path(one.file, base)
+    line = f", line {one.line}" if one.line else ""
+    text = one.text.removeprefix(f"{one.file}{line}: ").replace(one.file, shown)
+    place = "" if shown in text else f"{shown}{line}: "
+    return f"{one.level}: {place}{printable(one_sentence(text))}"
