@@ -7,10 +7,10 @@ Stepping back from slot 0 gives 255 in an unsigned octet, a negative remainder w
 from collections.abc import Iterator
 
 from stepring.places import Origin
-from stepring.rule import Level, Obligation, Rule, WitnessStep
+from stepring.rule import Level, Obligation, Related, Rule, WitnessStep
 from stepring.shapes.types import Program
 from stepring_rules.ring_access import Words, judged
-from stepring_rules.ring_common import Turn, about, checked, declared, once, short, turns
+from stepring_rules.ring_common import Turn, about, checked, declared, short, turns
 
 _WORDS = Words(
     "RB02",
@@ -28,7 +28,13 @@ def below_zero(program: Program) -> Iterator[Obligation]:
         if item.kind == "fail":
             said.add(item.where)
         yield item
-    yield from once(item for turn in turns(program) for item in _signed(turn, said))
+    counted: set[tuple[str, str]] = set()
+    for turn in turns(program):
+        mark = (turn.ring.identity, turn.index.identity)
+        if mark not in counted:
+            for item in _signed(turn, said):
+                counted.add(mark)
+                yield item
 
 
 def _signed(turn: Turn, said: set[Origin]) -> Iterator[Obligation]:
@@ -37,29 +43,36 @@ def _signed(turn: Turn, said: set[Origin]) -> Iterator[Obligation]:
     if step.wrap != "free-running" or index.low >= 0 or not step.by or step.by < 0 or turn.cause is not None:
         return
     level: Level = "warning" if index.high < 1 << 16 else "note"
-    for access in checked(ring):
-        if index.identity not in access.cells or access.reduction != "modulo" or access.where in said:
-            continue
-        if access.bad is not None or access.settled:
-            continue
-        name = short(index.name)
-        yield about(
-            "RB02",
-            ring,
-            "fail",
-            access.where,
-            f"{name} is a signed {index.type_name} that only grows: after {index.high} it turns negative, and the "
-            f"remainder of a negative number is negative, below slot 0 of {ring.storage}.",
-            level,
-            why="The overflow comes after long running, when nobody is looking.",
-            advice=f"Make {name} unsigned, with a range that is a multiple of {turn.capacity}, or wrap it as it moves.",
-            function=access.function,
-            related=(declared(ring),),
-            witness=(
-                WitnessStep(step.where, f"{name} is {index.high} and is moved on", ((name, str(index.low)),)),
-                WitnessStep(access.where, "the remainder is below 0", ((name, str(index.low + 1)),)),
-            ),
-        )
+    unsettled = [
+        access
+        for access in checked(ring)
+        if index.identity in access.cells
+        and access.reduction == "modulo"
+        and access.where not in said
+        and access.bad is None
+        and not access.settled
+    ]
+    if not unsettled:
+        return
+    first, *others = sorted(unsettled, key=lambda access: (access.kind != "store", access.where))
+    name = short(index.name)
+    yield about(
+        "RB02",
+        ring,
+        "fail",
+        first.where,
+        f"{name} is a signed {index.type_name} that only grows: after {index.high} it turns negative, and the "
+        f"remainder of a negative number is negative, below slot 0 of {ring.storage}.",
+        level,
+        why="The overflow comes after long running, when nobody is looking.",
+        advice=f"Make {name} unsigned, with a range that is a multiple of {turn.capacity}, or wrap it as it moves.",
+        function=first.function,
+        related=(declared(ring), *(Related(other.where, "the same remainder is taken here") for other in others)),
+        witness=(
+            WitnessStep(step.where, f"{name} is {index.high} and is moved on", ((name, str(index.low)),)),
+            WitnessStep(first.where, "the remainder is below 0", ((name, str(index.low + 1)),)),
+        ),
+    )
 
 
 RULE = Rule(

@@ -7,7 +7,7 @@ from typing import Literal
 from stepring.meaning.types import IntType
 from stepring.places import Origin, Position
 from stepring.shapes.ring_arith import Low, Range, Value
-from stepring.shapes.ring_catalogue import Candidate, Catalogue, Moves
+from stepring.shapes.ring_catalogue import Candidate, Catalogue, Moves, is_solid
 from stepring.shapes.ring_facts import Advance, Use, Wrap
 from stepring.shapes.ring_keys import Key, byte_size, key_text, short_text
 from stepring.shapes.ring_orbit import Access as Found
@@ -164,6 +164,7 @@ def _wrap_of(merged: Catalogue, key: Key, advance: Advance, moves: Moves) -> Wra
             for found in (facts.cells.get(key),)
             if found is not None and advance in found.advances
             for wrap in found.wraps
+            if is_solid(wrap)
         ],
     ]
     for wraps in order:

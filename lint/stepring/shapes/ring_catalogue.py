@@ -154,7 +154,8 @@ def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, K
         for advance in found.advances:
             moves.advances.setdefault(advance.position, advance)
         for wrap in found.wraps:
-            moves.wraps.setdefault((wrap.position, wrap.form), wrap)
+            if is_solid(wrap):
+                moves.wraps.setdefault((wrap.position, wrap.form), wrap)
         for reset in found.resets:
             moves.resets.setdefault(reset.position, reset)
         moves.copies.update(found.copies)
@@ -178,7 +179,8 @@ def _cross(merged: Catalogue) -> None:
                 for advance in found.advances:
                     moves.advances.setdefault(advance.position, advance)
                 for wrap in found.wraps:
-                    moves.wraps.setdefault((wrap.position, wrap.form), wrap)
+                    if is_solid(wrap):
+                        moves.wraps.setdefault((wrap.position, wrap.form), wrap)
 
 
 def _taken(functions: Sequence[Function], objects: Sequence[Object]) -> set[str]:
@@ -273,7 +275,7 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
 def _far(merged: Catalogue, key: Key) -> bool:
     """Whether an index has a wrap with a limit set at run time, or one larger than what lengths are compared with."""
     wraps = merged.moves[key].wraps.values()
-    return not wraps or any(is_solid(wrap) and (wrap.limit is None or wrap.limit > 3) for wrap in wraps)
+    return not wraps or any(wrap.limit is None or wrap.limit > 3 for wrap in wraps)
 
 
 def _open_ended(merged: Catalogue, storage: Key) -> bool:
@@ -294,9 +296,9 @@ def is_index(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
     if moves is None or not moves.advances:
         return False
     movers = {advance.function for advance in moves.advances.values()}
-    if any(is_solid(wrap) and (wrap.inner or wrap.function in movers) for wrap in moves.wraps.values()):
+    if any(wrap.inner or wrap.function in movers for wrap in moves.wraps.values()):
         return True
-    if moves.both_ways or any(is_solid(wrap) for wrap in moves.wraps.values()):
+    if moves.both_ways or moves.wraps:
         return False
     return any(key in use.cells and use.reduction != "none" for use in uses)
 

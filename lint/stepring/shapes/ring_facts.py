@@ -324,15 +324,21 @@ def _close_local(sight: _Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Ke
         return known or NOTHING
     seen = (*seen, key)
     found: frozenset[Key] = NOTHING
-    constants: list[int] = []
+    constants: list[tuple[int, Position]] = []
+    copies: list[Position] = []
+    steps: list[Position] = []
     for number, op in sight.sets.get(key, ()):
         if fold(op.value) is not None:
-            constants.append(number)
+            constants.append((number, op.position))
             continue
+        (steps if key in _locals(sight, op.value, op.frame) else copies).append(op.position)
         found |= _close(sight, op.value, op.frame, seen)
-    if found and constants:
+    first = min(copies) if copies and not any(step < min(copies) for step in steps) else None
+    # A first value that is replaced before anything is done with it does not count.
+    numbers = [number for number, at in constants if first is None or at > first]
+    if found and numbers:
         compared, decides = _compared(sight), control_order(sight)[1]
-        for number in constants:
+        for number in numbers:
             if not any(
                 found & (compared[branch].left | compared[branch].right)
                 for branch in decides.get(number, ())
