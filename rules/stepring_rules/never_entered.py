@@ -18,7 +18,7 @@ def never_entered(program: Program) -> Iterator[Obligation]:
             for label in dispatch.labels:
                 if label.high != label.low or not label.states or label.states[0] in seen:
                     continue
-                if not dispatch.control_low <= label.written <= dispatch.control_high:
+                if not dispatch.control_low <= label.low <= dispatch.control_high:
                     continue  # the constant cannot match at all; that is SM15's finding
                 state = machine.state(label.states[0])
                 seen.add(state.name)

@@ -17,7 +17,7 @@ def unreached_code(program: Program) -> Iterator[Obligation]:
         for dispatch in machine.dispatches:
             function = short(dispatch.function)
             beyond = [
-                label for label in dispatch.labels if not dispatch.control_low <= label.written <= dispatch.control_high
+                label for label in dispatch.labels if not dispatch.control_low <= label.low <= dispatch.control_high
             ]
             if not dispatch.unreached and not beyond:
                 yield about(
