@@ -56,6 +56,7 @@ from stepring.shapes.names import Names, constant_at, constant_of, families, set
 from stepring.shapes.state_aliases import Alias, copies, getters, working_copies, working_parameters
 from stepring.shapes.state_flow import (
     ENTRY,
+    FEW_VISITS,
     Setting,
     flow,
     guard_text,
@@ -753,6 +754,9 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
         outside=outside,
         aliases=_aliases(scans, key),
     )
+    dispatched = any(scan.keys[key].dispatches for scan in scans)
+    if not dispatched:
+        setting.most_visits = FEW_VISITS
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)
@@ -771,6 +775,9 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
             if seen is not None and not reads and _is_fresh(seen, instance):
                 continue
             flow(setting, function, instance, ENTRY, ENTRY, {})
+    if setting.bounded and not dispatched:
+        _unconditional(work, key)
+        return
     if setting.bounded:
         work.bounded.append(key)
     for move in sorted(

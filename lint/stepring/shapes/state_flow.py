@@ -45,7 +45,8 @@ from stepring.shapes.state_slice import (
     make_slice,
 )
 
-MOST_VISITS = 20_000  # blocks run for one key in one unit
+MOST_VISITS = 20_000  # blocks run for one key in one unit that dispatches on it
+FEW_VISITS = 400  # the same for a unit that only tests and stores: most such variables are no states at all
 MOST_DEPTH = 3
 
 
@@ -130,11 +131,12 @@ class Setting:
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
     followed: set[str] = field(default_factory=set)
     visits: int = 0
+    most_visits: int = MOST_VISITS
 
     @property
     def bounded(self) -> bool:
         """Whether the bound was met, so that transitions may be missing."""
-        return self.visits > MOST_VISITS
+        return self.visits > self.most_visits
 
 
 def flow(
