@@ -81,6 +81,8 @@ def cause(ring: Ring, index: Index, step: CheckedStep, shared: Shared) -> str | 
     limit = step.limit
     if limit is not None and limit != capacity and limit in shared.get(index.identity, ()):
         return None  # it fits another array that the same index walks
+    if limit is not None and limit > capacity and not step.odd and fits(ring, index):
+        return None  # the subscripts are made from it in another way
     if step.wrap == "mask" and limit is not None:
         return mask_cause(limit, capacity)
     if step.wrap == "modulo" and limit is not None and limit != capacity:
@@ -97,6 +99,12 @@ def cause(ring: Ring, index: Index, step: CheckedStep, shared: Shared) -> str | 
     if strides(ring, index, step):
         return "RB03"
     return None
+
+
+def fits(ring: Ring, index: Index) -> bool:
+    """Whether all accesses with the index are known to stay inside."""
+    mine = [access for access in checked(ring) if index.identity in access.cells]
+    return bool(mine) and all(access.settled for access in mine)
 
 
 def mask_cause(limit: int, capacity: int) -> str | None:

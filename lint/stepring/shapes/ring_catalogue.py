@@ -39,6 +39,7 @@ class Moves:
     wraps: dict[tuple[Position, str], Wrap] = field(default_factory=dict)
     resets: dict[Position, Reset] = field(default_factory=dict)
     copies: set[Position] = field(default_factory=set)
+    handed: set[Key] = field(default_factory=set)
 
     @property
     def both_ways(self) -> bool:
@@ -90,9 +91,9 @@ def catalogue(
         for item in found:
             if item.static and item.position.file == caller.position.file:
                 return item
-        plain = [item for item in found if not item.static]
-        chosen = plain or found
-        return chosen[0] if len(chosen) == 1 or plain else None
+        plain = [item for item in found if not item.static] or found
+        near = [item for item in plain if item.position.file == caller.position.file] or plain
+        return near[0] if len(near) == 1 else None
 
     inner: dict[str, frozenset[str]] = {}
 
@@ -159,6 +160,7 @@ def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, K
         for reset in found.resets:
             moves.resets.setdefault(reset.position, reset)
         moves.copies.update(found.copies)
+        moves.handed |= found.handed
     merged.written.update(touch.storage for touch in facts.plain if touch.kind == "store")
     merged.written.update(use.touch.storage for use in facts.uses if use.touch.kind == "store")
     for use in facts.uses:
@@ -263,6 +265,8 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
         return None
     if all(_linear(merged, key, uses) for key in indices) and not followers:
         return None
+    if indices and all(storage in merged.moves[key].handed for key in indices):
+        return None  # a block that is worked on when it is full
     if len(indices) + len(followers) == 1 and _borrowed(merged, storage, uses):
         return None
     counts = _counts(merged, storage, uses, {*indices, *followers})

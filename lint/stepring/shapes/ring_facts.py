@@ -29,7 +29,7 @@ from stepring.meaning.types import (
     VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.ring_flat import Flat, FlatBlock, FlatOp, Outside, Set, Spoil, Touch
+from stepring.shapes.ring_flat import Flat, FlatBlock, FlatOp, Outside, Set, Spoil, Touch, whole_arrays
 from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
 from stepring.shapes.types import WrapForm
 
@@ -77,13 +77,17 @@ class Reset:
 
 @dataclass(slots=True)
 class CellFacts:
-    """What one flat function does to one lasting integer; ``roles`` says it of every operation."""
+    """What one flat function does to one lasting integer; ``roles`` says it of every operation.
+
+    ``handed`` are arrays that are given away whole where a comparison of the integer decides on its wrap.
+    """
 
     roles: dict[int, Role] = field(default_factory=dict)
     moves: dict[int, int] = field(default_factory=dict)
     advances: list[Advance] = field(default_factory=list)
     wraps: list[Wrap] = field(default_factory=list)
     resets: list[Reset] = field(default_factory=list)
+    handed: set[Key] = field(default_factory=set)
     copies: list[Position] = field(default_factory=list)
 
 
@@ -439,6 +443,9 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
             facts.moves[id(op)] = total
     if not (facts.advances or facts.wraps or facts.resets or facts.copies):
         return None
+    turned = {at for number, op, _ in nodes if facts.roles.get(id(op)) == "wrap" for _, at in guards.get(number, ())}
+    if turned:
+        facts.handed = _handed(sight, turned)
     stepping = {
         at for number, op, _ in nodes if facts.roles.get(id(op)) == "advance" for _, at in guards.get(number, ())
     }
@@ -452,6 +459,21 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
         elif all(op.position < item for item in later):
             facts.roles[id(op)] = "before"
     return facts
+
+
+def _handed(sight: _Sight, turned: set[Position]) -> set[Key]:
+    """The arrays that are passed whole to a function in blocks that some comparisons decide on."""
+    found: set[Key] = set()
+    branches = {number for number, comparison in _compared(sight).items() if comparison.position in turned}
+    for number, block in enumerate(sight.flat.blocks):
+        if branches.isdisjoint(control_order(sight)[1].get(number, ())):
+            continue
+        for op in block.ops:
+            if isinstance(op, Outside):
+                found |= op.wholes
+            elif isinstance(op, Set) and op.frame != op.place_frame:
+                found |= whole_arrays(op.value, op.frame, sight.flat.points)
+    return found
 
 
 def _by_limit(sight: _Sight, op: Set, comparison: Comparison, cell: Key) -> bool:

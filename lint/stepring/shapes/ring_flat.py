@@ -91,7 +91,8 @@ class Spoil:
 
 @dataclass(slots=True, eq=False)
 class Outside:
-    """A call that was not inlined; ``known`` says that its body is in the program all the same."""
+    """A call that was not inlined; ``known`` says that its body is in the program all the same. ``pointers`` are the
+    objects whose address it gets, ``wholes`` the arrays."""
 
     name: str
     result: PlaceExpr | None
@@ -99,6 +100,7 @@ class Outside:
     position: Position
     known: bool
     pointers: frozenset[Key]
+    wholes: frozenset[Key] = frozenset()
 
 
 FlatOp: TypeAlias = Set | Touch | Spoil | Outside
@@ -306,12 +308,30 @@ def _outside(layout: _Layout, call: Call, name: str, frame: str, known: bool) ->
         yield _spoiled(layout, first, frame, None, call.position)
         return
     pointers: set[Key] = set()
+    wholes: set[Key] = set()
     for argument in call.arguments:
+        wholes |= whole_arrays(argument, frame, {})
         while isinstance(argument, Cast):
             argument = argument.operand
         if isinstance(argument, AddressOf):
             pointers |= place_keys(argument.place, frame, {})
-    yield Outside(name, call.result, frame, call.position, known, frozenset(pointers))
+    yield Outside(name, call.result, frame, call.position, known, frozenset(pointers), frozenset(wholes))
+
+
+def whole_arrays(expr: Expr, frame: str, points: Points) -> frozenset[Key]:
+    """The lasting array that an expression points to the start of."""
+    while isinstance(expr, Cast):
+        expr = expr.operand
+    if not isinstance(expr, AddressOf):
+        return NOTHING
+    place = expr.place
+    if isinstance(place, ElementPlace) and not isinstance(place.type, ArrayType):
+        if _constant(place.index) != 0:
+            return NOTHING
+        place = place.base
+    if not isinstance(place.type, ArrayType):
+        return NOTHING
+    return frozenset(key for key in place_keys(place, frame, points) if not is_local(key))
 
 
 def _constant(expr: Expr) -> int | None:

@@ -10,6 +10,7 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
 from stepring.places import Origin, Position
+from stepring.shapes.ring_apart import told_apart
 from stepring.shapes.ring_build import build
 from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances, partners, stride
 from stepring.shapes.ring_facts import FlatFacts
@@ -37,6 +38,7 @@ def find_rings(
     ``functions`` are those that ``ring_functions`` kept, of all units; ``objects`` and ``structs`` are the program's;
     ``origin`` leads from a position to the source as it was written.
     """
+    functions, objects = told_apart(functions, objects)
     merged = catalogue(functions, objects, structs)
     scene = _scene(merged)
     found = []
