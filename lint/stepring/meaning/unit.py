@@ -154,7 +154,11 @@ def lower_unit(unit: ReadUnit, model: DataModel, meanings: Meanings) -> TypedUni
                         _left_out(node, f"it could not be given a meaning ({type(trouble).__name__}: {trouble})")
                     )
             elif isinstance(node, c_ast.Decl) and node.name and node.name not in defined:
-                found = _object(scope, node, declaration)
+                try:
+                    found = _object(scope, node, declaration)
+                except RecursionError:
+                    notices.append(_left_out(node, "its type or initialiser is nested too deeply"))
+                    continue
                 if found is not None:
                     defined.add(node.name)
                     objects.append(found)
@@ -167,7 +171,11 @@ def lower_unit(unit: ReadUnit, model: DataModel, meanings: Meanings) -> TypedUni
 
 def _left_out(node: Any, why: str) -> Notice:
     at = position(node)
-    return Notice("skipped-function", "warning", f"{node.decl.name} was left out: {why}.", at.file, at.line, at.column)
+    if isinstance(node, c_ast.FuncDef):
+        kind, name = "skipped-function", node.decl.name
+    else:
+        kind, name = "skipped-declaration", node.name
+    return Notice(kind, "warning", f"{name} was left out: {why}.", at.file, at.line, at.column)
 
 
 def _object(scope: Scope, node: Any, declaration: Declaration) -> Object | None:

@@ -35,5 +35,5 @@ def _sentence(one: Notice, base: Path | None) -> str:
     shown = shown_path(one.file, base)
     line = f", line {one.line}" if one.line else ""
     text = one.text.removeprefix(f"{one.file}{line}: ").replace(one.file, shown)
-    place = "" if shown in text else f"{shown}{line}: "
+    place = "" if text.startswith(shown) else f"{shown}{line}: "
     return f"{one.level}: {place}{printable(one_sentence(text))}"
