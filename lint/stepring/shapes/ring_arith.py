@@ -395,3 +395,46 @@ def _distance(left: Code, right: Code, type_: CType) -> Code:
         return unknown
 
     return run
+
+
+# ---------------------------------------------------------------------------------------------------------- cutting
+
+NEGATED = {"<": ">=", "<=": ">", ">": "<=", ">=": "<", "==": "!=", "!=": "=="}
+MIRRORED = {"<": ">", "<=": ">=", ">": "<", ">=": "<=", "==": "==", "!=": "!="}
+
+
+def cut_range(value: Range, operator: str, other: Value) -> Range | None:
+    """The part of a range for which ``value operator other`` can hold."""
+    if isinstance(other, int):
+        least = most = int(other)
+    elif isinstance(other, Range):
+        least, most = other.low, other.high
+    else:
+        return value
+    low, high = value.low, value.high
+    match operator:
+        case "<":
+            high = min(high, most - 1)
+        case "<=":
+            high = min(high, most)
+        case ">":
+            low = max(low, least + 1)
+        case ">=":
+            low = max(low, least)
+        case "==":
+            low, high = max(low, least), min(high, most)
+        case "!=" if least == most:
+            low += low == least
+            high -= high == least
+    exact = value.exact and (isinstance(other, int) or other.exact)
+    return Range(low, high, exact) if low <= high else None
+
+
+def keeps(source: CType, target: CType) -> bool:
+    """Whether a conversion leaves every value as it is."""
+    return (
+        isinstance(source, IntType)
+        and isinstance(target, IntType)
+        and source.low >= target.low
+        and source.high <= target.high
+    )

@@ -8,10 +8,11 @@ from stepring.meaning.types import IntType
 from stepring.places import Origin, Position
 from stepring.shapes.ring_arith import Low, Range, Value
 from stepring.shapes.ring_catalogue import Candidate, Catalogue, Moves, is_solid
-from stepring.shapes.ring_facts import Advance, Use, Wrap
+from stepring.shapes.ring_facts import Advance, Wrap
 from stepring.shapes.ring_keys import Key, byte_size, key_text, short_text
-from stepring.shapes.ring_orbit import Access as Found
-from stepring.shapes.ring_orbit import Study, Witness, out_of_range
+from stepring.shapes.ring_search import Access as Found
+from stepring.shapes.ring_search import Study, Witness, out_of_range
+from stepring.shapes.ring_sources import Use
 from stepring.shapes.ring_types import CheckedAccess, CheckedStep
 from stepring.shapes.types import Index, OrbitStep, Ring, Scheme, WrapForm
 from stepring.values.types import Interval

@@ -26,9 +26,10 @@ from stepring.meaning.types import (
     StructType,
 )
 from stepring.places import Position
-from stepring.shapes.ring_facts import Advance, Comparison, FlatFacts, Reset, Use, Wrap, complete, facts_of
+from stepring.shapes.ring_facts import Advance, FlatFacts, Reset, Wrap, complete, facts_of
 from stepring.shapes.ring_flat import Flat, Outside, Spoil, Touch, flatten
 from stepring.shapes.ring_keys import Key, inner_structs, is_scalar, targets
+from stepring.shapes.ring_sources import Comparison, Use
 
 
 @dataclass(slots=True)

@@ -9,33 +9,37 @@ and Warren, 1987); any other constant is a reset.
 """
 
 from collections import defaultdict
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator
 from dataclasses import dataclass, field
-from typing import Literal, TypeAlias
-
-import networkx
+from typing import Literal
 
 from stepring.meaning.fold import fold
 from stepring.meaning.types import (
     Binary,
-    Branch,
     Cast,
     Const,
     Expr,
     IntType,
-    Load,
-    Unary,
-    UnknownType,
     VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.ring_flat import Flat, FlatBlock, FlatOp, Outside, Set, Spoil, Touch, whole_arrays
-from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
+from stepring.shapes.ring_flat import Flat, FlatOp, Outside, Set, Spoil, Touch, whole_arrays
+from stepring.shapes.ring_keys import NOTHING, Key, place_keys
+from stepring.shapes.ring_sources import (
+    Comparison,
+    Order,
+    Sight,
+    Use,
+    compared,
+    control_order,
+    guards_of,
+    locals_of,
+    sources,
+    spread,
+    use_of,
+)
 from stepring.shapes.types import WrapForm
 
-Order: TypeAlias = tuple[dict[int, int], dict[int, tuple[int, ...]]]
-"""Post-dominators of blocks, and the branches that blocks depend on."""
-COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
 Role = Literal["advance", "wrap", "before", "instead", "reset", "copy", "other"]
 """What an operation is to an index; a wrap comes after the advance, ``before`` it (as counting down needs it), or
 ``instead`` of it (``i = i == N - 1 ? 0 : i + 1``)."""
@@ -91,44 +95,6 @@ class CellFacts:
     copies: list[Position] = field(default_factory=list)
 
 
-@dataclass(frozen=True, slots=True)
-class Use:
-    """A subscript that is made from lasting integers; ``scaled``: multiplied on the way."""
-
-    touch: Touch
-    cells: frozenset[Key]
-    reduction: WrapForm
-    modulus: int | None
-    reduced_at: Position | None
-    scaled: bool
-
-
-@dataclass(frozen=True, slots=True)
-class Comparison:
-    """A branch on lasting integers: those of the left and of the right side, and whether either is advanced."""
-
-    left: frozenset[Key]
-    right: frozenset[Key]
-    operator: str
-    constant: int | None
-    position: Position
-    moved: bool
-
-
-@dataclass(slots=True)
-class _Sight:
-    """A flat function with what was found of it so far."""
-
-    flat: Flat
-    sources: dict[Key, frozenset[Key]] = field(default_factory=dict)
-    types: dict[Key, IntType] = field(default_factory=dict)
-    sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
-    stored: list[Key] = field(default_factory=list)
-    order: Order | None = None
-    close: dict[Key, frozenset[Key]] = field(default_factory=dict)
-    compared: dict[int, Comparison] | None = None
-
-
 @dataclass(slots=True, eq=False)
 class Table:
     """A flat function's operations, each with the number of its block: stores by what they store into, and the rest."""
@@ -143,7 +109,7 @@ class Table:
 class FlatFacts:
     """The facts of a flat function."""
 
-    sight: _Sight
+    sight: Sight
     flat: Flat
     uses: list[Use]
     plain: list[Touch]
@@ -184,14 +150,14 @@ class FlatFacts:
 
 def facts_of(flat: Flat) -> FlatFacts:
     """Collect the first facts of a flat function: sources and subscripts. ``complete`` adds the rest."""
-    sight = _Sight(flat)
-    _spread(sight)
+    sight = Sight(flat)
+    spread(sight)
     uses: list[Use] = []
     plain: list[Touch] = []
     for block in flat.blocks:
         for op in block.ops:
             if isinstance(op, Touch):
-                use = _use(sight, op)
+                use = use_of(sight, op)
                 if use is None:
                     plain.append(op)
                 else:
@@ -213,172 +179,13 @@ def complete(facts: FlatFacts) -> None:
                     crossing = _cell(sight, key, other)
                     if crossing is not None and crossing.advances:
                         facts.cross[key, other] = crossing
-    facts.comparisons = list(_comparisons(sight))
-
-
-# ---------------------------------------------------------------------------------------------------------- sources
-
-
-def _spread(sight: _Sight) -> None:
-    """Fill ``sets`` and ``sources``."""
-    flat = sight.flat
-    stored: dict[Key, None] = {}
-    for number, block in enumerate(flat.blocks):
-        for op in block.ops:
-            if isinstance(op, Set) and isinstance(op.place.type, IntType | UnknownType):
-                for key in place_keys(op.place, op.place_frame, flat.points):
-                    sight.sets[key].append((number, op))
-                    if not is_local(key):
-                        stored[key] = None
-                        if isinstance(op.place.type, IntType):
-                            sight.types[key] = op.place.type
-    sight.stored = list(stored)
-    pending = True
-    while pending:
-        pending = False
-        for key, sets in sight.sets.items():
-            if not is_local(key):
-                continue
-            found = sight.sources.get(key, NOTHING)
-            for _, op in sets:
-                found |= sources(sight, op.value, op.frame)
-            if found != sight.sources.get(key, NOTHING):
-                sight.sources[key] = found
-                pending = True
-
-
-def sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
-    """The lasting integers that a value is made of by copying, adding or reducing."""
-    match expr:
-        case Load(place=place, type=IntType() | UnknownType() as type_):
-            found: frozenset[Key] = NOTHING
-            for key in place_keys(place, frame, sight.flat.points):
-                if not is_local(key) and isinstance(type_, IntType):
-                    sight.types.setdefault(key, type_)
-                found |= sight.sources.get(key, NOTHING) if is_local(key) else frozenset((key,))
-            return found
-        case Cast(operand=operand):
-            return sources(sight, operand, frame)
-        case Binary(op="+" | "-" | "&", left=left, right=right):
-            return sources(sight, left, frame) | sources(sight, right, frame)
-        case Binary(op="%", left=left):
-            return sources(sight, left, frame)
-    return NOTHING
-
-
-def _scaled_sources(sight: _Sight, expr: Expr, frame: str) -> frozenset[Key]:
-    """The same, through multiplications as well: ``head * size``."""
-    match expr:
-        case Cast(operand=operand):
-            return _scaled_sources(sight, operand, frame)
-        case Binary(op="+" | "-" | "*", left=left, right=right):
-            return _scaled_sources(sight, left, frame) | _scaled_sources(sight, right, frame)
-        case Binary(op="<<", left=left):
-            return _scaled_sources(sight, left, frame)
-    return sources(sight, expr, frame)
-
-
-def _scaled(expr: Expr) -> bool:
-    match expr:
-        case Cast(operand=operand):
-            return _scaled(operand)
-        case Binary(op="*" | "<<"):
-            return True
-        case Binary(op="+" | "-", left=left, right=right):
-            return _scaled(left) or _scaled(right)
-    return False
-
-
-# ---------------------------------------------------------------------------------------------------------- uses
-
-
-def _use(sight: _Sight, touch: Touch) -> Use | None:
-    cells = _scaled_sources(sight, touch.subscript, touch.frame)
-    if cells:
-        cells &= _close(sight, touch.subscript, touch.frame, ())
-    if not cells:
-        return None
-    form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
-    return Use(touch, cells, form, modulus, at, _scaled(touch.subscript))
-
-
-def _close(sight: _Sight, expr: Expr, frame: str, seen: tuple[Key, ...]) -> frozenset[Key]:
-    """The lasting integers that an expression is near to: their value, or a copy that was stepped or reduced.
-
-    A local that starts from something else and only adds up what came from a lasting integer is not near to it.
-    """
-    match expr:
-        case Load(place=place):
-            found: frozenset[Key] = NOTHING
-            for key in place_keys(place, frame, sight.flat.points):
-                found |= _close_local(sight, key, seen) if is_local(key) else frozenset((key,))
-            return found
-        case Cast(operand=operand):
-            return _close(sight, operand, frame, seen)
-        case Binary(op="+" | "&" | "*", left=left, right=right):
-            return _close(sight, left, frame, seen) | _close(sight, right, frame, seen)
-        case Binary(op="-" | "%" | "<<", left=left):
-            return _close(sight, left, frame, seen)
-    return NOTHING
-
-
-def _close_local(sight: _Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key]:
-    known = sight.close.get(key)
-    if known is not None or key in seen:
-        return known or NOTHING
-    seen = (*seen, key)
-    found: frozenset[Key] = NOTHING
-    constants: list[tuple[int, Position]] = []
-    copies: list[Position] = []
-    steps: list[Position] = []
-    for number, op in sight.sets.get(key, ()):
-        if fold(op.value) is not None:
-            constants.append((number, op.position))
-            continue
-        (steps if key in _locals(sight, op.value, op.frame) else copies).append(op.position)
-        found |= _close(sight, op.value, op.frame, seen)
-    first = min(copies) if copies and not any(step < min(copies) for step in steps) else None
-    # A first value that is replaced before anything is done with it does not count.
-    numbers = [number for number, at in constants if first is None or at > first]
-    if found and numbers:
-        compared, decides = _compared(sight), control_order(sight)[1]
-        for number in numbers:
-            if not any(
-                found & (compared[branch].left | compared[branch].right)
-                for branch in decides.get(number, ())
-                if branch in compared
-            ):
-                found = NOTHING
-                break
-    if len(seen) == 1:
-        sight.close[key] = found
-    return found
-
-
-def _reduction(sight: _Sight, expr: Expr, frame: str, depth: int) -> tuple[WrapForm, int | None, Position | None]:
-    """How a subscript is brought into range at the access: the remainder or mask that is outermost in it."""
-    match expr:
-        case Cast(operand=operand):
-            return _reduction(sight, operand, frame, depth)
-        case Binary(op="%", right=right, position=position):
-            return "modulo", fold(right), position
-        case Binary(op="&", left=left, right=right, position=position):
-            mask = fold(right) if fold(right) is not None else fold(left)
-            return "mask", None if mask is None else mask + 1, position
-        case Load(place=VariablePlace() as place) if depth < 4:
-            for key in place_keys(place, frame, sight.flat.points):
-                sets = sight.sets.get(key, ())
-                if is_local(key) and len(sets) == 1:
-                    op = sets[0][1]
-                    form, modulus, at = _reduction(sight, op.value, op.frame, depth + 1)
-                    return form, modulus, at or op.position
-    return "none", None, None
+    facts.comparisons = list(compared(sight).values())
 
 
 # ---------------------------------------------------------------------------------------------------------- cells
 
 
-def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | None:
+def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | None:
     """What the function does to a lasting integer, None where it is only filled from elsewhere with data.
 
     With ``base``: how ``target`` is made from the integer ``base``, as in ``next = (head + 1) % N`` where both last.
@@ -387,7 +194,7 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
     chain = _chain(sight, target, cell)
     facts = CellFacts()
     nodes = [(number, op, key == target) for key in (target, *chain) for number, op in sight.sets.get(key, ())]
-    guards = _guards(sight, cell, nodes)
+    guards = guards_of(sight, cell, nodes)
     if not any(any(True for _ in _steps(sight, op.value, op.frame, cell)) for _, op, _ in nodes):
         guards = {}  # what is never stepped is never wrapped
     moved = {
@@ -461,10 +268,10 @@ def _cell(sight: _Sight, target: Key, base: Key | None = None) -> CellFacts | No
     return facts
 
 
-def _handed(sight: _Sight, turned: set[Position]) -> set[Key]:
+def _handed(sight: Sight, turned: set[Position]) -> set[Key]:
     """The arrays that are passed whole to a function in blocks that some comparisons decide on."""
     found: set[Key] = set()
-    branches = {number for number, comparison in _compared(sight).items() if comparison.position in turned}
+    branches = {number for number, comparison in compared(sight).items() if comparison.position in turned}
     for number, block in enumerate(sight.flat.blocks):
         if branches.isdisjoint(control_order(sight)[1].get(number, ())):
             continue
@@ -476,7 +283,7 @@ def _handed(sight: _Sight, turned: set[Position]) -> set[Key]:
     return found
 
 
-def _by_limit(sight: _Sight, op: Set, comparison: Comparison, cell: Key) -> bool:
+def _by_limit(sight: Sight, op: Set, comparison: Comparison, cell: Key) -> bool:
     """Whether what is subtracted is what the cell was compared with."""
     limit = comparison.right if cell in comparison.left else comparison.left
     expr = op.value
@@ -527,31 +334,20 @@ def _temporary(op: Set) -> bool:
     return isinstance(op.place, VariablePlace) and op.place.variable.identity.startswith("%")
 
 
-def _chain(sight: _Sight, target: Key, cell: Key) -> list[Key]:
+def _chain(sight: Sight, target: Key, cell: Key) -> list[Key]:
     """The locals that are made from the cell and lead into the target (usually the cell itself)."""
     found: dict[Key, None] = {}
     pending = [(op.value, op.frame) for _, op in sight.sets.get(target, ())]
     while pending:
         expr, frame = pending.pop()
-        for key in _locals(sight, expr, frame):
+        for key in locals_of(sight, expr, frame):
             if key not in found and cell in sight.sources.get(key, NOTHING):
                 found[key] = None
                 pending.extend((op.value, op.frame) for _, op in sight.sets.get(key, ()))
     return list(found)
 
 
-def _locals(sight: _Sight, expr: Expr, frame: str) -> Iterator[Key]:
-    match expr:
-        case Load(place=place):
-            yield from (key for key in place_keys(place, frame, sight.flat.points) if is_local(key))
-        case Cast(operand=operand):
-            yield from _locals(sight, operand, frame)
-        case Binary(op="+" | "-" | "%" | "&", left=left, right=right):
-            yield from _locals(sight, left, frame)
-            yield from _locals(sight, right, frame)
-
-
-def _steps(sight: _Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | None]:
+def _steps(sight: Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | None]:
     """What is added to the cell's value in an expression; ``(i + N - 1) % N`` counts as -1."""
     match expr:
         case Cast(operand=operand):
@@ -581,7 +377,7 @@ def _steps(sight: _Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | N
 
 
 def _reductions(
-    sight: _Sight, expr: Expr, frame: str, cell: Key
+    sight: Sight, expr: Expr, frame: str, cell: Key
 ) -> Iterator[tuple[WrapForm, int | None, str, Position | None]]:
     match expr:
         case Cast(operand=operand):
@@ -599,129 +395,3 @@ def _reductions(
             yield from _reductions(sight, right, frame, cell)
 
 
-# ---------------------------------------------------------------------------------------------------------- guards
-
-
-def _guards(
-    sight: _Sight, cell: Key, nodes: list[tuple[int, Set, bool]]
-) -> dict[int, tuple[tuple[Comparison, Position], ...]]:
-    """For the blocks of some operations: the comparisons of the cell with a limit that decide on them."""
-    found: dict[int, tuple[tuple[Comparison, Position], ...]] = {}
-    blocks = {number for number, _, _ in nodes}
-    if len(sight.flat.blocks) == 1:
-        return found
-    compared = {
-        number: comparison
-        for number, comparison in _compared(sight).items()
-        if (cell in comparison.left) != (cell in comparison.right)
-    }
-    if not compared:
-        return found
-    decides = control_order(sight)[1]
-    for number in blocks:
-        entries = tuple(
-            (compared[branch], compared[branch].position) for branch in decides.get(number, ()) if branch in compared
-        )
-        if entries:
-            found[number] = entries
-    return found
-
-
-def _compared(sight: _Sight) -> dict[int, Comparison]:
-    """The comparisons of lasting integers, by the block that they end."""
-    if sight.compared is None:
-        sight.compared = {
-            number: comparison
-            for number, block in enumerate(sight.flat.blocks)
-            for comparison in (_comparison(sight, block),)
-            if comparison is not None
-        }
-    return sight.compared
-
-
-def control_order(sight: _Sight) -> Order:
-    """The post-dominators of the blocks, and the branches that each block depends on; worked out once."""
-    if sight.order is None:
-        up = post_dominators(sight.flat.blocks)
-        sight.order = up, control(sight.flat.blocks, up)
-    return sight.order
-
-
-def _comparison(sight: _Sight, block: FlatBlock) -> Comparison | None:
-    if not isinstance(block.end, Branch):
-        return None
-    condition = block.end.condition
-    while True:
-        if isinstance(condition, Cast) or (isinstance(condition, Unary) and condition.op == "!"):
-            condition = condition.operand
-        else:
-            break
-    if isinstance(condition, Binary) and condition.op in COMPARISONS:
-        left = sources(sight, condition.left, block.frame)
-        right = sources(sight, condition.right, block.frame)
-        if not left and not right:
-            return None
-        constant = fold(condition.right) if left else fold(condition.left)
-        moved = _moved(sight, condition.left, block.frame) or _moved(sight, condition.right, block.frame)
-        return Comparison(left, right, condition.op, constant, block.end.position, moved)
-    left = sources(sight, condition, block.frame)
-    return Comparison(left, NOTHING, "!=", 0, block.end.position, False) if left else None
-
-
-def _moved(sight: _Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
-    match expr:
-        case Cast(operand=operand):
-            return _moved(sight, operand, frame, depth)
-        case Binary(op="+" | "-" | "%" | "&"):
-            return True
-        case Load(place=VariablePlace() as place) if depth < 4:
-            return any(
-                _moved(sight, op.value, op.frame, depth + 1)
-                for key in place_keys(place, frame, sight.flat.points)
-                if is_local(key)
-                for _, op in sight.sets.get(key, ())
-            )
-    return False
-
-
-def _comparisons(sight: _Sight) -> Iterator[Comparison]:
-    yield from _compared(sight).values()
-
-
-def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:
-    """The next block that every way from a block meets; -1 stands for leaving the function."""
-    graph: networkx.DiGraph[object] = networkx.DiGraph()
-    graph.add_node(-1)
-    for number, block in enumerate(blocks):
-        graph.add_node(number)
-        following = block.targets()
-        for target in following:
-            graph.add_edge(target, number)
-        if not following:
-            graph.add_edge(-1, number)
-    while True:  # a loop that is never left still has an order: its last block counts as a way out
-        missing = set(graph) - set(networkx.descendants(graph, -1)) - {-1}
-        if not missing:
-            break
-        graph.add_edge(-1, max(number for number in missing if isinstance(number, int)))
-    found = networkx.immediate_dominators(graph, -1)
-    return {
-        node: up for node, up in found.items() if isinstance(node, int) and isinstance(up, int) and node != up
-    }
-
-
-def control(blocks: list[FlatBlock], up: Mapping[int, int]) -> dict[int, tuple[int, ...]]:
-    """For each block the branches that it directly depends on; ``up`` are the post-dominators."""
-    found: dict[int, list[int]] = defaultdict(list)
-    for number, block in enumerate(blocks):
-        following = block.targets()
-        if len(following) < 2:
-            continue
-        stop = up.get(number)
-        for target in dict.fromkeys(following):
-            current: int | None = target
-            while current is not None and current != stop and current != -1:
-                if number not in found[current]:
-                    found[current].append(number)
-                current = up.get(current)
-    return {number: tuple(branches) for number, branches in found.items()}

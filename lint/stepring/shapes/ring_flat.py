@@ -108,8 +108,8 @@ FlatOp: TypeAlias = Set | Touch | Spoil | Outside
 
 @dataclass(slots=True, eq=False)
 class FlatBlock:
-    """Operations, then where control goes; ``frame`` is that of the terminator's expression, ``inside`` names the
-    functions that were entered to come here."""
+    """Operations, then where control goes; ``frame`` is that of the terminator's expression, ``inside`` are the
+    identities of the functions that were entered to come here."""
 
     ops: list[FlatOp] = field(default_factory=list)
     end: Jump | Branch | Switch | Return | Stop = field(default_factory=lambda: Stop("open"))
@@ -181,7 +181,7 @@ def return_variable(type_: CType) -> Variable:
 def _place(layout: _Layout, function: Function, frame: str, stack: tuple[str, ...], back: int | None) -> int:
     """Add a function's blocks; returns lead to ``back``. Gives the number of its first block."""
     base = len(layout.blocks)
-    inside = tuple(name.rsplit(":", 1)[-1] for name in stack[1:])
+    inside = stack[1:]
     layout.blocks.extend(FlatBlock(frame=frame, function=function.name, inside=inside) for _ in function.blocks)
     for number, block in enumerate(function.blocks):
         current = layout.blocks[base + number]

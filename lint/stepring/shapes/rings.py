@@ -17,7 +17,8 @@ from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_filter import ring_functions
 from stepring.shapes.ring_flat import Set, Spoil, Touch
 from stepring.shapes.ring_keys import Key, place_keys
-from stepring.shapes.ring_orbit import Scene, study
+from stepring.shapes.ring_orbit import study
+from stepring.shapes.ring_search import Scene
 from stepring.shapes.types import Ring
 
 __all__ = ["find_rings", "ring_functions"]
@@ -54,7 +55,7 @@ def find_rings(
 
 def _scene(merged: Catalogue) -> Scene:
     """What the studies need of the program."""
-    names = {facts.flat.function.name for facts in merged.entered}
+    names = {facts.flat.function.identity for facts in merged.entered}
     stored = [(facts, *_reach(facts, names)) for facts in merged.entered]
 
     def events(tracked: frozenset[Key], arrays: frozenset[Key]) -> list[FlatFacts]:
@@ -71,7 +72,7 @@ def _scene(merged: Catalogue) -> Scene:
         members = {key[1] for key in tracked if key[0] == "member"}
         keys = {*tracked, *(("struct", name) for name in members), *(("array", *key) for key in arrays)}
         found = dict.fromkeys(number for key in keys for number in places.get(key, ()))
-        return [(merged.facts[number], merged.facts[number].flat.function.name in names) for number in sorted(found)]
+        return [(facts, facts.flat.function.identity in names) for facts in (merged.facts[item] for item in sorted(found))]
 
     def initial(key: Key) -> tuple[int, ...] | None:
         return _initial(merged, key)

@@ -13,33 +13,39 @@ from dataclasses import dataclass, field
 from typing import Any, NamedTuple, TypeAlias
 
 from stepring.meaning.types import (
-    AddressOf,
     Binary,
     Branch,
     Cast,
-    CType,
-    DerefPlace,
-    ElementPlace,
     Expr,
     IntType,
     Jump,
     Load,
-    MemberPlace,
-    PointerDistance,
-    PointerStep,
     PointerType,
     Return,
     Stop,
     Switch,
     Unary,
     Variable,
-    VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.ring_arith import Code, Compiler, Env, Ptr, Range, Value, add_offsets, is_input, whole
+from stepring.shapes.ring_arith import (
+    MIRRORED,
+    NEGATED,
+    Code,
+    Compiler,
+    Env,
+    Ptr,
+    Range,
+    Value,
+    add_offsets,
+    cut_range,
+    keeps,
+    whole,
+)
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_flat import FlatOp, Outside, Set, Spoil, Touch
-from stepring.shapes.ring_keys import NOTHING, Key, is_local, is_scalar, place_keys
+from stepring.shapes.ring_keys import Key, is_local, is_scalar, place_keys
+from stepring.shapes.ring_slice import Slice
 
 SPLIT = 64
 """A parameter or a range of up to this many values is split into its values."""
@@ -135,132 +141,20 @@ class Walk:
         self.points = facts.flat.points
         self.compiler = Compiler(self.points, self.follow, ranges)
         self.touched: list[Touch] = []
-        self.inputs: set[Key] = set()
-        self._slice()
-        self.written &= self.follow if moving else set(self.needed)
-        self.reads = self.written | {key for key in self.needed if key in self.follow}
+        self.slice = Slice(facts, self.tracked, touches, moving, writes, types)
+        needed = self.slice.needed
+        self.reads = self.slice.written | {key for key in needed if key in self.follow}
         self.state = frozenset(
-            key for key in self.needed if is_scalar(key) and key not in self.follow and key not in self.inputs
+            key for key in needed if is_scalar(key) and key not in self.follow and key not in self.slice.inputs
         )
+        self.mixed = moving and self.slice.several_objects()
         self._compile()
         self._memory: dict[tuple[Value, ...], Run] = {}
 
     @property
     def idle(self) -> bool:
         """Whether nothing in the function matters."""
-        return not self.relevant
-
-    # ------------------------------------------------------------------------------------------------------ slice
-
-    def _slice(self) -> None:
-        blocks = self.facts.flat.blocks
-        self.up, decides = self.facts.control_order()
-        needed: dict[Key, None] = {}
-        data: set[Key] = set()
-        relevant: set[int] = set()
-        active: set[int] = set()
-        branching: set[int] = set()
-        table = self.facts.table()
-        tracked_ops: dict[Key, list[tuple[int, FlatOp]]] = {
-            key: [
-                *table.stores.get(key, ()),
-                *((number, op) for number, op in table.spoils if key in self._filled(op)),
-                *(
-                    (number, op)
-                    for number, op in table.calls
-                    if isinstance(op, Outside) and op.known and key in self.writes(op.name)
-                ),
-            ]
-            for key in self.tracked
-        }
-        self.written = {key for key, ops in tracked_ops.items() if ops}
-        work: list[tuple[int, FlatOp, bool]] = [
-            (number, op, True) for number, op in table.touches if id(op) in self.touches
-        ]
-        if self.moving:
-            work.extend((number, op, True) for ops in tracked_ops.values() for number, op in ops)
-        wanted: list[tuple[Key, bool]] = []
-        while work or wanted:
-            while wanted:
-                key, as_data = wanted.pop()
-                if key in needed and (not as_data or key in data):
-                    continue
-                needed[key] = None
-                if as_data:
-                    data.add(key)
-                stores = tracked_ops[key] if key in self.follow else table.stores.get(key, ())
-                work.extend((number, op, as_data) for number, op in stores)
-            if not work:
-                break
-            number, op, as_data = work.pop()
-            if id(op) in relevant and not as_data:
-                continue
-            relevant.add(id(op))
-            match op:
-                case Set(value=value, frame=frame):
-                    wanted.extend((key, as_data) for key in self._uses(value, frame))
-                case Touch(subscript=subscript, pointer=pointer, frame=frame):
-                    for part in (subscript, pointer):
-                        if part is not None:
-                            wanted.extend((key, True) for key in self._uses(part, frame))
-            pending = [number]
-            while pending:
-                current = pending.pop()
-                if current in active:
-                    continue
-                active.add(current)
-                for branch in decides.get(current, ()):
-                    if branch not in branching:
-                        branching.add(branch)
-                        end, frame = blocks[branch].end, blocks[branch].frame
-                        condition = end.condition if isinstance(end, Branch) else getattr(end, "value", None)
-                        if condition is not None:
-                            wanted.extend((key, False) for key in self._uses(condition, frame))
-                    pending.append(branch)
-        self.needed = needed
-        self.data = data
-        self.relevant = relevant
-        self.branching = branching
-
-    def _filled(self, op: FlatOp) -> frozenset[Key]:
-        """The tracked integers that an operation fills."""
-        if not isinstance(op, Spoil):
-            return NOTHING
-        return frozenset(
-            key for key in self.tracked if key in op.keys or (key[0] == "member" and key[1] in op.structs)
-        )
-
-    def _uses(self, expr: Expr, frame: str) -> list[Key]:
-        """The locals and lasting scalars that an expression's value depends on."""
-        found: list[Key] = []
-        pending = [expr]
-        while pending:
-            item = pending.pop()
-            match item:
-                case Load(place=place):
-                    keys = place_keys(place, frame, self.points)
-                    found.extend(key for key in keys if is_local(key) or is_scalar(key))
-                    for key in keys:
-                        if isinstance(item.type, IntType):
-                            self.types.setdefault(key, item.type)
-                        if is_input(place):
-                            self.inputs.add(key)
-                    if isinstance(place, DerefPlace) and len(keys) != 1:
-                        pending.append(place.pointer)
-                case Unary(operand=operand) | Cast(operand=operand):
-                    pending.append(operand)
-                case Binary(left=left, right=right) | PointerDistance(left=left, right=right):
-                    pending += (left, right)
-                case PointerStep(pointer=pointer, steps=steps):
-                    pending += (pointer, steps)
-                case AddressOf(place=place):
-                    while isinstance(place, ElementPlace | MemberPlace):
-                        if isinstance(place, ElementPlace):
-                            pending.append(place.index)
-                        place = place.base
-                    if isinstance(place, DerefPlace):
-                        pending.append(place.pointer)
-        return found
+        return not self.slice.relevant
 
     # ------------------------------------------------------------------------------------------------------ compile
 
@@ -271,7 +165,7 @@ class Walk:
         for number, block in enumerate(blocks):
             made = _Compiled()
             for op in block.ops:
-                if id(op) in self.relevant:
+                if id(op) in self.slice.relevant:
                     made.ops.append(self._op(op))
                 elif isinstance(op, Outside) and self.moving:
                     made.ops.append(("rest", None, None, None))
@@ -281,44 +175,8 @@ class Walk:
             self.blocks.append(made)
         for number, made in enumerate(self.blocks):
             made.joins = into[number] > 1
-        self._lives()
-
-    def _lives(self) -> None:
-        """For each block the locals that are still read from it on: the others must not tell paths apart."""
-        blocks = self.facts.flat.blocks
-        reads: list[set[Key]] = []
-        stores: list[set[Key]] = []
-        before: dict[int, set[int]] = defaultdict(set)
-        for number, made in enumerate(self.blocks):
-            used: set[Key] = set()
-            given: set[Key] = set()
-            for op in blocks[number].ops:
-                if id(op) not in self.relevant:
-                    continue
-                for expr, frame in _expressions(op):
-                    used.update(key for key in self._uses(expr, frame) if key not in given)
-                if isinstance(op, Set) and isinstance(op.place, VariablePlace):
-                    given |= place_keys(op.place, op.place_frame, self.points)
-            if made.condition is not None:
-                end = blocks[number].end
-                condition = end.condition if isinstance(end, Branch) else getattr(end, "value", None)
-                if condition is not None:
-                    used.update(key for key in self._uses(condition, blocks[number].frame) if key not in given)
-            reads.append({key for key in used if is_local(key)})
-            stores.append(given)
-            for target in made.targets:
-                before[target].add(number)
-        for number, made in enumerate(self.blocks):
-            made.live = set(reads[number])
-        pending = list(range(len(self.blocks)))
-        while pending:
-            number = pending.pop()
-            live = self.blocks[number].live
-            for earlier in before[number]:
-                more = live - stores[earlier] - self.blocks[earlier].live
-                if more:
-                    self.blocks[earlier].live |= more
-                    pending.append(earlier)
+        for made, live in zip(self.blocks, self.slice.live([made.targets for made in self.blocks]), strict=True):
+            made.live = live
 
     def _op(self, op: FlatOp) -> tuple[str, Any, Any, Any]:
         if isinstance(op, Set):
@@ -339,7 +197,7 @@ class Walk:
             pointer = self.compiler.expr(op.pointer, op.frame) if op.pointer is not None else None
             return "touch", len(self.touched) - 1, subscript, pointer
         if isinstance(op, Spoil):
-            filled = self._filled(op)
+            filled = self.slice.filled(op)
             numbers = tuple(number for number, key in enumerate(self.tracked) if key in filled)
             return "spoil", numbers, op.value, op.position
         result = None
@@ -353,8 +211,8 @@ class Walk:
     def _end(self, made: _Compiled, number: int) -> None:
         block = self.facts.flat.blocks[number]
         following = block.targets()
-        if len(following) > 1 and number not in self.branching:
-            onward = self.up.get(number, -1)
+        if len(following) > 1 and number not in self.slice.branching:
+            onward = self.facts.control_order()[0].get(number, -1)
             made.kind, made.targets = ("leave", ()) if onward == -1 else ("jump", (onward,))
             return
         match block.end:
@@ -385,11 +243,11 @@ class Walk:
             while isinstance(condition, Cast):
                 condition = condition.operand
         zero: Code = lambda env: 0  # noqa: E731
-        if isinstance(condition, Binary) and condition.op in _NEGATED:
-            operator = _NEGATED[condition.op] if negated else condition.op
+        if isinstance(condition, Binary) and condition.op in NEGATED:
+            operator = NEGATED[condition.op] if negated else condition.op
             sides = (
                 (condition.left, operator, condition.right),
-                (condition.right, _MIRRORED[operator], condition.left),
+                (condition.right, MIRRORED[operator], condition.left),
             )
             return [
                 _Refine(key, operator, self.compiler.expr(other, frame))
@@ -401,7 +259,7 @@ class Walk:
 
     def _plain(self, expr: Expr, frame: str) -> list[Key]:
         """The key of a variable that stands alone, through conversions that keep its value."""
-        while isinstance(expr, Cast) and _keeps(expr.operand.type, expr.type):
+        while isinstance(expr, Cast) and keeps(expr.operand.type, expr.type):
             expr = expr.operand
         if isinstance(expr, Load) and isinstance(expr.type, IntType):
             keys = place_keys(expr.place, frame, self.points)
@@ -428,9 +286,9 @@ class Walk:
         starts = [(env, True)]
         for parameter in self.facts.flat.function.parameters:
             key = ("local", "", parameter.identity)
-            if key not in self.needed:
+            if key not in self.slice.needed:
                 continue
-            choices = self._choices(parameter, key in self.data and len(starts) <= SPLIT)
+            choices = self._choices(parameter, key in self.slice.data and len(starts) <= SPLIT)
             starts = [({**env, key: value}, sure and certain) for env, sure in starts for value, certain in choices]
         return starts
 
@@ -518,6 +376,10 @@ class Walk:
                 if key in self.follow or roles:
                     self._move(node, key, value, roles, position, function, run)
                 env[key] = value
+                if self.mixed and key in self.follow:
+                    # Another object of the type keeps the values that it had: both count from here on.
+                    node.certain = False
+                    self._rest(node, run)
             elif kind == "touch":
                 self._touch(node, what, code(env), extra, run)
             elif kind == "spoil":
@@ -664,12 +526,13 @@ class Walk:
             if not isinstance(value, Range):
                 continue
             other = item.other(node.env)
-            operator = item.operator if holds else _NEGATED[item.operator]
-            cut = _cut_range(value, operator, other)
+            operator = item.operator if holds else NEGATED[item.operator]
+            cut = cut_range(value, operator, other)
             if cut is None:
                 return []
             env[item.key] = cut.low if cut.low == cut.high else cut
-            if cut.low != cut.high and cut.high - cut.low < SPLIT and item.key in self.data and is_local(item.key):
+            few = cut.low != cut.high and cut.high - cut.low < SPLIT
+            if few and item.key in self.slice.data and is_local(item.key):
                 split = item.key
         if split is None:
             return [_Node(target, env, dict(node.moves), certain, node.trace)]
@@ -700,56 +563,3 @@ class _Node:
     moves: dict[int, _Move]
     certain: bool
     trace: Trace
-
-
-def _expressions(op: FlatOp) -> list[tuple[Expr, str]]:
-    """The expressions that an operation evaluates, each with its frame."""
-    match op:
-        case Set(value=value, frame=frame):
-            found = [(value, frame)]
-            if isinstance(op.place, DerefPlace):
-                found.append((op.place.pointer, op.place_frame))
-            return found
-        case Touch(subscript=subscript, pointer=pointer, frame=frame):
-            return [(part, frame) for part in (subscript, pointer) if part is not None]
-    return []
-
-
-_NEGATED = {"<": ">=", "<=": ">", ">": "<=", ">=": "<", "==": "!=", "!=": "=="}
-_MIRRORED = {"<": ">", "<=": ">=", ">": "<", ">=": "<=", "==": "==", "!=": "!="}
-
-
-def _cut_range(value: Range, operator: str, other: Value) -> Range | None:
-    """The part of a range for which ``value operator other`` can hold."""
-    if isinstance(other, int):
-        least = most = int(other)
-    elif isinstance(other, Range):
-        least, most = other.low, other.high
-    else:
-        return value
-    low, high = value.low, value.high
-    match operator:
-        case "<":
-            high = min(high, most - 1)
-        case "<=":
-            high = min(high, most)
-        case ">":
-            low = max(low, least + 1)
-        case ">=":
-            low = max(low, least)
-        case "==":
-            low, high = max(low, least), min(high, most)
-        case "!=" if least == most:
-            low += low == least
-            high -= high == least
-    exact = value.exact and (isinstance(other, int) or other.exact)
-    return Range(low, high, exact) if low <= high else None
-
-
-def _keeps(source: CType, target: CType) -> bool:
-    return (
-        isinstance(source, IntType)
-        and isinstance(target, IntType)
-        and source.low >= target.low
-        and source.high <= target.high
-    )

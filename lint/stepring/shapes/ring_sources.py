@@ -1,0 +1,364 @@
+"""What the values of a flat function are made of: sources, nearness, comparisons, and what decides on what.
+
+The one idea: follow copies, sums and reductions back to lasting integers, without regard to order; and know of every
+block which branches decide on it (control dependence in the sense of Ferrante, Ottenstein and Warren, 1987).
+"""
+
+from collections import defaultdict
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import TypeAlias
+
+import networkx
+
+from stepring.meaning.fold import fold
+from stepring.meaning.types import (
+    Binary,
+    Branch,
+    Cast,
+    Expr,
+    IntType,
+    Load,
+    Unary,
+    UnknownType,
+    VariablePlace,
+)
+from stepring.places import Position
+from stepring.shapes.ring_flat import Flat, FlatBlock, Set, Touch
+from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
+from stepring.shapes.types import WrapForm
+
+Order: TypeAlias = tuple[dict[int, int], dict[int, tuple[int, ...]]]
+"""Post-dominators of blocks, and the branches that blocks depend on."""
+COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
+@dataclass(frozen=True, slots=True)
+class Use:
+    """A subscript that is made from lasting integers; ``scaled``: multiplied on the way."""
+
+    touch: Touch
+    cells: frozenset[Key]
+    reduction: WrapForm
+    modulus: int | None
+    reduced_at: Position | None
+    scaled: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Comparison:
+    """A branch on lasting integers: those of the left and of the right side, and whether either is advanced."""
+
+    left: frozenset[Key]
+    right: frozenset[Key]
+    operator: str
+    constant: int | None
+    position: Position
+    moved: bool
+
+
+@dataclass(slots=True)
+class Sight:
+    """A flat function with what was found of it so far."""
+
+    flat: Flat
+    sources: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    types: dict[Key, IntType] = field(default_factory=dict)
+    sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
+    stored: list[Key] = field(default_factory=list)
+    order: Order | None = None
+    close: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    compared: dict[int, Comparison] | None = None
+
+
+# ---------------------------------------------------------------------------------------------------------- sources
+
+
+def spread(sight: Sight) -> None:
+    """Fill ``sets`` and ``sources``."""
+    flat = sight.flat
+    stored: dict[Key, None] = {}
+    for number, block in enumerate(flat.blocks):
+        for op in block.ops:
+            if isinstance(op, Set) and isinstance(op.place.type, IntType | UnknownType):
+                for key in place_keys(op.place, op.place_frame, flat.points):
+                    sight.sets[key].append((number, op))
+                    if not is_local(key):
+                        stored[key] = None
+                        if isinstance(op.place.type, IntType):
+                            sight.types[key] = op.place.type
+    sight.stored = list(stored)
+    pending = True
+    while pending:
+        pending = False
+        for key, sets in sight.sets.items():
+            if not is_local(key):
+                continue
+            found = sight.sources.get(key, NOTHING)
+            for _, op in sets:
+                found |= sources(sight, op.value, op.frame)
+            if found != sight.sources.get(key, NOTHING):
+                sight.sources[key] = found
+                pending = True
+
+
+def sources(sight: Sight, expr: Expr, frame: str) -> frozenset[Key]:
+    """The lasting integers that a value is made of by copying, adding or reducing."""
+    match expr:
+        case Load(place=place, type=IntType() | UnknownType() as type_):
+            found: frozenset[Key] = NOTHING
+            for key in place_keys(place, frame, sight.flat.points):
+                if not is_local(key) and isinstance(type_, IntType):
+                    sight.types.setdefault(key, type_)
+                found |= sight.sources.get(key, NOTHING) if is_local(key) else frozenset((key,))
+            return found
+        case Cast(operand=operand):
+            return sources(sight, operand, frame)
+        case Binary(op="+" | "-" | "&", left=left, right=right):
+            return sources(sight, left, frame) | sources(sight, right, frame)
+        case Binary(op="%", left=left):
+            return sources(sight, left, frame)
+    return NOTHING
+
+
+def locals_of(sight: Sight, expr: Expr, frame: str) -> Iterator[Key]:
+    """The local variables that an expression's value is made of by copying, adding or reducing."""
+    match expr:
+        case Load(place=place):
+            yield from (key for key in place_keys(place, frame, sight.flat.points) if is_local(key))
+        case Cast(operand=operand):
+            yield from locals_of(sight, operand, frame)
+        case Binary(op="+" | "-" | "%" | "&", left=left, right=right):
+            yield from locals_of(sight, left, frame)
+            yield from locals_of(sight, right, frame)
+
+
+def _scaled_sources(sight: Sight, expr: Expr, frame: str) -> frozenset[Key]:
+    """The same, through multiplications as well: ``head * size``."""
+    match expr:
+        case Cast(operand=operand):
+            return _scaled_sources(sight, operand, frame)
+        case Binary(op="+" | "-" | "*", left=left, right=right):
+            return _scaled_sources(sight, left, frame) | _scaled_sources(sight, right, frame)
+        case Binary(op="<<", left=left):
+            return _scaled_sources(sight, left, frame)
+    return sources(sight, expr, frame)
+
+
+def _scaled(expr: Expr) -> bool:
+    match expr:
+        case Cast(operand=operand):
+            return _scaled(operand)
+        case Binary(op="*" | "<<"):
+            return True
+        case Binary(op="+" | "-", left=left, right=right):
+            return _scaled(left) or _scaled(right)
+    return False
+
+
+# ---------------------------------------------------------------------------------------------------------- uses
+
+
+def use_of(sight: Sight, touch: Touch) -> Use | None:
+    cells = _scaled_sources(sight, touch.subscript, touch.frame)
+    if cells:
+        cells &= _close(sight, touch.subscript, touch.frame, ())
+    if not cells:
+        return None
+    form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
+    return Use(touch, cells, form, modulus, at, _scaled(touch.subscript))
+
+
+def _close(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...]) -> frozenset[Key]:
+    """The lasting integers that an expression is near to: their value, or a copy that was stepped or reduced.
+
+    A local that starts from something else and only adds up what came from a lasting integer is not near to it.
+    """
+    match expr:
+        case Load(place=place):
+            found: frozenset[Key] = NOTHING
+            for key in place_keys(place, frame, sight.flat.points):
+                found |= _close_local(sight, key, seen) if is_local(key) else frozenset((key,))
+            return found
+        case Cast(operand=operand):
+            return _close(sight, operand, frame, seen)
+        case Binary(op="+" | "&" | "*", left=left, right=right):
+            return _close(sight, left, frame, seen) | _close(sight, right, frame, seen)
+        case Binary(op="-" | "%" | "<<", left=left):
+            return _close(sight, left, frame, seen)
+    return NOTHING
+
+
+def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key]:
+    settled = sight.close.get(key)
+    if settled is not None or key in seen:
+        return settled or NOTHING
+    seen = (*seen, key)
+    found: frozenset[Key] = NOTHING
+    constants: list[tuple[int, Position]] = []
+    copies: list[Position] = []
+    steps: list[Position] = []
+    for number, op in sight.sets.get(key, ()):
+        if fold(op.value) is not None:
+            constants.append((number, op.position))
+            continue
+        (steps if key in locals_of(sight, op.value, op.frame) else copies).append(op.position)
+        found |= _close(sight, op.value, op.frame, seen)
+    first = min(copies) if copies and not any(step < min(copies) for step in steps) else None
+    # A first value that is replaced before anything is done with it does not count.
+    numbers = [number for number, at in constants if first is None or at > first]
+    if found and numbers:
+        known, decides = compared(sight), control_order(sight)[1]
+        for number in numbers:
+            if not any(
+                found & (known[branch].left | known[branch].right)
+                for branch in decides.get(number, ())
+                if branch in known
+            ):
+                found = NOTHING
+                break
+    if len(seen) == 1:
+        sight.close[key] = found
+    return found
+
+
+def _reduction(sight: Sight, expr: Expr, frame: str, depth: int) -> tuple[WrapForm, int | None, Position | None]:
+    """How a subscript is brought into range at the access: the remainder or mask that is outermost in it."""
+    match expr:
+        case Cast(operand=operand):
+            return _reduction(sight, operand, frame, depth)
+        case Binary(op="%", right=right, position=position):
+            return "modulo", fold(right), position
+        case Binary(op="&", left=left, right=right, position=position):
+            mask = fold(right) if fold(right) is not None else fold(left)
+            return "mask", None if mask is None else mask + 1, position
+        case Load(place=VariablePlace() as place) if depth < 4:
+            for key in place_keys(place, frame, sight.flat.points):
+                sets = sight.sets.get(key, ())
+                if is_local(key) and len(sets) == 1:
+                    op = sets[0][1]
+                    form, modulus, at = _reduction(sight, op.value, op.frame, depth + 1)
+                    return form, modulus, at or op.position
+    return "none", None, None
+
+
+# ---------------------------------------------------------------------------------------------------------- guards
+
+
+def guards_of(
+    sight: Sight, cell: Key, nodes: list[tuple[int, Set, bool]]
+) -> dict[int, tuple[tuple[Comparison, Position], ...]]:
+    """For the blocks of some operations: the comparisons of the cell with a limit that decide on them."""
+    found: dict[int, tuple[tuple[Comparison, Position], ...]] = {}
+    blocks = {number for number, _, _ in nodes}
+    if len(sight.flat.blocks) == 1:
+        return found
+    mine = {
+        number: comparison
+        for number, comparison in compared(sight).items()
+        if (cell in comparison.left) != (cell in comparison.right)
+    }
+    if not mine:
+        return found
+    decides = control_order(sight)[1]
+    for number in blocks:
+        entries = tuple(
+            (mine[branch], mine[branch].position) for branch in decides.get(number, ()) if branch in mine
+        )
+        if entries:
+            found[number] = entries
+    return found
+
+
+def compared(sight: Sight) -> dict[int, Comparison]:
+    """The comparisons of lasting integers, by the block that they end."""
+    if sight.compared is None:
+        sight.compared = {
+            number: comparison
+            for number, block in enumerate(sight.flat.blocks)
+            for comparison in (_comparison(sight, block),)
+            if comparison is not None
+        }
+    return sight.compared
+
+
+def control_order(sight: Sight) -> Order:
+    """The post-dominators of the blocks, and the branches that each block depends on; worked out once."""
+    if sight.order is None:
+        up = post_dominators(sight.flat.blocks)
+        sight.order = up, control(sight.flat.blocks, up)
+    return sight.order
+
+
+def _comparison(sight: Sight, block: FlatBlock) -> Comparison | None:
+    if not isinstance(block.end, Branch):
+        return None
+    condition = block.end.condition
+    while True:
+        if isinstance(condition, Cast) or (isinstance(condition, Unary) and condition.op == "!"):
+            condition = condition.operand
+        else:
+            break
+    if isinstance(condition, Binary) and condition.op in COMPARISONS:
+        left = sources(sight, condition.left, block.frame)
+        right = sources(sight, condition.right, block.frame)
+        if not left and not right:
+            return None
+        constant = fold(condition.right) if left else fold(condition.left)
+        moved = _moved(sight, condition.left, block.frame) or _moved(sight, condition.right, block.frame)
+        return Comparison(left, right, condition.op, constant, block.end.position, moved)
+    left = sources(sight, condition, block.frame)
+    return Comparison(left, NOTHING, "!=", 0, block.end.position, False) if left else None
+
+
+def _moved(sight: Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
+    match expr:
+        case Cast(operand=operand):
+            return _moved(sight, operand, frame, depth)
+        case Binary(op="+" | "-" | "%" | "&"):
+            return True
+        case Load(place=VariablePlace() as place) if depth < 4:
+            return any(
+                _moved(sight, op.value, op.frame, depth + 1)
+                for key in place_keys(place, frame, sight.flat.points)
+                if is_local(key)
+                for _, op in sight.sets.get(key, ())
+            )
+    return False
+
+
+def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:
+    """The next block that every way from a block meets; -1 stands for leaving the function."""
+    graph: networkx.DiGraph[object] = networkx.DiGraph()
+    graph.add_node(-1)
+    for number, block in enumerate(blocks):
+        graph.add_node(number)
+        following = block.targets()
+        for target in following:
+            graph.add_edge(target, number)
+        if not following:
+            graph.add_edge(-1, number)
+    while True:  # a loop that is never left still has an order: its last block counts as a way out
+        missing = set(graph) - set(networkx.descendants(graph, -1)) - {-1}
+        if not missing:
+            break
+        graph.add_edge(-1, max(number for number in missing if isinstance(number, int)))
+    found = networkx.immediate_dominators(graph, -1)
+    return {
+        node: up for node, up in found.items() if isinstance(node, int) and isinstance(up, int) and node != up
+    }
+
+
+def control(blocks: list[FlatBlock], up: Mapping[int, int]) -> dict[int, tuple[int, ...]]:
+    """For each block the branches that it directly depends on; ``up`` are the post-dominators."""
+    found: dict[int, list[int]] = defaultdict(list)
+    for number, block in enumerate(blocks):
+        following = block.targets()
+        if len(following) < 2:
+            continue
+        stop = up.get(number)
+        for target in dict.fromkeys(following):
+            current: int | None = target
+            while current is not None and current != stop and current != -1:
+                if number not in found[current]:
+                    found[current].append(number)
+                current = up.get(current)
+    return {number: tuple(branches) for number, branches in found.items()}
