@@ -49,9 +49,9 @@ def _stores(machine: Machine) -> Iterator[tuple[Origin, str, int]]:
 def _failure(machine: Machine, state: State, where: Origin, function: str) -> Obligation:
     dispatch = main_dispatch(machine)
     named = any(other.declared for other in machine.states)
-    # Without a declared group, or for a name that marks a bound, a value outside may be meant: "nothing now".
-    recovers = dispatch.default_does in ("stores", "calls", "work", "leaves")
-    level: Level = "warning" if (named or recovers) and not is_bound(state.name) else "note"
+    # Among plain numbers a default that works may be the value's own case; a bound's name may mean "none now".
+    works = dispatch.default_does in ("stores", "calls", "work", "leaves")
+    level: Level = "warning" if (named or not works) and not is_bound(state.name) else "note"
     shown = state.name if state.name == str(state.value) else f"{state.name} ({state.value})"
     return about(
         "SM05",

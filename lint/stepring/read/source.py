@@ -28,6 +28,7 @@ _FALL_PART = re.compile(
 _FALL_COMMENT = re.compile(
     r"\bfall(?:s|ing|en)?\b[\s\-_*]*(?:\w+[\s\-_*]+){0,3}?(?:through|thru|throu|into)\b|\bfalls?(?:through|thru)\b"
     r"|\b(?:fall|continue|run)s?\b[\s*]+(?:\w+[\s*]+){0,2}?(?:in)?to\b[\s*]+(?:\w+[\s*]+){0,2}?(?:next|default|case)\b"
+    r"|\bcontinu(?:e|es|ing)\b(?=[\s*/.]*\Z|[\s*]+(?:\w+[\s*]+){0,2}?(?:to|into|with|in|on)\b)"
     r"|\bno\s+break\b|\b(?:intentional|deliberate)(?:ly)?\b.{0,20}\bbreak\b|\bdrop(?:s|ping)?[\s-]+through\b"
     r"|\bbreak\b.{0,30}\b(?:omitted|left out|missing)\b",
     re.IGNORECASE | re.DOTALL,
@@ -124,7 +125,7 @@ class SourceFiles:
         if known is None:
             text = self.text(file)
             found: set[tuple[str, int]] = set()
-            if text is not None and re.search(r"fall|break|through", text, re.IGNORECASE):
+            if text is not None and re.search(r"fall|break|through|continu", text, re.IGNORECASE):
                 line, start = 1, 0
                 for match in _FALL_PART.finditer(text):
                     comment, word = match[1], match[2]
