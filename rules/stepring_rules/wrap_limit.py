@@ -73,10 +73,10 @@ def _wrong(program: Program, turn: Turn, limit: int, where: Origin, function: st
     elif other is not None and not spare:
         what += f"; {limit} is the number of slots of {other.storage}"
         related.append(Related(other.where, f"{other.storage} has {limit} slots"))
-    level: Level = "note" if spare else "error" if limit > capacity else "warning"
     bad = next(
         (access for access in checked(ring) if turn.index.identity in access.cells and access.bad is not None), None
     )
+    level: Level = "note" if spare else "error" if limit > capacity and bad is not None else "warning"
     if limit > capacity:
         why = "The index walks on past the end of the storage, into what lies behind it."
     else:

@@ -25,21 +25,21 @@ GCC = shutil.which("gcc")
 TYPES = """
 typedef unsigned char uint8_t; typedef signed char int8_t; typedef unsigned short uint16_t; typedef short int16_t;
 """
-LOOKS = "#define SLOT(x) (x)\n"
 RUNS = """
-static long last_; static int skips_, step_, slots_;
-static long slot_(long at) {
-    if (last_ >= 0 && (last_ + step_ - at) % slots_ != 0) skips_ = 1;
-    last_ = at;
+static long last_[2]; static int skips_, step_, slots_;
+static long slot_(int which, long at) {
+    if (last_[which] >= 0 && (last_[which] + step_ - at) % slots_ != 0) skips_ = 1;
+    last_[which] = at;
     return at;
 }
-#define SLOT(x) (slot_(x))
+#define SLOT(x) (slot_(0, x))
+#define NEXT(x) (slot_(1, x))
 """
 
 
 @dataclass(frozen=True, slots=True)
 class Made:
-    """A generated ring: its C text (``SLOT`` marks the stored slot) and what it takes to drive it."""
+    """A generated ring and what it takes to drive it. ``SLOT`` marks the stored slot, ``NEXT`` the one taken out."""
 
     name: str
     text: str
@@ -76,6 +76,45 @@ def make(number: int, luck: random.Random) -> Made:
         text += _reader(luck, number, slip and luck.random() < 0.5, index, array, taken, capacity, use != index)
         text += f"int look{number}(uint8_t back) {{ return get{number}({passed}back); }}\n"
     return Made(name, text, capacity, direction, reads, index)
+
+
+def make_queue(number: int, luck: random.Random) -> Made:
+    """A queue with two indices, told full from empty by a count or by one slot that stays empty."""
+    type_ = luck.choice(["uint8_t", "uint8_t", "uint16_t", "unsigned"])
+    capacity = luck.choice([3, 4, 5, 8, 12, 16, 20])
+    counted = luck.random() < 0.5
+    slipped = luck.choice(["", "", "head", "tail"])
+    name = f"q{number}"
+    inside = luck.random() < 0.6
+    fields = f"int data{number}[{capacity}]; {type_} head{number}, tail{number}, count{number}; int after"
+    text = f"struct {name} {{ {fields}; }}; static struct {name} one{number};\n" if inside else ""
+    if not inside:
+        text = f"static int data{number}[{capacity}]; static {type_} head{number}, tail{number}, count{number};\n"
+    own = "q->" if inside else ""
+    taken, passed = (f"struct {name} *q, ", f"&one{number}, ") if inside else ("", "")
+    data, count = f"{own}data{number}", f"{own}count{number}"
+    moves = {}
+    for end in ("head", "tail"):
+        index = f"{own}{end}{number}"
+        limit = luck.choice([capacity - 1, capacity + 1, capacity * 2]) if end == slipped else capacity
+        moves[end] = luck.choice(
+            [
+                f"{index}++; if ({index} >= {limit}) {index} = 0;",
+                f"if (++{index} == {limit}) {index} = 0;",
+                f"{index} = ({index} + 1) % {limit};",
+                f"{index} = {index} + 1 < {limit} ? {index} + 1 : 0;",
+            ]
+        )
+    head, tail = f"{own}head{number}", f"{own}tail{number}"
+    full = f"{count} == {capacity}" if counted else f"({head} + 1) % {capacity} == {tail}"
+    empty = f"{count} == 0" if counted else f"{head} == {tail}"
+    up, down = (f"{count}++; ", f"{count}--; ") if counted else ("", "")
+    put = f"if ({full}) return 0; {data}[SLOT({head})] = v; {moves['head']} {up}return 1;"
+    get = f"int v; if ({empty}) return 0; v = {data}[NEXT({tail})]; {moves['tail']} {down}return v;"
+    text += f"int put{number}({taken}int v) {{ {put} }}\nint get{number}({taken}int back) {{ {get} }}\n"
+    text += f"void entry{number}(int v) {{ put{number}({passed}v); }}\n"
+    text += f"int look{number}(uint8_t back) {{ return get{number}({passed}back); }}\n"
+    return Made(name, text, capacity, 1, True, head)
 
 
 def _advance(luck: random.Random, slip: bool, i: str, type_: str, n: int) -> tuple[str, str, int]:
@@ -158,7 +197,7 @@ def program_of(made: list[Made]) -> str:
         + f"""
 int main(int argc, char **argv) {{
     int which = argc > 1 ? atoi(argv[1]) : 0;
-    last_ = -1;
+    last_[0] = last_[1] = -1;
     unsigned luck = 12345;
     for (int k = 0; k < 200000; k++) {{
         /* The reader with every argument before anything was stored, then at random between the stores. */
@@ -190,7 +229,7 @@ def observe(made: list[Made], folder: Path) -> list[str]:
 
 def judge(item: Made) -> list[Obligation]:
     """The failed obligations for one ring."""
-    unit = lower_text(TYPES + item.text.replace("SLOT(", "("))
+    unit = lower_text(TYPES + item.text.replace("SLOT(", "(").replace("NEXT(", "("))
     assert not unit.notices, (unit.notices, item.text)
     kept = ring_functions(unit.functions)
     rings = find_rings(kept, unit.objects, unit.types.structs, unit.types.model, origin)
@@ -223,7 +262,7 @@ def disagreements(made: list[Made], folder: Path) -> tuple[list[str], dict[str, 
 @pytest.mark.parametrize("seed", range(3))
 def test_findings_are_what_the_programs_do(seed: int, tmp_path: Path) -> None:
     luck = random.Random(seed)
-    made = [make(number, luck) for number in range(30)]
+    made = [make(number, luck) for number in range(24)] + [make_queue(number, luck) for number in range(24, 36)]
     wrong, counts = disagreements(made, tmp_path)
     assert not wrong, "\n".join(wrong)
     assert len(counts) == 3 and min(counts.values()) >= 3

@@ -130,6 +130,12 @@ def test_how_full_and_empty_are_told_apart(text: str, scheme: str) -> None:
         # a clamp
         "static uint8_t log[16]; static uint8_t used; void note(uint8_t c) { log[used] = c; used++;"
         " if (used > 15) used = 15; }",
+        # a block that is worked on when it is full
+        "extern void work(uint8_t *block); static uint8_t block[64]; static uint8_t used;"
+        "void feed(uint8_t c) { block[used++] = c; if (used == 64) { work(block); used = 0; } }",
+        # scratch strings that are lent out in turn
+        "extern void number(char *to, int value); static char texts[4][12]; static uint8_t next;"
+        "char *shown(int value) { char *text = texts[next]; next = (next + 1) % 4; number(text, value); return text; }",
         # a pseudo-random generator that picks from a table it also fills
         "static uint16_t seed; static uint8_t salt[8]; void stir(uint8_t c) { seed = seed * 109 + 89;"
         " salt[seed & 7] ^= c; }",
@@ -197,3 +203,79 @@ def test_the_unit_stage_keeps_a_small_part() -> None:
         """
     )
     assert [function.name for function in ring_functions(unit.functions)] == ["put", "flush"]
+
+
+def test_a_guard_on_other_state_is_followed() -> None:
+    """The comparison is one late, but the guard never lets the index get that far."""
+    (ring,) = rings(
+        """
+        static uint8_t q[8]; static uint8_t head, used;
+        void put(uint8_t c) { if (used < 8) { q[head] = c; used++; if (++head > 8) head = 0; } }
+        """
+    )
+    (access,) = ring.accesses
+    assert access.exact == (0, 1, 2, 3, 4, 5, 6, 7)
+    index = next(index for index in ring.indices if index.name == "head")
+    assert index.orbit is not None and max(index.orbit) >= 8
+
+
+def test_what_a_caller_checks_counts_for_its_static_helper() -> None:
+    (ring,) = rings(
+        """
+        static int16_t line[6]; static uint8_t at;
+        static int16_t back(uint8_t steps) { return line[at - steps]; }
+        void put(int16_t sample) { line[at] = sample; if (++at == 6) at = 0; }
+        int16_t newest(void) { return at > 0 ? back(1) : line[5]; }
+        """
+    )
+    assert {access.function: access.exact for access in ring.accesses}["back"] == (0, 1, 2, 3, 4)
+
+
+def test_values_of_another_object_of_the_type_are_not_lost() -> None:
+    (ring,) = rings(
+        """
+        struct pipe { uint8_t data[8]; uint8_t in; };
+        static struct pipe up, down;
+        void put(struct pipe *p, uint8_t c) { p->data[p->in] = c; p->in = (p->in + 1) % 8; }
+        void start(void) { up.in = 9; down.in = 0; }
+        """
+    )
+    assert ring.indices[0].orbit is not None and 9 in ring.indices[0].orbit
+
+
+def test_two_programs_in_one_folder_are_told_apart() -> None:
+    one = lower_text(
+        TYPES + "uint8_t q[4]; uint8_t at; void put(uint8_t c) { q[at] = c; at = (at + 1) % 4; }", name="one.c"
+    )
+    other = lower_text(
+        TYPES + "uint8_t q[9]; uint8_t at; void put(uint8_t c) { q[at] = c; at = (at + 1) % 9; }", name="other.c"
+    )
+    found = find_rings(
+        one.functions + other.functions,
+        one.objects + other.objects,
+        {**one.types.structs, **other.types.structs},
+        one.types.model,
+        origin,
+    )
+    assert [(ring.capacity, ring.indices[0].orbit) for ring in found] == [(4, tuple(range(4))), (9, tuple(range(9)))]
+
+
+def test_the_start_value_is_that_of_the_initialiser() -> None:
+    (ring,) = rings(
+        "static uint8_t q[8]; static uint8_t at = 5; void put(uint8_t c) { q[at] = c; at = (at + 1) % 8; }"
+    )
+    assert ring.indices[0].initial == 5
+
+
+def test_an_index_behind_atomic_functions() -> None:
+    (ring,) = rings(
+        """
+        uint8_t __atomic_load_n(uint8_t *, int); void __atomic_store_n(uint8_t *, uint8_t, int);
+        static uint8_t q[8]; static uint8_t at;
+        void put(uint8_t c) {
+            uint8_t here = __atomic_load_n(&at, 5);
+            q[here] = c;
+            __atomic_store_n(&at, (here + 1) % 8, 5); }
+        """
+    )
+    assert ring.indices[0].orbit == tuple(range(8))

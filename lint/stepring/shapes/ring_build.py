@@ -90,7 +90,7 @@ def _index(
     moves = merged.moves[key]
     item = merged.objects.get(key[:2]) if key[0] == "var" else None
     where = item.position if item is not None else min([*moves.advances, *moves.copies, uses[0].touch.position])
-    initial = min(orbit.certain, key=abs) if orbit is not None and orbit.certain and 0 in orbit.certain else None
+    initial = orbit.start if orbit is not None else None
     return Index(
         key_text(key),
         "/".join(key),

@@ -254,6 +254,9 @@ def _call(look: _Look, call: Call) -> None:
                 made_of.add(name)
                 if isinstance(call.callee, FunctionName):
                     look.scan.via.add((name, call.callee.name))
+                # An atomic store: the new value stands beside the address.
+                if any(_reduced(other) and name in _sources(look, other) for other in call.arguments):
+                    look.scan.turned.add(name)
                 look.scan.stored.add(name)
                 look.scan.moved.add(name)
         to = inner.type.to if isinstance(inner.type, PointerType) else None

@@ -37,9 +37,9 @@ ORBIT = 4_200
 TOGETHER = 8
 """Up to this many integers are followed together."""
 # Work is counted in operations of the code that is run; a thousand take some milliseconds.
-ALONE_WORK = 60_000
+ALONE_WORK = 50_000
 LOOK_WORK = 30_000
-TOGETHER_WORK = 120_000
+TOGETHER_WORK = 80_000
 
 def study(
     scene: Scene,

@@ -52,11 +52,13 @@ class Access:
 
 @dataclass(slots=True, eq=False)
 class Orbit:
-    """The values of one index: certain ones, all that cannot be excluded, and whether the search came to an end."""
+    """The values of one index: certain ones, all that cannot be excluded, whether the search came to an end, and the
+    value at start, if there is one."""
 
     certain: set[int] = field(default_factory=set)
     possible: set[Value] = field(default_factory=set)
     complete: bool = True
+    start: int | None = None
 
 
 @dataclass(slots=True, eq=False)
@@ -166,7 +168,9 @@ class Search:
     def orbit(self, key: Key) -> Orbit:
         """The values of one of the integers."""
         number = self.tracked.index(key)
-        orbit = Orbit(complete=self.complete)
+        starts = {state[number] for state, (before, _) in self.parents.items() if before is None}
+        first = next(iter(starts)) if len(starts) == 1 else None
+        orbit = Orbit(complete=self.complete, start=first if isinstance(first, int) else None)
         for state, certain in self.states.items():
             value = state[number]
             orbit.possible.add(value)

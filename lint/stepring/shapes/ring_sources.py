@@ -327,7 +327,7 @@ def _moved(sight: Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
 
 def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:
     """The next block that every way from a block meets; -1 stands for leaving the function."""
-    graph: networkx.DiGraph[object] = networkx.DiGraph()
+    graph: networkx.DiGraph[int] = networkx.DiGraph()
     graph.add_node(-1)
     for number, block in enumerate(blocks):
         graph.add_node(number)
@@ -336,15 +336,24 @@ def post_dominators(blocks: list[FlatBlock]) -> dict[int, int]:
             graph.add_edge(target, number)
         if not following:
             graph.add_edge(-1, number)
-    while True:  # a loop that is never left still has an order: its last block counts as a way out
-        missing = set(graph) - set(networkx.descendants(graph, -1)) - {-1}
-        if not missing:
+    # A loop that is never left still has an order: its last block counts as a way out.
+    reached: set[int] = set()
+    pending = [int(number) for number in graph.successors(-1)]
+    left = list(range(len(blocks)))
+    while True:
+        while pending:
+            number = pending.pop()
+            if number not in reached:
+                reached.add(number)
+                pending.extend(graph.successors(number))
+        while left and left[-1] in reached:
+            left.pop()
+        if not left:
             break
-        graph.add_edge(-1, max(number for number in missing if isinstance(number, int)))
+        graph.add_edge(-1, left[-1])
+        pending.append(left[-1])
     found = networkx.immediate_dominators(graph, -1)
-    return {
-        node: up for node, up in found.items() if isinstance(node, int) and isinstance(up, int) and node != up
-    }
+    return {node: up for node, up in found.items() if node != up}
 
 
 def control(blocks: list[FlatBlock], up: Mapping[int, int]) -> dict[int, tuple[int, ...]]:

@@ -72,7 +72,8 @@ def _scene(merged: Catalogue) -> Scene:
         members = {key[1] for key in tracked if key[0] == "member"}
         keys = {*tracked, *(("struct", name) for name in members), *(("array", *key) for key in arrays)}
         found = dict.fromkeys(number for key in keys for number in places.get(key, ()))
-        return [(facts, facts.flat.function.identity in names) for facts in (merged.facts[item] for item in sorted(found))]
+        chosen = [merged.facts[number] for number in sorted(found)]
+        return [(facts, facts.flat.function.identity in names) for facts in chosen]
 
     def initial(key: Key) -> tuple[int, ...] | None:
         return _initial(merged, key)
