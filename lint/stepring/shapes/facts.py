@@ -127,6 +127,7 @@ class TransitionFact:
 
     ``stored_by`` is the function that stores it, which may be a setter. ``through`` names a function of another unit
     and the number of its argument: the step is one only if that function stores its argument in the key.
+    ``dispatched``: the source is what a ``switch`` on the key found, not only a test.
     """
 
     key: str
@@ -138,6 +139,7 @@ class TransitionFact:
     where: Origin
     stored_by: str
     through: tuple[str, int] | None = None
+    dispatched: bool = False
 
 
 @dataclass(frozen=True, slots=True)

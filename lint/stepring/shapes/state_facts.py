@@ -800,6 +800,7 @@ def _transitions_of(work: _Work, key: str, scans: Sequence[_Scan], callers: Mapp
                 where,
                 move.function,
                 move.through,
+                move.dispatched,
             )
         )
     if not setting.bounded:

@@ -62,7 +62,7 @@ class Chosen(NamedTuple):
 class Value(NamedTuple):
     """A value: ``known`` with its number; ``other``: any but those excluded; ``any``: computed, not known.
 
-    ``chosen`` is None where a number is only what a test told.
+    ``chosen`` is None where a number is only what a test told; in a source it is the dispatch that told it.
     """
 
     kind: Literal["known", "other", "any"]
@@ -98,6 +98,8 @@ class Move:
     chosen: Chosen
     at: Position
     through: tuple[str, int] | None = None
+    # Whether a dispatch told the source, and not only a test.
+    dispatched: bool = False
 
 
 class Exit(NamedTuple):
@@ -251,7 +253,10 @@ def _note_move(
         source = environment.source
         known = source.number if source.kind == "known" else None
         function = run.part.function.identity
-        run.setting.moves.add(Move(function, known, source.excluded, value.number, value.chosen, at, through))
+        dispatched = source.chosen is not None
+        run.setting.moves.add(
+            Move(function, known, source.excluded, value.number, value.chosen, at, through, dispatched)
+        )
 
 
 def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterator[Environment]:
@@ -426,7 +431,11 @@ def _sourced(run: _Run, test: Term, environment: Environment, at: Position | Non
             if term.slot not in run.part.aliases or at is None:
                 continue  # a constant meant for the state is no copy of it
             _note_move(run, value, environment, at)
-        return environment._replace(source=value._replace(chosen=None))
+        mark = Chosen(run.part.function.identity, -1, at, None) if at is not None else None
+        before = environment.source
+        if mark is None and before.kind == "known" and (value.kind, value.number) == (before.kind, before.number):
+            mark = before.chosen  # a test of what a dispatch has found
+        return environment._replace(source=value._replace(chosen=mark))
     return environment
 
 
