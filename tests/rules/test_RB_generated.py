@@ -145,7 +145,7 @@ def _advance(luck: random.Random, slip: bool, i: str, type_: str, n: int) -> tup
         case "down":
             return i, f"if ({i} == 0) {i} = {max(limit, 2)}; {i}--;", -1
         case "exclusive":
-            return i, f"if ({i} {cmp} {limit - 1}) {i} = {to}; else {i}++;", 1
+            return i, f"if ({i} {cmp} {max(limit - 1, 1)}) {i} = {to}; else {i}++;", 1
         case "mask":
             mask = luck.choice([n - 1, n, 2 * n - 1]) if slip else n - 1
             return i, f"{i} = ({i} + 1) & {mask};", 1

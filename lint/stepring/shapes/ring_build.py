@@ -234,7 +234,7 @@ def _access(
     exact: tuple[int, ...] | None = None
     if complete and all(isinstance(value, int) for value in values):
         exact = tuple(sorted(int(value) for value in values))
-    fits = complete and not any(out_of_range(value, capacity, touch.kind) for value in values)
+    fits = complete and not any(out_of_range(value, capacity, touch) for value in values)
     bad = found.bad[0] if found.bad is not None else None
     maybe = ""
     doubt = ""

@@ -161,6 +161,7 @@ def facts_of(flat: Flat) -> FlatFacts:
                 if use is None:
                     plain.append(op)
                 else:
+                    op.indexed = True
                     uses.append(use)
     return FlatFacts(sight, flat, uses, plain, sight.sources, sight.types, frozenset(sight.stored))
 

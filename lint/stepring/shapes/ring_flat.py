@@ -64,7 +64,10 @@ class Set:
 
 @dataclass(slots=True, eq=False)
 class Touch:
-    """An access to an array (``storage``) at ``subscript``, which counts from where ``pointer`` stands, if given."""
+    """An access to an array (``storage``) at ``subscript``, which counts from where ``pointer`` stands, if given.
+
+    ``indexed``: the subscript is made from a lasting integer.
+    """
 
     storage: Key
     element: CType
@@ -74,6 +77,7 @@ class Touch:
     kind: TouchKind
     position: Position
     function: str
+    indexed: bool = False
 
 
 @dataclass(slots=True, eq=False)

@@ -134,9 +134,8 @@ def is_odd(pair: Pair, stride: int, capacity: int) -> bool:
 
 
 def _fits(access: Access, capacity: int) -> bool:
-    kind = access.touch.kind
     return not access.cut and not any(
-        out_of_range(value, capacity, kind) for value in access.certain | access.doubtful
+        out_of_range(value, capacity, access.touch) for value in access.certain | access.doubtful
     )
 
 

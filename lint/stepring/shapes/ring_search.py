@@ -96,9 +96,12 @@ class Scene:
         return Range(type_.low, type_.high, False) if type_ is not None else Range(-(1 << 31), (1 << 32) - 1, False)
 
 
-def out_of_range(value: Value, capacity: int, kind: str) -> bool:
-    """Whether a subscript can leave the array; the address one past the end may be formed (6.5.6p8)."""
-    top = capacity if kind == "address" else capacity - 1
+def out_of_range(value: Value, capacity: int, touch: Touch) -> bool:
+    """Whether a subscript can leave the array.
+
+    The address one past the end may be formed (6.5.6p8), as the end of a loop; an index that stands there is wrong.
+    """
+    top = capacity if touch.kind == "address" and not touch.indexed else capacity - 1
     if isinstance(value, int):
         return not 0 <= value <= top
     if isinstance(value, Range):
@@ -120,7 +123,7 @@ def collect(walk: Walk, run: Run, search: "Search", state: State, certain: bool,
             if value in known and (access.bad is not None or not certain):
                 continue
             known.add(value)
-            if not out_of_range(value, capacity, touch.kind):
+            if not out_of_range(value, capacity, touch):
                 continue
             if certain and access.bad is None:
                 access.bad = (subscript, search.witness(state, trace))
@@ -130,7 +133,7 @@ def collect(walk: Walk, run: Run, search: "Search", state: State, certain: bool,
             if value in access.doubtful:
                 continue
             access.doubtful.add(value)
-            if access.maybe is None and out_of_range(value, capacity, touch.kind):
+            if access.maybe is None and out_of_range(value, capacity, touch):
                 access.maybe = subscript if subscript is not None else Range(-(1 << 31), (1 << 31) - 1, False)
 
 
