@@ -18,7 +18,7 @@ _BOUND = re.compile(
 _FINAL = re.compile(
     r"(?:^|_)(?:done|end|ended|final|finish|finished|fault|faulted|fail|failed|failure|error|err|halt|halted|stop|stopped|"
     r"dead|off|abort|aborted|close|closed|complete|completed|exit|exited|locked|lockout|disabled|shutdown|terminated|"
-    r"terminate|success|ok|panic|crash|crashed|bad|free|freed|sync_lost|destroyed|released)(?:_|$)",
+    r"terminate|success|ok|panic|crash|crashed|bad|free|freed|sync_lost|destroyed|released|eof)(?:_|$)",
     re.IGNORECASE,
 )
 

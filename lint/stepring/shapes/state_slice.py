@@ -188,7 +188,8 @@ def make_slice(
         for number, block in enumerate(function.blocks)
         if ops[number] or tests[number] is not None or isinstance(block.terminator, Return)
     }
-    onward = {number: _onward(function, number, keep) for number in range(len(function.blocks))}
+    asked = {target for number in keep for target in successors(function.blocks[number].terminator)} | {0}
+    onward = {number: _onward(function, number, keep) for number in sorted(asked)}
     blocks = {number: maker.block(number, ops[number], tests[number], onward) for number in keep}
     standing = frozenset(number for number, name in enumerate(names) if name in aliases)
     return Slice(function, names, blocks, onward[0], _liveness(blocks), standing)
