@@ -1,0 +1,220 @@
+"""The transitions of a unit's state variables, found by running ``state_flow`` over the functions that matter for each.
+
+Functions that dispatch or test come first, so that what they call is seen with the states it is called in.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+
+from stepring.meaning.types import (
+    Assign,
+    Load,
+    VariablePlace,
+)
+from stepring.shapes.facts import (
+    TransitionFact,
+)
+from stepring.shapes.keys import uncast
+from stepring.shapes.names import constant_at, sets
+from stepring.shapes.state_flow import (
+    ENTRY,
+    FEW_VISITS,
+    Setting,
+    flow,
+    guard_text,
+)
+from stepring.shapes.state_scan import Scan, Work, function_identity, is_shared, stores_parameter
+from stepring.shapes.state_stores import is_fresh
+
+
+def note_transitions(work: Work, chosen: frozenset[str]) -> None:
+    by_key: dict[str, list[Scan]] = {}
+    for scan in work.scans:
+        for key in scan.keys:
+            if key in chosen:
+                by_key.setdefault(key, []).append(scan)
+    callers: dict[str, set[str]] = {}
+    for scan in work.scans:
+        for _, name in scan.calls:
+            callers.setdefault(name, set()).add(scan.function.identity)
+    for key, scans in by_key.items():
+        _transitions_of(work, key, scans, callers)
+
+
+def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mapping[str, set[str]]) -> None:
+    if not any(scan.keys[key].read_instances for scan in scans) and not _has_setter(scans, key):
+        _unconditional(work, key)
+        return
+    writers = _writers(work, key, scans, callers)
+    first = scans[0].keys[key]
+    outside = first.key.scope == "lasting" and is_shared(first)
+    if not writers and not (outside and any(_asks_others(work, scan) for scan in scans)):
+        return
+    mentioned = frozenset(
+        value
+        for scan in scans
+        for seen in [scan.keys[key]]
+        for value in (
+            *(
+                number
+                for _, switch in seen.dispatches
+                for case in switch.cases
+                for number in (range(case.low, case.high + 1) if case.high - case.low <= 64 else (case.low,))
+            ),
+            *(const.value for const, _ in seen.tests),
+        )
+    )
+    by_identity = {scan.function.identity: scan for scan in work.scans}
+
+    def instances(function: str) -> frozenset[str]:
+        scan = by_identity.get(function)
+        seen = scan.keys.get(key) if scan is not None else None
+        return frozenset(seen.instances) if seen is not None else frozenset()
+
+    storing = {scan.function.identity for scan in scans if scan.keys[key].stores}
+    shared = first.key.scope == "lasting" and (is_shared(first) or len(storing) > 1)
+    setting = Setting(
+        key,
+        mentioned,
+        work.by_name.get,
+        writers,
+        instances,
+        _commits(scans, key),
+        shared=shared,
+        outside=outside,
+        aliases=_aliases(scans, key),
+    )
+    dispatched = any(scan.keys[key].dispatches for scan in scans)
+    if not dispatched:
+        setting.most_visits = FEW_VISITS
+    # Functions that dispatch or test come first: what they call is then seen with its sources.
+    readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
+    readers.sort(key=lambda scan: not scan.keys[key].read_instances)
+    others = [
+        scan
+        for scan in work.scans
+        if key not in scan.keys and any(function_identity(work, name) in writers for _, name in scan.calls)
+    ]
+    for scan in [*readers, *others]:
+        function = scan.function
+        seen = scan.keys.get(key)
+        if function.identity in setting.followed and function.static and (seen is None or not seen.read_instances):
+            continue
+        for instance in sorted(seen.instances) if seen is not None else [key]:
+            reads = seen is not None and instance in seen.read_instances
+            if seen is not None and not reads and is_fresh(seen, instance):
+                continue
+            flow(setting, function, instance, ENTRY, ENTRY, {})
+    if setting.bounded and not dispatched:
+        _unconditional(work, key)
+        return
+    if setting.bounded:
+        work.bounded.append(key)
+    for move in sorted(
+        setting.moves,
+        key=lambda move: (move.at, move.source is None, move.source or 0, move.target, move.chosen.block),
+    ):
+        if first.key.scope == "local" and move.source is None and not move.excluded:
+            continue  # a local variable has no state before its first value
+        here = move.chosen.position if move.chosen.position is not None and move.chosen.position.line else move.at
+        where = work.names.origin(here)
+        target = constant_at(work.names, move.target, move.chosen.position, move.chosen.name, where)
+        work.transitions.append(
+            TransitionFact(
+                key,
+                move.chosen.function,
+                move.source,
+                tuple(sorted(move.excluded)) if move.source is None else (),
+                target,
+                _guard(by_identity[move.chosen.function], move.chosen.block, key),
+                where,
+                move.function,
+                move.through,
+                move.dispatched,
+            )
+        )
+    if not setting.bounded:
+        _settle_stores(work, key, setting)
+
+
+def _guard(scan: Scan, block: int, key: str) -> str:
+    standing = frozenset(alias.variable for alias in scan.aliases if alias.key.key == key)
+    return guard_text(scan.function, block, key, standing)
+
+
+def _settle_stores(work: Work, key: str, setting: Setting) -> None:
+    """Stores of computed values whose every value was seen: what they store is known after all."""
+    # All of a local variable's values are seen from its function's start; a store that is not reached stores nothing.
+    key_is_local = any(scan.keys[key].key.scope == "local" for scan in work.scans if key in scan.keys)
+    for number, (store, at) in enumerate(work.stores):
+        if store.key != key or store.parameter is not None or len(store.constants) == 1:
+            continue
+        seen = setting.stored.get((store.function, at), set())
+        if None in seen or (not seen and not key_is_local):
+            continue
+        values = sorted((one for one in seen if one is not None), key=lambda one: (one[0], one[1].block))
+        constants = dict.fromkeys(
+            constant_at(work.names, value, chosen.position, chosen.name, store.where) for value, chosen in values
+        )
+        work.stores[number] = (replace(store, constants=tuple(constants), why_unknown="", stepped=False), at)
+
+
+def _asks_others(work: Work, scan: Scan) -> bool:
+    """Whether a function calls what may be a setter in another unit."""
+    return any(name not in work.by_name and sets(name) for _, name in scan.calls)
+
+
+def _aliases(scans: Sequence[Scan], key: str) -> dict[tuple[str, str], frozenset[str]]:
+    found: dict[tuple[str, str], set[str]] = {}
+    for scan in scans:
+        for alias in scan.aliases:
+            if alias.key.key == key:
+                way = "" if alias.anywhere else alias.key.instance
+                found.setdefault((scan.function.identity, way), set()).add(alias.variable)
+    return {way: frozenset(names) for way, names in found.items()}
+
+
+def _commits(scans: Sequence[Scan], key: str) -> frozenset[str]:
+    """The lasting variables that are copied into the state: next states that are committed later."""
+    return frozenset(
+        inner.place.variable.identity
+        for scan in scans
+        for _, statement, _ in scan.keys[key].stores
+        if isinstance(statement, Assign)
+        and isinstance(inner := uncast(statement.value), Load)
+        and isinstance(inner.place, VariablePlace)
+        and inner.place.variable.lasting
+    )
+
+
+def _has_setter(scans: Sequence[Scan], key: str) -> bool:
+    """Whether some function stores one of its parameters in the key."""
+    return any(stores_parameter(scan.keys[key]) for scan in scans)
+
+
+def _unconditional(work: Work, key: str) -> None:
+    """Stores in a unit that never looks at the state: from any state to each constant."""
+    for store, _ in work.stores:
+        if store.key == key and not store.fresh:
+            for constant in store.constants:
+                function, where = store.function, store.where
+                work.transitions.append(TransitionFact(key, function, None, (), constant, "", where, function))
+
+
+def _writers(work: Work, key: str, scans: Sequence[Scan], callers: Mapping[str, set[str]]) -> frozenset[str]:
+    """The functions that store into the key, and those that call one of them."""
+    by_identity = {scan.function.identity: scan for scan in work.scans}
+    found = {scan.function.identity for scan in scans if scan.keys[key].stores}
+    pending = list(found)
+    depth = dict.fromkeys(found, 0)
+    while pending:
+        identity = pending.pop()
+        if depth[identity] >= 2:
+            continue
+        name = by_identity[identity].function.name
+        for caller in callers.get(name, ()):
+            if caller not in found:
+                found.add(caller)
+                depth[caller] = depth[identity] + 1
+                pending.append(caller)
+    return frozenset(found)
