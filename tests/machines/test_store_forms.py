@@ -254,6 +254,77 @@ FORMS = {
             }
         }
     """,
+    "by others through a getter and a setter": """
+        static enum gate gate;
+        enum gate gate_now(void) { return gate; }
+        void set_gate(enum gate to) { gate = to; }
+        void step(void)
+        {
+            switch (gate_now()) {
+            case SHUT: if (asked()) set_gate(OPENING); break;
+            case OPENING: if (at_end()) set_gate(OPEN); else if (left_alone()) set_gate(SHUT); break;
+            case OPEN: if (left_alone()) set_gate(SHUT); break;
+            }
+        }
+    """,
+    "in an object whose address is handed over": """
+        struct feeder { enum gate gate; };
+        static struct feeder hopper;
+        static void enter(struct feeder *which, enum gate to) { which->gate = to; }
+        void step(void)
+        {
+            switch (hopper.gate) {
+            case SHUT: if (asked()) enter(&hopper, OPENING); break;
+            case OPENING: if (at_end()) enter(&hopper, OPEN); else if (left_alone()) enter(&hopper, SHUT); break;
+            case OPEN: if (left_alone()) enter(&hopper, SHUT); break;
+            }
+        }
+    """,
+    "in an object behind a pointer to anything": """
+        struct feeder { enum gate gate; };
+        static void opened(struct feeder *f) { f->gate = OPEN; }
+        static void closed(struct feeder *f) { f->gate = SHUT; }
+        void step(void *argument)
+        {
+            struct feeder *f = (struct feeder *)argument;
+            switch (f->gate) {
+            case SHUT: if (asked()) f->gate = OPENING; break;
+            case OPENING: if (at_end()) opened(f); else if (left_alone()) closed(f); break;
+            case OPEN: if (left_alone()) closed(f); break;
+            }
+        }
+    """,
+    "after returns": """
+        static enum gate gate;
+        void step(void)
+        {
+            switch (gate) {
+            case SHUT: if (asked()) gate = OPENING; return;
+            case OPENING: break;
+            default: break;
+            }
+            if (gate != OPENING) {
+                if (gate == OPEN && left_alone()) gate = SHUT;
+                return;
+            }
+            if (at_end()) gate = OPEN; else if (left_alone()) gate = SHUT;
+        }
+    """,
+    "again and again in one call": """
+        static enum gate gate;
+        void step(void)
+        {
+            int again;
+            do {
+                again = 0;
+                switch (gate) {
+                case SHUT: if (asked()) { gate = OPENING; again = 1; } break;
+                case OPENING: if (at_end()) { gate = OPEN; again = 1; } else if (left_alone()) gate = SHUT; break;
+                case OPEN: if (left_alone()) gate = SHUT; break;
+                }
+            } while (again);
+        }
+    """,
     "with gotos": """
         static enum gate gate;
         void step(void)

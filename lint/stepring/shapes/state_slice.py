@@ -294,6 +294,8 @@ class _Maker:
                     known = self.callee_of(name) if name else None
                     if known is not None:
                         assigned.append((statement.result.variable.identity, None))
+                    if known is not None and self.is_getter(known):
+                        wanted.append(statement.result.variable.identity)
                     if known is not None and known.identity in self.writers:
                         for argument in statement.arguments:
                             wanted.extend(_variables(argument))
@@ -322,6 +324,15 @@ class _Maker:
                 if value is not None and any(other in useful for other in _variables(value)):
                     useful.add(name)
         return tuple(name for name in wanted if name in useful and name != self.instance)[:MOST_HELPERS]
+
+    def is_getter(self, function: Function) -> bool:
+        """Whether a function does nothing but return the state."""
+        end = function.blocks[0].terminator
+        if len(function.blocks) != 1 or function.blocks[0].statements or not isinstance(end, Return):
+            return False
+        inner = uncast(end.value) if end.value is not None else None
+        found = place_key(inner.place, function.identity) if isinstance(inner, Load) else None
+        return found is not None and found.key == self.key
 
     def _constant_or_state(self, value: Expr) -> bool:
         inner = uncast(value)
