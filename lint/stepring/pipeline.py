@@ -130,7 +130,7 @@ def inspect(paths: Sequence[Path], options: Options, progress: Progress | None =
     rules = load_rules()
     obligations: list[Obligation] = []
     said: list[Notice] = [*notices, *gathered.notices]
-    program = merge(summaries, said)
+    program = merge(summaries, said, whole=not any(path.is_file() for path in paths))
     for summary in summaries:
         said.extend(summary.notices)
     for rule in rules:
@@ -203,13 +203,19 @@ def _guarded(worker: Worker, unit: Unit) -> UnitSummary:
         return UnitSummary(unit, model, False, empty, (), (), {}, {}, (), (notice,))
 
 
-def merge(summaries: Sequence[UnitSummary], said: list[Notice]) -> Program:
+def merge(summaries: Sequence[UnitSummary], said: list[Notice], *, whole: bool = True) -> Program:
     """The program: machines and rings from all summaries. If the search for one kind fails, the other is kept."""
-    complete = all(summary.read for summary in summaries)
+    unread: dict[str, str] = {}
+    for summary in summaries:
+        if not summary.read:
+            unread.setdefault(str(summary.unit.source), summary.unit.source.name)
+        for place in summary.functions:
+            if not place.read:
+                unread.setdefault(place.file, place.name)
     machines: tuple[Machine, ...] = ()
     rings: tuple[Ring, ...] = ()
     try:
-        machines = find_machines((summary.states for summary in summaries), complete=complete)
+        machines = find_machines((summary.states for summary in summaries), unread=unread, whole=whole)
     except Exception as trouble:  # what was found of the other kind must not be lost
         said.append(Notice("internal", "error", f"Machines were not found ({type(trouble).__name__}: {trouble})."))
     try:

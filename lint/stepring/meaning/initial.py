@@ -22,6 +22,7 @@ from stepring.meaning.types import (
     ArrayType,
     Assign,
     Call,
+    Clobber,
     Const,
     CType,
     ElementPlace,
@@ -253,7 +254,9 @@ def initialise(work: Work, target: PlaceExpr, init: Any) -> None:
         here = position(node, at)
         if where is None:
             continue
-        if isinstance(scalar, ArrayType):
+        if isinstance(scalar, ArrayType) and not _is_string(node):
+            emit(work, Clobber((where,), "an initialiser that could not be read", here))
+        elif isinstance(scalar, ArrayType):
             letters = text(node.value)
             count = min(len(letters) + 1, scalar.length or len(letters) + 1)
             source = TextConst(letters, PointerType(scalar.element, work.model.pointer))
@@ -297,7 +300,10 @@ def declare_static(work: Work, variable: Variable, init: Any, at: Position) -> O
     values = []
     for path, scalar, node in spread(work.scope, variable.type, init)[0]:
         here = position(node, at)
-        if isinstance(scalar, ArrayType):
+        if isinstance(scalar, ArrayType) and not _is_string(node):
+            # A macro whose header is missing stands where a string or a list should.
+            values.append(InitialValue(path, Unknown(scalar, "an initialiser that could not be read"), here))
+        elif isinstance(scalar, ArrayType):
             literal = TextConst(text(node.value), PointerType(scalar.element, work.model.pointer))
             values.append(InitialValue(path, literal, here))
         else:

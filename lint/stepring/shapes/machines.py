@@ -9,6 +9,7 @@ the program that dispatches on the variable, tests it or stores into it.
 import re
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from types import MappingProxyType
 from typing import TypeVar
 
 from stepring.places import Origin
@@ -59,8 +60,14 @@ class _Gathered:
     named: dict[str, Family] = field(default_factory=dict)
 
 
-def find_machines(facts: Iterable[StateFacts], *, complete: bool = True) -> tuple[Machine, ...]:
-    """The machines of a program, in the order of their places; ``complete`` says that all of it was read."""
+def find_machines(
+    facts: Iterable[StateFacts], *, unread: Mapping[str, str] = MappingProxyType({}), whole: bool = True
+) -> tuple[Machine, ...]:
+    """The machines of a program, in the order of their places.
+
+    ``unread`` are the files of which something could not be read, with what that was; ``whole`` says that a whole
+    program was asked for and not some files of one.
+    """
     facts = list(facts)
     gathered = _gather(facts)
     stored_in: dict[str, dict[str, str]] = {}
@@ -68,7 +75,7 @@ def find_machines(facts: Iterable[StateFacts], *, complete: bool = True) -> tupl
         for constant in _stored_constants(group):
             if constant.name is not None and group.key.kind == "member":
                 stored_in.setdefault(constant.name, {})[group.key.key] = group.key.shown
-    machines = [_machine(group, complete, stored_in) for group in gathered.values() if is_machine(group)]
+    machines = [_machine(group, unread, whole, stored_in) for group in gathered.values() if is_machine(group)]
     return tuple(sorted(machines, key=lambda machine: (machine.where, machine.identity)))
 
 
@@ -251,14 +258,31 @@ def _stored_constants(group: _Gathered) -> Iterable[Constant]:
 # ------------------------------------------------------------------------------------------------------ one machine
 
 
-def _machine(group: _Gathered, complete: bool, stored_in: Mapping[str, Mapping[str, str]]) -> Machine:
+def _is_open(group: _Gathered) -> bool:
+    """Whether files that were not named could store the variable: it is declared in a header, global, or has a
+    setter."""
+    key = group.key
+    if key.scope != "lasting":
+        return False
+    shared = key.where.file.endswith(".h") if key.kind == "member" else ":" not in key.key
+    return shared or any(store.parameter is not None and ":" not in store.function for store in group.stores)
+
+
+def _machine(
+    group: _Gathered, unread: Mapping[str, str], whole: bool, stored_in: Mapping[str, Mapping[str, str]]
+) -> Machine:
     key = group.key
     family = _family(group)
     states = tuple(_elsewhere(state, group.key, stored_in) for state in _states(group, family))
     by_value = {state.value: state for state in states}
     why: list[str] = []
-    if not complete:
-        why.append("part of the program was not read")
+    reach = _is_open(group)
+    for file, what in unread.items():
+        if reach or file == key.file:
+            why.append(f"{what} was not read and may store it")
+            break
+    if not whole and reach:
+        why.append("only some files of the program were named, and others may store it")
     if group.exposed:
         why.append(f"its address is taken (line {group.exposed[0].line})")
     if group.bounded:

@@ -19,6 +19,7 @@ from stepring.shapes.facts import Constant, Family
 _TOKENS = re.compile(
     r"\s*(?:([A-Za-z_]\w*)|((?:0[xX][0-9a-fA-F]+|\d+)[uUlL]*)|('(?:[^'\\]|\\.)+')|(<<|>>|[-+*/%&|^~()]))"
 )
+_HUMP = re.compile(r"(?<=[a-z0-9])(?=[A-Z])")
 _NEAR = 3  # lines between two #defines of one group, at most
 _MOST = 256
 
@@ -265,6 +266,10 @@ def _macro_groups(names: Names, file: str, used: set[str]) -> Iterable[Family]:
     first, last = min(used), max(used)
     shared = next((i for i, (a, b) in enumerate(zip(first, last, strict=False)) if a != b), min(len(first), len(last)))
     prefix = first[: first.rfind("_", 0, shared) + 1]
+    if not prefix:
+        # Names in camel case share whole words: ``feedGateOpen`` and ``feedGateShut``.
+        humps = [match.start() for match in _HUMP.finditer(first) if match.start() <= shared]
+        prefix = first[: humps[-1]] if humps else ""
     if len(used) < 2 or len(prefix) < 2:
         return
     candidates = sorted(

@@ -2,7 +2,6 @@
 
 from collections.abc import Iterable, Iterator
 from dataclasses import fields, is_dataclass
-from functools import cache
 from typing import Any
 
 from stepring.meaning.types import Function, Object, Variable
@@ -31,10 +30,17 @@ def _positions(root: Any) -> Iterator[Position]:
         elif isinstance(node, tuple):
             stack.extend(node)
         elif is_dataclass(node):
-            stack.extend(getattr(node, name) for name in _fields(type(node)))
+            stack.extend(getattr(node, name) for name in _fields(node))
 
 
-@cache
-def _fields(kind: "type[Any]") -> tuple[str, ...]:
-    """The members that can lead to a position; types do not."""
-    return tuple(item.name for item in fields(kind) if item.name not in ("type", "value_type", "attributes"))
+_FIELDS: dict[str, tuple[str, ...]] = {}
+
+
+def _fields(node: Any) -> tuple[str, ...]:
+    """The members that can lead to a position, worked out once for each kind of node; types do not."""
+    kind = node.__class__.__qualname__
+    known = _FIELDS.get(kind)
+    if known is None:
+        known = tuple(item.name for item in fields(node) if item.name not in ("type", "value_type", "attributes"))
+        _FIELDS[kind] = known
+    return known

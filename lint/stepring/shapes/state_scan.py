@@ -25,6 +25,7 @@ from stepring.meaning.types import (
     Switch,
     TypedUnit,
     Unary,
+    Unknown,
     VariablePlace,
 )
 from stepring.places import Origin, Position
@@ -115,9 +116,28 @@ def scan_function(function: Function, known: Mapping[str, PlaceKey], handed: tup
                 seen = _seen(scan, key, type_)
                 seen.dispatches.append((number, end))
                 seen.read_instances.add(key.instance)
+            for key, type_ in _tested_keys(scan, _unmasked(end.value)):
+                # A switch on a part of the variable looks at these values too, without being its dispatch.
+                _seen(scan, key, type_).tests.extend(
+                    (Const(case.low, case_type, case.constant, case.name), case.position)
+                    for case_type in [end.value.type]
+                    for case in end.cases
+                )
         elif isinstance(end, Branch):
             _note_tests(scan, end.condition, end.position)
     return scan
+
+
+def _unmasked(expr: Expr) -> Expr:
+    """What ``x & MASK`` takes a part of; an expression of another form gives nothing that could be a key."""
+    inner = uncast(expr)
+    if isinstance(inner, Binary) and inner.op == "&":
+        left, right = uncast(inner.left), uncast(inner.right)
+        if isinstance(right, Const):
+            return left
+        if isinstance(left, Const):
+            return right
+    return Unknown(expr.type, "no masked value")
 
 
 def _tested_keys(scan: Scan, expr: Expr) -> tuple[tuple[PlaceKey, object], ...]:
@@ -159,7 +179,7 @@ def _note_tests(scan: Scan, condition: Expr, position: Position) -> None:
     elif isinstance(condition, Binary) and condition.op in ("==", "!=", "<", "<=", ">", ">="):
         for side, other in ((condition.left, condition.right), (condition.right, condition.left)):
             number = uncast(other)
-            for key, type_ in _tested_keys(scan, side):
+            for key, type_ in (*_tested_keys(scan, side), *_tested_keys(scan, _unmasked(side))):
                 if key.scope == "parameter":
                     continue
                 seen = _seen(scan, key, type_)
