@@ -65,9 +65,7 @@ def test_the_tap_is_its_table(tap: Machine) -> None:
     assert len(tap.states) == 16
     assert tap.initial == ("TAP_TEST_LOGIC_RESET",)
     # Of a single named file a global is open to others; everything else is settled.
-    assert tap.complete or tap.why_incomplete == (
-        "only some files of the program were named, and others may store it",
-    )
+    assert tap.complete or tap.why_incomplete == ("only some files of the program were named, and others may store it",)
     assert all(state.declared and state.labelled and state.stored for state in tap.states)
     assert [state.value for state in tap.states] == list(range(16))
 

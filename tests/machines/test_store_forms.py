@@ -1,5 +1,6 @@
 """How a state can be stored: one machine stored by every idiom that firmware uses has the same graph."""
 
+import re
 from pathlib import Path
 
 import pytest
@@ -394,3 +395,43 @@ def test_a_store_of_an_unknown_value_leaves_the_machine_incomplete(tmp_path: Pat
     assert steps(machine) == STEPS
     assert not machine.complete
     assert "saved" in machine.why_incomplete[0]
+
+
+def test_a_setter_that_is_handed_an_unknown_value_leaves_the_machine_incomplete(tmp_path: Path) -> None:
+    text = FORMS["through a static setter"] + "\n        int saved(void); void wake(void) { set_gate(saved()); }"
+    machine = machine_in(tmp_path, HEAD + text)
+    assert steps(machine) == STEPS
+    assert [re.sub(r"\d+", "N", why) for why in machine.why_incomplete] == ["wake hands saved() to set_gate (line N)"]
+
+
+def test_a_setter_that_is_handed_a_choice_of_constants_stores_just_these(tmp_path: Path) -> None:
+    machine = machine_in(
+        tmp_path,
+        HEAD
+        + """
+        static enum gate gate;
+        static void set_gate(enum gate to) { gate = to; }
+        void step(int ev)
+        {
+            switch (gate) {
+            case SHUT: set_gate(ev ? OPENING : SHUT); break;
+            case OPENING: set_gate(at_end() ? OPEN : left_alone() ? SHUT : OPENING); break;
+            case OPEN: set_gate(left_alone() ? SHUT : OPEN); break;
+            }
+        }
+        """,
+    )
+    assert {pair for pair in steps(machine) if pair[0] != pair[1]} == STEPS
+    assert machine.complete
+    assert {store.through for store in machine.stores} == {"set_gate"}
+
+
+def test_a_setter_of_another_file_may_be_handed_plain_numbers(tmp_path: Path) -> None:
+    machine = machine_in(
+        tmp_path,
+        "int gate; int asked(void); void set_gate(int to);"
+        "void step(void) { switch (gate) { case 0: if (asked()) set_gate(4); break; case 4: set_gate(0); break; } }",
+        gate="extern int gate; void set_gate(int to) { gate = to; }",
+    )
+    assert steps(machine) == {("0", "4"), ("4", "0")}
+    assert machine.complete

@@ -144,13 +144,14 @@ class TransitionFact:
 
 @dataclass(frozen=True, slots=True)
 class CallFact:
-    """A call with a constant argument, of a function that may be a setter."""
+    """A call of a function that may be a setter, with an argument that is a constant, or else its text."""
 
     callee: str
     argument: int
-    constant: Constant
+    constant: Constant | None
     function: str
     where: Origin
+    text: str = ""
 
 
 @dataclass(frozen=True, slots=True)

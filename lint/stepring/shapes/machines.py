@@ -55,7 +55,9 @@ class _Gathered:
     bounded: bool = False
     initials: list[Constant] = field(default_factory=list)
     starts_zero: bool = False
-    setters: list[tuple[StoreFact, CallFact]] = field(default_factory=list)
+    setters: list[tuple[StoreFact, CallFact, Constant]] = field(default_factory=list)
+    # Calls of setters with a value that is not known.
+    unknown: list[CallFact] = field(default_factory=list)
     # The family of each constant's name in the units that speak of the key; other units can have the same names.
     named: dict[str, Family] = field(default_factory=dict)
 
@@ -144,8 +146,10 @@ def _settle_setters(
         while pending:
             entry = pending.pop()
             for call in _distinct(callers.get(entry[0], [])):
-                if call.argument == entry[1]:
-                    group.setters.append((store, call))
+                if call.argument == entry[1] and call.constant is not None:
+                    group.setters.append((store, call, call.constant))
+                elif call.argument == entry[1]:
+                    group.unknown.append(call)
             for forward in forwards.get(entry, ()):
                 outer = (forward.caller, forward.parameter)
                 if outer not in reached:
@@ -251,8 +255,8 @@ def _moves_on(group: _Gathered, dispatches: Sequence[DispatchFact]) -> bool:
 def _stored_constants(group: _Gathered) -> Iterable[Constant]:
     for store in group.stores:
         yield from store.constants
-    for _, call in group.setters:
-        yield call.constant
+    for _, _, constant in group.setters:
+        yield constant
 
 
 # ------------------------------------------------------------------------------------------------------ one machine
@@ -287,7 +291,9 @@ def _machine(
         why.append(f"its address is taken (line {group.exposed[0].line})")
     if group.bounded:
         why.append("its transitions are too many to follow them all")
-    setters = {store for store, _ in group.setters}
+    for call in sorted(group.unknown, key=lambda call: call.where):
+        why.append(f"{_short(call.function)} hands {call.text} to {_short(call.callee)} (line {call.where.line})")
+    setters = {store for store, _, _ in group.setters}
     for store in group.stores:
         if store.why_unknown and store not in setters:
             why.append(f"{_short(store.function)} stores {store.why_unknown} (line {store.where.line})")
@@ -368,8 +374,8 @@ def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
         for constant in store.constants:
             see(constant, initial if store.fresh else stored)
             stored.add(constant.value)
-    for _, call in group.setters:
-        see(call.constant, stored)
+    for _, _, constant in group.setters:
+        see(constant, stored)
     for move in group.transitions:
         see(move.target, stored)
     for constant in group.initials:
@@ -441,7 +447,7 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
     def named(constants: Iterable[Constant]) -> tuple[tuple[str, int], ...]:
         return tuple((by_value[constant.value].name, constant.value) for constant in constants)
 
-    setters = {store for store, _ in group.setters}
+    setters = {store for store, _, _ in group.setters}
     for store in sorted(group.stores, key=lambda store: store.where):
         if store in setters or (store.copied and not store.constants):
             continue
@@ -454,8 +460,8 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
             None,
             store.fresh,
         )
-    for _, call in sorted(group.setters, key=lambda pair: pair[1].where):
-        yield StateStore(call.function, call.where, named([call.constant]), "", _short(call.callee))
+    for _, call, constant in sorted(group.setters, key=lambda one: (one[1].where, one[2].value)):
+        yield StateStore(call.function, call.where, named([constant]), "", _short(call.callee))
 
 
 def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transition]:
@@ -481,9 +487,9 @@ def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transiti
                     yield from step(state, move.target.value, move.function, move.guard, move.where)
     followed = {(move.function, move.stored_by, move.target.value) for move in group.transitions}
     followed |= {(move.function, move.through[0], move.target.value) for move in group.transitions if move.through}
-    for store, call in sorted(group.setters, key=lambda pair: pair[1].where):
-        if store.fresh or (call.function, store.function, call.constant.value) in followed:
+    for store, call, constant in sorted(group.setters, key=lambda one: (one[1].where, one[2].value)):
+        if store.fresh or (call.function, store.function, constant.value) in followed:
             continue
         # A setter called from another file: from which state is not known, so from any.
         for state in real:
-            yield from step(state, call.constant.value, call.function, f"calls {_short(call.callee)}", call.where)
+            yield from step(state, constant.value, call.function, f"calls {_short(call.callee)}", call.where)

@@ -7,11 +7,13 @@ finds the transitions. Coroutines made of ``case __LINE__`` label their cases wi
 
 from dataclasses import replace
 
+from stepring.meaning.show import expr_text
 from stepring.meaning.types import (
     Const,
     IntType,
     Load,
     TypedUnit,
+    UnknownType,
     VariablePlace,
 )
 from stepring.read.types import ReadUnit
@@ -24,6 +26,7 @@ from stepring.shapes.keys import uncast
 from stepring.shapes.names import Names, constant_of, starts
 from stepring.shapes.state_aliases import getters, working_parameters
 from stepring.shapes.state_dispatch import dispatch_fact
+from stepring.shapes.state_flow import spelled
 from stepring.shapes.state_keys import families_by_key, key_facts
 from stepring.shapes.state_moves import note_transitions
 from stepring.shapes.state_scan import Scan, Work, function_identity, scan_function, state_candidates
@@ -49,7 +52,7 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         tuple(work.tests),
         tuple(store for store, _ in work.stores),
         tuple(dict.fromkeys(work.transitions)),
-        tuple(work.calls),
+        tuple(dict.fromkeys(call for call, _ in work.calls)),
         families_by_key(names, work),
         tuple(work.bounded),
         tuple(work.exposed),
@@ -90,15 +93,16 @@ def _function_facts(work: Work, scan: Scan, chosen: frozenset[str]) -> None:
             continue
         for index, argument in enumerate(call.arguments):
             inner = uncast(argument)
-            if isinstance(inner, Const) and isinstance(inner.type, IntType):
-                where = work.names.origin(call.position)
-                constant = constant_of(work.names, inner, where)
-                if constant.name is not None:
-                    callee = work.by_name.get(name)
-                    identity = callee.identity if callee is not None else name
-                    work.calls.append(CallFact(identity, index, constant, function.identity, where))
-            elif isinstance(inner, Load) and isinstance(inner.place, VariablePlace):
-                note_forward(work, function, inner.place.variable, name, index)
+            if not isinstance(inner.type, IntType | UnknownType):
+                continue
+            if isinstance(inner, Load) and isinstance(inner.place, VariablePlace):
+                if note_forward(work, function, inner.place.variable, name, index):
+                    continue
+            where = work.names.origin(call.position)
+            constant = constant_of(work.names, inner, where) if isinstance(inner, Const) else None
+            text = "" if constant is not None else spelled(function, expr_text(inner))[:120]
+            callee = function_identity(work, name)
+            work.calls.append((CallFact(callee, index, constant, function.identity, where, text), call.position))
     for key, position in scan.exposed:
         if key in chosen:
             work.exposed.append((key, work.names.origin(position)))

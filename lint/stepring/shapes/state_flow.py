@@ -129,6 +129,10 @@ class Setting:
     moves: set[Move] = field(default_factory=set)
     # What each store was seen to store, by function and place; None among them is a value that is not known.
     stored: dict[tuple[str, Position], set[tuple[int, Chosen] | None]] = field(default_factory=dict)
+    # What each call was seen to hand over, by the caller, the call's place and the number of the argument.
+    handed: dict[tuple[str, Position, int], set[tuple[int, Chosen] | None]] = field(default_factory=dict)
+    # Whether a call that may store the state was too deep to be followed.
+    cut: bool = False
     slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
     memo: dict[object, frozenset[Exit]] = field(default_factory=dict)
     followed: set[str] = field(default_factory=set)
@@ -235,11 +239,7 @@ def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Enviro
     if op.slot is None or op.commit:
         _note_move(run, value, environment, op.position)
     if op.slot is None:
-        seen = run.setting.stored.setdefault((run.part.function.identity, op.position), set())
-        if value.kind == "any":
-            seen.add(None)
-        elif value.kind == "known" and value.chosen is not None:
-            seen.add((value.number, value.chosen))
+        _note_seen(run.setting.stored.setdefault((run.part.function.identity, op.position), set()), value)
     if op.slot is not None:
         helpers = environment.helpers
         return environment._replace(helpers=(*helpers[: op.slot], value, *helpers[op.slot + 1 :]))
@@ -259,11 +259,20 @@ def _note_move(
         )
 
 
+def _note_seen(seen: set[tuple[int, Chosen] | None], value: Value) -> None:
+    """Note a constant that was chosen, or None for what is not known; the state's own value is nothing new."""
+    if value.kind == "any":
+        seen.add(None)
+    elif value.kind == "known" and value.chosen is not None:
+        seen.add((value.number, value.chosen))
+
+
 def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterator[Environment]:
     setting = run.setting
     callee = op.callee
     result = StoreOp(None if op.slot == -1 else op.slot, Number(0, None, None), op.call.position)
     if run.depth >= MOST_DEPTH:
+        setting.cut = setting.cut or callee.identity in setting.writers
         yield _store(run, block, result, ANY, environment) if op.slot is not None else environment
         return
     instance = _instance_in(run, callee, op.call)
@@ -273,6 +282,9 @@ def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterat
         parameter.identity: _evaluate(run, block, argument, environment)
         for parameter, argument in zip(callee.parameters, op.arguments, strict=False)
     }
+    if callee.identity in setting.writers:
+        for number, value in enumerate(arguments.values()):
+            _note_seen(setting.handed.setdefault((run.part.function.identity, op.call.position, number), set()), value)
     exits = flow(setting, callee, instance, environment.source, environment.state, arguments, run.depth + 1)
     for leaving in exits or {Exit(environment.source, environment.state, ANY)}:
         # A function that only works on a copy leaves the state as it was until its result is stored.
@@ -510,7 +522,7 @@ def guard_text(function: Function, block: int, key: str, standing: frozenset[str
         passed.add(previous)
         terminator = function.blocks[previous].terminator
         if isinstance(terminator, Branch):
-            text = _spelled(function, expr_text(terminator.condition))
+            text = spelled(function, expr_text(terminator.condition))
             parts.append(text if terminator.then == block else f"!({text})")
         elif isinstance(terminator, Switch):
             control = uncast(terminator.value)
@@ -520,7 +532,7 @@ def guard_text(function: Function, block: int, key: str, standing: frozenset[str
                     break
             labels = [case.name or str(case.low) for case in terminator.cases if case.target == block]
             if labels:
-                parts.append(f"{_spelled(function, expr_text(terminator.value))} == {' or '.join(labels)}")
+                parts.append(f"{spelled(function, expr_text(terminator.value))} == {' or '.join(labels)}")
         block = previous
     return " && ".join(reversed(parts))
 
@@ -528,7 +540,7 @@ def guard_text(function: Function, block: int, key: str, standing: frozenset[str
 _TEMPORARY = re.compile(r"%\d+")
 
 
-def _spelled(function: Function, text: str) -> str:
+def spelled(function: Function, text: str) -> str:
     """A condition with its temporaries replaced by what they were computed from."""
     if "%" not in text:
         return text

@@ -11,14 +11,14 @@ from stepring.meaning.types import (
     Load,
     VariablePlace,
 )
-from stepring.shapes.facts import (
-    TransitionFact,
-)
+from stepring.places import Origin, Position
+from stepring.shapes.facts import CallFact, Constant, TransitionFact
 from stepring.shapes.keys import uncast
 from stepring.shapes.names import constant_at, sets
 from stepring.shapes.state_flow import (
     ENTRY,
     FEW_VISITS,
+    Chosen,
     Setting,
     flow,
     guard_text,
@@ -133,8 +133,9 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
                 move.dispatched,
             )
         )
-    if not setting.bounded:
+    if not setting.bounded and not setting.cut:
         _settle_stores(work, key, setting)
+        _settle_calls(work, key, setting)
 
 
 def _guard(scan: Scan, block: int, key: str) -> str:
@@ -152,11 +153,29 @@ def _settle_stores(work: Work, key: str, setting: Setting) -> None:
         seen = setting.stored.get((store.function, at), set())
         if None in seen or (not seen and not key_is_local):
             continue
-        values = sorted((one for one in seen if one is not None), key=lambda one: (one[0], one[1].block))
-        constants = dict.fromkeys(
-            constant_at(work.names, value, chosen.position, chosen.name, store.where) for value, chosen in values
-        )
-        work.stores[number] = (replace(store, constants=tuple(constants), why_unknown="", stepped=False), at)
+        constants = _constants(work, seen, store.where)
+        work.stores[number] = (replace(store, constants=constants, why_unknown="", stepped=False), at)
+
+
+def _settle_calls(work: Work, key: str, setting: Setting) -> None:
+    """Calls of the key's setters with computed arguments whose every value was seen."""
+    setters = {(store.function, store.parameter) for store, _ in work.stores if store.key == key}
+    settled: list[tuple[CallFact, Position]] = []
+    for call, at in work.calls:
+        seen = setting.handed.get((call.function, at, call.argument), set())
+        if call.constant is not None or (call.callee, call.argument) not in setters or not seen or None in seen:
+            settled.append((call, at))
+            continue
+        for constant in _constants(work, seen, call.where):
+            settled.append((replace(call, constant=constant, text=""), at))
+    work.calls[:] = settled
+
+
+def _constants(work: Work, seen: set[tuple[int, Chosen] | None], where: Origin) -> tuple[Constant, ...]:
+    values = sorted((one for one in seen if one is not None), key=lambda one: (one[0], one[1].block))
+    return tuple(
+        dict.fromkeys(constant_at(work.names, value, chosen.position, chosen.name, where) for value, chosen in values)
+    )
 
 
 def _asks_others(work: Work, scan: Scan) -> bool:

@@ -84,7 +84,8 @@ class Work:
     # Each store with its place in the text that was parsed.
     stores: list[tuple[StoreFact, Position]] = field(default_factory=list)
     transitions: list[TransitionFact] = field(default_factory=list)
-    calls: list[CallFact] = field(default_factory=list)
+    # Each call with its place in the text that was parsed.
+    calls: list[tuple[CallFact, Position]] = field(default_factory=list)
     exposed: list[tuple[str, Origin]] = field(default_factory=list)
     bounded: list[str] = field(default_factory=list)
     setters: dict[str, bool] = field(default_factory=dict)

@@ -33,11 +33,13 @@ from stepring.shapes.names import constant_of, sets
 from stepring.shapes.state_scan import Scan, Seen, Work, blocks_after, function_identity
 
 
-def note_forward(work: Work, function: Function, variable: Variable, name: str, argument: int) -> None:
-    """A parameter that is handed on as it came."""
+def note_forward(work: Work, function: Function, variable: Variable, name: str, argument: int) -> bool:
+    """Note a parameter that is handed on as it came; whether it is one."""
     for number, parameter in enumerate(function.parameters):
         if parameter.identity == variable.identity and not _assigned(function, variable):
             work.forwards.append(ForwardFact(function_identity(work, name), argument, function.identity, number))
+            return True
+    return False
 
 
 def before_all(scan: Scan, seen: Seen, block: int) -> bool:
