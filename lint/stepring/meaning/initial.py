@@ -13,8 +13,8 @@ from pycparser import c_ast
 
 from stepring.meaning.builder import Work, emit, int_type
 from stepring.meaning.constants import text
-from stepring.meaning.expressions import converted, value
 from stepring.meaning.fold import fold
+from stepring.meaning.lowering import converted, value
 from stepring.meaning.models import integer
 from stepring.meaning.scope import Scope, find_field, position, size_of
 from stepring.meaning.types import (

@@ -20,18 +20,11 @@ from stepring.meaning.builder import (
     resume,
     temporary,
 )
-from stepring.meaning.expressions import (
-    arithmetic,
-    condition,
-    converted,
-    effect,
-    handle,
-    load,
-    settled_condition,
-    value,
-)
+from stepring.meaning.expressions import settled_condition
 from stepring.meaning.fold import convert, fold
 from stepring.meaning.initial import declare_static, initialise
+from stepring.meaning.lowering import arithmetic, condition, converted, effect, handle, value
+from stepring.meaning.places import load
 from stepring.meaning.scope import (
     FunctionSymbol,
     TypeName,

@@ -10,11 +10,13 @@ from typing import Any
 
 from pycparser import c_ast
 
+from stepring.meaning import calls as _calls  # noqa: F401 - it fills the table of lowering
 from stepring.meaning.builder import OpenBlock, Work, close, int_type, successors
 from stepring.meaning.constants import element_type, text
-from stepring.meaning.expressions import addressed_names, place, taken_labels, value
 from stepring.meaning.initial import declare_static, initial_length, initialise
+from stepring.meaning.lowering import value
 from stepring.meaning.models import integer
+from stepring.meaning.places import addressed_names, place, taken_labels
 from stepring.meaning.scope import (
     DeclarationIndex,
     FileScope,
