@@ -12,6 +12,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Literal, NamedTuple
 
+from stepring.meaning.builder import successors
 from stepring.meaning.fold import apply_binary, apply_unary, convert
 from stepring.meaning.show import expr_text, statement_text
 from stepring.meaning.types import (
@@ -20,10 +21,8 @@ from stepring.meaning.types import (
     Branch,
     Call,
     Function,
-    Jump,
     Load,
     Switch,
-    Terminator,
     VariablePlace,
 )
 from stepring.places import Position
@@ -511,7 +510,7 @@ def guard_text(function: Function, block: int, key: str, standing: frozenset[str
     variables that stand for the state."""
     before: dict[int, list[int]] = {}
     for number, item in enumerate(function.blocks):
-        for target in _targets(item.terminator):
+        for target in dict.fromkeys(successors(item.terminator)):
             before.setdefault(target, []).append(number)
     parts: list[str] = []
     passed = {block}
@@ -559,14 +558,3 @@ def spelled(function: Function, text: str) -> str:
     for _ in range(4):
         text = _TEMPORARY.sub(lambda match: meaning.get(match[0], match[0]), text)
     return text
-
-
-def _targets(terminator: Terminator) -> tuple[int, ...]:
-    match terminator:
-        case Jump(target=target):
-            return (target,)
-        case Branch(then=then, otherwise=otherwise):
-            return (then, otherwise) if then != otherwise else (then,)
-        case Switch(cases=cases, default=default):
-            return tuple(dict.fromkeys((*(case.target for case in cases), default)))
-    return ()
