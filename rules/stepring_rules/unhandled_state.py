@@ -44,6 +44,8 @@ def unhandled_state(program: Program) -> Iterator[Obligation]:
             level: Level = "warning" if entered and recovers else "note"
             how = (
                 "the default takes it for an unknown value"
+                if level == "warning"
+                else "only the default handles it, with every other value that has no case"
                 if hidden
                 else "the default does nothing with it"
                 if dispatch.default is not None
