@@ -9,8 +9,9 @@ is said.
 import os
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from pathlib import Path
+from types import MappingProxyType
 
 from stepring.gather.gather import gather
 from stepring.gather.settings import Settings, find_settings, read_settings
@@ -27,6 +28,7 @@ from stepring.rule import Obligation, Rule, load_rules
 from stepring.shapes.facts import StateFacts
 from stepring.shapes.machines import find_machines
 from stepring.shapes.positions import positions_of
+from stepring.shapes.ring_writers import Noter, Writers, outside_of
 from stepring.shapes.rings import find_rings, ring_functions
 from stepring.shapes.state_facts import state_facts
 from stepring.shapes.types import Machine, Program, Ring
@@ -51,7 +53,7 @@ class UnitSummary:
     """What the program stage needs of a unit: plain data, no syntax trees and no way back into the unit.
 
     ``ring_functions`` is the IR of the functions that may be part of a ring, ``origins`` the original places of all
-    that it mentions.
+    that it mentions. ``writers`` are the other functions that store into what may be an index.
     """
 
     unit: Unit
@@ -64,6 +66,7 @@ class UnitSummary:
     origins: Mapping[Position, Origin]
     functions: tuple[FunctionPlace, ...]
     notices: tuple[Notice, ...]
+    writers: Writers = field(default_factory=dict)
 
 
 class Worker:
@@ -75,6 +78,7 @@ class Worker:
         self.meanings = Meanings()
         # A header's inline function is in many units; its part of a summary is made once.
         self.origins: dict[Position, Origin] = {}
+        self.noter = Noter()
 
     def summarise(self, unit: Unit) -> UnitSummary:
         """One unit through gathering's, reading's and meaning's stages to its summary."""
@@ -88,6 +92,7 @@ class Worker:
         model = named or model_from_macros(pre.predefined) or MODELS[model_name]
         typed = lower_unit(read, model, self.meanings)
         rings = ring_functions([function for function in typed.functions if function.own])
+        writers = self.noter.writers(typed.functions, rings, typed.objects, typed.types.structs)
         wanted = {variable.identity for function in rings for variable in function.variables if variable.lasting}
         objects = tuple(item for item in typed.objects if item.variable.identity in wanted)
         origins = {position: self._origin(read, position) for position in positions_of(rings, objects)}
@@ -106,6 +111,7 @@ class Worker:
             origins,
             functions,
             (*read.notices, *(self._placed(read, notice) for notice in typed.notices)),
+            writers,
         )
 
     def _origin(self, read: ReadUnit, position: Position) -> Origin:
@@ -219,13 +225,15 @@ def merge(summaries: Sequence[UnitSummary], said: list[Notice], *, whole: bool =
     except Exception as trouble:  # what was found of the other kind must not be lost
         said.append(Notice("internal", "error", f"Machines were not found ({type(trouble).__name__}: {trouble})."))
     try:
-        rings = merge_rings(summaries)
+        rings = merge_rings(summaries, unread=unread, whole=whole)
     except Exception as trouble:
         said.append(Notice("internal", "error", f"Rings were not found ({type(trouble).__name__}: {trouble})."))
     return Program(machines, rings)
 
 
-def merge_rings(summaries: Sequence[UnitSummary]) -> tuple[Ring, ...]:
+def merge_rings(
+    summaries: Sequence[UnitSummary], *, unread: Mapping[str, str] = MappingProxyType({}), whole: bool = True
+) -> tuple[Ring, ...]:
     """The rings of all units of one data model together; a program has one model, but a tree may hold several."""
     rings: list[Ring] = []
     for model in dict.fromkeys(summary.model for summary in summaries if summary.ring_functions):
@@ -247,7 +255,9 @@ def merge_rings(summaries: Sequence[UnitSummary]) -> tuple[Ring, ...]:
             column = max(1, position.column)
             return origins.get(position) or Origin(position.file, max(1, position.line), column, column)
 
-        rings.extend(find_rings(tuple(functions.values()), tuple(objects.values()), structs, model, origin))
+        run = frozenset((function.name, function.position) for function in functions.values())
+        outside = outside_of((summary.writers for summary in group), run, unread, whole)
+        rings.extend(find_rings(tuple(functions.values()), tuple(objects.values()), structs, model, origin, outside))
     return tuple(sorted(rings, key=lambda ring: (ring.where, ring.identity)))
 
 

@@ -40,7 +40,9 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
         causes = {index.identity: set(_causes(ring, index, words, shared)) for index in ring.indices}
         groups: dict[tuple[object, ...], list[CheckedAccess]] = {}
         for access in checked(ring):
-            if access.settled:
+            if access.settled and ring.unseen:
+                yield _unseen(ring, access, words)
+            elif access.settled:
                 holds = _holds(ring, access, words)
                 yield about(words.rule, ring, "pass", access.where, holds, function=access.function)
             elif access.bad is not None:
@@ -63,6 +65,19 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
 def _holds(ring: Ring, access: CheckedAccess, words: Words) -> str:
     range_ = f"{access.range.low} to {access.range.high}" if access.range is not None else "none"
     return f"{words.holds} {ring.storage} is accessed at {range_}; it has {ring.capacity} slots."
+
+
+def _unseen(ring: Ring, access: CheckedAccess, words: Words) -> Obligation:
+    return about(
+        words.rule,
+        ring,
+        "open",
+        access.where,
+        f"By the code that was run every subscript of {ring.storage} here is 0 to {(ring.capacity or 0) - 1}, but its "
+        "indices may be stored into elsewhere.",
+        reason="; ".join(ring.unseen),
+        function=access.function,
+    )
 
 
 def _explained(access: CheckedAccess, ring: Ring, causes: dict[str, set[str]], words: Words) -> bool:

@@ -41,6 +41,18 @@ def _check(turn: Turn) -> Iterator[Obligation]:
             witness=(WitnessStep(step.where, f"{name} is moved on", values),),
         )
     elif turn.cause is None and step.settled and step.pairs and not step.odd and step.by in (1, -1):
+        if ring.unseen:
+            yield about(
+                "RB03",
+                ring,
+                "open",
+                where,
+                f"By the code that was run every advance of {name} leads to the next of the {capacity} slots of "
+                f"{ring.storage}, but its indices may be stored into elsewhere.",
+                reason="; ".join(ring.unseen),
+                function=step.function,
+            )
+            return
         yield about(
             "RB03",
             ring,

@@ -17,11 +17,7 @@ def told_apart(
     functions: Sequence[Function], objects: Sequence[Object]
 ) -> tuple[Sequence[Function], Sequence[Object]]:
     """The same functions and objects, external variables with several definitions renamed in the files of these."""
-    files: dict[str, set[str]] = defaultdict(set)
-    for item in objects:
-        if item.variable.storage == "global":
-            files[item.variable.identity].add(item.position.file)
-    several = {identity: where for identity, where in files.items() if len(where) > 1}
+    several = defined_often(objects)
     if not several:
         return functions, objects
     renamed = []
@@ -40,6 +36,15 @@ def told_apart(
         for item in objects
     ]
     return renamed, moved
+
+
+def defined_often(objects: Sequence[Object]) -> dict[str, frozenset[str]]:
+    """The external variables with several definitions, and the files of these."""
+    files: dict[str, set[str]] = defaultdict(set)
+    for item in objects:
+        if item.variable.storage == "global":
+            files[item.variable.identity].add(item.position.file)
+    return {identity: frozenset(where) for identity, where in files.items() if len(where) > 1}
 
 
 def _renamed(node: Any, names: Mapping[str, str]) -> Any:

@@ -360,6 +360,7 @@ def _together(
             access.doubtful = other.doubtful if other is not None else set()
             access.maybe = other.maybe if other is not None else None
             access.settled = True
+            found.joined |= set(search.tracked)
 
 
 def _lookers(

@@ -63,12 +63,13 @@ class Orbit:
 
 @dataclass(slots=True, eq=False)
 class Study:
-    """What was found out about a ring."""
+    """What was found out about a ring; ``joined`` is the state that some accesses were settled with."""
 
     accesses: dict[Spot, Access] = field(default_factory=dict)
     orbits: dict[Key, Orbit] = field(default_factory=dict)
     pairs: dict[Pair, bool] = field(default_factory=dict)
     work: int = STUDY_WORK
+    joined: set[Key] = field(default_factory=set)
 
 
 @dataclass(slots=True, eq=False)

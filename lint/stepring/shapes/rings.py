@@ -7,22 +7,27 @@ the evidence that the rules need (``ring_types``).
 """
 
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import replace
 
 from stepring.meaning.types import DataModel, Function, IntType, Object, StructLayout
 from stepring.places import Origin, Position
-from stepring.shapes.ring_apart import told_apart
+from stepring.shapes.ring_apart import defined_often, told_apart
+from stepring.shapes.ring_arith import Range
 from stepring.shapes.ring_build import build
-from stepring.shapes.ring_catalogue import Catalogue, candidates, catalogue, instances, partners, stride
+from stepring.shapes.ring_catalogue import Candidate, Catalogue, candidates, catalogue, instances, partners, stride
 from stepring.shapes.ring_facts import FlatFacts
 from stepring.shapes.ring_filter import ring_functions
 from stepring.shapes.ring_flat import Set, Spoil, Touch
 from stepring.shapes.ring_keys import Key, place_keys
 from stepring.shapes.ring_orbit import study
-from stepring.shapes.ring_search import Scene
+from stepring.shapes.ring_search import Scene, Study
+from stepring.shapes.ring_writers import Outside, unseen
 from stepring.shapes.types import Ring
 
 __all__ = ["find_rings", "ring_functions"]
 
+EVERYTHING = Outside()
+"""For a program of which all functions are given."""
 LARGEST = 4096
 """Rings with more slots are found, but not run slot by slot."""
 
@@ -33,12 +38,15 @@ def find_rings(
     structs: Mapping[str, StructLayout],
     model: DataModel,
     origin: Callable[[Position], Origin],
+    outside: Outside = EVERYTHING,
 ) -> tuple[Ring, ...]:
     """The rings of a program.
 
     ``functions`` are those that ``ring_functions`` kept, of all units; ``objects`` and ``structs`` are the program's;
-    ``origin`` leads from a position to the source as it was written.
+    ``origin`` leads from a position to the source as it was written, ``outside`` is what is known of code that is not
+    among the functions.
     """
+    defined = defined_often(objects)
     functions, objects = told_apart(functions, objects)
     merged = catalogue(functions, objects, structs)
     scene = _scene(merged)
@@ -49,8 +57,37 @@ def find_rings(
             strides = {key: by for key in candidate.indices for by in (stride(merged, key),) if by}
             groups = [(key, *partners(merged, key, candidate)) for key in candidate.indices]
             studied = study(scene, candidate.storage, candidate.capacity, groups, candidate.counts, strides)
-        found.append(build(merged, candidate, studied, origin))
+        ring = build(merged, candidate, studied, origin)
+        if studied is not None:
+            names = dict.fromkeys(access.function for access in ring.accesses)
+            missed = unseen(outside, _relied(scene, candidate, studied, groups), names, structs, defined)
+            ring = replace(ring, unseen=missed)
+        found.append(ring)
     return tuple(found)
+
+
+def _relied(
+    scene: Scene, candidate: Candidate, studied: Study, groups: Sequence[Sequence[Key]]
+) -> dict[Key, frozenset[int]]:
+    """The integers whose values the study rests on, each with the constants that it was seen to take.
+
+    One that goes through all values of its type is not among them. Where several were followed together, no constant
+    is harmless by itself: what the others are at that time counts.
+    """
+    keys = dict.fromkeys((*(key for group in groups for key in group), *candidate.counts, *sorted(studied.joined)))
+    joined = bool(studied.joined) or any(len(group) > 1 for group in groups)
+    found: dict[Key, frozenset[int]] = {}
+    for key in keys:
+        orbit = studied.orbits.get(key)
+        values = orbit.possible if orbit is not None and orbit.complete else set()
+        whole = scene.whole(key)
+        if any(isinstance(value, Range) and value.low <= whole.low and value.high >= whole.high for value in values):
+            continue
+        numbers = frozenset(value for value in values if isinstance(value, int))
+        if len(numbers) == whole.high - whole.low + 1:
+            continue
+        found[key] = frozenset() if joined else numbers
+    return found
 
 
 def _scene(merged: Catalogue) -> Scene:

@@ -229,6 +229,8 @@ class Ring:
     scheme: Scheme
     wrap: WrapForm
     notes: tuple[str, ...] = ()
+    # Why stores into its indices may have been missed, one clause each: what was concluded from them is then open.
+    unseen: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
