@@ -125,3 +125,35 @@ def test_findings_stay(tmp_path: Path) -> None:
     fails = [[(item.rule, item.where, item.what) for item in some if item.kind == "fail"] for some in (whole, one)]
     assert fails[0]
     assert fails[0] == fails[1]
+
+
+def test_two_jobs_say_the_same(tmp_path: Path) -> None:
+    other = '#include "pellets.h"\nvoid skip(unsigned char slot) { pellets.head = slot; }\n'
+    one = judged(tmp_path, {"pellets.h": HEADER, "pellets.c": RING, "skip.c": other})
+    two = [item for item in inspect([tmp_path], Options(use_compiler=False, jobs=2)).obligations if item.rule in RESTS]
+    assert one == two
+
+
+def test_a_static_function_with_a_caller_that_is_not_run(tmp_path: Path) -> None:
+    """The kept caller keeps the slot inside; one that is too large to be kept may not."""
+    many = "".join(f"if (slot == {number}) other += {number};\n" for number in range(220))
+    text = """
+static unsigned char weight[6];
+static unsigned char head;
+static void put(unsigned char next, unsigned char grams) { weight[head] = grams; head = next; }
+void weight_put(unsigned char grams) {
+    unsigned char next = head + 1;
+    if (next >= 6) next = 0;
+    put(next, grams);
+}
+void weight_add(unsigned char grams) {
+    weight[head] = grams;
+    head = head + 1;
+    if (head >= 6) head = 0;
+}
+"""
+    assert "pass" in kinds(judged(tmp_path, {"weight.c": text}))
+    large = f"int other;\nvoid weigh_all(unsigned char slot) {{\n{many} put(slot, 1); }}\n"
+    found = judged(tmp_path, {"weight.c": text + large})
+    assert "pass" not in kinds(found)
+    assert any("weigh_all calls put too" in item.reason for item in found)
