@@ -56,9 +56,7 @@ def _check(turn: Turn) -> Iterator[Obligation]:
         witness=(
             WitnessStep(reduced[0].where, f"slot {last} is used", ((name, str(index.high)), ("slot", str(last)))),
             WitnessStep(step.where, f"{name} overflows", ((name, "0"),)),
-            WitnessStep(
-                reduced[0].where, f"slot 0 is used, not slot {following}", ((name, "0"), ("slot", "0"))
-            ),
+            WitnessStep(reduced[0].where, f"slot 0 is used, not slot {following}", ((name, "0"), ("slot", "0"))),
         ),
     )
 
