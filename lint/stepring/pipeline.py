@@ -30,6 +30,7 @@ from stepring.rule import Obligation, Rule, load_rules
 from stepring.shapes.facts import StateFacts
 from stepring.shapes.machines import find_machines
 from stepring.shapes.positions import positions_of
+from stepring.shapes.ring_ranges import with_ranges
 from stepring.shapes.ring_writers import Noter, Writers, outside_of
 from stepring.shapes.rings import find_rings, ring_functions
 from stepring.shapes.state_facts import state_facts
@@ -278,7 +279,9 @@ def merge_rings(
 
         run = frozenset((function.name, function.position) for function in functions.values())
         outside = outside_of((summary.writers for summary in group), run, unread, whole)
-        rings.extend(find_rings(tuple(functions.values()), tuple(objects.values()), structs, model, origin, outside))
+        known = tuple(functions.values())
+        found = find_rings(known, tuple(objects.values()), structs, model, origin, outside)
+        rings.extend(with_ranges(found, known, origin))
     return tuple(sorted(rings, key=lambda ring: (ring.where, ring.identity)))
 
 
