@@ -1,10 +1,11 @@
-"""What the values engine settles of a ring's subscripts: guards inside one function, with nothing assumed of its start."""
+"""What the values engine settles of a ring's subscripts: guards in one function, nothing assumed of its start."""
+
+from tests.support import lower_text
 
 from stepring.places import Origin, Position
 from stepring.shapes.ring_ranges import with_ranges
 from stepring.shapes.ring_types import CheckedAccess
 from stepring.shapes.types import Ring
-from tests.support import lower_text
 
 TEXT = """
 static short tray[8];
