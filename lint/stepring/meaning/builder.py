@@ -131,7 +131,7 @@ def jump(work: Work, target: int) -> None:
 
 
 def successors(terminator: Terminator) -> tuple[int, ...]:
-    """The blocks a terminator can lead to; a branch on a constant leads to one."""
+    """The blocks that a terminator can lead to; one that several ways lead to stands there for each."""
     match terminator:
         case Jump(target=target):
             return (target,)

@@ -82,7 +82,6 @@ class DispatchFact:
     default: Origin | None
     default_does: Literal["none", "nothing", "stores", "calls", "leaves", "work"]
     unreached: tuple[Origin, ...]
-    in_loop: bool
     characters: bool
     line_numbers: bool
     carried: bool

@@ -28,7 +28,7 @@ from stepring.shapes.facts import (
 )
 from stepring.shapes.keys import PlaceKey, place_key, uncast
 from stepring.shapes.names import constant_at
-from stepring.shapes.state_scan import Scan, Seen, Work, blocks_after, blocks_from, is_carried
+from stepring.shapes.state_scan import Scan, Seen, Work, blocks_from, is_carried
 
 
 def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch) -> DispatchFact:
@@ -72,7 +72,6 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
         names.origin(switch.syntax.default) if switch.syntax.default is not None else None,
         default_does,
         tuple(names.origin(position) for position in switch.syntax.unreached),
-        block in blocks_after(function, block),
         characters,
         line_numbers > 0 and line_numbers >= len([label for label in labels if label.constant.value > 1]),
         seen.key.scope == "local" and is_carried(scan, seen, block),

@@ -4,12 +4,11 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Final
 
+from stepring.meaning.builder import successors
 from stepring.meaning.types import (
     ArrayType,
-    Branch,
     Const,
     Function,
-    Jump,
     Switch,
     Terminator,
 )
@@ -44,13 +43,7 @@ def shape_of(function: Function) -> Shape:
 
 def targets_of(terminator: Terminator) -> tuple[int, ...]:
     """The blocks that may follow, without repetition."""
-    if isinstance(terminator, Jump):
-        return (terminator.target,)
-    if isinstance(terminator, Branch):
-        return (terminator.then, terminator.otherwise)
-    if isinstance(terminator, Switch):
-        return tuple(dict.fromkeys([*(case.target for case in terminator.cases), terminator.default]))
-    return ()
+    return tuple(dict.fromkeys(successors(terminator)))
 
 
 def _find_shape(function: Function) -> Shape:
