@@ -11,7 +11,9 @@ from importlib.metadata import entry_points
 from importlib.resources import files
 from typing import Literal, TypeAlias
 
+from stepring.paths.witness import Witness
 from stepring.places import Origin
+from stepring.shapes.ring_types import OpenReason
 from stepring.shapes.types import Program
 
 Kind: TypeAlias = Literal["pass", "fail", "open", "review"]
@@ -44,7 +46,9 @@ class Obligation:
     ``what`` is one sentence, the finding itself; ``why`` says why it matters, ``advice`` what to do; ``reason`` is
     why an ``open`` one is open. ``level`` is set exactly where ``kind`` is ``fail``. ``subject`` is the state
     variable or ring storage and ``shape`` the machine's or ring's identity; ``states`` name the graph nodes
-    concerned. ``witness`` are the steps that make it fail.
+    concerned. ``witness`` are the steps that make it fail, ``evidence`` is the same as data that can be run again.
+    ``open_as`` is the reason of an ``open`` one in the ledger's words; ``assumed`` are clauses that the verdict rests
+    on beyond the assumptions that all verdicts share.
     """
 
     rule: str
@@ -63,6 +67,9 @@ class Obligation:
     related: tuple[Related, ...] = ()
     initial: tuple[tuple[str, str], ...] = ()
     witness: tuple[WitnessStep, ...] = ()
+    evidence: Witness | None = None
+    open_as: OpenReason | None = None
+    assumed: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,9 +1,79 @@
 """Rings with the evidence that the rules need beyond what a report shows."""
 
 from dataclasses import dataclass
+from typing import Literal, TypeAlias
 
+from stepring.paths.witness import Witness
 from stepring.places import Origin
 from stepring.shapes.types import Access, OrbitStep, Step
+
+OpenReason: TypeAlias = Literal[
+    "call to unknown code",
+    "pointer not resolved",
+    "bound reached",
+    "time limit",
+    "query limit",
+    "code not read",
+    "stored into elsewhere",
+    "start value not known",
+    "argument not bounded",
+    "capacity not known",
+    "no witness replayed",
+    "not modelled",
+]
+"""Why an obligation stays open, in the words that the ledger counts by."""
+
+Doubt: TypeAlias = Literal[
+    "past end",
+    "below zero",
+    "out of range",
+    "slots",
+    "overflow",
+    "room",
+    "data",
+    "occupancy",
+    "order",
+    "drift",
+    "no progress",
+]
+"""What a run of a ring's operations showed: an access past the end or below slot 0; an index or count left out of its
+range; slots skipped or repeated; a counter's overflow that breaks the sequence; stored without room; loaded without
+data; an occupancy (or room) told wrongly; elements lost, repeated or reordered; count and indices in disagreement; a
+call that never returns."""
+
+
+@dataclass(frozen=True, slots=True)
+class Proof:
+    """What the solver found about one obligation of a ring, for all runs.
+
+    ``about``: ``access`` (every subscript at ``where`` is inside), ``range`` (the index or count ``index``, as shown, is
+    in range whenever a function returns or calls out), ``advance`` (the next slot follows). ``holds`` False means open:
+    ``reason`` in the ledger's words, ``detail`` in a clause. ``kept`` are the relations that every operation keeps, as
+    C expressions, on which a proof rests; ``assumed`` the clauses that the code does not settle.
+    """
+
+    about: Literal["access", "range", "advance"]
+    where: Origin
+    function: str
+    index: str
+    holds: bool
+    kept: tuple[str, ...] = ()
+    assumed: tuple[str, ...] = ()
+    reason: OpenReason | None = None
+    detail: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Disagreement:
+    """A run of the ring's operations that goes wrong, replayed: ``what`` is one clause with the values that show it,
+    ``steps`` the run, ``witness`` what is needed to run it again."""
+
+    doubt: Doubt
+    where: Origin
+    function: str
+    what: str
+    witness: Witness
+    steps: tuple[OrbitStep, ...]
 
 
 @dataclass(frozen=True, slots=True)

@@ -4,12 +4,15 @@ Everything here speaks of the original source (``Origin``), so that rules and re
 """
 
 from dataclasses import dataclass
-from typing import Literal, TypeAlias
+from typing import TYPE_CHECKING, Literal, TypeAlias
 
 import networkx
 
 from stepring.places import Origin
 from stepring.values.types import Interval
+
+if TYPE_CHECKING:  # ring_types is made of what stands here
+    from stepring.shapes.ring_types import Disagreement, Proof
 
 # ---------------------------------------------------------------------------------------------------------- machines
 
@@ -231,6 +234,8 @@ class Ring:
     notes: tuple[str, ...] = ()
     # Why stores into its indices may have been missed, one clause each: what was concluded from them is then open.
     unseen: tuple[str, ...] = ()
+    proofs: "tuple[Proof, ...]" = ()
+    disagreements: "tuple[Disagreement, ...]" = ()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
