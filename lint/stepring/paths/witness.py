@@ -1,4 +1,5 @@
-"""Witnesses: the start values, calls and outside values that make an obligation fail, as data that anyone can run again.
+"""Witnesses: the start values, calls and outside values that make an obligation fail, as data that anyone can run
+again.
 
 A ``Witness`` is complete: with the program's units and nothing else it gives one run, the same in the exact
 interpreter and in a C program that includes the original file. What it leads to is its ``Ending``.

@@ -46,8 +46,9 @@ call that never returns."""
 class Proof:
     """What the solver found about one obligation of a ring, for all runs.
 
-    ``about``: ``access`` (every subscript at ``where`` is inside), ``range`` (the index or count ``index``, as shown, is
-    in range whenever a function returns or calls out), ``advance`` (the next slot follows). ``holds`` False means open:
+    ``about``: ``access`` (every subscript at ``where`` is inside), ``range`` (the index or count ``index``, as shown,
+    is in range whenever a function returns or calls out), ``advance`` (the next slot follows). ``holds`` False means
+    open:
     ``reason`` in the ledger's words, ``detail`` in a clause. ``kept`` are the relations that every operation keeps, as
     C expressions, on which a proof rests; ``assumed`` the clauses that the code does not settle.
     """
