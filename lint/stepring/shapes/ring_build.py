@@ -7,6 +7,7 @@ from typing import Literal
 from stepring.meaning.types import IntType
 from stepring.places import Origin, Position
 from stepring.shapes.ring_arith import Low, Range, Value
+from stepring.shapes.ring_bound import bound_of, workers
 from stepring.shapes.ring_catalogue import Candidate, Catalogue, Moves, is_solid
 from stepring.shapes.ring_facts import Advance, Wrap
 from stepring.shapes.ring_keys import Key, byte_size, key_text, short_text
@@ -56,6 +57,7 @@ def build(
     notes = []
     if candidate.capacity is None:
         notes.append("the capacity is set at run time")
+    functions, helpers = workers(merged, candidate)
     return Ring(
         "/".join(storage),
         key_text(storage),
@@ -68,6 +70,12 @@ def build(
         _scheme(merged, candidate, indices),
         wrap,
         tuple(notes),
+        bound=bound_of(merged, candidate),
+        storage_key=storage,
+        storage_form="pointer" if storage[-1] == "*" else "array",
+        struct=next((key[1] for key in candidate.indices if key[0] == "member"), ""),
+        functions=functions,
+        helpers=helpers,
     )
 
 
@@ -102,6 +110,7 @@ def _index(
         values,
         initial,
         origin(where),
+        key,
     )
 
 

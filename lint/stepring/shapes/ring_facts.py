@@ -29,13 +29,16 @@ from stepring.shapes.ring_sources import (
     Comparison,
     Order,
     Sight,
+    Term,
     Use,
     compared,
     control_order,
     guards_of,
     locals_of,
+    mask_term,
     sources,
     spread,
+    term_of,
     use_of,
 )
 from stepring.shapes.types import WrapForm
@@ -50,7 +53,7 @@ class Wrap:
     """A wrap: its form, the constant it speaks of (None at run time), the operator, its place.
 
     ``limit`` is N of ``% N`` or ``>= N``, the mask plus one, or the value that a decrement comes back from. ``inner``:
-    it is done to a copy of the index.
+    it is done to a copy of the index. ``term`` is the limit where that is set at run time.
     """
 
     form: WrapForm
@@ -59,6 +62,7 @@ class Wrap:
     position: Position
     function: str
     inner: bool = False
+    term: Term | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -208,8 +212,8 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
     bare: list[tuple[int, Set, int, bool, bool]] = []
     for number, op, direct in nodes:
         steps = list(_steps(sight, op.value, op.frame, cell))
-        for form, limit, operator, at in _reductions(sight, op.value, op.frame, cell):
-            facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function, not direct))
+        for form, limit, operator, at, term in _reductions(sight, op.value, op.frame, cell):
+            facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function, not direct, term))
             facts.roles[id(op)] = "wrap"
         value = written(op.value)
         if steps:
@@ -218,7 +222,7 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
                 signs.add(1 if total > 0 else -1)
             bare.append((number, op, 0 if total is None else total, total is None, direct))
         elif value is not None:
-            _constant_store(facts, op, value, guards.get(number, ()), direct, moved)
+            _constant_store(facts, op, value, guards.get(number, ()), direct, moved, cell)
         elif direct and cell not in sources(sight, op.value, op.frame):
             facts.copies.append(op.position)
             facts.roles[id(op)] = "copy"
@@ -235,14 +239,16 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
                         at,
                         op.function,
                         not direct,
+                        comparison.limit_of(cell),
                     )
                 )
             facts.roles[id(op)] = "wrap"
         elif unknown and (same := [item for item in guard if _by_limit(sight, op, item[0], cell)]):
             # head += n; if (head >= size) head -= size;
             for comparison, at in same:
+                limit_term = comparison.limit_of(cell)
                 facts.wraps.append(
-                    Wrap("subtract", comparison.constant, comparison.operator, at, op.function, not direct)
+                    Wrap("subtract", comparison.constant, comparison.operator, at, op.function, not direct, limit_term)
                 )
             facts.roles[id(op)] = "wrap"
         else:
@@ -300,6 +306,7 @@ def _constant_store(
     guard: "tuple[tuple[Comparison, Position], ...]",
     direct: bool,
     moved: set[Position],
+    cell: Key,
 ) -> None:
     """A constant is a wrap where a comparison of the index decides on it and it is no clamp.
 
@@ -316,7 +323,9 @@ def _constant_store(
         form: WrapForm = "decrement" if low else "choice" if _temporary(op) else "reset"
         if low:
             limit = value + 1 if at in moved or comparison.operator in ("<", ">=") else value
-        facts.wraps.append(Wrap(form, limit, comparison.operator, at, op.function, not direct))
+        facts.wraps.append(
+            Wrap(form, limit, comparison.operator, at, op.function, not direct, comparison.limit_of(cell))
+        )
         facts.roles[id(op)] = "wrap"
     if not guard and direct:
         facts.resets.append(Reset(value, op.position, op.function))
@@ -379,18 +388,18 @@ def _steps(sight: Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | No
 
 def _reductions(
     sight: Sight, expr: Expr, frame: str, cell: Key
-) -> Iterator[tuple[WrapForm, int | None, str, Position | None]]:
+) -> Iterator[tuple[WrapForm, int | None, str, Position | None, Term | None]]:
     match expr:
         case Cast(operand=operand):
             yield from _reductions(sight, operand, frame, cell)
         case Binary(op="%", left=left, right=right, position=position):
             if cell in sources(sight, left, frame):
-                yield "modulo", fold(right), "%", position
+                yield "modulo", fold(right), "%", position, term_of(sight, right, frame)
         case Binary(op="&", left=left, right=right, position=position):
             inner, mask = (left, right) if cell in sources(sight, left, frame) else (right, left)
             if cell in sources(sight, inner, frame):
                 known = fold(mask)
-                yield "mask", None if known is None else known + 1, "&", position
+                yield "mask", None if known is None else known + 1, "&", position, mask_term(sight, inner, mask, frame)
         case Binary(op="+" | "-", left=left, right=right):
             yield from _reductions(sight, left, frame, cell)
             yield from _reductions(sight, right, frame, cell)

@@ -7,7 +7,7 @@ block which branches decide on it (control dependence in the sense of Ferrante, 
 from collections import defaultdict
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
-from typing import TypeAlias
+from typing import NamedTuple, TypeAlias
 
 import networkx
 
@@ -25,15 +25,25 @@ from stepring.meaning.types import (
 )
 from stepring.places import Position
 from stepring.shapes.ring_flat import Flat, FlatBlock, Set, Touch
-from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
+from stepring.shapes.ring_keys import NOTHING, Key, is_local, is_scalar, place_keys
 from stepring.shapes.types import WrapForm
 
 Order: TypeAlias = tuple[dict[int, int], dict[int, tuple[int, ...]]]
 """Post-dominators of blocks, and the branches that blocks depend on."""
 COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
+
+
+class Term(NamedTuple):
+    """An integer's value plus a constant; the integer lasts, or is a parameter."""
+
+    key: Key
+    plus: int
+
+
 @dataclass(frozen=True, slots=True)
 class Use:
-    """A subscript that is made from lasting integers; ``scaled``: multiplied on the way."""
+    """A subscript that is made from lasting integers; ``scaled``: multiplied on the way; ``term`` is the modulus
+    where that is set at run time."""
 
     touch: Touch
     cells: frozenset[Key]
@@ -41,6 +51,7 @@ class Use:
     modulus: int | None
     reduced_at: Position | None
     scaled: bool
+    term: Term | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,6 +64,11 @@ class Comparison:
     constant: int | None
     position: Position
     moved: bool
+    terms: tuple[Term | None, Term | None] = (None, None)
+
+    def limit_of(self, cell: Key) -> Term | None:
+        """What an integer is compared with, if that is one integer plus a constant."""
+        return self.terms[1] if cell in self.left else self.terms[0]
 
 
 @dataclass(slots=True)
@@ -163,8 +179,8 @@ def use_of(sight: Sight, touch: Touch) -> Use | None:
         cells &= _close(sight, touch.subscript, touch.frame, ())
     if not cells:
         return None
-    form, modulus, at = _reduction(sight, touch.subscript, touch.frame, 0)
-    return Use(touch, cells, form, modulus, at, _scaled(touch.subscript))
+    form, modulus, at, term = _reduction(sight, touch.subscript, touch.frame, 0)
+    return Use(touch, cells, form, modulus, at, _scaled(touch.subscript), term)
 
 
 def _close(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...]) -> frozenset[Key]:
@@ -220,24 +236,58 @@ def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key
     return found
 
 
-def _reduction(sight: Sight, expr: Expr, frame: str, depth: int) -> tuple[WrapForm, int | None, Position | None]:
+def _reduction(
+    sight: Sight, expr: Expr, frame: str, depth: int
+) -> tuple[WrapForm, int | None, Position | None, Term | None]:
     """How a subscript is brought into range at the access: the remainder or mask that is outermost in it."""
     match expr:
         case Cast(operand=operand):
             return _reduction(sight, operand, frame, depth)
         case Binary(op="%", right=right, position=position):
-            return "modulo", fold(right), position
+            return "modulo", fold(right), position, term_of(sight, right, frame)
         case Binary(op="&", left=left, right=right, position=position):
             mask = fold(right) if fold(right) is not None else fold(left)
-            return "mask", None if mask is None else mask + 1, position
+            return "mask", None if mask is None else mask + 1, position, mask_term(sight, left, right, frame)
         case Load(place=VariablePlace() as place) if depth < 4:
             for key in place_keys(place, frame, sight.flat.points):
                 sets = sight.sets.get(key, ())
                 if is_local(key) and len(sets) == 1:
                     op = sets[0][1]
-                    form, modulus, at = _reduction(sight, op.value, op.frame, depth + 1)
-                    return form, modulus, at or op.position
-    return "none", None, None
+                    form, modulus, at, term = _reduction(sight, op.value, op.frame, depth + 1)
+                    return form, modulus, at or op.position, term
+    return "none", None, None, None
+
+
+def term_of(sight: Sight, expr: Expr, frame: str, depth: int = 0) -> Term | None:
+    """An expression as one lasting integer, or one parameter, plus a constant."""
+    match expr:
+        case Cast(operand=operand):
+            return term_of(sight, operand, frame, depth)
+        case Binary(op="+" | "-" as op, left=left, right=right):
+            by = fold(right)
+            inner = term_of(sight, left, frame, depth)
+            if by is None or inner is None:
+                return None
+            return Term(inner.key, inner.plus + (by if op == "+" else -by))
+        case Load(place=place, type=IntType() | UnknownType()):
+            keys = place_keys(place, frame, sight.flat.points)
+            key = next(iter(keys)) if len(keys) == 1 else None
+            if key is None or not is_local(key):
+                return Term(key, 0) if key is not None and is_scalar(key) else None
+            sets = sight.sets.get(key, ())
+            if len(sets) == 1 and depth < 6:
+                return term_of(sight, sets[0][1].value, sets[0][1].frame, depth + 1)
+            parameter = isinstance(place, VariablePlace) and place.variable.storage == "parameter"
+            return Term(key, 0) if parameter and not sets else None
+    return None
+
+
+def mask_term(sight: Sight, left: Expr, right: Expr, frame: str) -> Term | None:
+    """The number of slots that a mask stands for, as a term: the mask plus one."""
+    if fold(right) is not None or fold(left) is not None:
+        return None
+    mask = term_of(sight, right, frame) or term_of(sight, left, frame)
+    return Term(mask.key, mask.plus + 1) if mask is not None else None
 
 
 # ---------------------------------------------------------------------------------------------------------- guards
@@ -304,7 +354,8 @@ def _comparison(sight: Sight, block: FlatBlock) -> Comparison | None:
             return None
         constant = fold(condition.right) if left else fold(condition.left)
         moved = _moved(sight, condition.left, block.frame) or _moved(sight, condition.right, block.frame)
-        return Comparison(left, right, condition.op, constant, block.end.position, moved)
+        terms = (term_of(sight, condition.left, block.frame), term_of(sight, condition.right, block.frame))
+        return Comparison(left, right, condition.op, constant, block.end.position, moved, terms)
     left = sources(sight, condition, block.frame)
     return Comparison(left, NOTHING, "!=", 0, block.end.position, False) if left else None
 

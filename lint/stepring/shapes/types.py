@@ -197,12 +197,33 @@ class OrbitStep:
     values: tuple[tuple[str, str], ...]
 
 
+BoundForm: TypeAlias = Literal["constant", "member", "variable", "argument"]
+StorageForm: TypeAlias = Literal["array", "pointer", "elsewhere"]
+
+
+@dataclass(frozen=True, slots=True)
+class Bound:
+    """Where the number of slots stands in the code: ``key`` plus ``plus`` (a mask is one less than the number).
+
+    ``form``: a ``constant`` (``key`` is empty, ``plus`` the number), a ``member`` of the indices' structure (or of
+    another one), a lasting ``variable``, or an ``argument`` of the functions. ``text`` is it as C would say it. ``key``
+    holds the words of ``ring_keys.Key``: ``("member", structure, name)``, ``("var", identity)``, ``("local", frame,
+    identity)``.
+    """
+
+    form: BoundForm
+    text: str
+    key: tuple[str, ...]
+    plus: int = 0
+
+
 @dataclass(frozen=True, slots=True)
 class Index:
     """An index of a ring: how it is shown, its type's name and limits, its orbit and its steps.
 
     ``orbit`` are the values it really takes where it can be seen from outside a function, None if unknown. ``role``:
-    ``write`` stores into the storage, ``read`` loads, ``both``, ``count`` counts the occupied slots.
+    ``write`` stores into the storage, ``read`` loads, ``both``, ``count`` counts the occupied slots. ``key`` are the
+    words of ``ring_keys.Key``; ``form`` says whether it is a number or a pointer into the storage.
     """
 
     name: str
@@ -215,11 +236,20 @@ class Index:
     orbit: tuple[int, ...] | None
     initial: int | None
     where: Origin
+    key: tuple[str, ...] = ()
+    form: Literal["integer", "pointer"] = "integer"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Ring:
-    """Storage with indices that walk it round; ``capacity`` in elements, None where it is set at run time."""
+    """Storage with indices that walk it round; ``capacity`` in elements, None where it is set at run time.
+
+    ``bound`` says where the number of slots stands, None if the code does not show it. ``storage_key`` holds the words
+    of ``ring_keys.Key`` (a final ``*``: what the pointer points to), empty where ``storage_form`` is ``elsewhere``:
+    the code keeps the indices only and gives its caller the slot. ``struct`` is the identity of the structure that the
+    indices are members of, empty for variables. ``functions`` are the identities of those that can be entered and
+    access the storage or read or move an index, ``helpers`` those that are only called by them.
+    """
 
     identity: str
     storage: str
@@ -236,6 +266,14 @@ class Ring:
     unseen: tuple[str, ...] = ()
     proofs: "tuple[Proof, ...]" = ()
     disagreements: "tuple[Disagreement, ...]" = ()
+    bound: Bound | None = None
+    storage_key: tuple[str, ...] = ()
+    storage_form: StorageForm = "array"
+    struct: str = ""
+    functions: tuple[str, ...] = ()
+    helpers: tuple[str, ...] = ()
+    # Whether its operations were run: only then does it mean something that no disagreement was found.
+    explored: bool = False
 
 
 @dataclass(frozen=True, slots=True, eq=False)
