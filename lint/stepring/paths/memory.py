@@ -229,6 +229,11 @@ class Memory:
         cells, offset, type_ = self._follow(path)
         write_value(cells, offset, type_, value)
 
+    def type_at(self, path: str) -> CType:
+        """The type of what a path names; of a bit-field its declared type."""
+        type_ = self._follow(path)[2]
+        return type_.type if isinstance(type_, _Bits) else type_
+
     def address(self, path: str) -> Pointer:
         """A pointer to what a path names; an array's first element."""
         cells, offset, type_ = self._follow(path)
@@ -305,7 +310,7 @@ class Memory:
         return self.cells[number], self.program.statics[number].variable.type
 
 
-_START = re.compile(r"(?:.*:)?\w*(?:@[\d.]+)?")
+_START = re.compile(r"(?:.*:)?\w*(?:@\d+(?:\.\d+)?)?")
 _STEP = re.compile(r"\[(\d+)\]|(\.|->)(\w+)")
 
 
