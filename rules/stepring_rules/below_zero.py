@@ -9,8 +9,11 @@ from collections.abc import Iterator
 from stepring.places import Origin
 from stepring.rule import Level, Obligation, Related, Rule, WitnessStep
 from stepring.shapes.types import Program
+from stepring_rules import ring_code
 from stepring_rules.ring_access import Words, judged
 from stepring_rules.ring_common import Turn, about, checked, declared, short, turns
+from stepring_rules.ring_runs import Words as Runs
+from stepring_rules.ring_runs import unexplained, witnessed
 
 _WORDS = Words(
     "RB02",
@@ -21,7 +24,21 @@ _WORDS = Words(
 )
 
 
+_RUNS = Runs(
+    "RB02",
+    ("below zero",),
+    _WORDS.why,
+    _WORDS.advice,
+)
+
+
 def below_zero(program: Program) -> Iterator[Obligation]:
+    """One obligation for each access, one for each signed counter, and what runs of the operations show besides."""
+    yield from witnessed(program, from_code(program))
+    yield from unexplained(program, ring_code.explained(program), _RUNS)
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
     """One obligation for each access, and one for each signed counter that runs until it overflows."""
     said: set[Origin] = set()
     for item in judged(program, _WORDS):

@@ -9,10 +9,16 @@ from collections.abc import Iterator
 from stepring.rule import Level, Obligation, Rule, WitnessStep
 from stepring.shapes.types import Program
 from stepring_rules.ring_common import Turn, about, checked, declared, once, short, turns
+from stepring_rules.ring_runs import witnessed
 
 
 def counter_overflow(program: Program) -> Iterator[Obligation]:
     """One obligation for each counter that runs freely."""
+    return witnessed(program, from_code(program))
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
+    """The same, decided from the code alone."""
     return once(item for turn in turns(program) for item in _check(turn))
 
 

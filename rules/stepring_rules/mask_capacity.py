@@ -10,10 +10,16 @@ from stepring.places import Origin
 from stepring.rule import Obligation, Rule, WitnessStep
 from stepring.shapes.types import Program
 from stepring_rules.ring_common import Turn, about, checked, declared, mask_cause, once, power_of_two, short, turns
+from stepring_rules.ring_runs import witnessed
 
 
 def mask_capacity(program: Program) -> Iterator[Obligation]:
     """One obligation for each mask that wraps an index, at its update or on an access."""
+    return witnessed(program, from_code(program))
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
+    """The same, decided from the code alone."""
     return once(item for turn in turns(program) for item in _check(turn))
 
 

@@ -10,10 +10,16 @@ from stepring.rule import Obligation, Rule, WitnessStep
 from stepring.shapes.ring_types import CheckedStep
 from stepring.shapes.types import Index, Program, Ring
 from stepring_rules.ring_common import about, declared, is_scaled, once, short
+from stepring_rules.ring_runs import witnessed
 
 
 def narrow_index(program: Program) -> Iterator[Obligation]:
     """One obligation for each step of each index and count."""
+    return witnessed(program, from_code(program))
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
+    """The same, decided from the code alone."""
     return once(
         item
         for ring in program.rings

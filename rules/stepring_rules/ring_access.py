@@ -1,10 +1,10 @@
 """What RB01 and RB02 share: the verdict on every access to a ring's storage, bad ones grouped by their cause."""
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
 from stepring.rule import Obligation, Related
-from stepring.shapes.ring_types import CheckedAccess, CheckedStep
+from stepring.shapes.ring_types import CheckedAccess, CheckedStep, OpenReason, Proof
 from stepring.shapes.types import Index, Program, Ring
 from stepring_rules.ring_common import (
     Shared,
@@ -17,6 +17,7 @@ from stepring_rules.ring_common import (
     shared_capacities,
     short,
     story,
+    unseen_as,
 )
 
 
@@ -35,12 +36,17 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
     """One obligation for each access of each ring, bad ones with one cause together."""
     shared = shared_capacities(program)
     for ring in program.rings:
+        proofs = {(proof.where, proof.function): proof for proof in ring.proofs if proof.about == "access"}
         if ring.capacity is None:
+            yield from _proved(ring, proofs.values(), words)
             continue
         causes = {index.identity: set(_causes(ring, index, words, shared)) for index in ring.indices}
         groups: dict[tuple[object, ...], list[CheckedAccess]] = {}
         for access in checked(ring):
-            if access.settled and ring.unseen:
+            proof = proofs.get((access.where, access.function))
+            if proof is not None and proof.holds and (ring.unseen or not access.settled) and access.bad is None:
+                yield from _proved(ring, (proof,), words)
+            elif access.settled and ring.unseen:
                 yield _unseen(ring, access, words)
             elif access.settled:
                 holds = _holds(ring, access, words)
@@ -56,10 +62,47 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
                     access.where,
                     f"It is not settled that every subscript of {ring.storage} here is 0 to {ring.capacity - 1}.",
                     reason=f"{access.doubt}; the subscript may be {access.maybe}" if access.maybe else access.doubt,
+                    open_as=_open_as(access, proof),
                     function=access.function,
                 )
         for group in groups.values():
             yield _finding(ring, group, words)
+
+
+def _open_as(access: CheckedAccess, proof: Proof | None) -> OpenReason:
+    """The ledger's reason: the solver's if it was asked, which knows best."""
+    if proof is not None and proof.reason is not None:
+        return proof.reason
+    return "argument not bounded" if access.maybe else "bound reached"
+
+
+def _proved(ring: Ring, proofs: Iterable[Proof], words: Words) -> Iterator[Obligation]:
+    """The solver's verdicts on accesses. What it left open is said once, at the end that an index runs into."""
+    slots = f"{ring.capacity} slots" if ring.capacity is not None else "as many slots as its capacity says"
+    for proof in proofs:
+        if proof.holds:
+            kept = f" Every operation keeps {' and '.join(proof.kept)}." if proof.kept else ""
+            yield about(
+                words.rule,
+                ring,
+                "pass",
+                proof.where,
+                f"{words.holds} {ring.storage} has {slots}.{kept}",
+                function=proof.function,
+                assumed=proof.assumed,
+            )
+        elif not words.below:
+            yield about(
+                words.rule,
+                ring,
+                "open",
+                proof.where,
+                f"It is not settled that every subscript of {ring.storage} here is inside.",
+                reason=proof.detail or proof.reason or "",
+                open_as=proof.reason,
+                function=proof.function,
+                assumed=proof.assumed,
+            )
 
 
 def _holds(ring: Ring, access: CheckedAccess, words: Words) -> str:
@@ -76,6 +119,7 @@ def _unseen(ring: Ring, access: CheckedAccess, words: Words) -> Obligation:
         f"By the code that was run every subscript of {ring.storage} here is 0 to {(ring.capacity or 0) - 1}, but its "
         "indices may be stored into elsewhere.",
         reason="; ".join(ring.unseen),
+        open_as=unseen_as(ring),
         function=access.function,
     )
 

@@ -11,7 +11,7 @@ from typing import Any
 
 from stepring.places import Origin
 from stepring.rule import Kind, Level, Obligation, Related, WitnessStep
-from stepring.shapes.ring_types import CheckedAccess, CheckedStep
+from stepring.shapes.ring_types import CheckedAccess, CheckedStep, OpenReason
 from stepring.shapes.types import Index, Program, Ring
 
 Shared = Mapping[str, frozenset[int]]
@@ -163,6 +163,11 @@ def story(access: CheckedAccess) -> tuple[WitnessStep, ...]:
 def declared(ring: Ring) -> Related:
     """Where the storage is declared."""
     return Related(ring.where, f"{ring.storage} has {ring.capacity} slots")
+
+
+def unseen_as(ring: Ring) -> OpenReason:
+    """The ledger's words for what may have been missed of a ring's code."""
+    return "code not read" if any("was not read" in clause for clause in ring.unseen) else "stored into elsewhere"
 
 
 def once(obligations: Iterable[Obligation]) -> Iterator[Obligation]:

@@ -8,11 +8,27 @@ from collections.abc import Iterator
 
 from stepring.rule import Obligation, Rule, WitnessStep
 from stepring.shapes.types import Program
-from stepring_rules.ring_common import Turn, about, checked, declared, mask_cause, once, short, turns
+from stepring_rules import ring_code
+from stepring_rules.ring_common import Turn, about, checked, declared, mask_cause, once, short, turns, unseen_as
+from stepring_rules.ring_runs import Words as Runs
+from stepring_rules.ring_runs import unexplained, witnessed
+
+_RUNS = Runs(
+    "RB03",
+    ("slots",),
+    "Slots that are left out keep old values, and what is stored in repeated ones is lost.",
+    "Let every advance go to the next slot, and from the last one to slot 0.",
+)
 
 
 def skips_slots(program: Program) -> Iterator[Obligation]:
-    """One obligation for each step of each index that wraps."""
+    """One obligation for each step of each index that wraps, and what runs of the operations show besides."""
+    yield from witnessed(program, from_code(program))
+    yield from unexplained(program, ring_code.explained(program), _RUNS)
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
+    """The same, decided from the code alone."""
     return once(item for turn in turns(program) for item in _check(turn))
 
 
@@ -50,6 +66,7 @@ def _check(turn: Turn) -> Iterator[Obligation]:
                 f"By the code that was run every advance of {name} leads to the next of the {capacity} slots of "
                 f"{ring.storage}, but its indices may be stored into elsewhere.",
                 reason="; ".join(ring.unseen),
+                open_as=unseen_as(ring),
                 function=step.function,
             )
             return
@@ -61,6 +78,37 @@ def _check(turn: Turn) -> Iterator[Obligation]:
             f"Every advance of {name} leads to the next of the {capacity} slots of {ring.storage}.",
             function=step.function,
         )
+    elif turn.cause is None and not step.odd:
+        yield _unsettled(turn)
+
+
+def _unsettled(turn: Turn) -> Obligation:
+    """An advance that was not run from every value: by the solver's word, if it gave one."""
+    step, ring, name = turn.step, turn.ring, short(turn.index.name)
+    where = step.wrap_where or step.where
+    proof = next(
+        (one for one in ring.proofs if one.about == "advance" and (one.where, one.function) == (where, step.function)),
+        None,
+    )
+    if proof is not None and proof.holds:
+        what = f"Every advance of {name} leads to the next of the {turn.capacity} slots of {ring.storage}."
+        passed: Obligation = about("RB03", ring, "pass", where, what, function=step.function, assumed=proof.assumed)
+        return passed
+    by_length = step.by is None
+    left: Obligation = about(
+        "RB03",
+        ring,
+        "open",
+        where,
+        f"It is not settled that every advance of {name} leads to the next of the {turn.capacity} slots of "
+        f"{ring.storage}.",
+        reason=(proof.detail if proof is not None else "")
+        or ("it is moved by a length" if by_length else "it could not be run from every value that it takes"),
+        open_as=(proof.reason if proof is not None else None)
+        or ("argument not bounded" if by_length else "bound reached"),
+        function=step.function,
+    )
+    return left
 
 
 def _what(turn: Turn) -> tuple[str, tuple[tuple[str, str], ...]]:

@@ -22,10 +22,16 @@ from stepring_rules.ring_common import (
     story,
     turns,
 )
+from stepring_rules.ring_runs import witnessed
 
 
 def wrap_limit(program: Program) -> Iterator[Obligation]:
     """One obligation for each wrap of an index, at its update or on an access."""
+    return witnessed(program, from_code(program))
+
+
+def from_code(program: Program) -> Iterator[Obligation]:
+    """The same, decided from the code alone."""
     return once(_all(program))
 
 
