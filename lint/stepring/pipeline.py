@@ -30,6 +30,7 @@ from stepring.rule import Obligation, Rule, load_rules
 from stepring.shapes.facts import StateFacts
 from stepring.shapes.machines import find_machines
 from stepring.shapes.positions import positions_of
+from stepring.shapes.ring_called import called_by
 from stepring.shapes.ring_ranges import with_ranges
 from stepring.shapes.ring_writers import Noter, Writers, outside_of
 from stepring.shapes.rings import find_rings, ring_functions
@@ -55,8 +56,9 @@ class Options:
 class UnitSummary:
     """What the program stage needs of a unit: plain data, no syntax trees and no way back into the unit.
 
-    ``ring_functions`` is the IR of the functions that may be part of a ring, ``origins`` the original places of all
-    that it mentions. ``writers`` are the other functions that store into what may be an index.
+    ``ring_functions`` is the IR of the functions that may be part of a ring, ``called`` that of the unit's functions
+    that these call in turn, ``origins`` the original places of all that both mention. ``writers`` are the other
+    functions that store into what may be an index.
     """
 
     unit: Unit
@@ -70,6 +72,7 @@ class UnitSummary:
     functions: tuple[FunctionPlace, ...]
     notices: tuple[Notice, ...]
     writers: Writers = field(default_factory=dict)
+    called: tuple[Function, ...] = ()
 
 
 class Worker:
@@ -96,9 +99,11 @@ class Worker:
         typed = lower_unit(read, model, self.meanings)
         rings = ring_functions([function for function in typed.functions if function.own])
         writers = self.noter.writers(typed.functions, rings, typed.objects, typed.types.structs)
-        wanted = {variable.identity for function in rings for variable in function.variables if variable.lasting}
+        called = called_by(rings, typed.functions)
+        kept = (*rings, *called)
+        wanted = {variable.identity for function in kept for variable in function.variables if variable.lasting}
         objects = tuple(item for item in typed.objects if item.variable.identity in wanted)
-        origins = {position: self._origin(read, position) for position in positions_of(rings, objects)}
+        origins = {position: self._origin(read, position) for position in positions_of(kept, objects)}
         lost = {(notice.file, notice.line) for notice in typed.notices}
         functions = tuple(
             replace(place, read=False) if (place.file, place.line) in lost else place for place in read.functions
@@ -115,6 +120,7 @@ class Worker:
             functions,
             (*read.notices, *(self._placed(read, notice) for notice in typed.notices)),
             writers,
+            called,
         )
 
     def _origin(self, read: ReadUnit, position: Position) -> Origin:
