@@ -25,7 +25,7 @@ from stepring.places import Notice, Origin, Position
 from stepring.read.preprocess import preprocess
 from stepring.read.reader import Reader
 from stepring.read.types import FunctionPlace, Preprocessed, ReadUnit
-from stepring.report.types import Coverage, Outcome
+from stepring.report.types import Coverage, Inspection, Outcome
 from stepring.rule import Obligation, Rule, load_rules
 from stepring.shapes.facts import StateFacts
 from stepring.shapes.machines import find_machines
@@ -43,13 +43,21 @@ Progress = Callable[[int, int, str], None]
 
 @dataclass(frozen=True, slots=True)
 class Options:
-    """What the user asked for."""
+    """What the user asked for.
+
+    ``proofs`` False leaves the solver out: what it alone would settle stays open. ``query_limit`` bounds one query, in
+    the solver's own units of work, which are the same on every machine; ``time_limit`` bounds an obligation, in seconds
+    of the clock, and is only for the worst case. None means the engines' own.
+    """
 
     compile_commands: Path | None = None
     data_model: str | None = None
     jobs: int = 1
     compilers: tuple[str, ...] = ()
     use_compiler: bool = True
+    proofs: bool = True
+    query_limit: int | None = None
+    time_limit: float | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -177,6 +185,23 @@ def _inspect(paths: Sequence[Path], options: Options, progress: Progress | None)
         coverage(summaries, len(gathered.units)),
         tuple(sorted({summary.model.name for summary in summaries if summary.read})),
         settings.fail_level,
+        asked(paths, options, gathered.root),
+    )
+
+
+def asked(paths: Sequence[Path], options: Options, root: Path) -> Inspection:
+    """What a run was asked for, in paths that mean the same wherever the root lies."""
+
+    def inside(path: Path) -> str:
+        return Path(os.path.relpath(path, root)).as_posix()
+
+    return Inspection(
+        "." if paths else inside(Path.cwd()),
+        tuple(inside(path) for path in paths),
+        None if options.compile_commands is None else inside(options.compile_commands),
+        options.data_model,
+        tuple(Path(name).name for name in options.compilers),
+        options.use_compiler,
     )
 
 

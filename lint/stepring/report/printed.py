@@ -14,12 +14,14 @@ from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
 
+from stepring.paths.replay import start_values
 from stepring.places import Origin
+from stepring.report.assumptions import assumptions
 from stepring.report.fingerprints import in_order
 from stepring.report.sources import Sources
 from stepring.report.text import function_name, one_sentence, printable, shown_path
 from stepring.report.types import Outcome
-from stepring.report.words import CAUTION, count, coverage_sentence, level_of, verdict_summary, verdict_words
+from stepring.report.words import CAUTION, count, coverage_sentence, ledger, level_of, verdict_words
 from stepring.rule import Obligation, Rule, WitnessStep
 
 _COLOURS = {
@@ -36,7 +38,7 @@ _LONGEST_SOURCE = 200
 
 
 def print_report(outcome: Outcome, console: Console, kinds: Collection[str], base: Path | None = None) -> None:
-    """Print the findings of the verdicts in ``kinds``, file by file, then what was read and the caution."""
+    """Print the findings of the verdicts in ``kinds``, file by file, what was read and assumed, and the ledger."""
     sources = Sources(outcome.root)
     ordered = in_order(outcome.obligations, sources)
     chosen = [one for one in ordered if one.kind in kinds]
@@ -101,10 +103,16 @@ def _rows(one: Obligation, rule: Rule | None, sources: Sources, base: Path | Non
         "Where": ", ".join(part for part in inside if part),
         "Why": one_sentence(one.why),
         "Do": one_sentence(one.advice),
+        "Assumed": " ".join(one_sentence(clause) for clause in assumed_by(one)),
         "See": "\n".join(printable(line) for line in see),
         "Rule": one.rule if rule is None else f"{one.rule} {rule.name}",
     }
     return [(label, text if label == "See" else printable(text)) for label, text in texts.items() if text]
+
+
+def assumed_by(one: Obligation) -> tuple[str, ...]:
+    """What a verdict rests on beyond what all share: its own clauses and its witness's."""
+    return tuple(dict.fromkeys((*one.assumed, *(() if one.evidence is None else one.evidence.assumed))))
 
 
 def _place(where: Origin, beside: Origin, sources: Sources, base: Path | None) -> str:
@@ -120,8 +128,8 @@ def _steps(one: Obligation, sources: Sources, base: Path | None) -> Table:
     table.add_column("Line", overflow="fold")
     table.add_column("What happens", overflow="fold")
     table.add_column("Values", overflow="fold")
-    if one.initial:
-        table.add_row("", "at the start", _values(one.initial))
+    for text, values in _start(one):
+        table.add_row("", Text(printable(text)), Text(_values(values)))
     steps = one.witness
     if len(steps) <= _FIRST_STEPS + _LAST_STEPS + 1:
         _add_steps(table, steps, one, sources, base)
@@ -130,6 +138,21 @@ def _steps(one: Obligation, sources: Sources, base: Path | None) -> Table:
     table.add_row("", f"({len(steps) - _FIRST_STEPS - _LAST_STEPS} steps are left out here; the SARIF log has all)", "")
     _add_steps(table, steps[-_LAST_STEPS:], one, sources, base)
     return table
+
+
+def _start(one: Obligation) -> Iterable[tuple[str, Sequence[tuple[str, str]]]]:
+    """What stands before the first step: the objects that the witness makes, the start values, a lone call's values."""
+    evidence = one.evidence
+    if evidence is None:
+        return [("at the start", one.initial)] if one.initial else []
+    made = [
+        f"{item.name}, {item.type.partition('@')[0]}" + f" [{item.elements}]" * (item.elements > 1)
+        for item in evidence.made
+    ]
+    rows: list[tuple[str, Sequence[tuple[str, str]]]] = [(f"with {text}, all zero", ()) for text in made]
+    if start := one.initial or start_values(evidence):
+        rows.append(("at the start", start))
+    return rows
 
 
 def _add_steps(
@@ -154,9 +177,22 @@ def _print_end(console: Console, outcome: Outcome, ordered: Sequence[Obligation]
     texts = (
         ("Read", coverage_sentence(outcome)),
         ("Found", found),
-        ("Verdicts", verdict_summary(ordered) + "."),
+        ("Assumed", "\n".join(map(printable, assumptions(outcome.models))) if program.rings else ""),
         ("Caution", CAUTION),
     )
     for label, text in texts:
-        rows.add_row(Text(label, style="bold"), Text(printable(text)))
+        if text:
+            rows.add_row(Text(label, style="bold"), Text(text if label == "Assumed" else printable(text)))
+    rows.add_row(Text("Ledger", style="bold"), _ledger(ordered))
     console.print(rows)
+
+
+def _ledger(ordered: Sequence[Obligation]) -> Table:
+    """The account of all obligations, whatever verdicts were printed."""
+    table = Table.grid(padding=(0, 2))
+    table.add_column()
+    table.add_column(justify="right")
+    table.add_column()
+    for what, number, remark in ledger(ordered):
+        table.add_row(Text(what), Text(str(number)), Text(remark))
+    return table

@@ -46,6 +46,29 @@ def verdict_summary(obligations: Iterable[Obligation]) -> str:
     return ", ".join(parts) or "none"
 
 
+OTHER = "other"
+
+
+def ledger(obligations: Iterable[Obligation]) -> tuple[tuple[str, int, str], ...]:
+    """The account of a run's obligations as (what, number, remark): all, then each verdict, the open ones by reason.
+
+    The lines of the reasons begin with two blanks and follow the number of those left open; their numbers add up to it,
+    as the verdicts' do to that of all.
+    """
+    given = list(obligations)
+    kinds: Counter[str] = Counter(one.kind for one in given)
+    levels = Counter(level_of(one) for one in given)
+    reasons: Counter[str] = Counter(one.open_as or OTHER for one in given if one.kind == "open")
+    failed = ", ".join(count(levels[level], level) for level in reversed(LEVELS) if levels[level])
+    lines = [("obligations", len(given), "")]
+    for kind in ("pass", "fail", "open", "review"):
+        lines.append((VERDICT_WORDS[kind], kinds[kind], failed if kind == "fail" else ""))
+        if kind == "open":
+            ordered = sorted(reasons, key=lambda reason: (reason == OTHER, -reasons[reason], reason))
+            lines.extend((f"  {reason}", reasons[reason], "") for reason in ordered)
+    return tuple(lines)
+
+
 def coverage_sentence(outcome: Outcome) -> str:
     """How much was read, and for which data models."""
     read = outcome.coverage
