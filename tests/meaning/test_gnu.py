@@ -42,6 +42,23 @@ CASES = (
         | {"first_set(0, 4)": 4, "first_set(3, 4)": 3, "first_set(0, 0)": -1},
     ),
     Case(
+        "atomic built-ins",
+        """
+        static unsigned char slot = 250; static unsigned fed[2] = {7, 9};
+        int loaded(void) { return __atomic_load_n(&slot, 2); }
+        int stored(int v) { __atomic_store_n(&slot, v, 3); return slot; }
+        int through(unsigned v) { unsigned old, *where = &fed[1]; __atomic_load(where, &old, 2);
+            __atomic_store(where, &v, 3); return old * 100 + fed[1]; }
+        int added(int by) { unsigned char a = 250; int old = __atomic_fetch_add(&a, by, 5);
+            int now = __atomic_sub_fetch(&a, 1, 5); return old * 1000 + now; }
+        int masked(void) { unsigned a = 12; unsigned old = __atomic_fetch_and(&a, 6, 5);
+            return __atomic_or_fetch(&a, 1, 5) * 100 + old; }
+        int swapped(int v) { int a = 3, i = 0, two[2] = {4, 5}; a = __atomic_exchange_n(&two[i++], v, 5);
+            return a * 100 + two[0] * 10 + i; }
+        """,
+        {"loaded()": 250, "stored(260)": 4, "through(8)": 908, "added(10)": 250003, "masked()": 512, "swapped(6)": 461},
+    ),
+    Case(
         "attributes, builtins and keywords",
         """
         static __inline__ int __attribute__((always_inline)) fast(int v) { return __builtin_expect(!!(v > 2), 1) ? v

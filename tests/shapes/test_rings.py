@@ -279,3 +279,70 @@ def test_an_index_behind_atomic_functions() -> None:
         """
     )
     assert ring.indices[0].orbit == tuple(range(8))
+
+
+def test_an_index_behind_addresses_that_atomic_functions_get() -> None:
+    (ring,) = rings(
+        """
+        static uint8_t q[8]; static uint8_t at;
+        void put(uint8_t c) {
+            uint8_t *where = &at; uint8_t here; __atomic_load(where, &here, 2);
+            q[here] = c;
+            uint8_t *there = &at; uint8_t next = (here + 1) % 8; __atomic_store(there, &next, 3); }
+        """
+    )
+    assert ring.indices[0].orbit == tuple(range(8))
+
+
+RUN_TIME = """
+struct feed_log { uint8_t *slots; unsigned size, in, out; };
+void open_log(struct feed_log *log, uint8_t *slots, unsigned size)
+{ log->slots = slots; log->size = size; log->in = log->out = 0; }
+int put(struct feed_log *log, uint8_t c) {
+    unsigned next = log->in + 1; if (next >= log->size) next = 0; if (next == log->out) return 0;
+    log->slots[log->in] = c; log->in = next; return 1; }
+int get(struct feed_log *log) {
+    if (log->in == log->out) return -1;
+    int c = log->slots[log->out]; if (++log->out >= log->size) log->out = 0; return c; }
+unsigned used(const struct feed_log *log)
+{ return log->in >= log->out ? log->in - log->out : log->size - log->out + log->in; }
+"""
+
+
+def test_a_capacity_set_at_run_time_says_where_it_stands_and_which_functions_work_on_the_ring() -> None:
+    (ring,) = rings(RUN_TIME)
+    assert ring.capacity is None and ring.bound is not None
+    assert (ring.bound.form, ring.bound.text, ring.bound.plus) == ("member", "struct feed_log.size", 0)
+    assert ring.bound.key[0] == "member" and ring.bound.key[2] == "size" and ring.bound.key[1] == ring.struct
+    assert (ring.storage_key, ring.storage_form) == (("member", ring.struct, "slots", "*"), "pointer")
+    assert [index.key for index in ring.indices] == [("member", ring.struct, "out"), ("member", ring.struct, "in")] or [
+        index.key for index in ring.indices
+    ] == [("member", ring.struct, "in"), ("member", ring.struct, "out")]
+    assert ring.functions == ("open_log", "put", "get", "used") and ring.helpers == ()
+
+
+@pytest.mark.parametrize(
+    ("put", "text", "plus"),
+    [
+        ("log->slots[log->in & log->mask] = c; log->in++;", "struct feed_log.mask + 1", 1),
+        ("log->slots[log->in] = c; log->in = (log->in + 1) & log->mask;", "struct feed_log.mask + 1", 1),
+        ("log->slots[log->in & (log->size - 1)] = c; log->in++;", "struct feed_log.size", 0),
+        ("log->slots[log->in] = c; log->in = (log->in + 1) % log->size;", "struct feed_log.size", 0),
+        ("log->slots[log->in++] = c; if (log->in > log->size - 1) log->in = 0;", "struct feed_log.size", 0),
+        ("log->slots[log->in] = c; log->in = log->in == log->size - 1 ? 0 : log->in + 1;", "struct feed_log.size", 0),
+        ("log->slots[log->in] = c; log->in = (log->in + 1) % depth;", "depth", 0),
+    ],
+)
+def test_what_the_capacity_is_compared_with(put: str, text: str, plus: int) -> None:
+    (ring,) = rings(
+        f"static unsigned depth = 8; struct feed_log {{ uint8_t *slots; unsigned size, mask, in; }};"
+        f"void put(struct feed_log *log, uint8_t c) {{ {put} }}"
+    )
+    assert ring.capacity is None and ring.bound is not None
+    assert (ring.bound.text, ring.bound.plus) == (text, plus)
+
+
+def test_a_constant_capacity_is_its_own_bound() -> None:
+    (ring,) = rings("static uint8_t q[8]; static uint8_t at; void put(uint8_t c) { q[at] = c; at = (at + 1) % 8; }")
+    assert ring.bound is not None and (ring.bound.form, ring.bound.text, ring.bound.plus) == ("constant", "8", 8)
+    assert ring.struct == "" and ring.functions == ("put",)

@@ -6,6 +6,7 @@ from typing import Any
 
 from pycparser import c_ast
 
+from stepring.meaning.atomics import ATOMICS
 from stepring.meaning.builder import (
     Work,
     emit,
@@ -63,6 +64,9 @@ def call(work: Work, node: Any, *, wanted: bool) -> Expr:
     special = _SPECIAL.get(name or "")
     if special is not None:
         return special(work, arguments, at)
+    operands, atomic = ATOMICS.get(name or "", (0, None))
+    if atomic is not None and len(arguments) >= operands:
+        return atomic(work, arguments, at)
     if name is not None and work.scope.lookup(name) is None:
         callee: Expr = FunctionName(name, FunctionType(int_type(work), None))
     else:

@@ -280,7 +280,9 @@ def qualifiers(scope: Scope, node: Any) -> dict[str, bool]:
     if isinstance(type_, c_ast.TypeDecl) and isinstance(type_.type, c_ast.IdentifierType) and not volatile:
         symbol = scope.lookup(type_.type.names[0]) if len(type_.type.names) == 1 else None
         volatile = isinstance(symbol, TypeName) and symbol.volatile
-    return {"volatile": volatile, "atomic": "_Atomic" in quals, "const": "const" in quals}
+    # An atomic object is there to be changed by others at any moment, as a volatile one is.
+    atomic = "_Atomic" in quals
+    return {"volatile": volatile or atomic, "atomic": atomic, "const": "const" in quals}
 
 
 def _quals_of(node: Any, word: str) -> bool:

@@ -144,9 +144,11 @@ def _callers(functions: Sequence[Function], scans: list[_Scan], kept: set[int]) 
 
 @dataclass(slots=True)
 class _Look:
-    """A look in progress: which lasting integers each local variable is made of."""
+    """A look in progress: which lasting integers each local variable is made of, which one each local pointer refers
+    to, and which arrays it leads into."""
 
     scan: _Scan
+    refers: dict[str, _Name] = field(default_factory=dict)
     made_of: dict[str, frozenset[_Name]] = field(default_factory=dict)
     sums: set[str] = field(default_factory=set)
     leads: dict[str, frozenset[_Name]] = field(default_factory=dict)
@@ -197,7 +199,7 @@ def _assign(look: _Look, place: PlaceExpr, value: Expr) -> None:
         look.scan.structs.add(place.type.identity)
     if not isinstance(place.type, IntType | UnknownType):
         return
-    name = _name(place)
+    name = _known(look, place)
     if name is None:
         return
     made_of = frozenset(_sources(look, value))
@@ -231,6 +233,14 @@ def _copy(look: _Look, variable: Variable, value: Expr) -> None:
     if _moves(look, value):
         look.sums.add(variable.identity)
     if isinstance(variable.type, PointerType):
+        if isinstance(value, AddressOf) and isinstance(value.place.type, IntType):
+            name = _name(value.place)
+            if name is not None and name[-1] != "[]":
+                look.refers[variable.identity] = name
+        elif isinstance(value, Load) and isinstance(value.place, VariablePlace):
+            other = look.refers.get(value.place.variable.identity)
+            if other is not None:
+                look.refers[variable.identity] = other
         arrays = _arrays(look, value)
         if arrays:
             look.leads[variable.identity] = look.leads.get(variable.identity, frozenset()) | arrays
@@ -326,12 +336,20 @@ def _name(place: PlaceExpr) -> _Name | None:
     return None
 
 
+def _known(look: _Look, place: PlaceExpr) -> _Name | None:
+    """What lasting integer a place is, also where a local pointer leads to it."""
+    match place:
+        case DerefPlace(pointer=Load(place=VariablePlace(variable=variable))) if not variable.lasting:
+            return look.refers.get(variable.identity)
+    return _name(place)
+
+
 def _sources(look: _Look, expr: Expr) -> Iterator[_Name]:
     match expr:
         case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
             yield from look.made_of.get(variable.identity, ())
         case Load(place=place, type=IntType() | UnknownType()):
-            name = _name(place)
+            name = _known(look, place)
             if name is not None:
                 yield name
         case Cast(operand=operand):
