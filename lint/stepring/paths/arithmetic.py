@@ -77,15 +77,22 @@ def not_a_bool(text: str, position: Position | None) -> Exception:
 # ----------------------------------------------------------------------------------------------------------- pointers
 
 
-def target(run: Any, pointer: Any, text: str, position: Position | None) -> Any:
-    """The object for a pointer that is no object's so far: at a fixed address, or an error."""
+def target(
+    run: Any, pointer: Any, text: str, position: Position | None, size: int = 1, kind: str = "load"
+) -> Any:
+    """The object for a pointer that is no object's so far: at a fixed address, or an error.
+
+    A run that was given a device asks it for ``size`` bytes there, to ``load`` or ``store`` them.
+    """
     if isinstance(pointer, FunctionPointer):
         raise Undefined("pointer", f"{text} reads or writes the function {pointer.name}", position)
     if pointer == 0:
         raise Undefined("null", f"{text} uses a null pointer", position)
-    found = run.memory.resolve(pointer)
+    found = run.memory.resolve(pointer) if run.device is None else run.memory.placed(pointer)
     if isinstance(found, tuple):
         return found
+    if run.device is not None:
+        return run.device(pointer, size, kind)
     raise Unsettled(f"{text} uses the address 0x{pointer:x}, where no object was given", position)
 
 

@@ -65,6 +65,8 @@ class Writer:
     counter: int = 0
     # What a slot holds as far as this block has set or read it: later reads need no check.
     held: dict[int, str] = field(default_factory=dict)
+    # What a store under way goes through: the one access of a statement that is no load.
+    stored: PlaceExpr | None = None
     at: Position = field(default_factory=lambda: Position("", 0))
 
 
@@ -167,7 +169,8 @@ def where_of(writer: Writer, place: PlaceExpr, *, access: bool) -> Where:
             given = value(writer, pointer)
             text, at_ = keep(writer, place_text(place)), keep(writer, at)
             held = local(writer, given)
-            line(writer, f"if {held}.__class__ is not tuple: {held} = target(f[1], {held}, {text}, {at_})")
+            way = f"{size_of_type(writer, place.type) or 0}, {'store' if place is writer.stored else 'load'!r}"
+            line(writer, f"if {held}.__class__ is not tuple: {held} = target(f[1], {held}, {text}, {at_}, {way})")
             writer.counter += 1
             name = f"c{writer.counter}"
             line(writer, f"{name}, o{name}, l{name}, h{name} = {held}")
@@ -346,7 +349,9 @@ def _load_slot(writer: Writer, place: PlaceExpr, slot: int, at: Position) -> str
 
 def store(writer: Writer, place: PlaceExpr, given: str, at: Position, *, initial: bool = False) -> None:
     type_ = place.type
+    writer.stored = _root(place)
     where = where_of(writer, place, access=True)
+    writer.stored = None
     if where.slot is not None:
         # A parameter of the wrong kind never gets here: lowering converted the value.
         line(writer, f"f[{where.slot}] = {given}")
@@ -356,6 +361,13 @@ def store(writer: Writer, place: PlaceExpr, given: str, at: Position, *, initial
     if writer.watched and not _is_temporary(place):
         event = keep(writer, ("store", writer.function, at, place_text(place)))
         line(writer, f"f[1].observe(Event(*{event}, {given}))")
+
+
+def _root(place: PlaceExpr) -> PlaceExpr:
+    """The variable or the dereferenced pointer that a place is part of."""
+    while isinstance(place, MemberPlace | ElementPlace):
+        place = place.base
+    return place
 
 
 def _is_temporary(place: PlaceExpr) -> bool:
@@ -599,6 +611,8 @@ def _cast(writer: Writer, expr: Cast) -> str:
             return local(writer, f"{'single' if width == 32 else 'float'}({operand})")
         case IntType(), PointerType(width=width):
             mask = (1 << width) - 1
+            if operand.isdigit():
+                return _literal(int(operand) & mask)  # an address that the text fixes: no object of the program's
             return local(writer, f"f[1].memory.resolve({operand} & {mask})")
         case PointerType(), PointerType(to=to):
             if expr.written and isinstance(to, IntType) and to.name in ("char", "unsigned char", "signed char"):

@@ -58,6 +58,7 @@ def run(
     memory: Memory | None = None,
     volatile: Callable[[Memory, str, str], None] | None = None,
     observe: Callable[[Event], None] | None = None,
+    device: Callable[[int, int, str], Any] | None = None,
 ) -> Outcome:
     """Call a function of a program with the given arguments (integers, reals, pointers of ``memory``).
 
@@ -70,7 +71,7 @@ def run(
     made = units if isinstance(units, Program) else program(units)
     unit, name = _find(made, function)
     kept = memory if memory is not None else Memory(made)
-    state = Run(made, kept, externals, volatile, observe)
+    state = Run(made, kept, externals, volatile, observe, device)
     try:
         code = made.code(unit, name, observe is not None)
     except RecursionError:
@@ -93,6 +94,13 @@ def run(
 
 
 def _find(made: Program, function: str) -> tuple[int, str]:
+    known = made.found.get(function)
+    if known is None:
+        known = made.found[function] = _search(made, function)
+    return known
+
+
+def _search(made: Program, function: str) -> tuple[int, str]:
     if function in made.external:
         return made.external[function], function
     found = [

@@ -190,6 +190,13 @@ class Memory:
                 past = (cells, offset, 0, cells.size)
         return self.program.function_at(address) or past or address
 
+    def placed(self, address: int) -> Pointer | None:
+        """The pointer into an object that was placed at a fixed address, if one covers it."""
+        for cells in self.others:
+            if cells.alive and 0 <= address - cells.address < cells.size:
+                return (cells, address - cells.address, 0, cells.size)
+        return None
+
     def _all(self) -> Iterator[Cells]:
         yield from self.cells
         yield from (cells for cells in self.others if cells.alive)

@@ -6,6 +6,7 @@ stored at once; addresses and the like are assignments that generated code runs.
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
+from typing import Any
 
 from stepring.meaning.initial import unnamed_member
 from stepring.meaning.models import integer
@@ -70,7 +71,8 @@ class Static:
 class Program:
     """Units joined into one program. Make one with ``program``.
 
-    ``codes`` are the functions made ready to run so far, by unit, name and whether they are watched.
+    ``codes`` are the functions made ready to run so far, by unit, name and whether they are watched; ``found``
+    those that were asked for by name.
     """
 
     units: tuple[TypedUnit, ...]
@@ -84,6 +86,7 @@ class Program:
     pointers: dict[tuple[int, str], FunctionPointer] = field(default_factory=dict)
     codes: dict[tuple[int, str, bool], Code] = field(default_factory=dict)
     starts: dict[int, Code] = field(default_factory=dict)
+    found: dict[str, tuple[int, str]] = field(default_factory=dict)
 
     def static_number(self, unit: int, variable: Variable) -> int:
         """The number of an object with static storage; one that was never met is added as not defined."""
@@ -303,4 +306,5 @@ class Run:
     externals: Externals | None
     volatile: Callable[[Memory, str, str], None] | None
     observe: Callable[[Event], None] | None
+    device: Callable[[int, int, str], Any] | None = None
     unknown: dict[str, str] = field(default_factory=dict)

@@ -14,6 +14,7 @@ from typing import Any
 from stepring.meaning.models import integer
 from stepring.meaning.scope import size_of
 from stepring.meaning.types import ArrayType, CType, StructType
+from stepring.paths.devices import Devices
 from stepring.paths.interpreter import Program, fresh, run
 from stepring.paths.memory import FunctionPointer, Memory
 from stepring.paths.types import Event, Outcome, Undefined, Unsettled
@@ -213,6 +214,7 @@ def _call(state: _Replay, call: WitnessCall, steps: int) -> Outcome:
     state.given = list(call.outside)
     state.where = function
     state.note(state.origin(function), call_text(call))
+    devices = Devices(state.program, state.memory, state.outside)
     try:
         outcome = run(
             state.program,
@@ -221,7 +223,9 @@ def _call(state: _Replay, call: WitnessCall, steps: int) -> Outcome:
             state.external,
             steps=steps,
             memory=state.memory,
+            volatile=devices.volatile,
             observe=state.observe,
+            device=devices.register,
         )
     except (KeyError, ValueError) as trouble:
         raise Unfit(_words(trouble)) from None
