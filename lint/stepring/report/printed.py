@@ -21,7 +21,7 @@ from stepring.report.fingerprints import in_order
 from stepring.report.sources import Sources
 from stepring.report.text import function_name, one_sentence, printable, shown_path
 from stepring.report.types import Outcome
-from stepring.report.words import CAUTION, count, coverage_sentence, ledger, level_of, verdict_words
+from stepring.report.words import CAUTION, assumed_by, count, coverage_sentence, ledger, level_of, verdict_words
 from stepring.rule import Obligation, Rule, WitnessStep
 
 _COLOURS = {
@@ -108,11 +108,6 @@ def _rows(one: Obligation, rule: Rule | None, sources: Sources, base: Path | Non
         "Rule": one.rule if rule is None else f"{one.rule} {rule.name}",
     }
     return [(label, text if label == "See" else printable(text)) for label, text in texts.items() if text]
-
-
-def assumed_by(one: Obligation) -> tuple[str, ...]:
-    """What a verdict rests on beyond what all share: its own clauses and its witness's."""
-    return tuple(dict.fromkeys((*one.assumed, *(() if one.evidence is None else one.evidence.assumed))))
 
 
 def _place(where: Origin, beside: Origin, sources: Sources, base: Path | None) -> str:

@@ -14,8 +14,11 @@ from typing import Any
 import sarif_om as om
 
 from stepring import __version__
+from stepring.paths.replay import start_values
+from stepring.paths.witness_json import witness_to_json
 from stepring.places import NOTICE_KINDS, Notice, Origin
 from stepring.report import cwe
+from stepring.report.assumptions import assumptions, assumptions_section, rests_on_assumptions
 from stepring.report.fingerprints import KEY, fingerprints, in_order
 from stepring.report.graphs import graph_of, traversal_of, verdict_counts
 from stepring.report.locations import Register, message
@@ -23,8 +26,8 @@ from stepring.report.provenance import Checkout, checkout_of
 from stepring.report.serialise import JSON, SCHEMA, log_to_json
 from stepring.report.sources import BASES, CHECKOUT_BASE, OUTSIDE_BASE, ROOT_BASE, Sources
 from stepring.report.text import clean, escape_message, function_name, joined, one_sentence
-from stepring.report.types import Outcome
-from stepring.report.words import level_of
+from stepring.report.types import Inspection, Outcome
+from stepring.report.words import OTHER, assumed_by, level_of, open_reasons
 from stepring.rule import Obligation, Rule
 from stepring.shapes.types import Ring
 
@@ -113,6 +116,8 @@ def _files(outcome: Outcome, ordered: Iterable[Obligation], kinds: Collection[st
             yield one.where.file
             yield from (other.where.file for other in one.related)
             yield from (step.where.file for step in one.witness)
+            if one.evidence is not None:
+                yield one.evidence.ending.where.file
     for machine in outcome.program.machines:
         yield machine.where.file
         yield from (state.where.file for state in machine.states)
@@ -191,14 +196,30 @@ def _with_id(location: Any, number: int) -> Any:
 
 
 def _result_properties(one: Obligation, run: _Run) -> dict[str, Any] | None:
-    """Where the finding's machine (index in ``run.graphs``) or ring (index in ``run.properties.rings``) is."""
+    """Where the finding's machine (index in ``run.graphs``) or ring (index in ``run.properties.rings``) is, what the
+    verdict rests on, why it is open in the ledger's words, and the witness as data that can be run again."""
     found: dict[str, Any] = {}
     for name, numbers in (("machine", run.machine_numbers), ("ring", run.ring_numbers)):
         if one.shape is not None and one.shape in numbers:
             found[name] = numbers[one.shape]
     if one.states:
         found["states"] = [clean(name) for name in one.states]
+    if one.kind == "open":
+        found["openAs"] = one.open_as or OTHER
+    if clauses := assumed_by(one):
+        found["assumed"] = [clean(one_sentence(clause)) for clause in clauses]
+    if one.evidence is not None:
+        found["witness"] = _cleaned(witness_to_json(one.evidence, str(run.outcome.root)))
     return found or None
+
+
+def _cleaned(data: Any) -> Any:
+    """JSON data that can be written as UTF-8 (see ``text.clean``)."""
+    if isinstance(data, str):
+        return clean(data)
+    if isinstance(data, list):
+        return [_cleaned(item) for item in data]
+    return {name: _cleaned(item) for name, item in data.items()} if isinstance(data, dict) else data
 
 
 def _code_flow(one: Obligation, register: Register) -> Any:
@@ -212,7 +233,8 @@ def _code_flow(one: Obligation, register: Register) -> Any:
         )
         for number, step in enumerate(one.witness, start=1)
     ]
-    flow = om.ThreadFlow(locations=steps, initial_state=_state(one.initial))
+    start = one.initial or (start_values(one.evidence) if one.evidence is not None else ())
+    flow = om.ThreadFlow(locations=steps, initial_state=_state(start))
     return om.CodeFlow(thread_flows=[flow], message=message("The steps that lead to the finding."))
 
 
@@ -273,11 +295,12 @@ def _descriptor(rule_id: str, number: int, rule: Rule | None, rules: Sequence[Ru
 
 
 def page_of(rule: Rule) -> str | None:
-    """The rule's page, None where its package has none."""
+    """The rule's page, with the assumptions that its verdicts rest on; None where its package has none."""
     try:
-        return rule.page().strip() or None
+        page = rule.page().strip()
     except (OSError, ModuleNotFoundError):
         return None
+    return f"{page}\n\n{assumptions_section()}" if page and rests_on_assumptions(rule) else page or None
 
 
 def _relationship(entry: int, number: int) -> Any:
@@ -392,6 +415,21 @@ def _properties(run: _Run, verdicts: Mapping[str, Sequence[str]]) -> dict[str, A
             "functions": {"total": coverage.functions_total, "read": coverage.functions_read},
         },
         "dataModels": [clean(model) for model in run.outcome.models],
+        "ledger": verdict_counts([one.kind for one in run.prints]) | {"openAs": dict(open_reasons(run.prints))},
+        "assumptions": list(assumptions(run.outcome.models)),
+        "inspection": _inspection(run.outcome.inspection),
+    }
+
+
+def _inspection(asked: Inspection) -> dict[str, Any]:
+    """What is needed to read the same units again, from the root; paths as plain text, not as URIs."""
+    return {
+        "folder": clean(asked.folder),
+        "paths": [clean(path) for path in asked.paths],
+        "compileCommands": None if asked.compile_commands is None else clean(asked.compile_commands),
+        "dataModel": asked.data_model,
+        "compilers": [clean(name) for name in asked.compilers],
+        "useCompiler": asked.use_compiler,
     }
 
 

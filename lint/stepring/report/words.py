@@ -49,24 +49,33 @@ def verdict_summary(obligations: Iterable[Obligation]) -> str:
 OTHER = "other"
 
 
+def open_reasons(obligations: Iterable[Obligation]) -> tuple[tuple[str, int], ...]:
+    """How many obligations are open for each reason, the most frequent first and those without a word for it last."""
+    reasons: Counter[str] = Counter(one.open_as or OTHER for one in obligations if one.kind == "open")
+    return tuple(sorted(reasons.items(), key=lambda item: (item[0] == OTHER, -item[1], item[0])))
+
+
 def ledger(obligations: Iterable[Obligation]) -> tuple[tuple[str, int, str], ...]:
     """The account of a run's obligations as (what, number, remark): all, then each verdict, the open ones by reason.
 
-    The lines of the reasons begin with two blanks and follow the number of those left open; their numbers add up to it,
-    as the verdicts' do to that of all.
+    The reasons begin with two blanks and follow the number of those left open; their numbers add up to it, as the
+    verdicts' do to that of all.
     """
     given = list(obligations)
     kinds: Counter[str] = Counter(one.kind for one in given)
     levels = Counter(level_of(one) for one in given)
-    reasons: Counter[str] = Counter(one.open_as or OTHER for one in given if one.kind == "open")
     failed = ", ".join(count(levels[level], level) for level in reversed(LEVELS) if levels[level])
     lines = [("obligations", len(given), "")]
     for kind in ("pass", "fail", "open", "review"):
         lines.append((VERDICT_WORDS[kind], kinds[kind], failed if kind == "fail" else ""))
         if kind == "open":
-            ordered = sorted(reasons, key=lambda reason: (reason == OTHER, -reasons[reason], reason))
-            lines.extend((f"  {reason}", reasons[reason], "") for reason in ordered)
+            lines.extend((f"  {reason}", number, "") for reason, number in open_reasons(given))
     return tuple(lines)
+
+
+def assumed_by(one: Obligation) -> tuple[str, ...]:
+    """What a verdict rests on beyond what all share: its own clauses and its witness's."""
+    return tuple(dict.fromkeys((*one.assumed, *(() if one.evidence is None else one.evidence.assumed))))
 
 
 def coverage_sentence(outcome: Outcome) -> str:
