@@ -42,6 +42,8 @@ int weight_poll(void) {
 }
 int feed_copy(uint8_t *to, int n) { for (int i = 0; i < n; i++) to[i] = (uint8_t)i; return n; }
 int feed_wait(void) { while (weight_at != 200) { } return 0; }
+extern volatile uint8_t shore_status;
+int scale_read(void) { int low = *(volatile uint8_t *)0xc6; return low + *(volatile uint8_t *)0xc6 * 256 + shore_status; }
 int use(void) { return weight_add(1); }
 """
 LINES = FEED.splitlines()
@@ -168,6 +170,17 @@ def test_values_from_outside_come_in_their_order(feed: Program) -> None:
 
     assert "shore_ready was given no result" in with_outside(given[:-1]).why
     assert "does not ask for shore_ready" in with_outside((*given, *outside(("shore_ready", 0)))).why
+
+
+def test_registers_and_volatile_objects_from_elsewhere_are_asked_for_at_each_read(feed: Program) -> None:
+    given = outside(("0xc6", 2), ("0xc6", 1), ("shore_status", 3))
+    ending = Ending("result", at("int scale_read"), None, "", "261", "0 to 255")
+    wrong = Witness("LP64", (), (), (WitnessCall("scale_read", (), given),), ending)
+    done = replay(feed, wrong, origin=origin)
+    assert done.held, done.why
+    assert [step.text for step in done.steps[1:4]] == ["0xc6 gives 2", "0xc6 gives 1", "shore_status gives 3"]
+    short = replay(feed, replace(wrong, calls=(WitnessCall("scale_read", (), given[:1]),)), origin=origin)
+    assert "0xc6 was given no value to be read" in short.why
 
 
 def test_a_callers_buffer_of_several_bytes(feed: Program) -> None:
