@@ -43,7 +43,10 @@ int weight_poll(void) {
 int feed_copy(uint8_t *to, int n) { for (int i = 0; i < n; i++) to[i] = (uint8_t)i; return n; }
 int feed_wait(void) { while (weight_at != 200) { } return 0; }
 extern volatile uint8_t shore_status;
-int scale_read(void) { int low = *(volatile uint8_t *)0xc6; return low + *(volatile uint8_t *)0xc6 * 256 + shore_status; }
+int scale_read(void) {
+    int low = *(volatile uint8_t *)0xc6;
+    return low + *(volatile uint8_t *)0xc6 * 256 + shore_status;
+}
 int use(void) { return weight_add(1); }
 """
 LINES = FEED.splitlines()

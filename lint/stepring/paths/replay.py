@@ -15,7 +15,6 @@ from stepring.meaning.models import integer
 from stepring.meaning.scope import size_of
 from stepring.meaning.types import ArrayType, CType, StructType
 from stepring.paths.devices import Devices
-from stepring.paths.devices import Devices
 from stepring.paths.interpreter import Program, fresh, run
 from stepring.paths.memory import FunctionPointer, Memory
 from stepring.paths.types import Event, Outcome, Undefined, Unsettled
