@@ -109,6 +109,25 @@ _OPTIONS = (
         default=lambda: os.cpu_count() or 1,
         help="How many units are worked on at the same time; the default is one for each processor.",
     ),
+    click.option(
+        "--no-proofs",
+        is_flag=True,
+        help="Leave the solver out: what it alone would settle stays open. Faster, and never more findings.",
+    ),
+    click.option(
+        "--query-limit",
+        metavar="N",
+        type=click.IntRange(1, 1 << 32),
+        help="The most work that one question to the solver may cost, in the solver's own units, which are the same on "
+        "every machine. What is not settled by then stays open.",
+    ),
+    click.option(
+        "--time-limit",
+        metavar="SECONDS",
+        type=click.FloatRange(0.0, 86400.0, min_open=True),
+        help="The most time that one obligation may take. It is meant for the worst case only: a run that comes to it "
+        "can give another result on a slower machine.",
+    ),
 )
 
 
@@ -200,6 +219,9 @@ def _run(
     compilers: tuple[str, ...],
     no_compiler: bool,
     jobs: int,
+    no_proofs: bool,
+    query_limit: int | None,
+    time_limit: float | None,
 ) -> int:
     # Imported here: the engines take a while to load, and the other commands need none of them.
     from stepring import pipeline
@@ -210,6 +232,9 @@ def _run(
         jobs=jobs,
         compilers=compilers,
         use_compiler=not no_compiler,
+        proofs=not no_proofs,
+        query_limit=query_limit,
+        time_limit=time_limit,
     )
     with _progress() as progress:
         outcome = pipeline.inspect(paths, options, progress)
