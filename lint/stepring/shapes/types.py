@@ -95,13 +95,19 @@ class StateStore:
 
 @dataclass(frozen=True, slots=True)
 class Transition:
-    """From one state to another, taken by a function at a place; ``guard`` is source text or empty."""
+    """From one state to another, taken by a function at a place; ``guard`` is source text or empty.
+
+    ``event`` is what the code tells apart on the way (``code == CMD_STOP``; empty where nothing is recognised or the
+    function itself is the event), ``actions`` are the functions called on the way.
+    """
 
     source: str
     target: str
     function: str
     guard: str
     where: Origin
+    event: str = ""
+    actions: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
