@@ -19,12 +19,12 @@ from stepring.gather.gather import gather
 from stepring.gather.settings import Settings, find_settings, read_settings
 from stepring.gather.types import Unit
 from stepring.meaning.models import MODELS, model_from_macros
-from stepring.meaning.types import DataModel, Function, Object, StructLayout
+from stepring.meaning.types import DataModel, Function, Object, StructLayout, TypedUnit
 from stepring.meaning.unit import Meanings, lower_unit
 from stepring.places import Notice, Origin, Position
 from stepring.read.preprocess import preprocess
 from stepring.read.reader import Reader
-from stepring.read.types import FunctionPlace, Preprocessed, ReadUnit
+from stepring.read.types import FunctionPlace, ReadUnit
 from stepring.report.types import Coverage, Inspection, Outcome
 from stepring.rule import Obligation, Rule, load_rules
 from stepring.shapes.facts import StateFacts
@@ -96,15 +96,18 @@ class Worker:
 
     def summarise(self, unit: Unit) -> UnitSummary:
         """One unit through gathering's, reading's and meaning's stages to its summary."""
+        return self._summary(*self.meaning(unit))
+
+    def meaning(self, unit: Unit) -> tuple[ReadUnit, TypedUnit]:
+        """One unit through reading's and meaning's stages."""
         model_name = self.options.data_model or unit.data_model or DEFAULT_MODEL
         pre = preprocess(unit, data_model=model_name, allow_compiler=self.options.use_compiler)
         read = self.reader.read(pre)
-        return self._summary(pre, read, model_name)
-
-    def _summary(self, pre: Preprocessed, read: ReadUnit, model_name: str) -> UnitSummary:
         named = MODELS[self.options.data_model] if self.options.data_model else None
         model = named or model_from_macros(pre.predefined) or MODELS[model_name]
-        typed = lower_unit(read, model, self.meanings)
+        return read, lower_unit(read, model, self.meanings)
+
+    def _summary(self, read: ReadUnit, typed: TypedUnit) -> UnitSummary:
         rings = ring_functions([function for function in typed.functions if function.own])
         writers = self.noter.writers(typed.functions, rings, typed.objects, typed.types.structs)
         called = called_by(rings, typed.functions)
@@ -118,7 +121,7 @@ class Worker:
         )
         return UnitSummary(
             read.unit,
-            model,
+            typed.types.model,
             True,
             state_facts(typed, read),
             rings,
