@@ -1,0 +1,917 @@
+"""A ring explored by its own operations: short runs from its start, each compared with an ideal queue.
+
+States are searched breadth first, so that the first run that shows a disagreement is a shortest one. A state is what
+the ring's functions can see, with elements known by their order instead of their bytes. An operation is only called
+where it is due: one that does not look what the ring holds is called only where the ideal has an element, or room; so
+is one that only other functions call. What is found is run again from nothing as a ``Witness`` before it is believed.
+"""
+
+from collections import deque
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+from stepring.meaning.types import IntType
+from stepring.paths.interpreter import run as run_program
+from stepring.paths.replay import pointed, replay
+from stepring.paths.types import Event
+from stepring.paths.witness import Ending, Reference, StartValue, Value, Witness, WitnessCall
+from stepring.places import Origin, Position
+from stepring.shapes.ring_calls import Effect, Purse, about_storage, below, call
+from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
+from stepring.shapes.ring_types import Disagreement, Doubt
+from stepring.shapes.ring_uses import (
+    Probe,
+    Use,
+    designed,
+    drained,
+    occupancy_tests,
+    others,
+    puts,
+    takes,
+    ways_taken,
+)
+from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, Operation, World, world_of
+from stepring.shapes.types import OrbitStep, Ring
+
+BUDGET = 400_000
+"""Interpreter steps for one ring."""
+SMALL = 8
+"""Rings with at most so many slots are searched state by state."""
+SHOWN = 12
+NEAR_END = 3
+Placer = Callable[[Position], Origin]
+
+
+@dataclass(frozen=True, slots=True)
+class Made:
+    """One call of a run, with the indices' values after it."""
+
+    call: WitnessCall
+    name: str
+    values: tuple[Any, ...]
+    result: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Suspect:
+    """A call that left an index where no plain put or take leaves it: if harm comes of it, this call is to blame."""
+
+    position: Position
+    function: str
+    what: str
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """A memory with the run that leads to it, what the ideal queue holds then, and the next element to be given."""
+
+    saved: Any
+    held: Content
+    run: tuple[Made, ...]
+    token: int
+    suspect: Suspect | None = None
+
+
+@dataclass(slots=True, eq=False)
+class Search:
+    """One exploration under way. ``found`` keeps the first disagreement of each kind and function."""
+
+    probe: Probe
+    origin: Placer
+    base: Witness
+    put: Use | None = None
+    take: Use | None = None
+    uses: list[Use] = field(default_factory=list)
+    room: int = 0
+    overflow: bool = False
+    ranges: tuple[tuple[int, int] | None, ...] = ()
+    found: dict[tuple[Doubt, str], Disagreement] = field(default_factory=dict)
+
+    @property
+    def world(self) -> World:
+        return self.probe.world
+
+    @property
+    def spent(self) -> bool:
+        return self.probe.purse.left <= 0
+
+
+def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -> tuple[Disagreement, ...]:
+    """The disagreements of a ring with the ideal queue, each with a witness that was run again.
+
+    ``group`` is the program (``ring_world.group_of``), ``origin`` gives a position's original place, ``budget`` bounds
+    the interpreter steps.
+    """
+    purse = Purse(budget)
+    for slots in _sizes(ring):
+        world = world_of(group, ring, slots)
+        if world is None:
+            continue
+        found = _explored(world, purse, origin)
+        if found or purse.left <= 0:
+            return found
+    return ()
+
+
+def _sizes(ring: Ring) -> tuple[int, ...]:
+    """How many slots the ring is tried with."""
+    if ring.capacity is not None:
+        return (ring.capacity,) if 2 <= ring.capacity <= 1024 else ()
+    masked = (ring.bound is not None and ring.bound.plus == 1) or ring.wrap == "mask"
+    masked = masked or any(access.reduction == "mask" for access in ring.accesses)
+    return (4, 2) if masked or ring.wrap == "free-running" else (4, 3)
+
+
+def _explored(world: World, purse: Purse, origin: Placer) -> tuple[Disagreement, ...]:
+    probe = Probe(world, purse, world.save())
+    base = _set_up(probe)
+    search = Search(probe, origin, base)
+    _classify(search)
+    if search.put is not None and search.take is not None:
+        _search(search, State(probe.start, (), (), 0))
+        _near_overflow(search)
+    return tuple(search.found.values())
+
+
+def _set_up(probe: Probe) -> Witness:
+    """Let the ring's own function for setting up do so, if it has one; the base witness with that call."""
+    world = probe.world
+    base = world.base
+    pointers = [item for item in base.start if item.value == Reference(STORAGE)]
+    if not pointers:
+        return base
+    for operation in world.operations:
+        if not operation.has("buffer") or not operation.has("ring"):
+            continue
+        probe.back()
+        for start in pointers:
+            world.memory.write(start.object + start.path, 0)
+        arguments = tuple(_set_up_argument(world, item.role, item.to, item.path) for item in operation.parameters)
+        made = WitnessCall(operation.function.identity, arguments)
+        if _runs(world, made) and _points(world, pointers):
+            probe.start = world.save()
+            return replace(base, calls=(made,))
+    probe.back()
+    return base
+
+
+def _set_up_argument(world: World, role: str, to: str, path: str) -> Value:
+    match role:
+        case "ring":
+            return Reference(to, 0, path)
+        case "buffer":
+            return Reference(STORAGE)
+        case "thing":
+            return Reference(path)
+        case "null":
+            return None
+    return world.slots
+
+
+def _runs(world: World, made: WitnessCall) -> bool:
+    values = [pointed(world.group.program, world.memory, item) for item in made.arguments]
+    outcome = run_program(
+        world.group.program, made.function, values, lambda name, given: 0, steps=5000, memory=world.memory
+    )
+    return outcome.kind == "returned"
+
+
+def _points(world: World, pointers: Sequence[Any]) -> bool:
+    """Whether the ring is set up as it is to be: its pointer at the storage, its bound the number of slots."""
+    for start in world.base.start:
+        if start.object in (GIVEN, TAKEN):
+            continue
+        value = world.memory.read(start.object + start.path)
+        if start.value == Reference(STORAGE):
+            if not (isinstance(value, tuple) and value[0] is world.storage and value[1] == 0):
+                return False
+        elif value != start.value:
+            return False
+    return True
+
+
+# --------------------------------------------------------------------------------------------------- classification
+
+
+def _classify(search: Search) -> None:
+    """Find out what each operation does; report what a put does on a full ring if that is wrong."""
+    probe = search.probe
+    found = puts(probe)
+    probe.uses.extend(found)
+    for put in found:
+        for take in takes(probe, put):
+            probe.uses.append(take)
+        if any(use.kind == "take" for use in probe.uses):
+            search.put = put
+            break
+    search.take = next((use for use in probe.uses if use.kind == "take"), None)
+    if search.put is None or search.take is None:
+        return
+    search.take = _checked_take(search, search.take)
+    kept: list[Use] = []
+    for put in found:
+        known = designed(probe, put, search.take)
+        if known is None:
+            continue
+        use, held, given = known
+        use = _checked_put(search, use, held, given)
+        kept.append(use)
+    if not kept:
+        search.put = None
+        return
+    search.room = max(use.room for use in kept)
+    if search.room < search.world.slots - 1:
+        if not search.found:
+            search.put = None
+        return
+    search.put = next((use for use in kept if use.operation == search.put.operation), kept[0])
+    more = [use for use in probe.uses if use.kind == "take"]
+    more.extend(others(probe, search.put, search.take))
+    more = [_checked_take(search, use) if use.kind in ("take", "drop") else use for use in more]
+    search.uses = [*kept, *(_told(search, use) for use in more)]
+    _ranges(search)
+
+
+def _ranges(search: Search) -> None:
+    """The range that each index keeps in plain use: round the ring twice, then full. None for free-running ones."""
+    world, put, take = search.world, search.put, search.take
+    assert put is not None and take is not None
+    search.probe.back()
+    seen = [world.values()]
+    turns = 2 * world.slots + 1
+    for number in range(turns):
+        call(world, put.operation, put.way, search.probe.purse, token=number)
+        seen.append(world.values())
+        call(world, take.operation, take.way, search.probe.purse)
+        seen.append(world.values())
+    free = [
+        old if isinstance(old, int) and isinstance(new, int) and new - old == turns else None
+        for old, new in zip(seen[0], seen[-1], strict=True)
+    ]
+    for number in range(search.room):
+        call(world, put.operation, put.way, search.probe.purse, token=number)
+        seen.append(world.values())
+    ranges: list[tuple[int, int] | None] = []
+    for at, place in enumerate(world.places):
+        values = [row[at] for row in seen]
+        if free[at] is not None or not all(isinstance(value, int) for value in values):
+            ranges.append(None)
+            continue
+        if not isinstance(world.readers[at][2], IntType):
+            ranges.append(None)
+            continue
+        most = world.slots if place[3] == "count" else world.slots - 1
+        ranges.append((min(0, *values), max(most, *values)))
+    search.ranges = tuple(ranges)
+
+
+def _checked_take(search: Search, use: Use) -> Use:
+    """Whether a take looks itself if there is something: it says no on the empty ring."""
+    probe = search.probe
+    probe.back()
+    effect = call(search.world, use.operation, use.way, probe.purse, number=1)
+    if effect.refused:
+        return replace(use, checked=True)
+    assert search.put is not None
+    tests = occupancy_tests(probe, use.operation)
+    probe.back()
+    events: list[Event] = []
+    call(search.world, use.operation, use.way, probe.purse, number=1, watch=events)
+    empty = ways_taken(events, tests)
+    call(search.world, search.put.operation, search.put.way, probe.purse)
+    call(search.world, search.put.operation, search.put.way, probe.purse, token=1)
+    events = []
+    call(search.world, use.operation, use.way, probe.purse, number=1, watch=events)
+    return replace(use, checked=bool(empty - ways_taken(events, tests)) and not use.operation.helper)
+
+
+def _checked_put(search: Search, put: Use, held: Sequence[Content], given: Content) -> Use:
+    """Whether a put looks itself if there is room; if it does and spoils the ring all the same, that is reported."""
+    probe, take = search.probe, search.take
+    assert take is not None
+    if put.design == "overwrites" or (put.design == "refuses" and put.room == len(given)):
+        return replace(put, checked=True)
+    tests = occupancy_tests(probe, put.operation)
+    probe.back()
+    before: set[tuple[Position, bool]] = set()
+    at: set[tuple[Position, bool]] = set()
+    run: list[Made] = []
+    state = State(probe.start, (), (), 0)
+    for number in range(put.room + 1):
+        events: list[Event] = []
+        state = State(search.world.save(), given[:number], tuple(run), number)
+        effect = call(search.world, put.operation, put.way, probe.purse, token=number, watch=events)
+        taken = ways_taken(events, tests)
+        if number < put.room:
+            before |= taken
+            run.append(_made(effect, put))
+        else:
+            at = set(taken)
+    notices = bool(at - before) or put.design == "refuses"
+    if put.operation.helper or not notices or put.room + 1 >= len(held) or put.room + 1 > search.world.slots + 1:
+        return replace(put, checked=False, design="unchecked")
+    after = held[put.room + 1]
+    if len(after) == 0 or len(after) < put.room:
+        lost = put.room + 1 - len(after)
+        what = f"{put.name} on a ring that holds {put.room} elements loses {lost} of {put.room + 1}"
+        _content(search, state, put, "room", what, given[: put.room + 1], after, token=put.room)
+    else:
+        what = f"{put.name} on a ring that holds {put.room} elements leaves them in another order"
+        doubt: Doubt = "room" if put.room >= search.world.slots - 1 and put.design == "refuses" else "order"
+        _content(search, state, put, doubt, what, given[1 : put.room + 1], after, token=put.room)
+    return replace(put, checked=False, design="unchecked")
+
+
+def _told(search: Search, use: Use) -> Use:
+    """What a result tells, by its values while the ring is filled from its start."""
+    probe, put, take = search.probe, search.put, search.take
+    assert put is not None and take is not None
+    if use.kind == "drop" and use.numbered:
+        return _counting(search, use)
+    if use.kind != "tell":
+        return use
+    probe.back()
+    results: list[int] = []
+    for number in range(search.room + 1):
+        state = search.world.save()
+        effect = call(search.world, use.operation, use.way, probe.purse)
+        search.world.load(state)
+        if not effect.returned or not isinstance(effect.outcome.value, int):
+            return use
+        results.append(effect.outcome.value)
+        if number < search.room:
+            call(search.world, put.operation, put.way, probe.purse, token=number)
+    room = search.room
+    levels = range(room + 1)
+    shapes: dict[str, list[int]] = {
+        "held": list(levels),
+        "free": [room - level for level in levels],
+        "left": [search.world.slots - level for level in levels],
+    }
+    for name, values in shapes.items():
+        if results == values:
+            return replace(use, tells=name)
+    flags = [bool(item) for item in results]
+    if len(set(results)) <= 2:
+        for name, wanted in (
+            ("empty", [level == 0 for level in levels]),
+            ("some", [level > 0 for level in levels]),
+            ("full", [level == room for level in levels]),
+            ("not full", [level < room for level in levels]),
+        ):
+            if flags == wanted:
+                return replace(use, tells=name)
+    return use
+
+
+def _counting(search: Search, use: Use) -> Use:
+    """Whether a drop's result is the number of elements dropped, as two plain calls show it."""
+    put = search.put
+    assert put is not None
+    for number in (1, 2):
+        search.probe.back()
+        for token in range(min(3, search.room)):
+            call(search.world, put.operation, put.way, search.probe.purse, token=token)
+        effect = call(search.world, use.operation, use.way, search.probe.purse, number=number)
+        if not effect.returned or effect.outcome.value != number:
+            return use
+    return replace(use, counts=True)
+
+
+# ------------------------------------------------------------------------------------------------------------ search
+
+
+def _search(search: Search, first: State) -> None:
+    """Breadth first over the states that the uses lead to; large rings only along plain ways."""
+    world = search.world
+    if world.slots > SMALL:
+        for state in _plain_ways(search, first):
+            _look_round(search, state)
+            if search.spent:
+                return
+        return
+    seen = {_key(search, first)}
+    pending = deque((first,))
+    while pending and not search.spent:
+        state = pending.popleft()
+        for after in _look_round(search, state):
+            key = _key(search, after)
+            if key not in seen:
+                seen.add(key)
+                pending.append(after)
+
+
+def _key(search: Search, state: State) -> Any:
+    """What makes two states the same: all the functions can see, with elements as their places in the queue."""
+    world = search.world
+    slots: list[int] = []
+    if world.storage is not None:
+        for value in world.contents():
+            slots.append(state.held.index(value) if value in state.held else -1)
+    parts = []
+    for cells in dict.fromkeys((*world.kept, *world.memory.others)):
+        if cells is world.storage:
+            size = world.slots * world.element
+            parts.append(bytes(cells.data[: world.offset]) + bytes(cells.data[world.offset + size :]))
+        elif cells.name not in (GIVEN, TAKEN):
+            parts.append(bytes(cells.data))
+    return tuple(slots), len(state.held), tuple(parts)
+
+
+def _plain_ways(search: Search, first: State) -> Iterator[State]:
+    """States of a large ring: the queue walks round some slots, is filled, emptied in part and filled again."""
+    put, take = search.put, search.take
+    assert put is not None and take is not None
+    slots, room = search.world.slots, search.room
+    for lead in dict.fromkeys((0, slots - 2, slots // 2)):
+        state: State | None = first
+        for _ in range(lead):
+            state = state and _put(search, state, put, deep=False)
+            state = state and _take(search, state, take, deep=False)
+        for level in range(room):
+            if state is not None and level in (0, 1, 2, room - 2, room - 1):
+                yield state
+            state = state and _put(search, state, put, deep=False)
+        if state is None:
+            continue
+        yield state
+        for _ in range(room):
+            state = state and _take(search, state, take, deep=False)
+        if state is not None:
+            yield state
+    state = first
+    for _ in range(2 * slots + 2):
+        state = state and _put(search, state, put, deep=False)
+        state = state and _take(search, state, take, deep=False)
+        if state is None or search.spent:
+            return
+
+
+def _look_round(search: Search, state: State) -> list[State]:
+    """Try every use from a state; the states that come of it, without those after a disagreement."""
+    found: list[State] = []
+    for use in search.uses:
+        if search.spent or (state.suspect is not None and ("out of range", state.suspect.function) in search.found):
+            break
+        match use.kind:
+            case "put":
+                after = _put(search, state, use, deep=True)
+                found.extend(() if after is None else (after,))
+            case "take":
+                after = _take(search, state, use, deep=True)
+                found.extend(() if after is None else (after,))
+            case "drop" | "clear":
+                found.extend(_dropped(search, state, use))
+            case "look":
+                _look(search, state, use)
+            case "tell":
+                _tell(search, state, use)
+    return found
+
+
+def _call(search: Search, state: State, use: Use, **given: Any) -> Effect:
+    search.world.load(state.saved)
+    return call(search.world, use.operation, use.way, search.probe.purse, token=state.token, **given)
+
+
+def _fault(search: Search, state: State, use: Use, effect: Effect, **given: Any) -> bool:
+    """Report an access outside the storage; True if the call did not return."""
+    if effect.returned:
+        return False
+    if about_storage(search.world, effect):
+        outcome = effect.outcome
+        assert outcome.position is not None
+        doubt: Doubt = "overflow" if search.overflow else "below zero" if below(effect) else "past end"
+        ending = Ending("undefined", search.origin(outcome.position), outcome.fault)
+        what = f"{use.name} leaves the storage: {outcome.reason}"
+        _report(search, state, use.operation, effect, doubt, what, outcome.position, outcome.function, ending)
+    return True
+
+
+def _put(search: Search, state: State, use: Use, *, deep: bool) -> State | None:
+    if len(state.held) >= search.room and not (use.checked and not use.operation.helper):
+        return None
+    effect = _call(search, state, use)
+    if _fault(search, state, use, effect) or effect.refused or len(effect.stored) > 1:
+        return None
+    value = effect.stored[0][1] if effect.stored else search.world.tokens[state.token % len(search.world.tokens)]
+    whole = (*state.held, value)
+    saved = search.world.save()
+    if not deep and (use.design != "overwrites" or len(whole) <= search.room):
+        return _after(search, state, use, effect, saved, whole, 1)
+    assert search.take is not None
+    now, _ = drained(search.probe, search.take, _most(search, state, 1))
+    if not after_put(now, state.held, (value,), use.design, search.room) or (
+        use.design == "refuses" and len(whole) > search.room
+    ):
+        full = len(state.held) >= search.room
+        what = f"after {use.name} the ring gives {_shown(now)} where {_shown(whole)} is due"
+        _content(search, state, use, "room" if full else "order", what, whole, now, token=state.token)
+        return None
+    return _after(search, state, use, effect, saved, now, 1)
+
+
+def _after(
+    search: Search, state: State, use: Use, effect: Effect, saved: Any, held: Content, given: int, **more: Any
+) -> State:
+    """The state after a call that went well; it is suspect if an index is out of the range that plain use keeps."""
+    suspect = state.suspect
+    if suspect is None:
+        for at, (limits, value) in enumerate(zip(search.ranges, effect.after, strict=False)):
+            if limits is not None and isinstance(value, int) and not limits[0] <= value <= limits[1]:
+                position, function = _index_store(search, state, use, more)
+                what = f"{use.name} leaves {search.world.places[at][0]} at {value}"
+                suspect = Suspect(position, function, f"{what}; its range is {limits[0]} to {limits[1]}")
+                break
+    return State(saved, held, (*state.run, _made(effect, use)), state.token + given, suspect)
+
+
+def _most(search: Search, state: State, more: int) -> int:
+    """How many elements are drained: all there may be, or as many as there should be if the take does not look."""
+    assert search.take is not None
+    due = len(state.held) + more
+    return due + search.world.slots + 2 if search.take.checked else max(0, due)
+
+
+def _take(search: Search, state: State, use: Use, *, deep: bool) -> State | None:
+    if not state.held:
+        if not use.checked or use.operation.helper:
+            return None
+        effect = _call(search, state, use)
+        if _fault(search, state, use, effect) or effect.refused:
+            return None
+        what = f"{use.name} on an empty ring moves an index: {_moved(search, effect)}"
+        _index_report(search, state, use, effect, "data", what)
+        return None
+    effect = _call(search, state, use)
+    if _fault(search, state, use, effect):
+        return None
+    out = effect.outputs.get(use.channel, ())
+    if effect.refused or out[:1] != state.held[:1]:
+        due = state.held[0]
+        got = "nothing" if effect.refused else str(out[0]) if out else "nothing"
+        what = f"{use.name} gives {got} where {due} is due: {len(state.held)} elements are stored"
+        doubt: Doubt = "overflow" if search.overflow else "order"
+        _output_report(search, state, use, effect, doubt, what, due)
+        return None
+    saved = search.world.save()
+    rest = state.held[1:]
+    if deep:
+        assert search.take is not None
+        now, _ = drained(search.probe, search.take, _most(search, state, -1))
+        if now != rest:
+            what = f"after {use.name} the ring gives {_shown(now)} where {_shown(rest)} is due"
+            _content(search, state, use, "order", what, rest, now)
+            return None
+    return _after(search, state, use, effect, saved, rest, 0)
+
+
+def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
+    """The states after a drop of each number of elements, or after a clear."""
+    guarded = not use.checked or use.operation.helper
+    numbers = [0]
+    if use.kind == "drop":
+        numbers = [1, len(state.held), len(state.held) + 1] if use.numbered else [1]
+    for number in dict.fromkeys(numbers):
+        if use.kind == "drop" and (number == 0 or (number > len(state.held) and (guarded or not use.numbered))):
+            continue
+        if use.kind == "drop" and not state.held and guarded:
+            continue
+        effect = _call(search, state, use, number=number)
+        if _fault(search, state, use, effect) or effect.refused or not effect.returned:
+            continue
+        saved = search.world.save()
+        assert search.take is not None
+        rest = () if use.kind == "clear" else state.held[number:]
+        now, _ = drained(search.probe, search.take, _most(search, state, 0))
+        if not search.take.checked:
+            now = now[: len(rest)]
+        if now != rest and not (number > len(state.held) and is_slice(now, state.held)):
+            told = f"{use.name}({number})" if use.numbered else use.name
+            what = f"after {told} the ring gives {_shown(now)} where {_shown(rest)} is due"
+            doubt: Doubt = "data" if number > len(state.held) else "order"
+            _content(search, state, use, doubt, what, rest, now, number=number)
+            continue
+        if use.counts and effect.outcome.value != min(number, len(state.held)):
+            due = min(number, len(state.held))
+            what = f"{use.name}({number}) drops {due} elements and returns {effect.outcome.value}"
+            place = _return_place(search, state, use, number=number)
+            ending = Ending("result", place, None, "", str(effect.outcome.value), str(due))
+            at = _return_position(search, state, use, number=number)
+            _report(search, state, use.operation, effect, "occupancy", what, at, use.name, ending)
+            continue
+        yield _after(search, state, use, effect, saved, now, 0, number=number)
+
+
+def _look(search: Search, state: State, use: Use) -> None:
+    if not state.held:
+        return
+    effect = _call(search, state, use)
+    if _fault(search, state, use, effect):
+        return
+    out = effect.outputs.get(use.channel, ())
+    if out[:1] != state.held[:1]:
+        what = f"{use.name} gives {out[0] if out else 'nothing'} where {state.held[0]} comes next"
+        _output_report(search, state, use, effect, "order", what, state.held[0])
+
+
+def _tell(search: Search, state: State, use: Use) -> None:
+    if not use.tells:
+        return
+    effect = _call(search, state, use)
+    if _fault(search, state, use, effect) or not isinstance(effect.outcome.value, int):
+        return
+    found, level, room = effect.outcome.value, len(state.held), search.room
+    due = {
+        "held": level,
+        "free": room - level,
+        "left": search.world.slots - level,
+        "empty": level == 0,
+        "some": level > 0,
+        "full": level == room,
+        "not full": level < room,
+    }[use.tells]
+    if isinstance(due, bool):
+        if bool(found) == due or (use.tells in ("full", "not full") and level > room):
+            return
+    elif found == due or linear(found, due, _first_slot(search, state, use.tells), search.world.slots):
+        return
+    words = {
+        "held": f"{level} elements are stored",
+        "free": f"there is room for {due} more",
+        "left": f"there is room for {due} more",
+    }.get(use.tells, f"{level} elements are stored and there is room for {room - level}")
+    what = f"{use.name} returns {found}; {words}"
+    ending = Ending("result", _return_place(search, state, use), None, "", str(found), str(int(due)))
+    position = _return_position(search, state, use)
+    _report(search, state, use.operation, effect, "occupancy", what, position, use.name, ending)
+
+
+def _first_slot(search: Search, state: State, tells: str) -> int | None:
+    """The slot of the oldest element, or the one after the newest, as far as the elements' bytes show it."""
+    contents = search.world.contents()
+    if not state.held:
+        return None
+    wanted = state.held[0] if tells == "held" else state.held[-1]
+    places = [slot for slot, value in enumerate(contents) if value == wanted]
+    if len(places) != 1:
+        return None
+    return places[0] if tells == "held" else (places[0] + 1) % search.world.slots
+
+
+# ------------------------------------------------------------------------------------------------------ near overflow
+
+
+def _near_overflow(search: Search) -> None:
+    """Search again from counters just before their overflow, if the ring's counters never come back otherwise."""
+    world, put, take = search.world, search.put, search.take
+    if search.found or search.spent or put is None or take is None:
+        return
+    turns = 2 * world.slots + 1
+    search.probe.back()
+    before = world.values()
+    for number in range(turns):
+        call(world, put.operation, put.way, search.probe.purse, token=number)
+        call(world, take.operation, take.way, search.probe.purse)
+    after = world.values()
+    free: list[tuple[int, IntType]] = []
+    for at, (old, new) in enumerate(zip(before, after, strict=True)):
+        type_ = world.readers[at][2]
+        if isinstance(old, int) and isinstance(new, int) and isinstance(type_, IntType):
+            if new - old == turns and type_.width <= 32:
+                free.append((at, type_))
+    if len(free) != 2 or free[0][1].high != free[1][1].high:
+        return
+    start = free[0][1].high - NEAR_END
+    if world.slots & (world.slots - 1) and world.ring.capacity is None:
+        return
+    search.probe.back()
+    extra = []
+    for at, _ in free:
+        _, name, path, _ = world.places[at]
+        world.memory.write(name + path, start)
+        extra.append((name, path))
+    # The values are reached by as many puts and takes; the ring's own set-up call would undo them.
+    fixed = tuple(StartValue(name, path, start) for name, path in extra)
+    kept = tuple(item for item in search.base.start if (item.object, item.path) not in extra)
+    said = f"{start} elements have been put in and taken out before"
+    search.base = replace(search.base, start=(*kept, *fixed), calls=(), assumed=(*search.base.assumed, said))
+    search.overflow = True
+    _search(search, State(world.save(), (), (), 0))
+
+
+# ----------------------------------------------------------------------------------------------------------- reporting
+
+
+def _made(effect: Effect, use: Use) -> Made:
+    return Made(effect.call, use.name, effect.after, _result_text(effect))
+
+
+def _shown(held: Sequence[int]) -> str:
+    if not held:
+        return "nothing"
+    shown = ", ".join(map(str, held[:8]))
+    return shown + (f" and {len(held) - 8} more" if len(held) > 8 else "")
+
+
+def _moved(search: Search, effect: Effect) -> str:
+    parts = [
+        f"{place[0]} goes from {old} to {new}"
+        for place, old, new in zip(search.world.places, effect.before, effect.after, strict=True)
+        if old != new
+    ]
+    return " and ".join(parts) or "a slot is cleared"
+
+
+def _events(search: Search, state: State, use: Use, given: dict[str, Any]) -> list[Event]:
+    events: list[Event] = []
+    search.world.load(state.saved)
+    given = {"token": state.token, **given}
+    call(search.world, use.operation, use.way, search.probe.purse, watch=events, **given)
+    return events
+
+
+def _index_store(search: Search, state: State, use: Use, given: dict[str, Any]) -> tuple[Position, str]:
+    """The place of the last store into an index, and its function; else the function's own place."""
+    names = {place[0] for place in search.world.places}
+    for event in reversed(_events(search, state, use, given)):
+        if event.kind == "store" and event.text.replace("->", ".").rsplit(".", 1)[-1] in names:
+            return event.position, event.function
+    return use.operation.function.position, use.name
+
+
+def _return_position(search: Search, state: State, use: Use, **given: Any) -> Position:
+    for event in reversed(_events(search, state, use, given)):
+        if event.kind == "return" and event.function == use.name:
+            return event.position
+    return use.operation.function.position
+
+
+def _return_place(search: Search, state: State, use: Use, **given: Any) -> Origin:
+    return search.origin(_return_position(search, state, use, **given))
+
+
+def _output_report(search: Search, state: State, use: Use, effect: Effect, doubt: Doubt, what: str, due: int) -> None:
+    """A call that gives another element than is due."""
+    position, function = _index_store(search, state, use, {})
+    if function == use.name and effect.before == effect.after:
+        position = _return_position(search, state, use)
+    ending = _output_ending(search, use, effect, due, search.origin(position))
+    _report(search, state, use.operation, effect, doubt, what, position, function, ending)
+
+
+def _output_ending(search: Search, use: Use, effect: Effect, due: int, where: Origin) -> Ending:
+    if use.channel == "result" and isinstance(effect.outcome.value, int):
+        return Ending("result", where, None, "", str(effect.outcome.value), str(due))
+    if use.channel == "buffer" and search.world.element <= 2:
+        out = effect.outputs.get("buffer", ())
+        return Ending("value", where, None, f"{TAKEN}[0]", str(out[0] if out else 0), str(due))
+    return _index_ending(search, effect, where, f"where the call hands out {due}")
+
+
+def _index_ending(search: Search, effect: Effect, where: Origin, due: str) -> Ending:
+    """An ending by the index that moved, or by the first one."""
+    moved = [at for at, (old, new) in enumerate(zip(effect.before, effect.after, strict=True)) if old != new]
+    at = moved[0] if moved else 0
+    _, name, path, _ = search.world.places[at]
+    value = effect.after[at]
+    type_ = search.world.readers[at][2]
+    if not isinstance(type_, IntType):
+        return Ending("value", where, None, name + path, f"&{STORAGE}" + (f" + {value} bytes" if value else ""), due)
+    return Ending("value", where, None, name + path, str(value), due)
+
+
+def _index_report(search: Search, state: State, use: Use, effect: Effect, doubt: Doubt, what: str) -> None:
+    position, function = _index_store(search, state, use, {})
+    at = next((n for n, (old, new) in enumerate(zip(effect.before, effect.after, strict=True)) if old != new), 0)
+    ending = _index_ending(search, effect, search.origin(position), str(effect.before[at]))
+    _report(search, state, use.operation, effect, doubt, what, position, function, ending)
+
+
+def _content(
+    search: Search,
+    state: State,
+    use: Use,
+    doubt: Doubt,
+    what: str,
+    due: Content,
+    now: Content,
+    **given: Any,
+) -> None:
+    """What the ring holds after a call is not what is due: shown by taking out up to the first wrong element."""
+    if search.overflow:
+        doubt = "overflow"
+    take = search.take
+    assert take is not None
+    position, function = _index_store(search, state, use, given)
+    search.world.load(state.saved)
+    full = {"token": state.token, **given}
+    effect = call(search.world, use.operation, use.way, search.probe.purse, **full)
+    run = (*state.run, _made(effect, use))
+    place = search.origin(position)
+    for number in range(len(due) + search.world.slots + 2):
+        last = call(search.world, take.operation, take.way, search.probe.purse)
+        out = last.outputs.get(take.channel, ())[:1]
+        wanted = due[number : number + 1]
+        if last.refused and not wanted:
+            break
+        if last.refused or out != wanted:
+            ending = (
+                _output_ending(search, take, last, wanted[0], place)
+                if wanted
+                else _index_ending(search, last, place, "unchanged, the ring being empty")
+            )
+            after = State(None, due, run, state.token, state.suspect)
+            _report(search, after, take.operation, last, doubt, what, position, function, ending)
+            return
+        run = (*run, _made(last, take))
+
+
+def _report(
+    search: Search,
+    state: State,
+    operation: Operation,
+    effect: Effect,
+    doubt: Doubt,
+    what: str,
+    position: Position,
+    function: str,
+    ending: Ending,
+) -> None:
+    """Keep a disagreement if its witness, run from nothing, ends as it says."""
+    if state.suspect is not None:
+        doubt, position, function = "out of range", state.suspect.position, state.suspect.function
+        what = f"{state.suspect.what}; then {what}"
+        ending = replace(ending, where=ending.where if ending.kind == "undefined" else search.origin(position))
+    mark = (doubt, function)
+    if mark in search.found:
+        return
+    last = Made(effect.call, operation.function.name, effect.after, _result_text(effect))
+    run = (*state.run, last)
+    base = search.base
+    calls = (*base.calls, *(item.call for item in run))
+    witness = _trimmed(replace(base, calls=calls, ending=ending))
+    done = replay(search.world.group.program, witness, origin=search.origin)
+    if not done.held:
+        return
+    steps = _steps(search, run, ending)
+    where = search.origin(position)
+    search.found[mark] = Disagreement(doubt, where, function, what, witness, steps)
+
+
+def _result_text(effect: Effect) -> str:
+    value = effect.outcome.value
+    return str(value) if isinstance(value, int) else ""
+
+
+def _trimmed(witness: Witness) -> Witness:
+    """The witness without objects that no call or start value mentions, and without elements that are not given."""
+    named = {item.to for call_ in witness.calls for item in call_.arguments if isinstance(item, Reference)}
+    named |= {item.value.to for item in witness.start if isinstance(item.value, Reference)}
+    named |= {item.object for item in witness.start if item.object not in (GIVEN, TAKEN)}
+    used = [item for call_ in witness.calls for item in call_.arguments if isinstance(item, Reference)]
+    end = max((item.at for item in used if item.to == GIVEN), default=-1) + 16
+    start = tuple(
+        item for item in witness.start if item.object != GIVEN or (GIVEN in named and int(item.path.strip("[]")) < end)
+    )
+    return replace(witness, made=tuple(item for item in witness.made if item.name in named), start=start)
+
+
+def _steps(search: Search, run: Sequence[Made], ending: Ending) -> tuple[OrbitStep, ...]:
+    """The calls with the indices' values after each; the middle of a long run left out."""
+    shown: list[OrbitStep] = []
+    skipped = len(run) - SHOWN
+    for number, item in enumerate(run):
+        if skipped > 1 and 3 <= number < 3 + skipped:
+            continue
+        text = _call_text(search, item)
+        if skipped > 1 and number == 3 + skipped:
+            text += f" (after {skipped} more calls)"
+        function = search.world.group.functions[item.call.function]
+        where = search.origin(function.position) if number < len(run) - 1 else ending.where
+        names = (place[0] for place in search.world.places)
+        values = tuple((name, str(value)) for name, value in zip(names, item.values, strict=True))
+        shown.append(OrbitStep(where, text, values))
+    return tuple(shown)
+
+
+def _call_text(search: Search, item: Made) -> str:
+    parts = [_value_text(search, value) for value in item.call.arguments]
+    given = ", ".join(f"{value.name} gives {value.value}" for value in item.call.outside[:3])
+    text = f"{item.name}({', '.join(parts)})"
+    if item.result:
+        text += f" returns {item.result}"
+    return text + (f"; {given}" if given else "")
+
+
+def _value_text(search: Search, value: Value) -> str:
+    if value is None:
+        return "NULL"
+    if isinstance(value, Reference):
+        name = value.to.rsplit(":", 1)[-1]
+        if value.to == GIVEN:
+            parts = 1 if search.world.element <= 2 else search.world.element
+            return f"element {search.world.tokens[value.at // parts]}"
+        return f"&{name}{value.path}"
+    return str(value)

@@ -1,0 +1,372 @@
+"""What each function of a ring does, found by calling it: puts, takes, looks, drops, clears, tells.
+
+Names say little and behaviour says all: an operation that stores what it is given into one slot and moves an index is a
+put; one that hands out the oldest element and moves an index is a take. Each kind is asked of the ring in a state that
+is beyond doubt: as it starts, or with a few elements in it.
+"""
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field, replace
+from typing import Any, Literal, TypeAlias
+
+from stepring.meaning.types import (
+    Assign,
+    Binary,
+    Branch,
+    Call,
+    Cast,
+    Expr,
+    FunctionName,
+    IntType,
+    Load,
+    PointerDistance,
+    Return,
+    Unary,
+    VariablePlace,
+)
+from stepring.paths.types import Event
+from stepring.places import Position
+from stepring.shapes.ring_calls import Effect, Policy, Purse, Way, call
+from stepring.shapes.ring_ideal import Content, Design, design_of, room_of
+from stepring.shapes.ring_keys import place_keys
+from stepring.shapes.ring_world import Group, Operation, World, called
+
+Kind: TypeAlias = Literal["put", "take", "look", "drop", "clear", "tell"]
+PLAIN = Way()
+POLICIES: tuple[Policy, ...] = ("zero", "one", "once")
+
+
+@dataclass(frozen=True, slots=True)
+class Use:
+    """An operation and what it does.
+
+    ``bulk``: it moves as many elements as its length says; ``numbered``: it drops as many as its number says.
+    ``channel`` is where a take's or look's elements come out. ``design`` and ``room`` belong to a put. ``checked``: it
+    looks at what the ring holds before (or after) it works, so that no caller need do it. ``tells`` names what a result
+    tells: ``held``, ``free``, ``empty``, ``some``, ``full``, ``room`` (not full); ``counts``: the result is the number
+    of elements moved.
+    """
+
+    operation: Operation
+    kind: Kind
+    way: Way = PLAIN
+    bulk: bool = False
+    numbered: bool = False
+    channel: str = ""
+    design: Design = "unchecked"
+    room: int = 0
+    checked: bool = False
+    tells: str = ""
+    counts: bool = False
+
+    @property
+    def name(self) -> str:
+        return self.operation.function.name
+
+
+@dataclass(slots=True, eq=False)
+class Probe:
+    """A world and its start, to which every probe goes back."""
+
+    world: World
+    purse: Purse
+    start: Any
+    uses: list[Use] = field(default_factory=list)
+    tests: dict[str, frozenset[Position]] = field(default_factory=dict)
+
+    def back(self) -> None:
+        self.world.load(self.start)
+
+
+# ------------------------------------------------------------------------------------------------------------- puts
+
+
+def puts(probe: Probe) -> list[Use]:
+    """The operations that store one given element and move an index, those that can be entered first."""
+    found: list[Use] = []
+    for operation in sorted(probe.world.operations, key=lambda item: item.helper):
+        use = _as_put(probe, operation)
+        if use is not None:
+            found.append(use)
+    return sorted(found, key=lambda use: (use.operation.helper, use.bulk))
+
+
+def _as_put(probe: Probe, operation: Operation) -> Use | None:
+    item = operation.has("value") or operation.has("buffer")
+    policies: tuple[Policy, ...] = POLICIES if item else ("token", "token once")
+    for policy in policies:
+        way = Way(policy)
+        one = _stores(probe, operation, way, 0, 1)
+        if one is None or len(one.stored) != 1 or (not item and not one.call.outside):
+            continue
+        other = _stores(probe, operation, way, 1, 1)
+        if other is None or len(other.stored) != 1 or one.stored[0][1] == other.stored[0][1]:
+            continue
+        bulk = False
+        if operation.has("length"):
+            two = _stores(probe, operation, way, 0, 2)
+            bulk = two is not None and len(two.stored) == 2
+        return Use(operation, "put", way, bulk)
+    return None
+
+
+def _stores(probe: Probe, operation: Operation, way: Way, token: int, length: int) -> Effect | None:
+    """The effect of a put on the ring as it starts; None if nothing was put."""
+    probe.back()
+    effect = call(probe.world, operation, way, probe.purse, token=token, length=length)
+    return effect if effect.returned and effect.before != effect.after and effect.stored else None
+
+
+# ------------------------------------------------------------------------------------------------------------- takes
+
+
+def filled(probe: Probe, put: Use, count: int) -> Content | None:
+    """Put some elements into the ring as it starts; what they are in the storage, None if one was refused."""
+    probe.back()
+    held: list[int] = []
+    for number in range(count):
+        effect = call(probe.world, put.operation, put.way, probe.purse, token=number)
+        if not effect.returned or len(effect.stored) != 1:
+            return None
+        held.append(effect.stored[0][1])
+    return tuple(held)
+
+
+def takes(probe: Probe, put: Use) -> list[Use]:
+    """The operations that hand out the oldest element and move an index."""
+    held = filled(probe, put, min(3, probe.world.slots - 1))
+    if held is None:
+        return []
+    state = probe.world.save()
+    found: list[Use] = []
+    mine = {use.operation.function.identity for use in probe.uses if use.kind == "put"}
+    for operation in probe.world.operations:
+        if operation.function.identity in mine or operation.has("value"):
+            continue
+        use = _as_take(probe, operation, state, held)
+        if use is not None:
+            found.append(use)
+    return sorted(found, key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
+
+
+def _as_take(probe: Probe, operation: Operation, state: Any, held: Content) -> Use | None:
+    taking = operation.has("buffer")
+    for policy in POLICIES:
+        way = Way(policy, taking)
+        probe.world.load(state)
+        one = call(probe.world, operation, way, probe.purse)
+        if not one.returned or one.before == one.after or any(new for _, new in one.stored):
+            continue
+        channels = [name for name, values in one.outputs.items() if values == held[:1]]
+        if not channels:
+            continue
+        if len(held) > 1:
+            two = call(probe.world, operation, way, probe.purse)
+            channels = [name for name in channels if two.outputs.get(name) == held[1:2]]
+        if channels:
+            bulk = False
+            if operation.has("length") and len(held) > 1:
+                probe.world.load(state)
+                both = call(probe.world, operation, way, probe.purse, length=2)
+                bulk = both.outputs.get(channels[0]) == held[:2] or len(both.outputs.get(channels[0], ())) == 2
+            return Use(operation, "take", way, bulk, channel=channels[0])
+    return None
+
+
+def drained(probe: Probe, take: Use, most: int) -> tuple[Content, list[Effect]]:
+    """Everything that taking gives from here on, at most so many elements, with the calls; the memory is changed."""
+    held: list[int] = []
+    calls: list[Effect] = []
+    while len(held) < most:
+        effect = call(probe.world, take.operation, take.way, probe.purse)
+        calls.append(effect)
+        if effect.refused or not effect.returned:
+            break
+        held.extend(effect.outputs.get(take.channel, ())[:1] or (-1,))
+    return tuple(held), calls
+
+
+# -------------------------------------------------------------------------------------------------------- other kinds
+
+
+def others(probe: Probe, put: Use, take: Use) -> Iterator[Use]:
+    """What the other operations do, as far as a ring with some elements shows it."""
+    count = min(3, probe.world.slots - 1)
+    held = filled(probe, put, count)
+    if held is None or len(held) < 2:
+        return
+    state = probe.world.save()
+    known = {use.operation.function.identity for use in probe.uses}
+    for operation in probe.world.operations:
+        if operation.function.identity not in known:
+            use = _as_other(probe, operation, state, held, take)
+            if use is not None:
+                yield use
+
+
+def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, take: Use) -> Use | None:
+    numbered = operation.has("value")
+    if operation.has("buffer") and not operation.has("length") and numbered:
+        return None
+    for policy in POLICIES:
+        way = Way(policy, operation.has("buffer"))
+
+        def left(number: int, way: Way = way) -> tuple[Effect, int]:
+            probe.world.load(state)
+            effect = call(probe.world, operation, way, probe.purse, number=number)
+            return effect, len(drained(probe, take, len(held) + probe.world.slots)[0])
+
+        one, rest = left(1)
+        if not one.returned and not one.asserted:
+            continue
+        if one.stored:
+            return None
+        if one.returned and one.before == one.after:
+            same = [name for name, values in one.outputs.items() if values[:1] == held[:1] and name != "result"]
+            if same or one.outputs.get("result", ())[:1] == held[:1]:
+                if _follows(probe, operation, way, state, take, (same or ["result"])[0], held):
+                    return Use(operation, "look", way, channel=(same or ["result"])[0])
+            result = isinstance(operation.function.type.returns, IntType)
+            plain = not numbered and not operation.has("buffer")
+            return Use(operation, "tell", way) if result and plain else None
+        if operation.has("buffer"):
+            return None
+        if not numbered:
+            if not one.returned:
+                continue
+            if rest == 0:
+                return Use(operation, "clear", way)
+            return Use(operation, "drop", way) if rest == len(held) - 1 else None
+        if one.returned and rest == len(held) - 1 and left(2)[1] == len(held) - 2:
+            return Use(operation, "drop", way, numbered=True)
+        every, nothing = left(len(held))
+        if every.returned and every.before != every.after and nothing == 0:
+            return Use(operation, "drop", way, numbered=True)
+        return None
+    return None
+
+
+def _follows(probe: Probe, operation: Operation, way: Way, state: Any, take: Use, channel: str, held: Content) -> bool:
+    """Whether a look gives the next element once the oldest was taken."""
+    probe.world.load(state)
+    call(probe.world, take.operation, take.way, probe.purse)
+    after = call(probe.world, operation, way, probe.purse)
+    return after.outputs.get(channel, ())[:1] == held[1:2]
+
+
+# ------------------------------------------------------------------------------------------------------------ designs
+
+
+def designed(probe: Probe, put: Use, take: Use) -> tuple[Use, tuple[Content, ...], Content] | None:
+    """What a put does on a full ring: the put with its design, what the ring held after each put, and what was put.
+
+    None if not even one element comes out as it went in.
+    """
+    world = probe.world
+    probe.back()
+    held: list[Content] = [()]
+    put_in: list[int] = []
+    refused = False
+    extra = world.slots + 2 if take.checked else 0  # one that does not look gives something for ever
+    for number in range(2 * world.slots + 2):
+        effect = call(world, put.operation, put.way, probe.purse, token=number)
+        if effect.refused:
+            refused = True
+            break
+        if not effect.returned or len(effect.stored) > 1:
+            break
+        given = effect.stored[0][1] if effect.stored else world.tokens[number % len(world.tokens)]
+        put_in.append(given)
+        state = world.save()
+        if world.slots <= 8 or number + 1 in (1, 2) or number >= world.slots - 3:
+            held.append(drained(probe, take, len(put_in) + extra)[0])
+            world.load(state)
+        else:
+            held.append(tuple(put_in))  # looked at when it is nearly full
+        if number >= world.slots + 3 and world.slots > 8:
+            break
+    everything = tuple(put_in)
+    room = room_of(held, everything)
+    if room == 0:
+        return None
+    design: Design = "refuses" if refused else design_of(held, everything, room)
+    return replace(put, design=design, room=room), tuple(held), everything
+
+
+# ------------------------------------------------------------------------------------------------- tests of occupancy
+
+
+def occupancy_tests(probe: Probe, operation: Operation) -> frozenset[Position]:
+    """The branches of an operation (and what it calls) that depend on a count, or on two indices at once."""
+    group, ring = probe.world.group, probe.world.ring
+    indices = {index.key: index.role for index in ring.indices}
+    found: set[Position] = set()
+    for identity in called(group, operation.function.identity):
+        known = probe.tests.get(identity)
+        if known is None:
+            known = probe.tests[identity] = frozenset(_tests(group, identity, indices))
+        found |= known
+    return frozenset(found)
+
+
+def _tests(group: Group, identity: str, indices: Mapping[tuple[str, ...], str]) -> Iterator[Position]:
+    function = group.functions[identity]
+    made_of = _made_of(group, identity, set(indices), 0)
+    for block in function.blocks:
+        end = block.terminator
+        if isinstance(end, Branch):
+            keys = _keys_in(end.condition, made_of) & set(indices)
+            if len(keys) > 1 or any(indices[key] == "count" for key in keys):
+                yield end.position
+
+
+def _made_of(
+    group: Group, identity: str, indices: set[tuple[str, ...]], depth: int
+) -> dict[str, frozenset[tuple[str, ...]]]:
+    """Which indices the local variables of a function are computed from."""
+    function = group.functions[identity]
+    made_of: dict[str, frozenset[tuple[str, ...]]] = {}
+    for _ in range(2):
+        for block in function.blocks:
+            for statement in block.statements:
+                match statement:
+                    case Assign(place=VariablePlace(variable=variable), value=value) if not variable.lasting:
+                        keys = _keys_in(value, made_of) & indices
+                    case Call(callee=FunctionName(name=name), result=VariablePlace(variable=variable)):
+                        keys = frozenset(_told_by(group, name, indices, depth))
+                    case _:
+                        continue
+                made_of[variable.identity] = made_of.get(variable.identity, frozenset()) | keys
+    return made_of
+
+
+def _told_by(group: Group, name: str, indices: set[tuple[str, ...]], depth: int) -> Iterator[tuple[str, ...]]:
+    """The indices that a function's result depends on."""
+    for callee in group.by_name.get(name, ())[:2] if depth < 3 else ():
+        made_of = _made_of(group, callee.identity, indices, depth + 1)
+        for block in callee.blocks:
+            match block.terminator:
+                case Return(value=value) if value is not None:
+                    yield from _keys_in(value, made_of) & indices
+                case Branch(condition=value):
+                    yield from _keys_in(value, made_of) & indices
+
+
+def _keys_in(expr: Expr, made_of: dict[str, frozenset[tuple[str, ...]]]) -> frozenset[tuple[str, ...]]:
+    match expr:
+        case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
+            return made_of.get(variable.identity, frozenset())
+        case Load(place=place):
+            return place_keys(place, "", {})
+        case Unary(operand=operand) | Cast(operand=operand):
+            return _keys_in(operand, made_of)
+        case Binary(left=left, right=right) | PointerDistance(left=left, right=right):
+            return _keys_in(left, made_of) | _keys_in(right, made_of)
+    return frozenset()
+
+
+def ways_taken(events: list[Event], tests: frozenset[Position]) -> frozenset[tuple[Position, bool]]:
+    """Which ways the tests of occupancy went in a run."""
+    return frozenset(
+        (event.position, bool(event.value)) for event in events if event.kind == "branch" and event.position in tests
+    )
