@@ -15,7 +15,7 @@ from stepring.meaning.types import IntType
 from stepring.paths.interpreter import run as run_program
 from stepring.paths.replay import pointed, replay
 from stepring.paths.types import Event
-from stepring.paths.witness import Ending, Reference, StartValue, Value, Witness, WitnessCall
+from stepring.paths.witness import Ending, OutsideValue, Reference, StartValue, Value, Witness, WitnessCall
 from stepring.places import Origin, Position
 from stepring.shapes.ring_calls import Effect, Purse, about_storage, below, call
 from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
@@ -149,9 +149,10 @@ def _set_up(probe: Probe) -> Witness:
             world.memory.write(start.object + start.path, 0)
         arguments = tuple(_set_up_argument(world, item.role, item.to, item.path) for item in operation.parameters)
         made = WitnessCall(operation.function.identity, arguments)
-        if _runs(world, made) and _points(world, pointers):
+        done = _runs(world, made)
+        if done is not None and _points(world, pointers):
             probe.start = world.save()
-            return replace(base, calls=(made,))
+            return replace(base, calls=(done,))
     probe.back()
     return base
 
@@ -169,12 +170,18 @@ def _set_up_argument(world: World, role: str, to: str, path: str) -> Value:
     return world.slots
 
 
-def _runs(world: World, made: WitnessCall) -> bool:
+def _runs(world: World, made: WitnessCall) -> WitnessCall | None:
+    """The call with what it asks from outside (always 0); None if it does not return."""
+    asked: list[OutsideValue] = []
+
+    def external(name: str, given: Sequence[Any]) -> int:
+        if name in world.group.wanted:
+            asked.append(OutsideValue(name, 0))
+        return 0
+
     values = [pointed(world.group.program, world.memory, item) for item in made.arguments]
-    outcome = run_program(
-        world.group.program, made.function, values, lambda name, given: 0, steps=5000, memory=world.memory
-    )
-    return outcome.kind == "returned"
+    outcome = run_program(world.group.program, made.function, values, external, steps=5000, memory=world.memory)
+    return replace(made, outside=tuple(asked)) if outcome.kind == "returned" else None
 
 
 def _points(world: World, pointers: Sequence[Any]) -> bool:
@@ -207,6 +214,8 @@ def _classify(search: Search) -> None:
             break
     search.take = next((use for use in probe.uses if use.kind == "take"), None)
     if search.put is None or search.take is None:
+        for put in found:
+            _inverted(search, put)
         return
     search.take = _checked_take(search, search.take)
     kept: list[Use] = []
@@ -231,6 +240,33 @@ def _classify(search: Search) -> None:
     more = [_checked_take(search, use) if use.kind in ("take", "drop") else use for use in more]
     search.uses = [*kept, *(_told(search, use) for use in more)]
     _ranges(search)
+
+
+def _inverted(search: Search, put: Use) -> None:
+    """Report what does nothing while elements are stored and moves an index that puts leave alone when none is."""
+    probe, world = search.probe, search.world
+    for operation in world.operations:
+        plain = not (operation.helper or operation.has("value") or operation.has("buffer"))
+        if not plain or operation == put.operation or not occupancy_tests(probe, operation):
+            continue
+        use = Use(operation, "take")
+        probe.back()
+        effect = call(world, operation, use.way, probe.purse)
+        if not effect.returned or effect.before == effect.after or effect.stored:
+            continue
+        probe.back()
+        moved = False
+        quiet = True
+        for number in range(min(3, world.slots - 1)):
+            given = call(world, put.operation, put.way, probe.purse, token=number)
+            pairs = zip(given.before, given.after, effect.before, effect.after, strict=True)
+            moved = moved or any(old != new and start != end for old, new, start, end in pairs)
+            state = world.save()
+            quiet = quiet and call(world, operation, use.way, probe.purse).refused
+            world.load(state)
+        if quiet and not moved:
+            what = f"{use.name} does nothing while elements are stored, and on an empty ring {_moved(search, effect)}"
+            _index_report(search, State(probe.start, (), (), 0), use, effect, "data", what)
 
 
 def _ranges(search: Search) -> None:
@@ -271,7 +307,7 @@ def _checked_take(search: Search, use: Use) -> Use:
     probe = search.probe
     probe.back()
     effect = call(search.world, use.operation, use.way, probe.purse, number=1)
-    if effect.refused:
+    if effect.refused or use.checked:
         return replace(use, checked=True)
     assert search.put is not None
     tests = occupancy_tests(probe, use.operation)
@@ -635,7 +671,7 @@ def _tell(search: Search, state: State, use: Use) -> None:
     if isinstance(due, bool):
         if bool(found) == due or (use.tells in ("full", "not full") and level > room):
             return
-    elif found == due or linear(found, due, _first_slot(search, state, use.tells), search.world.slots):
+    elif found == due or _part(search, effect, found, due):
         return
     words = {
         "held": f"{level} elements are stored",
@@ -648,16 +684,10 @@ def _tell(search: Search, state: State, use: Use) -> None:
     _report(search, state, use.operation, effect, "occupancy", what, position, use.name, ending)
 
 
-def _first_slot(search: Search, state: State, tells: str) -> int | None:
-    """The slot of the oldest element, or the one after the newest, as far as the elements' bytes show it."""
-    contents = search.world.contents()
-    if not state.held:
-        return None
-    wanted = state.held[0] if tells == "held" else state.held[-1]
-    places = [slot for slot, value in enumerate(contents) if value == wanted]
-    if len(places) != 1:
-        return None
-    return places[0] if tells == "held" else (places[0] + 1) % search.world.slots
+def _part(search: Search, effect: Effect, found: int, true: int) -> bool:
+    """Whether a number tells only the part up to the storage's end, or up to an index."""
+    values = [value for value in effect.after if isinstance(value, int)]
+    return any(linear(found, true, value % search.world.slots, search.world.slots) for value in values)
 
 
 # ------------------------------------------------------------------------------------------------------ near overflow

@@ -241,7 +241,7 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, tak
             return Use(operation, "drop", way, numbered=True)
         every, nothing = left(len(held))
         if every.returned and every.before != every.after and nothing == 0:
-            return Use(operation, "drop", way, numbered=True)
+            return Use(operation, "drop", way, numbered=True, checked=one.asserted)
         return None
     return None
 
