@@ -346,3 +346,100 @@ def test_a_constant_capacity_is_its_own_bound() -> None:
     (ring,) = rings("static uint8_t q[8]; static uint8_t at; void put(uint8_t c) { q[at] = c; at = (at + 1) % 8; }")
     assert ring.bound is not None and (ring.bound.form, ring.bound.text, ring.bound.plus) == ("constant", "8", 8)
     assert ring.struct == "" and ring.functions == ("put",)
+
+
+def test_the_place_of_the_next_element_is_start_plus_count_with_bulk_removal() -> None:
+    (ring,) = rings(
+        """
+        struct feed_log { char *slots; unsigned size, start, held; };
+        static int is_full(const struct feed_log *log) { return log->held == log->size; }
+        static void add(struct feed_log *log, char c) {
+            unsigned at = log->start + log->held++; if (at >= log->size) at -= log->size; log->slots[at] = c; }
+        static char take(struct feed_log *log) {
+            char c = log->slots[log->start]; if (--log->held == 0 || ++log->start == log->size) log->start = 0;
+            return c; }
+        int put(struct feed_log *log, char c)
+        { int lost = -1; if (is_full(log)) lost = take(log); add(log, c); return lost; }
+        int get(struct feed_log *log) { return log->held ? take(log) : -1; }
+        unsigned drop(struct feed_log *log, unsigned n) {
+            if (n > log->held) { n = log->held; log->start = log->held = 0; }
+            else { log->start -= n; log->held -= n; if (log->start > log->size) log->start += log->size; }
+            return n; }
+        """
+    )
+    assert (ring.scheme, {index.name: index.role for index in ring.indices}) == (
+        "count",
+        {"struct feed_log.start": "both", "struct feed_log.held": "count"},
+    )
+    assert ring.bound is not None and ring.bound.text == "struct feed_log.size"
+
+
+def test_a_copy_in_two_parts_stores_with_the_write_index_and_loads_with_the_read_index() -> None:
+    (ring,) = rings(
+        """
+        void *memcpy(void *to, const void *from, unsigned long n);
+        struct feed_log { uint8_t *slots; unsigned size, in, out; };
+        static unsigned used(const struct feed_log *log)
+        { return log->in >= log->out ? log->in - log->out : log->size - (log->out - log->in); }
+        unsigned put(struct feed_log *log, const uint8_t *data, unsigned n) {
+            unsigned room = log->size - 1 - used(log), in = log->in, part;
+            if (n > room) n = room;
+            part = log->size - in < n ? log->size - in : n;
+            memcpy(&log->slots[in], data, part); in += part; n -= part;
+            if (n > 0) { memcpy(log->slots, data + part, n); in = n; }
+            if (in >= log->size) in = 0;
+            log->in = in; return part + n; }
+        unsigned get(struct feed_log *log, uint8_t *data, unsigned n) {
+            unsigned held = used(log), out = log->out, part;
+            if (n > held) n = held;
+            part = log->size - out < n ? log->size - out : n;
+            memcpy(data, &log->slots[out], part); out += part; n -= part;
+            if (n > 0) { memcpy(data + part, log->slots, n); out = n; }
+            if (out >= log->size) out = 0;
+            log->out = out; return part + n; }
+        """
+    )
+    assert {index.name: index.role for index in ring.indices} == {
+        "struct feed_log.in": "write",
+        "struct feed_log.out": "read",
+    }
+    assert ring.bound is not None and ring.bound.text == "struct feed_log.size"
+    assert ring.functions == ("put", "get") and [name.rsplit(":", 1)[-1] for name in ring.helpers] == ["used"]
+
+
+def test_rows_that_are_copied_into_and_out_of_are_a_ring() -> None:
+    (ring,) = rings(
+        """
+        char *strncpy(char *to, const char *from, unsigned long n);
+        static char orders[5][16]; static signed char last;
+        void note(const char *order) { strncpy(orders[last], order, 16); ++last; if (last >= 5) last = 0; }
+        void back(char *order) { --last; if (last > 5) last = 4; strncpy(order, orders[last], 16); }
+        """
+    )
+    assert (ring.storage, ring.capacity, ring.indices[0].role) == ("orders", 5, "both")
+
+
+def test_a_full_test_in_a_helper_counts_as_the_callers() -> None:
+    (ring,) = rings(
+        """
+        struct feed_log { uint8_t *slots; unsigned size, writes, reads; };
+        static int is_full(const struct feed_log *log) { return log->writes - log->reads == log->size; }
+        static int is_empty(const struct feed_log *log) { return log->reads == log->writes; }
+        int put(struct feed_log *log, uint8_t c) {
+            if (!is_full(log)) { log->slots[log->writes++ & (log->size - 1)] = c; return 0; } return -1; }
+        int get(struct feed_log *log) {
+            if (!is_empty(log)) return log->slots[log->reads++ & (log->size - 1)]; return -1; }
+        """
+    )
+    assert (ring.scheme, ring.wrap) == ("difference", "free-running")
+
+
+def test_a_hardware_counter_that_counts_slots_down_from_the_end() -> None:
+    (ring,) = rings(
+        """
+        extern volatile uint8_t arrived; void feed(uint8_t c);
+        static uint8_t from_shore[16]; static uint8_t left = 16;
+        void poll(void) { for (; left != arrived; left--) { if (left == 0) left = 16; feed(from_shore[16 - left]); } }
+        """
+    )
+    assert (ring.storage, ring.capacity, ring.wrap) == ("from_shore", 16, "decrement")

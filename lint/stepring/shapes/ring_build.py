@@ -115,12 +115,10 @@ def _index(
 
 
 def _role(key: Key, uses: Sequence[Use]) -> Role:
-    kinds = {use.touch.kind for use in uses if key in use.cells}
-    if "store" in kinds:
-        return "both" if "load" in kinds else "write"
-    if "load" in kinds:
-        return "read"
-    return "both"
+    touches = [use.touch for use in uses if key in use.cells]
+    stores = any(touch.kind == "store" or touch.copied == "to" for touch in touches)
+    loads = any(touch.kind == "load" or touch.copied == "from" for touch in touches)
+    return "both" if stores == loads else "write" if stores else "read"
 
 
 def _steps(

@@ -353,19 +353,28 @@ def _linear(merged: Catalogue, key: Key, uses: Sequence[Use]) -> bool:
         return False
     if not moves.wraps:
         return False
+    if any(key in use.cells and any(_counts_both_ways(merged, other) for other in use.cells - {key}) for use in uses):
+        return False  # the place of the next element is told by the index and the number of elements
     movers = {item.function for item in moves.advances.values()}
     return any(reset.function in movers and reset.value == 0 for reset in moves.resets.values())
+
+
+def _counts_both_ways(merged: Catalogue, key: Key) -> bool:
+    moves = merged.moves.get(key)
+    return moves is not None and is_scalar(key) and moves.both_ways and not moves.wraps
 
 
 def _borrowed(merged: Catalogue, storage: Key, uses: Sequence[Use]) -> bool:
     """Whether one index only ever lends out rows of text by their address: a set of scratch strings."""
     touch = merged.elements[storage]
-    return isinstance(touch.element, ArrayType) and all(use.touch.kind == "address" for use in uses)
+    lent = all(use.touch.kind == "address" and not use.touch.copied for use in uses)
+    return isinstance(touch.element, ArrayType) and lent
 
 
 def _counts(merged: Catalogue, storage: Key, uses: Sequence[Use], indices: set[Key]) -> list[Key]:
     """The integers that count the occupied slots: up where the ring stores, down where it loads."""
     inside = {use.touch.function for use in uses if use.cells & indices}
+    inside |= {item.function for key in indices for item in merged.moves[key].advances.values()}
     found = []
     for key, moves in merged.moves.items():
         if not is_scalar(key) or moves.wraps or not moves.both_ways:

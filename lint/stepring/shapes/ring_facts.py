@@ -36,6 +36,7 @@ from stepring.shapes.ring_sources import (
     guards_of,
     locals_of,
     mask_term,
+    near,
     sources,
     spread,
     term_of,
@@ -178,7 +179,7 @@ def complete(facts: FlatFacts) -> None:
         if found is not None:
             facts.cells[key] = found
         for _, op in sight.sets[key]:
-            for other in sources(sight, op.value, op.frame) - {key}:
+            for other in (sources(sight, op.value, op.frame) & near(sight, op.value, op.frame, (), True)) - {key}:
                 facts.copied.add((key, other))
                 if (key, other) not in facts.cross:
                     crossing = _cell(sight, key, other)
@@ -229,7 +230,7 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
     for number, op, total, unknown, direct in bare:
         guard = guards.get(number, ())
         sign = 1 if total > 0 else -1
-        if guard and not unknown and (-sign in signs or (abs(total) > 1 and not signs)):
+        if guard and not unknown and abs(total) > 1 and (-sign in signs or not signs):
             for comparison, at in guard:
                 facts.wraps.append(
                     Wrap(

@@ -66,7 +66,8 @@ class Set:
 class Touch:
     """An access to an array (``storage``) at ``subscript``, which counts from where ``pointer`` stands, if given.
 
-    ``indexed``: the subscript is made from a lasting integer.
+    ``indexed``: the subscript is made from a lasting integer. ``copied``: the address is where a copying function
+    stores ``to``, or loads ``from``.
     """
 
     storage: Key
@@ -78,6 +79,7 @@ class Touch:
     position: Position
     function: str
     indexed: bool = False
+    copied: Literal["", "to", "from"] = ""
 
 
 @dataclass(slots=True, eq=False)
@@ -240,10 +242,6 @@ def _called(
 ) -> FlatBlock:
     """A call: the callee's blocks and a block to come back to, or an ``Outside``."""
     name = call.callee.name if isinstance(call.callee, FunctionName) else ""
-    atomic = _atomic(call, name, frame, function.name)
-    if atomic is not None:
-        current.ops.extend(atomic)
-        return current
     body = layout.resolve(function, name) if name else None
     if body is not None and (
         body.identity in stack
@@ -270,34 +268,21 @@ def _called(
             )
         return after
     current.ops.extend(_outside(layout, call, name, frame, body is not None))
-    for argument in call.arguments:
+    copies = name.removeprefix("__builtin_").removeprefix("__").removesuffix("_chk") in COPIES
+    for number, argument in enumerate(call.arguments):
+        kept = (_TARGET if number == 0 else _SOURCE) if copies and number < 2 else _ARGUMENT
         current.ops.append(
-            Set(VariablePlace(_ARGUMENT), frame, argument, frame, call.position, function.name)
+            Set(VariablePlace(kept), frame, argument, frame, call.position, function.name)
         )  # keeps the argument's own subscripts in sight
     return current
 
 
-def _atomic(call: Call, name: str, frame: str, function: str) -> list[FlatOp] | None:
-    """The generic functions of ``<stdatomic.h>`` (7.17.7) and the compilers' own of that kind, as loads and stores."""
-    plain = name.removeprefix("__c11_").removeprefix("__").removesuffix("_explicit").removesuffix("_n")
-    if plain not in ("atomic_load", "atomic_store") or not call.arguments:
-        return None
-    pointer = call.arguments[0]
-    while isinstance(pointer, Cast):
-        pointer = pointer.operand
-    if not isinstance(pointer.type, PointerType):
-        return None
-    place = pointer.place if isinstance(pointer, AddressOf) else DerefPlace(pointer, pointer.type.to, call.position)
-    if plain == "atomic_store":
-        if len(call.arguments) < 2:
-            return None
-        return [Set(place, frame, call.arguments[1], frame, call.position, function)]
-    if call.result is None:
-        return []
-    return [Set(call.result, frame, Load(place, place.type, call.position), frame, call.position, function)]
-
-
 _ARGUMENT = Variable("argument", "<argument>", PointerType(StructType("<argument>"), 0), "temporary")
+_TARGET = replace(_ARGUMENT, identity="<target>")
+_SOURCE = replace(_ARGUMENT, identity="<source>")
+_KEPT = frozenset((_ARGUMENT.identity, _TARGET.identity, _SOURCE.identity))
+COPIES = frozenset(("memcpy", "memmove", "mempcpy", "strcpy", "strncpy", "strlcpy"))
+"""Functions of <string.h> (7.24.2) and of that kind: they store at the first argument what stands at the second."""
 
 
 def _outside(layout: _Layout, call: Call, name: str, frame: str, known: bool) -> Iterator[FlatOp]:
@@ -375,7 +360,7 @@ def _points(blocks: list[FlatBlock], pointers: Points) -> dict[Key, frozenset[Ke
                 continue
             key = ("local", op.place_frame, op.place.variable.identity)
             new = targets(op.value, op.frame, found)
-            if key[2] == _ARGUMENT.identity or new <= found.get(key, NOTHING):
+            if key[2] in _KEPT or new <= found.get(key, NOTHING):
                 continue
             found[key] = found.get(key, NOTHING) | new
             changed = True
@@ -387,9 +372,13 @@ def _points(blocks: list[FlatBlock], pointers: Points) -> dict[Key, frozenset[Ke
 def _with_touches(block: FlatBlock, see: "_Sight") -> Iterator[FlatOp]:
     for op in block.ops:
         if isinstance(op, Set):
-            yield from _touch_values(op.value, _At(see, op.frame, op.position, op.function))
+            kept = op.place.variable.identity if isinstance(op.place, VariablePlace) else ""
+            for touch in _touch_values(op.value, _At(see, op.frame, op.position, op.function)):
+                if kept in (_TARGET.identity, _SOURCE.identity) and touch.kind == "address":
+                    touch.copied = "to" if kept == _TARGET.identity else "from"
+                yield touch
             yield from _touch_places(op.place, "store", _At(see, op.place_frame, op.position, op.function))
-            if isinstance(op.place, VariablePlace) and op.place.variable is _ARGUMENT:
+            if kept in _KEPT:
                 continue
         yield op
     match block.end:

@@ -81,7 +81,7 @@ class Sight:
     sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
     stored: list[Key] = field(default_factory=list)
     order: Order | None = None
-    close: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    close: dict[tuple[Key, bool], frozenset[Key]] = field(default_factory=dict)
     compared: dict[int, Comparison] | None = None
 
 
@@ -176,35 +176,43 @@ def _scaled(expr: Expr) -> bool:
 def use_of(sight: Sight, touch: Touch) -> Use | None:
     cells = _scaled_sources(sight, touch.subscript, touch.frame)
     if cells:
-        cells &= _close(sight, touch.subscript, touch.frame, ())
+        cells &= near(sight, touch.subscript, touch.frame)
+        cells = cells & near(sight, touch.subscript, touch.frame, (), True) or cells
     if not cells:
         return None
     form, modulus, at, term = _reduction(sight, touch.subscript, touch.frame, 0)
     return Use(touch, cells, form, modulus, at, _scaled(touch.subscript), term)
 
 
-def _close(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...]) -> frozenset[Key]:
+def near(
+    sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...] = (), strict: bool = False
+) -> frozenset[Key]:
     """The lasting integers that an expression is near to: their value, or a copy that was stepped or reduced.
 
-    A local that starts from something else and only adds up what came from a lasting integer is not near to it.
+    A local that starts from something else and only adds up what came from a lasting integer is not near to it. With
+    ``strict``, how far two lasting integers are apart is near to neither.
     """
     match expr:
         case Load(place=place):
             found: frozenset[Key] = NOTHING
             for key in place_keys(place, frame, sight.flat.points):
-                found |= _close_local(sight, key, seen) if is_local(key) else frozenset((key,))
+                found |= _close_local(sight, key, seen, strict) if is_local(key) else frozenset((key,))
             return found
         case Cast(operand=operand):
-            return _close(sight, operand, frame, seen)
+            return near(sight, operand, frame, seen, strict)
         case Binary(op="+" | "&" | "*", left=left, right=right):
-            return _close(sight, left, frame, seen) | _close(sight, right, frame, seen)
+            return near(sight, left, frame, seen, strict) | near(sight, right, frame, seen, strict)
+        case Binary(op="-", left=left, right=right) if fold(left) is not None:
+            return near(sight, right, frame, seen, strict)  # slots counted down from the end
+        case Binary(op="-", right=right) if strict and sources(sight, right, frame):
+            return NOTHING  # how far two are apart
         case Binary(op="-" | "%" | "<<", left=left):
-            return _close(sight, left, frame, seen)
+            return near(sight, left, frame, seen, strict)
     return NOTHING
 
 
-def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key]:
-    settled = sight.close.get(key)
+def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...], strict: bool) -> frozenset[Key]:
+    settled = sight.close.get((key, strict))
     if settled is not None or key in seen:
         return settled or NOTHING
     seen = (*seen, key)
@@ -216,8 +224,12 @@ def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key
         if fold(op.value) is not None:
             constants.append((number, op.position))
             continue
-        (steps if key in locals_of(sight, op.value, op.frame) else copies).append(op.position)
-        found |= _close(sight, op.value, op.frame, seen)
+        if key in locals_of(sight, op.value, op.frame):
+            steps.append(op.position)
+            found |= _added(sight, op.value, op.frame, seen, strict)
+        else:
+            copies.append(op.position)
+            found |= near(sight, op.value, op.frame, seen, strict)
     first = min(copies) if copies and not any(step < min(copies) for step in steps) else None
     # A first value that is replaced before anything is done with it does not count.
     numbers = [number for number, at in constants if first is None or at > first]
@@ -232,8 +244,22 @@ def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...]) -> frozenset[Key
                 found = NOTHING
                 break
     if len(seen) == 1:
-        sight.close[key] = found
+        sight.close[key, strict] = found
     return found
+
+
+def _added(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...], strict: bool) -> frozenset[Key]:
+    """What a local's step adds to it, if that is a lasting integer as it stands (``at += count``): a local that says
+    how far to go (``at += part``) is no place, whatever it was made from."""
+    match expr:
+        case Cast(operand=operand):
+            return _added(sight, operand, frame, seen, strict)
+        case Binary(op="+" | "&" | "%", left=left, right=right):
+            return _added(sight, left, frame, seen, strict) | _added(sight, right, frame, seen, strict)
+        case Load(place=place):
+            if not any(is_local(key) for key in place_keys(place, frame, sight.flat.points)):
+                return near(sight, expr, frame, seen, strict)
+    return NOTHING
 
 
 def _reduction(
@@ -251,8 +277,9 @@ def _reduction(
         case Load(place=VariablePlace() as place) if depth < 4:
             for key in place_keys(place, frame, sight.flat.points):
                 sets = sight.sets.get(key, ())
-                if is_local(key) and len(sets) == 1:
-                    op = sets[0][1]
+                made = [op for _, op in sets if fold(op.value) is None]  # besides a constant that says "none"
+                if is_local(key) and len(made) == 1:
+                    op = made[0]
                     form, modulus, at, term = _reduction(sight, op.value, op.frame, depth + 1)
                     return form, modulus, at or op.position, term
     return "none", None, None, None
@@ -341,23 +368,36 @@ def control_order(sight: Sight) -> Order:
 def _comparison(sight: Sight, block: FlatBlock) -> Comparison | None:
     if not isinstance(block.end, Branch):
         return None
-    condition = block.end.condition
-    while True:
-        if isinstance(condition, Cast) or (isinstance(condition, Unary) and condition.op == "!"):
-            condition = condition.operand
-        else:
-            break
+    condition, frame = _told(sight, block.end.condition, block.frame, 0)
     if isinstance(condition, Binary) and condition.op in COMPARISONS:
-        left = sources(sight, condition.left, block.frame)
-        right = sources(sight, condition.right, block.frame)
+        left = sources(sight, condition.left, frame)
+        right = sources(sight, condition.right, frame)
         if not left and not right:
             return None
         constant = fold(condition.right) if left else fold(condition.left)
-        moved = _moved(sight, condition.left, block.frame) or _moved(sight, condition.right, block.frame)
-        terms = (term_of(sight, condition.left, block.frame), term_of(sight, condition.right, block.frame))
+        moved = _moved(sight, condition.left, frame) or _moved(sight, condition.right, frame)
+        terms = (term_of(sight, condition.left, frame), term_of(sight, condition.right, frame))
         return Comparison(left, right, condition.op, constant, block.end.position, moved, terms)
-    left = sources(sight, condition, block.frame)
+    left = sources(sight, condition, frame)
     return Comparison(left, NOTHING, "!=", 0, block.end.position, False) if left else None
+
+
+def _told(sight: Sight, condition: Expr, frame: str, depth: int) -> tuple[Expr, str]:
+    """A condition without negations, taken from the helper that gives it (``if (is_full(q))``) where that is one."""
+    while isinstance(condition, Cast) or (isinstance(condition, Unary) and condition.op == "!"):
+        condition = condition.operand
+    if isinstance(condition, Binary) and condition.op in ("==", "!=") and fold(condition.right) == 0:
+        inner, where = _told(sight, condition.left, frame, depth)
+        if isinstance(inner, Binary) and inner.op in COMPARISONS:
+            return inner, where
+    if isinstance(condition, Load) and isinstance(condition.place, VariablePlace) and depth < 4:
+        for key in place_keys(condition.place, frame, sight.flat.points):
+            sets = sight.sets.get(key, ()) if is_local(key) else ()
+            if len(sets) == 1:
+                inner, where = _told(sight, sets[0][1].value, sets[0][1].frame, depth + 1)
+                if isinstance(inner, Binary) and inner.op in COMPARISONS:
+                    return inner, where
+    return condition, frame
 
 
 def _moved(sight: Sight, expr: Expr, frame: str, depth: int = 0) -> bool:
