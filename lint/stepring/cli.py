@@ -176,6 +176,61 @@ def inventory(fail_level: str | None, **given: Any) -> int:
 
 
 @commands.command()
+@click.argument("log", metavar="LOG", type=click.Path(path_type=Path))
+@click.option(
+    "--root",
+    metavar="DIR",
+    type=click.Path(path_type=Path),
+    help="The root of the inspected project; the default is the current folder.",
+)
+@click.option(
+    "--keep",
+    metavar="DIR",
+    type=click.Path(path_type=Path),
+    help="Keep the C programs there: each is a regression test for its finding.",
+)
+@click.option("--no-programs", is_flag=True, help="Build and run no program: use the interpreter alone.")
+@click.option(
+    "--compiler",
+    metavar="NAME",
+    help="The host's C compiler for the programs: a program on the search path, or its absolute path. The default is "
+    "the first of cc, gcc and clang that is there.",
+)
+def replay(log: Path, root: Path | None, keep: Path | None, no_programs: bool, compiler: str | None) -> int:
+    """Run the witnesses of a SARIF log again and say whether each shows its finding.
+
+    Each is run in the interpreter. Where the data model is the host's and a C compiler is there, it is also made into
+    a C program that includes the inspected source, built with the compiler's checks for addresses, bounds and
+    arithmetic; it has to stop at the reported line. This command is the only one that runs anything of the inspected
+    project: name only logs and sources that you trust as you trust a build, or use --no-programs.
+
+    Exit code 0: all witnesses show their findings; 1: some do not; 2: the work could not be done.
+    """
+    if keep is not None and no_programs:
+        _refuse("--keep keeps programs, and --no-programs makes none; leave one of them out")
+    from stepring import replaying  # imported here, as the engines take a while to load
+    from stepring.report.replayed import replay_lines, replay_summary
+
+    try:
+        read = replaying.read_log(log)
+        place = Path(os.path.normpath(Path.cwd() / root)) if root is not None else Path.cwd()
+        for sentence in replaying.changed_files(read, place):
+            click.echo(f"stepring: {sentence}", err=True)
+        wishes = replaying.Wishes(not no_programs, keep, () if compiler is None else (compiler,))
+        judged: list[replaying.Judged] = []
+        for number, one in enumerate(replaying.replay_log(read, place, wishes), 1):
+            judged.append(one)
+            with _writing():
+                for line in replay_lines(number, one):
+                    click.echo(line)
+        with _writing():
+            click.echo(replay_summary(judged))
+    except replaying.BadLog as trouble:
+        _refuse(str(trouble))
+    return FOUND_NOTHING if all(one.replayed for one in judged) else FOUND_SOMETHING
+
+
+@commands.command()
 @click.argument("identity", metavar="[ID]", required=False)
 def rule(identity: str | None) -> int:
     """Show a rule's page, or without ID the list of rules."""

@@ -43,7 +43,7 @@ _KEPT_FLAGS = re.compile(
 )
 _PATH_OPTIONS = ("-idirafter", "-isystem", "-iquote", "-include", "-imacros")
 _CHECK = re.compile(r"^(.+?):(\d+)(?::\d+)?: runtime error: (.*)$", re.MULTILINE)
-_ADDRESS = re.compile(r"ERROR: AddressSanitizer:? (.*)$", re.MULTILINE)
+_ADDRESS = re.compile(r"ERROR: AddressSanitizer:? ([\w-]+(?: [a-z][\w-]*)*?)(?: on .*|: .*)?$", re.MULTILINE)
 _FRAME = re.compile(r"^ +#\d+ 0x[0-9a-f]+ in \S+ (.+?):(\d+)(?::\d+)?$", re.MULTILINE)
 _COMPARED = re.compile(r"^(.+?):(\d+): (.*)$", re.MULTILINE)
 _COMPILER_ERROR = re.compile(r"^(.+?):(\d+):(?:\d+:)? (?:fatal )?error: (.*)$", re.MULTILINE)

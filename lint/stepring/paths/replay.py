@@ -7,6 +7,7 @@ does not hold. On the way the steps are noted that a person wants to see: the ca
 place, what came from outside, and the end.
 """
 
+import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from typing import Any
@@ -26,6 +27,8 @@ STEPS = 1_000_000
 
 SHOWN_STEPS = 400
 """The most steps that are kept for display; of a longer run the first and the last."""
+
+_TEMPORARY = re.compile(r"%\d+")
 
 Placer = Callable[[Position], Origin]
 
@@ -252,9 +255,14 @@ def call_text(call: WitnessCall) -> str:
 
 def _mismatch(state: _Replay, outcome: Outcome) -> str:
     """What is not as the witness says; empty if all is."""
-    ending = state.witness.ending
-    if state.given:
+    trouble = _ending_mismatch(state, outcome)
+    if state.given and (not trouble or outcome.kind == "returned"):
         return f"the call does not ask for {state.given[0].name}, which is to give {shown_value(state.given[0].value)}"
+    return trouble
+
+
+def _ending_mismatch(state: _Replay, outcome: Outcome) -> str:
+    ending = state.witness.ending
     if ending.kind == "undefined":
         return _undefined_mismatch(state, outcome)
     if ending.kind == "endless":
@@ -276,9 +284,9 @@ def _undefined_mismatch(state: _Replay, outcome: Outcome) -> str:
         return f"nothing undefined happens: {_ending_text(outcome)}"
     where = _end_place(state, outcome)
     if ending.fault is not None and outcome.fault != ending.fault:
-        return f"it ends as {outcome.fault} ({outcome.reason}) and not as {ending.fault}"
+        return f"it ends as {outcome.fault} ({_spoken(outcome)}) and not as {ending.fault}"
     if (where.file, where.line) != (ending.where.file, ending.where.line):
-        return f"it ends at line {where.line} and not at line {ending.where.line}: {outcome.reason}"
+        return f"it ends at line {where.line} and not at line {ending.where.line}: {_spoken(outcome)}"
     return ""
 
 
@@ -303,14 +311,19 @@ def _end_place(state: _Replay, outcome: Outcome) -> Origin:
 def _ending_text(outcome: Outcome) -> str:
     if outcome.kind == "returned":
         return "it returns" if outcome.value is None else f"it returns {value_text(outcome.value)}"
-    return outcome.reason
+    return _spoken(outcome)
+
+
+def _spoken(outcome: Outcome) -> str:
+    """The reason of an ending; what a call gave has no name in the source."""
+    return _TEMPORARY.sub("(…)", outcome.reason)
 
 
 def _shown_end(state: _Replay, outcome: Outcome) -> str:
     ending = state.witness.ending
     due = f"; {ending.expected} is due" if ending.expected else ""
     if ending.kind == "undefined":
-        return outcome.reason
+        return _spoken(outcome)
     if ending.kind == "endless":
         return f"the call does not come back: {outcome.steps} steps ran"
     if ending.kind == "result":
