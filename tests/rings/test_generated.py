@@ -7,7 +7,6 @@ import os
 from pathlib import Path
 
 import pytest
-
 from tests.rings.check import Compared, compare_all, table
 from tests.rings.programs import make
 from tests.rings.truth import ADDRESSES, GCC, run_all
