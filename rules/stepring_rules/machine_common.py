@@ -52,8 +52,8 @@ def listed(names: list[str] | tuple[str, ...]) -> str:
 
 
 def main_dispatch(machine: Machine) -> Dispatch:
-    """The dispatch with most labels: where a reader would look for a state's case."""
-    return max(machine.dispatches, key=lambda dispatch: len(dispatch.labels))
+    """The dispatch with most labels: where a reader would look for a state's case, a ``switch`` first."""
+    return max(machine.dispatches, key=lambda dispatch: (dispatch.form == "switch", len(dispatch.labels)))
 
 
 def about(

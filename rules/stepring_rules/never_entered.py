@@ -49,7 +49,8 @@ def never_entered(program: Program) -> Iterator[Obligation]:
                         machine,
                         "fail",
                         label.where,
-                        f"Nothing in the program stores {state.name} in {machine.variable}; this case is never run.",
+                        f"Nothing in the program stores {state.name} in {machine.variable}; "
+                        + ("this case is never run." if dispatch.form == "switch" else "the machine is never in it."),
                         "warning",
                         why="Either the code is left over, or the transition that should lead here is missing.",
                         advice=f"Add the transition to {state.name}, or remove the state and its case.",

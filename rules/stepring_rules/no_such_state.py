@@ -50,7 +50,7 @@ def _failure(machine: Machine, state: State, where: Origin, function: str) -> Ob
     dispatch = main_dispatch(machine)
     named = any(other.declared for other in machine.states)
     # Among plain numbers a default that works may be the value's own case; a bound's name may mean "none now".
-    works = dispatch.default_does in ("stores", "calls", "work", "leaves")
+    works = dispatch.default_does in ("stores", "calls", "work", "leaves") or dispatch.form != "switch"
     level: Level = "warning" if (named or not works) and not is_bound(state.name) else "note"
     shown = state.name if state.name == str(state.value) else f"{state.name} ({state.value})"
     return about(

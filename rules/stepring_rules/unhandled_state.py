@@ -41,7 +41,7 @@ def unhandled_state(program: Program) -> Iterator[Obligation]:
             hidden = dispatch.default is not None and dispatch.default_does not in ("nothing", "none")
             # A function that is itself an event handles some states only; a default that stores a state recovers.
             recovers = dispatch.default_does == "stores" and _is_whole(machine, dispatch)
-            level: Level = "warning" if entered and recovers else "note"
+            level: Level = "warning" if entered and recovers and dispatch.form == "switch" else "note"
             how = (
                 "the default takes it for an unknown value"
                 if level == "warning"

@@ -15,6 +15,8 @@ def unreached_code(program: Program) -> Iterator[Obligation]:
     """One obligation for each dispatch, and a failure for each piece of code that is not reached."""
     for machine in program.machines:
         for dispatch in machine.dispatches:
+            if dispatch.form != "switch":
+                continue
             function = short(dispatch.function)
             beyond = [
                 label for label in dispatch.labels if not dispatch.control_low <= label.low <= dispatch.control_high

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 from typing import Literal, TypeAlias
 
 from stepring.places import Origin
+from stepring.shapes.types import Form
 
 OTHER = None  # a source that stands for every value not mentioned
 Source: TypeAlias = int | None
@@ -66,7 +67,7 @@ class LabelFact:
 
 @dataclass(frozen=True, slots=True)
 class DispatchFact:
-    """One ``switch`` on a key.
+    """One ``switch`` on a key, or the equality tests of it in one function (``form`` is then ``if-chain``).
 
     ``carried``: a constant stored while a loop runs reaches this dispatch again (what makes a local variable a state).
     ``packet``: the object is bytes looked at through a structure, as a received message is. ``working``: a copy is
@@ -88,6 +89,7 @@ class DispatchFact:
     packet: bool
     working: bool
     end: int
+    form: Form = "switch"
 
 
 @dataclass(frozen=True, slots=True)
@@ -180,3 +182,5 @@ class StateFacts:
     # Functions that give objects their first state, as their names say, each with a function that calls it (or none).
     starters: tuple[tuple[str, str | None], ...] = ()
     forwards: tuple[ForwardFact, ...] = ()
+    # Variables whose value is stored in a state, with that state: a next state that is committed later.
+    commits: tuple[tuple[str, str], ...] = ()

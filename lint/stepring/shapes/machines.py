@@ -6,11 +6,10 @@ separated machines from other switches on a hand-labelled sample of public firmw
 the program that dispatches on the variable, tests it or stores into it.
 """
 
-import re
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import replace
 from types import MappingProxyType
-from typing import TypeVar
+from typing import TypeVar, get_args
 
 from stepring.places import Origin
 from stepring.shapes.facts import (
@@ -21,14 +20,13 @@ from stepring.shapes.facts import (
     ForwardFact,
     KeyFact,
     StateFacts,
-    StoreFact,
-    TestFact,
-    TransitionFact,
 )
 from stepring.shapes.names import starts_or_runs
+from stepring.shapes.state_kinds import MOST_STATES, Gathered, dispatches_of, is_machine, is_switched, stored_constants
 from stepring.shapes.types import (
     STEPPED,
     Dispatch,
+    Form,
     Label,
     Machine,
     State,
@@ -36,30 +34,8 @@ from stepring.shapes.types import (
     Transition,
 )
 
-MOST_STATES = 512
-# How a state is named in two thirds of the firmware that was read for this (a survey's figure, not a rule of C).
-_STATE_NAME = re.compile(r"(?:state|phase|fsm|stage)[^.]*\Z", re.IGNORECASE)
 T = TypeVar("T")
-
-
-@dataclass(slots=True)
-class _Gathered:
-    """All facts about one key."""
-
-    key: KeyFact
-    dispatches: list[DispatchFact] = field(default_factory=list)
-    tests: list[TestFact] = field(default_factory=list)
-    stores: list[StoreFact] = field(default_factory=list)
-    transitions: list[TransitionFact] = field(default_factory=list)
-    exposed: list[Origin] = field(default_factory=list)
-    bounded: bool = False
-    initials: list[Constant] = field(default_factory=list)
-    starts_zero: bool = False
-    setters: list[tuple[StoreFact, CallFact, Constant]] = field(default_factory=list)
-    # Calls of setters with a value that is not known.
-    unknown: list[CallFact] = field(default_factory=list)
-    # The family of each constant's name in the units that speak of the key; other units can have the same names.
-    named: dict[str, Family] = field(default_factory=dict)
+FORMS = get_args(Form)
 
 
 def find_machines(
@@ -74,15 +50,21 @@ def find_machines(
     gathered = _gather(facts)
     stored_in: dict[str, dict[str, str]] = {}
     for group in gathered.values():
-        for constant in _stored_constants(group):
+        for constant in stored_constants(group):
             if constant.name is not None and group.key.kind == "member":
                 stored_in.setdefault(constant.name, {})[group.key.key] = group.key.shown
-    machines = [_machine(group, unread, whole, stored_in) for group in gathered.values() if is_machine(group)]
+    chosen = {key: group for key, group in gathered.items() if is_machine(group)}
+    for part in facts:
+        for following, state in part.commits:
+            # A next state that is kept until it is committed is part of the machine that it is committed to.
+            if state in chosen and following in chosen and following != state and not is_switched(chosen[following]):
+                del chosen[following]
+    machines = [_machine(group, unread, whole, stored_in) for group in chosen.values()]
     return tuple(sorted(machines, key=lambda machine: (machine.where, machine.identity)))
 
 
-def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
-    gathered: dict[str, _Gathered] = {}
+def _gather(facts: Sequence[StateFacts]) -> dict[str, Gathered]:
+    gathered: dict[str, Gathered] = {}
     families: dict[str, Family] = {}
     for part in facts:
         by_name = {
@@ -92,7 +74,7 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
             if member.name is not None
         }
         for key in part.keys:
-            group = gathered.setdefault(key.key, _Gathered(key))
+            group = gathered.setdefault(key.key, Gathered(key))
             if group.key.low < key.low or group.key.high > key.high:
                 group.key = key
             group.initials.extend(key.initials)
@@ -133,7 +115,7 @@ def _gather(facts: Sequence[StateFacts]) -> dict[str, _Gathered]:
 
 
 def _settle_setters(
-    group: _Gathered, callers: Mapping[str, list[CallFact]], forwards: Mapping[tuple[str, int], list[ForwardFact]]
+    group: Gathered, callers: Mapping[str, list[CallFact]], forwards: Mapping[tuple[str, int], list[ForwardFact]]
 ) -> None:
     """The calls that store a constant through a setter, or through functions that hand it on to one; steps through
     functions that turned out to be no setters go."""
@@ -170,7 +152,7 @@ def _starters(facts: Iterable[StateFacts]) -> frozenset[str]:
     )
 
 
-def _settle_starters(group: _Gathered, starters: frozenset[str]) -> None:
+def _settle_starters(group: Gathered, starters: frozenset[str]) -> None:
     """What set-up code stores without looking at the state first is an initial state and no transition."""
     looking = {dispatch.function for dispatch in group.dispatches} | {test.function for test in group.tests}
     blind = starters - looking
@@ -184,85 +166,10 @@ def _distinct(items: "Iterable[T]") -> "list[T]":
     return list(dict.fromkeys(items))
 
 
-# ------------------------------------------------------------------------------------------------------ recognition
-
-
-def is_machine(group: _Gathered) -> bool:
-    """Whether a key that is dispatched on is a state."""
-    named = group.named
-    dispatches = [dispatch for dispatch in group.dispatches if not dispatch.line_numbers]
-    if not dispatches or group.key.scope == "parameter":
-        return False
-    if all(dispatch.characters for dispatch in dispatches):
-        return False
-    if group.key.scope == "local" and not any(dispatch.carried for dispatch in dispatches):
-        return False
-    labels = {
-        value
-        for dispatch in dispatches
-        for label in dispatch.labels
-        for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1)
-    }
-    label_families = {
-        named[label.constant.name].identity
-        for dispatch in dispatches
-        for label in dispatch.labels
-        if label.constant.name is not None and label.constant.name in named
-    }
-    unnamed = all(label.constant.name is None for dispatch in dispatches for label in dispatch.labels)
-    if unnamed and all(dispatch.working for dispatch in dispatches):
-        return False  # a level that is turned up or down: a gain, a speed
-    targets: set[int] = set()
-    hits: set[int] = set()
-    for constant in _stored_constants(group):
-        targets.add(constant.value)
-        family = named.get(constant.name or "")
-        if constant.value in labels or (family is not None and family.identity in label_families):
-            hits.add(constant.value)
-    targets.update(move.target.value for move in group.transitions)
-    hits.update(targets & labels)
-    if not hits or len(targets | labels) < 2 or all(dispatch.packet for dispatch in dispatches):
-        return False
-    return _moves_on(group, dispatches)
-
-
-def _moves_on(group: _Gathered, dispatches: Sequence[DispatchFact]) -> bool:
-    """Whether code that knows the present state stores another one that is dispatched on or tested afterwards.
-
-    A message's type or a configuration is stored from nowhere in particular; a value put into another coding in place
-    goes to values that nothing looks at again.
-    """
-    labelled: dict[int, set[int]] = {}
-    for number, dispatch in enumerate(dispatches):
-        for label in dispatch.labels:
-            for value in range(label.constant.value, min(label.high, label.constant.value + MOST_STATES) + 1):
-                labelled.setdefault(value, set()).add(number)
-    tested = {test.constant.value for test in group.tests}
-    for move in group.transitions:
-        # Told by a test alone, the source counts where the name says that this is a state; a mode is tested as well.
-        told = move.dispatched or (move.source is not None and _STATE_NAME.search(group.key.shown))
-        if not told or move.source == move.target.value or move.source not in labelled:
-            continue
-        if move.target.value in tested:
-            return True
-        from_here = labelled[move.source]
-        for number in labelled.get(move.target.value, ()):
-            if number in from_here or dispatches[number].function != move.function:
-                return True
-    return False
-
-
-def _stored_constants(group: _Gathered) -> Iterable[Constant]:
-    for store in group.stores:
-        yield from store.constants
-    for _, _, constant in group.setters:
-        yield constant
-
-
 # ------------------------------------------------------------------------------------------------------ one machine
 
 
-def _is_open(group: _Gathered) -> bool:
+def _is_open(group: Gathered) -> bool:
     """Whether files that were not named could store the variable: it is declared in a header, global, or has a
     setter."""
     key = group.key
@@ -273,7 +180,7 @@ def _is_open(group: _Gathered) -> bool:
 
 
 def _machine(
-    group: _Gathered, unread: Mapping[str, str], whole: bool, stored_in: Mapping[str, Mapping[str, str]]
+    group: Gathered, unread: Mapping[str, str], whole: bool, stored_in: Mapping[str, Mapping[str, str]]
 ) -> Machine:
     key = group.key
     family = _family(group)
@@ -299,11 +206,8 @@ def _machine(
             why.append(f"{_short(store.function)} stores {store.why_unknown} (line {store.where.line})")
         elif store.stepped:
             why.append(f"{_short(store.function)} computes the next state (line {store.where.line})")
-    dispatches = tuple(
-        _dispatch(dispatch, key, by_value)
-        for dispatch in sorted(group.dispatches, key=lambda dispatch: dispatch.where)
-        if not dispatch.line_numbers
-    )
+    facts = sorted(dispatches_of(group), key=lambda dispatch: dispatch.where)
+    dispatches = tuple(_dispatch(dispatch, key, by_value) for dispatch in facts)
     transitions = tuple(_transitions(group, states))
     initial = tuple(state.name for state in states if state.initial)
     return Machine(
@@ -311,7 +215,7 @@ def _machine(
         key.shown,
         key.kind,
         key.where,
-        "switch",
+        " and ".join(dict.fromkeys(sorted((one.form for one in facts), key=FORMS.index))),
         states,
         dispatches,
         tuple(_stores(group, by_value)),
@@ -328,7 +232,7 @@ def _short(function: str) -> str:
     return function.rsplit(":", 1)[-1]
 
 
-def _family(group: _Gathered) -> Family | None:
+def _family(group: Gathered) -> Family | None:
     """The group of constants that most of the machine's labels come from."""
     votes: dict[str, int] = {}
     found: dict[str, Family] = {}
@@ -343,7 +247,7 @@ def _family(group: _Gathered) -> Family | None:
     return found[max(sorted(votes), key=lambda identity: votes[identity])]
 
 
-def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
+def _states(group: Gathered, family: Family | None) -> tuple[State, ...]:
     names: dict[int, tuple[str, Origin]] = {}
     declared: set[int] = set()
     labelled: set[int] = set()
@@ -360,9 +264,7 @@ def _states(group: _Gathered, family: Family | None) -> tuple[State, ...]:
 
     for member in by_family.values():
         see(member, declared)
-    for dispatch in group.dispatches:
-        if dispatch.line_numbers:
-            continue
+    for dispatch in dispatches_of(group):
         for label in dispatch.labels:
             see(label.constant, labelled)
             if label.high > label.constant.value:
@@ -440,10 +342,11 @@ def _dispatch(fact: DispatchFact, key: KeyFact, by_value: Mapping[int, State]) -
         fact.unreached,
         key.low,
         key.high,
+        fact.form,
     )
 
 
-def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateStore]:
+def _stores(group: Gathered, by_value: Mapping[int, State]) -> Iterable[StateStore]:
     def named(constants: Iterable[Constant]) -> tuple[tuple[str, int], ...]:
         return tuple((by_value[constant.value].name, constant.value) for constant in constants)
 
@@ -464,7 +367,7 @@ def _stores(group: _Gathered, by_value: Mapping[int, State]) -> Iterable[StateSt
         yield StateStore(call.function, call.where, named([constant]), "", _short(call.callee))
 
 
-def _transitions(group: _Gathered, states: Sequence[State]) -> Iterable[Transition]:
+def _transitions(group: Gathered, states: Sequence[State]) -> Iterable[Transition]:
     by_value = {state.value: state for state in states}
     seen: set[tuple[str, str, str, Origin]] = set()
 

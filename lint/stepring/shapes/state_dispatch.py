@@ -61,7 +61,7 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
     default_does: Literal["none", "nothing", "stores", "calls", "leaves", "work"] = "none"
     if switch.syntax.default is not None:
         others = frozenset().union(*reach) if reach else frozenset()
-        default_does = _does(function, blocks_from(function, switch.default, block) - others, seen.key.key)
+        default_does = does(function, blocks_from(function, switch.default, block) - others, seen.key.key)
     return DispatchFact(
         seen.key.key,
         seen.key.instance,
@@ -75,7 +75,7 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
         characters,
         line_numbers > 0 and line_numbers >= len([label for label in labels if label.constant.value > 1]),
         seen.key.scope == "local" and is_carried(scan, seen, block),
-        _is_packet(function, seen.key),
+        is_packet(function, seen.key),
         _is_working(scan, switch.value),
         switch.syntax.end,
     )
@@ -91,7 +91,7 @@ def _is_working(scan: Scan, value: Expr) -> bool:
     )
 
 
-def _is_packet(function: Function, key: PlaceKey) -> bool:
+def is_packet(function: Function, key: PlaceKey) -> bool:
     """Whether the object is reached through a local pointer that was made from a pointer to bytes."""
     root = key.root
     if root is None or root.storage != "automatic" or not isinstance(root.type, PointerType):
@@ -128,7 +128,7 @@ def _overwrites(function: Function, target: int, key: str) -> bool:
     return False
 
 
-def _does(
+def does(
     function: Function, region: frozenset[int], key: str
 ) -> Literal["nothing", "stores", "calls", "leaves", "work"]:
     calls = work = leaves = False

@@ -25,6 +25,7 @@ from stepring.shapes.facts import (
 from stepring.shapes.keys import uncast
 from stepring.shapes.names import Names, constant_of, starts
 from stepring.shapes.state_aliases import getters, working_parameters
+from stepring.shapes.state_chain import chain_fact
 from stepring.shapes.state_dispatch import dispatch_fact
 from stepring.shapes.state_flow import spelled
 from stepring.shapes.state_keys import families_by_key, key_facts
@@ -58,6 +59,7 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         tuple(work.exposed),
         _starters(work),
         tuple(work.forwards),
+        tuple(work.commits),
     )
 
 
@@ -81,6 +83,10 @@ def _function_facts(work: Work, scan: Scan, chosen: frozenset[str]) -> None:
             continue
         for block, switch in seen.dispatches:
             work.dispatches.append(dispatch_fact(work, scan, seen, block, switch))
+        if not seen.dispatches:
+            chain = chain_fact(work, scan, seen)
+            if chain is not None:
+                work.dispatches.append(chain)
         for number, position in seen.tests:
             where = work.names.origin(position)
             work.tests.append(TestFact(key, function.identity, constant_of(work.names, number, where), where))

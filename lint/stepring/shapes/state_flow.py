@@ -45,6 +45,7 @@ from stepring.shapes.state_slice import (
 )
 
 MOST_VISITS = 20_000  # blocks run for one key in one unit that dispatches on it
+CHAIN_VISITS = 4_000  # the same for a unit that compares it with constants
 FEW_VISITS = 400  # the same for a unit that only tests and stores: most such variables are no states at all
 MOST_DEPTH = 3
 

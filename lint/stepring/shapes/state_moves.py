@@ -16,6 +16,7 @@ from stepring.shapes.facts import CallFact, Constant, TransitionFact
 from stepring.shapes.keys import uncast
 from stepring.shapes.names import constant_at, sets
 from stepring.shapes.state_flow import (
+    CHAIN_VISITS,
     ENTRY,
     FEW_VISITS,
     Chosen,
@@ -73,20 +74,23 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
 
     storing = {scan.function.identity for scan in scans if scan.keys[key].stores}
     shared = first.key.scope == "lasting" and (is_shared(first) or len(storing) > 1)
+    commits = _commits(scans, key)
+    work.commits.extend((variable, key) for variable in sorted(commits))
     setting = Setting(
         key,
         mentioned,
         work.by_name.get,
         writers,
         instances,
-        _commits(scans, key),
+        commits,
         shared=shared,
         outside=outside,
         aliases=_aliases(scans, key),
     )
     dispatched = any(scan.keys[key].dispatches for scan in scans)
     if not dispatched:
-        setting.most_visits = FEW_VISITS
+        compared = any(scan.keys[key].branches for scan in scans)
+        setting.most_visits = CHAIN_VISITS if compared else FEW_VISITS
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)

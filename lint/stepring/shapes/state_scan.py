@@ -52,6 +52,8 @@ class Seen:
     type: object
     dispatches: list[tuple[int, Switch]] = field(default_factory=list)
     tests: list[tuple[Const, Position]] = field(default_factory=list)
+    # Branches on its equality with a constant: the block, the constant, whether the first arm is that of equality.
+    branches: list[tuple[int, Const, bool]] = field(default_factory=list)
     stores: list[tuple[int, Assign | Call | Clobber, PlaceKey]] = field(default_factory=list)
     instances: set[str] = field(default_factory=set)
     read_instances: set[str] = field(default_factory=set)
@@ -90,6 +92,7 @@ class Work:
     bounded: list[str] = field(default_factory=list)
     setters: dict[str, bool] = field(default_factory=dict)
     forwards: list[ForwardFact] = field(default_factory=list)
+    commits: list[tuple[str, str]] = field(default_factory=list)
 
 
 def scan_function(function: Function, known: Mapping[str, PlaceKey], handed: tuple[Alias, ...]) -> Scan:
@@ -125,7 +128,7 @@ def scan_function(function: Function, known: Mapping[str, PlaceKey], handed: tup
                     for case in end.cases
                 )
         elif isinstance(end, Branch):
-            _note_tests(scan, end.condition, end.position)
+            _note_tests(scan, number, end.condition, end.position)
     return scan
 
 
@@ -173,20 +176,23 @@ def _note_store(scan: Scan, block: int, statement: Assign | Call | Clobber, plac
         _seen(scan, key, place.type).stores.append((block, statement, key))  # type: ignore[attr-defined]
 
 
-def _note_tests(scan: Scan, condition: Expr, position: Position) -> None:
+def _note_tests(scan: Scan, block: int, condition: Expr, position: Position, equal: bool = True) -> None:
     condition = uncast(condition)
     if isinstance(condition, Unary) and condition.op == "!":
-        _note_tests(scan, condition.operand, position)
+        _note_tests(scan, block, condition.operand, position, not equal)
     elif isinstance(condition, Binary) and condition.op in ("==", "!=", "<", "<=", ">", ">="):
         for side, other in ((condition.left, condition.right), (condition.right, condition.left)):
             number = uncast(other)
-            for key, type_ in (*_tested_keys(scan, side), *_tested_keys(scan, _unmasked(side))):
+            plain = _tested_keys(scan, side)
+            for key, type_ in (*plain, *_tested_keys(scan, _unmasked(side))):
                 if key.scope == "parameter":
                     continue
                 seen = _seen(scan, key, type_)
                 seen.read_instances.add(key.instance)
                 if isinstance(number, Const) and condition.op in ("==", "!="):
                     seen.tests.append((number, condition.position or position))
+                    if (key, type_) in plain:
+                        seen.branches.append((block, number, equal == (condition.op == "==")))
 
 
 def _note_exposed(scan: Scan, expr: Expr, position: Position) -> None:
@@ -208,16 +214,58 @@ def _note_exposed(scan: Scan, expr: Expr, position: Position) -> None:
 def state_candidates(scans: Sequence[Scan], names: Names) -> frozenset[str]:
     """The keys worth working out: dispatched on here, or holding named constants where another unit may dispatch."""
     chosen: set[str] = set()
-    shared: dict[str, list[Seen]] = {}
+    lasting: dict[str, list[Seen]] = {}
     for scan in scans:
         for key, seen in scan.keys.items():
             if seen.dispatches:
                 if seen.key.scope == "lasting" or any(is_carried(scan, seen, block) for block, _ in seen.dispatches):
                     chosen.add(key)
-            elif seen.key.scope == "lasting" and not key.endswith("[]") and is_shared(seen):
-                shared.setdefault(key, []).append(seen)
-    chosen.update(key for key, seen in shared.items() if key not in chosen and _holds_names(seen, names))
+            elif seen.key.scope == "lasting":
+                lasting.setdefault(key, []).append(seen)
+            elif seen.key.scope == "local" and len({number.value for _, number, _ in seen.branches}) > 1:
+                if any(is_carried(scan, seen, block) for block, _, _ in seen.branches):
+                    chosen.add(key)
+    for key, group in lasting.items():
+        if key not in chosen:
+            elsewhere = [seen for seen in group if is_shared(seen)] if not key.endswith("[]") else []
+            if (elsewhere and _holds_names(elsewhere, names)) or may_chain(group, names):
+                chosen.add(key)
     return frozenset(chosen)
+
+
+def may_chain(seen: Sequence[Seen], names: Names) -> bool:
+    """Whether a key that no ``switch`` is on could be a state: compared with constants and given constants, and no
+    flag."""
+    type_ = seen[0].type
+    if isinstance(type_, IntType) and type_.high <= 1 and type_.low == 0:
+        return False
+    tested = {number.value: number for one in seen for _, number, _ in one.branches}
+    stored: dict[int, Const] = {}
+    computed = 0
+    for one in seen:
+        for _, statement, _ in one.stores:
+            inner = uncast(statement.value) if isinstance(statement, Assign) else None
+            if isinstance(inner, Const):
+                stored[inner.value] = inner
+            else:
+                computed += 1
+    if not tested or not (stored or computed):
+        return False
+    values = tested | stored
+    if len(values) < 2:
+        return False
+    if len(values) > 2 or not {0, 1} >= set(values):
+        return True
+    return any(_is_named(const, names) for const in values.values())
+
+
+def _is_named(const: Const, names: Names) -> bool:
+    if const.name is not None:
+        return True
+    if const.position is None or not const.position.line:
+        return False
+    spelling = names.origin(const.position).spelling
+    return spelling.isidentifier() and spelling.lower() not in ("true", "false", "null")
 
 
 def _holds_names(seen: Sequence[Seen], names: Names) -> bool:

@@ -39,6 +39,11 @@ class State:
     elsewhere: str = ""
 
 
+Form: TypeAlias = Literal[
+    "switch", "if-chain", "table", "row list", "function pointer", "next state returned", "goto"
+]
+
+
 @dataclass(frozen=True, slots=True)
 class Label:
     """One ``case`` of a dispatch: the state names it covers; ``runs_on`` is the place it falls out of, if unmarked."""
@@ -56,7 +61,10 @@ class Label:
 
 @dataclass(frozen=True, slots=True)
 class Dispatch:
-    """One ``switch`` on the state: where it is, what it handles.
+    """One dispatch on the state: where it is, what it handles.
+
+    ``form``: a ``switch``, or the equality tests of one function (``if-chain``: ``default`` is then the last ``else``
+    of its longest chain), or the lookup in a table or call through it.
 
     ``default_does``: what the default does: ``none`` (there is none), ``nothing``, ``stores`` a state, ``calls``
     something,
@@ -72,6 +80,7 @@ class Dispatch:
     unreached: tuple[Origin, ...]
     control_low: int
     control_high: int
+    form: Form = "switch"
 
 
 STEPPED = "arithmetic on its own value"
