@@ -178,13 +178,14 @@ def evidence(group: Gathered) -> Evidence:
     words = [constant.name for constant in constants if constant.name is not None]
     saying = sum(bool(_STATE_NAME.search(word)) for word in words)
     name = group.key.shown.rsplit(".", 1)[-1]
+    of_type = bool(_STATE_NAME.search((group.key.enum or "").split("@", 1)[0]))
     return Evidence(
         frozenset(tested),
         frozenset(stored),
         frozenset(steps),
         named == len(values),
         named,
-        bool(_STATE_NAME.search(name) or _STATE_NAME.search(group.key.enum or "")) or 3 * saying > 2 * len(constants),
+        bool(_STATE_NAME.search(name)) or (len(values) > 2 and (of_type or 3 * saying > 2 * len(constants))),
         bool(_OTHER_NAME.search(name)),
         len({word for word in words if _RESULT_NAME.search(word)}),
         any(one.carried for one in chains),
