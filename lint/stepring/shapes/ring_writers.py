@@ -309,7 +309,7 @@ def unseen(
     why: list[str] = []
     for key, harmless in relied.items():
         name = short_text(key)
-        for writer in _writers_of(outside, key, defined):
+        for writer in writers_of(outside, key, defined):
             if writer.value is ANY or writer.value not in harmless:
                 why.append(f"{writer.name} may store into {name} and was not run")
                 break
@@ -327,7 +327,8 @@ def unseen(
     return tuple(dict.fromkeys(why))
 
 
-def _writers_of(outside: Outside, key: Key, defined: Mapping[str, frozenset[str]]) -> Iterator[Writer]:
+def writers_of(outside: Outside, key: Key, defined: Mapping[str, frozenset[str]]) -> Iterator[Writer]:
+    """Who may store into an integer; ``defined`` as for ``unseen``."""
     yield from outside.writers.get(key, ())
     if key[0] == "member":
         yield from outside.writers.get(("struct", key[1]), ())

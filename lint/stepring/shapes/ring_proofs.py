@@ -1,0 +1,608 @@
+"""Rings with what the solver proves of them: accesses, ranges and advances, for all runs.
+
+The one idea: what a ring's code relies on (``head < size``, ``count <= size``) is never written down, but every
+operation keeps it. So all functions that can be entered and touch the ring's integers become traces
+(``paths.symbolic``), the relations that all of them keep are found (``paths.induction``), and under these each access,
+each index and each advance is asked about. Nothing is a guess: what is not modelled, and whatever may store into the
+ring unseen, leaves the ring's obligations open with a reason.
+
+What the code does not settle is assumed and said with each proof: that a buffer has as many elements as the capacity
+says, that a capacity given by a caller is not zero, that nothing else runs in the middle of a function.
+"""
+
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from typing import cast
+
+import z3
+
+from stepring.meaning.types import (
+    DataModel,
+    Function,
+    IntType,
+    Object,
+    StructLayout,
+)
+from stepring.paths.induction import (
+    Body,
+    Family,
+    Induction,
+    Relation,
+    View,
+    basis,
+    induct,
+    kept_by,
+    look_at,
+    proved,
+)
+from stepring.paths.symbolic_memory import Node, Pointer, Start, State, Stored, added, address_mark, row_of
+from stepring.paths.symbolic_terms import Number, Truth, bits, both, compared, either, equal, stretch
+from stepring.paths.symbolic_types import Accessed, Limits, Point, Trace
+from stepring.places import Origin, Position
+from stepring.shapes.ring_apart import defined_often, told_apart
+from stepring.shapes.ring_keys import Key, inner_structs, key_text, short_text, struct_name
+from stepring.shapes.ring_program import RingProgram, ring_program, touching
+from stepring.shapes.ring_relations import Slots, family_of, holds_for, relations_of, slots_of
+from stepring.shapes.ring_types import CheckedStep, OpenReason, Proof
+from stepring.shapes.ring_writers import Outside, Writer, writers_of
+from stepring.shapes.types import Access, Ring
+
+__all__ = ["prove_rings"]
+
+EVERYTHING = Outside()
+
+
+@dataclass(slots=True, eq=False)
+class Case:
+    """What is asked about one ring: its capacity and integers, the traces of its operations, what they keep.
+
+    ``open_as`` with ``detail`` says why nothing can be proved, if so. ``assumed`` are the clauses on which all proofs
+    rest.
+    """
+
+    ring: Ring
+    program: RingProgram
+    slots: Slots | None
+    family: Family | None
+    operations: list[Trace] = field(default_factory=list)
+    setups: list[Trace] = field(default_factory=list)
+    induction: Induction | None = None
+    assumed: list[str] = field(default_factory=list)
+    open_as: OpenReason | None = None
+    detail: str = ""
+
+
+def prove_rings(
+    rings: Sequence[Ring],
+    functions: Sequence[Function],
+    objects: Sequence[Object],
+    structs: Mapping[str, StructLayout],
+    model: DataModel,
+    origin: Callable[[Position], Origin],
+    *,
+    outside: Outside = EVERYTHING,
+    called: Sequence[Function] = (),
+    defined: frozenset[str] | None = None,
+    limits: Limits | None = None,
+) -> tuple[Ring, ...]:
+    """The rings with their proofs.
+
+    ``functions``, ``objects``, ``structs``, ``model``, ``origin`` and ``outside`` are those that the rings were found
+    with. ``called`` are further bodies, to be laid out where these functions call them; ``defined`` the names of all
+    functions that the program defines (None: not known, so that a function without body is code from elsewhere).
+    """
+    if not rings:
+        return ()
+    limits = limits or Limits()
+    often = defined_often(objects)
+    functions, objects = told_apart(functions, objects)
+    program = ring_program(functions, called, objects, structs, model, outside, defined, limits)
+    found = []
+    for ring in rings:
+        case = Case(ring, program, slots_of(ring), None)
+        _prepare(case, outside, often, limits)
+        found.append(replace(ring, proofs=tuple(_proofs(case, origin))))
+    return tuple(found)
+
+
+# -------------------------------------------------------------------------------------------------------- preparation
+
+
+def _leave_open(case: Case, reason: OpenReason, detail: str) -> None:
+    if case.open_as is None:
+        case.open_as, case.detail = reason, detail
+
+
+def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
+    ring, program = case.ring, case.program
+    case.family = family_of(ring, case.slots, program.structs, program.variables)
+    if case.family is None:
+        _leave_open(case, "not modelled", "its integers do not live in one structure, nor all in variables")
+        return
+    family = case.family
+    moved_storage = _storage_pointer(ring)
+    setting = {key for key in (case.slots.key if case.slots is not None else None, moved_storage) if key is not None}
+    pending = list(touching(program, family.keys | _storage_keys(ring), family.struct))
+    opaque = frozenset(function.identity for function in pending if setting and program.sets(function, setting))
+    done: set[str] = set()
+    while pending:
+        function = pending.pop(0)
+        if function.identity in done:
+            continue
+        done.add(function.identity)
+        sets = bool(setting) and program.sets(function, setting)
+        trace = program.trace(function, sets, opaque)
+        (case.setups if sets else case.operations).append(trace)
+        for name in trace.calls:
+            # A body that was not laid out works on the ring by itself: what it keeps must be shown of it too.
+            body = program.around.resolve(function, name)
+            if body is not None and program.mentions(body) & family.keys:
+                pending.append(body)
+    _look_for_trouble(case, outside, often, setting)
+    if case.open_as is not None:
+        return
+    _find_kept(case, outside, often, limits)
+
+
+def _storage_pointer(ring: Ring) -> Key | None:
+    return ring.storage_key[:-1] if ring.storage_key and ring.storage_key[-1] == "*" else None
+
+
+def _storage_keys(ring: Ring) -> frozenset[Key]:
+    key = ring.storage_key
+    if not key:
+        return frozenset()
+    return frozenset((key[:-1] if key[-1] == "*" else key, (*key, "[]")))
+
+
+def _article(struct: str) -> str:
+    name = struct_name(struct)
+    return f"every {name}" if name.startswith(("struct ", "union ")) else f"every object of type {name}"
+
+
+def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], setting: set[Key]) -> None:
+    """What makes all proofs about the ring impossible."""
+    family, program = case.family, case.program
+    assert family is not None
+    for trace in (*case.operations, *case.setups):
+        writes = program.writes(trace.function)
+        if trace.troubles and (writes.everything or writes.keys & family.keys):
+            reason, detail = next(iter(trace.troubles))
+            _leave_open(case, cast(OpenReason, reason), f"{trace.function.name}: {detail}")
+        for key, name in trace.given.items():
+            if key in family.keys:
+                _leave_open(case, "pointer not resolved", f"{name} is given the address of {short_text(key)}")
+            elif key[0] == "struct" and family.struct in inner_structs(key[1], program.structs):
+                _leave_open(case, "pointer not resolved", f"{name} takes {struct_name(key[1])} as bytes")
+            elif key[0] == "argument" and family.struct in inner_structs(key[1], program.structs):
+                known = program.around.defined
+                if (known is None or name not in known) and not program.has(name):
+                    _leave_open(case, "call to unknown code", f"{name} is given a {struct_name(key[1])}")
+    for name in sorted(program.structs):
+        layout = program.structs[name]
+        if layout.union and family.struct and family.struct in inner_structs(name, program.structs):
+            if len(layout.fields) > 1:
+                _leave_open(case, "not modelled", f"it shares memory in the union {struct_name(name)}")
+    for file, what in outside.unread.items():
+        if any(_reached_from(program, key, file) for key in family.keys):
+            _leave_open(case, "code not read", f"{what} was not read and may store into it")
+    if not outside.whole and any(_reached_from(program, key, "") for key in family.keys):
+        _leave_open(case, "code not read", "only some files of the program were named, and others may store into it")
+    for key in sorted(family.keys):
+        for writer in writers_of(outside, key, often):
+            if writer.value is None and (writer.gives or not program.has(writer.name)):
+                _leave_open(case, "stored into elsewhere", f"{writer.name} may store into {short_text(key)}")
+
+
+def _reached_from(program: RingProgram, key: Key, file: str) -> bool:
+    """Whether code in a file (or in any other, if it is empty) can name an integer."""
+    if key[0] == "member":
+        layout = program.structs.get(key[1])
+        own = layout.position.file if layout is not None and layout.position is not None else ""
+        return not own.endswith(".c") or own == file
+    return ":" not in key[1] or key[1].split(":", 1)[0] == file
+
+
+def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
+    family = case.family
+    assert family is not None
+    relations = [
+        relation
+        for relation in relations_of(case.ring, case.slots, family, _constants(case))
+        if _survives(case, relation, outside, often)
+    ]
+    relations = _start(case, relations)
+    slots = case.slots
+    ends = [slots.number] if slots is not None else []
+    given: tuple[str, ...] = ()
+    while True:
+        case.induction = induct(family, relations, case.operations, case.setups, ends, limits, given=given)
+        # A capacity that a caller chooses cannot be shown to be one; that it is, is the caller's part.
+        lost = [text for text in _callers_part(case) if text not in case.induction.active and text not in given]
+        if not lost or case.induction.exhausted:
+            break
+        given = (*given, lost[0])
+    names = ", ".join(sorted({trace.function.name for trace in case.setups}))
+    for text in given:
+        if text in case.induction.active:
+            case.assumed.append(f"{names} is given a capacity such that {text}")
+
+
+def _callers_part(case: Case) -> Iterator[str]:
+    """What must hold of a capacity that is set at run time: it is not 0; a mask needs a power of two."""
+    slots, ring = case.slots, case.ring
+    if slots is None or slots.key is None or not case.setups:
+        return
+    yield f"{slots.text} > 0"
+    masked = any(access.reduction == "mask" for access in ring.accesses)
+    if masked or any(step.wrap in ("mask", "free-running") for index in ring.indices for step in index.steps):
+        yield f"{slots.text} is a power of two"
+
+
+def _constants(case: Case) -> frozenset[int]:
+    return frozenset()
+
+
+def _survives(case: Case, relation: Relation, outside: Outside, often: Mapping[str, frozenset[str]]) -> bool:
+    """Whether stores of constants by code that is not run leave a relation as it is, whatever else holds."""
+    family = case.family
+    assert family is not None
+    for key in relation.keys:
+        for writer in writers_of(outside, key, often):
+            if case.program.has(writer.name) and not writer.gives:
+                continue
+            if writer.value is None or not _harmless(family, relation, key, writer):
+                return False
+    return True
+
+
+def _harmless(family: Family, relation: Relation, key: Key, writer: Writer) -> bool:
+    """Whether a relation still holds after a constant was stored into one of its integers."""
+    solver = z3.SolverFor("QF_BV")
+    solver.set("rlimit", 200_000)
+    values: dict[Key, object] = {
+        each: z3.BitVec(f"value {number}", type_.width) for number, (each, type_) in enumerate(family.types.items())
+    }
+    for other in family.pointers:
+        values[other] = None
+    before = relation.formula(View(lambda each: values[each], family.types, family.width))
+    changed = {**values, key: writer.value}
+    after = relation.formula(View(lambda each: changed[each], family.types, family.width))
+    solver.add(before if not isinstance(before, bool) else z3.BoolVal(before))
+    solver.add(z3.Not(after if not isinstance(after, bool) else z3.BoolVal(after)))
+    return bool(solver.check() == z3.unsat)
+
+
+# -------------------------------------------------------------------------------------------------------------- start
+
+
+def _start(case: Case, relations: list[Relation]) -> list[Relation]:
+    """The relations that hold when the program starts, for all objects that it defines.
+
+    An object whose capacity is still zero is not yet a ring where some function sets rings up. Objects that others
+    make start with zeros, or are given to that function; this is said.
+    """
+    family, program, slots = case.family, case.program, case.slots
+    assert family is not None
+    sets_up = bool(case.setups)
+    names = ", ".join(sorted({trace.function.name for trace in case.setups}))
+    if not family.struct or family.struct == "[]":
+        starts = program.starts(family, None)
+        where = [values for values in starts if values is not None]
+        if len(where) < len(starts):
+            _leave_open(case, "start value not known", "its variables are defined in code that was not read")
+        elif sets_up:
+            case.assumed.append(f"{names} runs before the ring is used")
+            where = []
+    else:
+        found = program.starts(family, family.struct)
+        where = [values for values in found if values is not None]
+        if sets_up:
+            key = slots.key if slots is not None else None
+            where = [values for values in where if key is not None and values.get(key, 0) != 0]
+            case.assumed.append(f"{_article(family.struct)} is given to {names} before it is used")
+        elif not found:
+            where = [dict.fromkeys(family.types, 0)]
+            case.assumed.append(f"{_article(family.struct)} starts with its indices at 0")
+        elif len(where) < len(found):
+            _leave_open(case, "start value not known", "its initial value is not a constant")
+    plain = [relation for relation in relations if all(key in family.types for key in relation.keys)]
+    rest = [relation for relation in relations if relation not in plain]
+    if rest and where:
+        rest = []
+    return [relation for relation in plain if all(holds_for(relation, values, family) for values in where)] + rest
+
+
+# ------------------------------------------------------------------------------------------------------------- proofs
+
+
+def _proofs(case: Case, origin: Callable[[Position], Origin]) -> Iterator[Proof]:
+    ring = case.ring
+    places: dict[Origin, list[tuple[Body, Accessed]]] = {}
+    if case.induction is not None and case.open_as is None:
+        for body in case.induction.bodies:
+            for access in body.trace.accesses:
+                for position in {access.position, access.also}:
+                    if position is not None:
+                        places.setdefault(origin(position), []).append((body, access))
+    always = [*case.assumed, *_context(case)]
+    asked: set[tuple[Origin, str]] = set()
+    for item in ring.accesses:
+        if (item.where, item.function) in asked:
+            continue
+        asked.add((item.where, item.function))
+        yield _access_proof(case, item, places.get(item.where, []), always)
+    for index in ring.indices:
+        yield _range_proof(case, index.name, index.key, index.role, index.where, always)
+    for index in ring.indices:
+        for step in index.steps:
+            if isinstance(step, CheckedStep) and index.role != "count":
+                yield _advance_proof(case, index.name, index.key, step, origin, always)
+
+
+def _context(case: Case) -> Iterator[str]:
+    family = case.family
+    if family is None:
+        return
+    shared = sorted(
+        {short_text(key) for trace in (*case.operations, *case.setups) for key in trace.volatile if key in family.keys}
+    )
+    if shared:
+        yield f"nothing else changes {' or '.join(shared)} while one of these functions runs"
+
+
+def _open(case: Case, about: str, where: Origin, function: str, index: str, reason: OpenReason, detail: str) -> Proof:
+    return Proof(about, where, function, index, False, reason=reason, detail=detail)  # type: ignore[arg-type]
+
+
+def _access_proof(case: Case, item: Access, found: Sequence[tuple[Body, Accessed]], assumed: Sequence[str]) -> Proof:
+    def left(reason: OpenReason, detail: str) -> Proof:
+        return _open(case, "access", item.where, item.function, item.index, reason, detail)
+
+    if case.open_as is not None or case.induction is None:
+        return left(case.open_as or "not modelled", case.detail)
+    for trace in (*case.operations, *case.setups):
+        if trace.troubles and (trace.function.name == item.function or _lays_out(case, trace, item.function)):
+            reason, detail = next(iter(trace.troubles))
+            return left(cast(OpenReason, reason), f"{trace.function.name}: {detail}")
+    mine = [(body, access) for body, access in found if _is_storage(case, access)]
+    strange = [access for _, access in found if not _is_storage(case, access)]
+    if not mine:
+        if strange:
+            return left("pointer not resolved", "the pointer that is accessed here could not be followed")
+        return left("not modelled", "no run that was followed comes to this access")
+    if any(access.array is None and access.pointer is not None and _is_argument(access.pointer) for access in strange):
+        return left("argument not bounded", "it accesses what a caller gives")
+    more: list[str] = []
+    cores: list[str] = []
+    for body, access in mine:
+        goal = _inside(case, body, access, item, more)
+        if goal is None:
+            return left("capacity not known", "the code does not show the number of slots")
+        verdict = proved(case.induction, body, access.state, goal)
+        cores += basis(case.induction)
+        if verdict != "holds":
+            reason = _why(case, body, verdict)
+            return left(reason, _detail(case, body, access))
+    kept = tuple(dict.fromkeys(cores))
+    return Proof("access", item.where, item.function, item.index, True, kept, tuple(dict.fromkeys((*assumed, *more))))
+
+
+def _lays_out(case: Case, trace: Trace, name: str) -> bool:
+    return any(identity == name or identity.endswith(f":{name}") for identity in trace.laid_out)
+
+
+def _is_argument(pointer: Pointer) -> bool:
+    return pointer.source is not None and pointer.source[0][0] == "argument"
+
+
+def _is_storage(case: Case, access: Accessed) -> bool:
+    key = case.ring.storage_key
+    if access.array is not None:
+        return access.array[0] == key
+    pointer = access.pointer
+    return pointer is not None and pointer.source is not None and (*pointer.source[0], "*") == key
+
+
+def _inside(case: Case, body: Body, access: Accessed, item: Access, more: list[str]) -> Truth | None:
+    """That an access stays inside the storage."""
+    trace, family = body.trace, case.family
+    assert family is not None
+    width = trace.memories.step + 12
+    steps = IntType("steps", trace.memories.step, True, 9)
+
+    def wide(number: Number) -> Number:
+        return stretch(number, steps, width)
+
+    first: Number = wide(access.first)
+    if access.array is not None:
+        length: Number | None = access.array[1]
+        if length is None or (length < 2 and case.ring.capacity is None):
+            return None
+    else:
+        pointer = access.pointer
+        assert pointer is not None and pointer.source is not None
+        view = look_at(family, trace, access.state, _base_of(case, trace, pointer))
+        key = pointer.source[0]
+        whole = view.pointer(key) if key in family.pointers else None
+        if whole is None or case.slots is None or (case.slots.key is None and case.ring.capacity is None):
+            return None
+        if address_mark(whole.at) != address_mark(pointer.at) or _changed(trace, access.state, key):
+            return None
+        if case.slots.key is not None and _changed(trace, access.state, case.slots.key):
+            return None
+        slots = case.slots.number(view)
+        length = slots if isinstance(slots, int) else stretch(slots, IntType("slots", family.width, True, 9), width)
+        # At the pointers' own width: what they have in common falls out, wherever the buffer begins.
+        first = wide(bits(access.first, trace.memories.step) - bits(whole.steps, trace.memories.step))
+        more.append(f"{key_text(key)} has {case.slots.text} elements")
+    if access.bytes_ is None:
+        top = "<=" if access.kind == "address" and not item.index else "<"
+        return both(compared(">=", first, 0, width, True), compared(top, first, length, width, True))
+    unit = access.unit or 1
+    size = bits(wide(access.bytes_), width)
+    end = bits(first, width) * z3.BitVecVal(unit, width) + size
+    limit = bits(length, width) * z3.BitVecVal(unit, width)
+    inside = both(compared(">=", first, 0, width, True), compared("<=", end, limit, width, True))
+    return either(equal(size, 0, width), both(compared(">=", size, 0, width, True), inside))
+
+
+def _base_of(case: Case, trace: Trace, pointer: Pointer) -> Number | None:
+    family = case.family
+    assert family is not None and pointer.source is not None
+    key, at = pointer.source
+    return added(trace.memories, at, -family.offsets[key]) if key in family.offsets else None
+
+
+def _changed(trace: Trace, state: State, key: Key) -> bool:
+    """Whether a function stored into a key's memory since it began, or since the last call that it made."""
+    pending: list[Node] = [row_of(trace.memories, state, key)]
+    seen: set[int] = set()
+    while pending:
+        node = pending.pop()
+        if id(node) in seen:
+            continue
+        seen.add(id(node))
+        if isinstance(node, Stored):
+            return True
+        if not isinstance(node, Start):
+            pending.extend(part for _, part in node.parts)
+    return False
+
+
+def _why(case: Case, body: Body, verdict: str) -> OpenReason:
+    induction = case.induction
+    assert induction is not None
+    if induction.exhausted:
+        return cast(OpenReason, induction.exhausted)
+    if verdict == "unknown":
+        return "query limit"
+    if body.trace.calls and any(point.kind == "after call" for point in body.trace.points):
+        return "call to unknown code"
+    if body.trace.arguments and any(isinstance(value, Pointer) is False for value in body.trace.arguments.values()):
+        return "argument not bounded"
+    return "start value not known" if not kept_by(induction) else "not modelled"
+
+
+def _detail(case: Case, body: Body, access: Accessed) -> str:
+    induction = case.induction
+    assert induction is not None
+    for text, (name, _, _) in induction.dropped.items():
+        if "[loop" not in text and "<" in text and name:
+            return f"{body.trace.function.name} does not show it, and {name} does not keep {text}"
+    return f"{body.trace.function.name} does not show it"
+
+
+def _range_proof(case: Case, name: str, key: Key, role: str, where: Origin, assumed: Sequence[str]) -> Proof:
+    if case.open_as is not None or case.induction is None:
+        return _open(case, "range", where, "", name, case.open_as or "not modelled", case.detail)
+    if case.slots is None:
+        return _open(case, "range", where, "", name, "capacity not known", "the code does not show the number of slots")
+    active = case.induction.active
+    short, text = short_text(key), case.slots.text
+    wanted = [f"{short} {'<=' if role == 'count' else '<'} {text}"]
+    family = case.family
+    assert family is not None
+    if key in family.types and family.types[key].signed:
+        wanted.append(f"{short} >= 0")
+    missing = [relation for relation in wanted if relation not in active]
+    if not missing:
+        return Proof("range", where, "", name, True, tuple(wanted), tuple(assumed))
+    function, point, _ = case.induction.dropped.get(missing[0], ("", None, ""))
+    reason: OpenReason = "start value not known" if not function else "not modelled"
+    if case.induction.exhausted:
+        reason = cast(OpenReason, case.induction.exhausted)
+    elif point is not None and point.kind in ("call", "after call"):
+        reason = "call to unknown code"
+    return _open(case, "range", where, "", name, reason, f"{function or 'the start'} does not show {missing[0]}")
+
+
+def _advance_proof(
+    case: Case,
+    name: str,
+    key: Key,
+    step: CheckedStep,
+    origin: Callable[[Position], Origin],
+    assumed: Sequence[str],
+) -> Proof:
+    """That wherever the step is made, the index is then at the next slot, round the end, or where it was."""
+    where, function = step.where, step.function
+
+    def left(reason: OpenReason, detail: str) -> Proof:
+        return _open(case, "advance", where, function, name, reason, detail)
+
+    if case.open_as is not None or case.induction is None:
+        return left(case.open_as or "not modelled", case.detail)
+    family, slots = case.family, case.slots
+    assert family is not None
+    if slots is None:
+        return left("capacity not known", "the code does not show the number of slots")
+    if step.by not in (1, -1) or key not in family.types or step.wrap == "free-running":
+        return left("not modelled", "it does not go one slot at a time")
+    some = False
+    cores: list[str] = []
+    for body in case.induction.bodies:
+        if not body.assumes:
+            continue
+        mine = body.trace.function.name == function or _lays_out(case, body.trace, function)
+        stores = [store for store in body.trace.stores if store.key == key]
+        if not mine or not stores:
+            continue
+        if body.trace.troubles:
+            reason, detail = next(iter(body.trace.troubles))
+            return left(cast(OpenReason, reason), detail)
+        some = True
+        for began, ended in _stretches(case, body):
+            for base in body.objects:
+                goal = _one_on(case, body, began, ended, base, key, slots, step.by)
+                verdict = proved(case.induction, body, ended.state, goal)
+                cores += basis(case.induction)
+                if verdict != "holds":
+                    reason_: OpenReason = "query limit" if verdict == "unknown" else "not modelled"
+                    return left(reason_, f"{body.trace.function.name} may move it by more than one slot")
+    if not some:
+        return left("not modelled", "no run that was followed makes this step")
+    return Proof("advance", where, function, name, True, tuple(dict.fromkeys(cores)), tuple(assumed))
+
+
+def _stretches(case: Case, body: Body) -> Iterator[tuple[Point, Point]]:
+    """Pieces of runs without loops in them: from where a function or loop begins, or a call came back, to what ends it.
+
+    Every way from a beginning to an end lies in one of these pairs; a pair that no way connects proves nothing wrong,
+    as its end is then reached from another beginning.
+    """
+    began: list[Point] = []
+    for point in body.trace.points:
+        if point.kind in ("entry", "after call", "loop"):
+            began.append(point)
+    ended = [point for point in body.trace.points if point.kind in ("return", "call", "before loop", "round")]
+    if len(began) == 1:
+        for end in ended:
+            yield began[0], end
+        return
+    for end in ended:
+        for begin in began:
+            yield begin, end
+
+
+def _one_on(
+    case: Case, body: Body, began: Point, ended: Point, base: Number | None, key: Key, slots: Slots, by: int
+) -> Truth:
+    family = case.family
+    assert family is not None
+    first, last = (look_at(family, body.trace, point.state, base) for point in (began, ended))
+    before, after = bits(first.number(key), family.width), bits(last.number(key), family.width)
+    limit = bits(slots.number(last), family.width)
+    one = z3.BitVecVal(1, family.width)
+    same = equal(after, before, family.width)
+    if by > 0:
+        nexts = either(
+            both(equal(after, before + one, family.width), compared("<", after, limit, family.width, True)),
+            both(equal(after, 0, family.width), equal(before + one, limit, family.width)),
+        )
+    else:
+        nexts = either(
+            both(equal(after, before - one, family.width), compared(">=", after, 0, family.width, True)),
+            both(equal(before, 0, family.width), equal(after + one, limit, family.width)),
+        )
+    return either(same, nexts)
