@@ -443,3 +443,59 @@ def test_a_hardware_counter_that_counts_slots_down_from_the_end() -> None:
         """
     )
     assert (ring.storage, ring.capacity, ring.wrap) == ("from_shore", 16, "decrement")
+
+
+INDICES_ONLY = """
+struct order_slots { unsigned puts, gets, mask; };
+static unsigned held(const struct order_slots *slots) { return slots->puts - slots->gets; }
+int put(struct order_slots *slots) { if (held(slots) > slots->mask) return -1; return slots->puts++ & slots->mask; }
+int get(struct order_slots *slots) { if (held(slots)) return slots->gets++ & slots->mask; return -1; }
+"""
+
+
+def test_indices_whose_storage_is_the_callers() -> None:
+    (ring,) = rings(INDICES_ONLY)
+    assert (ring.storage, ring.capacity, ring.storage_form, ring.storage_key) == (
+        "struct order_slots",
+        None,
+        "elsewhere",
+        (),
+    )
+    assert {index.name.split(".")[1]: index.role for index in ring.indices} == {"puts": "write", "gets": "read"}
+    assert ring.bound is not None and ring.bound.text == "struct order_slots.mask + 1"
+    assert (ring.wrap, ring.scheme, ring.accesses) == ("free-running", "difference", ())
+    assert ring.functions == ("put", "get")
+
+
+def test_storage_that_is_reached_with_the_slot_that_a_helper_gives_is_the_rings() -> None:
+    (ring,) = rings(
+        INDICES_ONLY
+        + """
+        struct shore_link { uint8_t *orders; struct order_slots slots; };
+        int send(struct shore_link *link, uint8_t order)
+        { int at = put(&link->slots); if (at < 0) return 0; link->orders[at] = order; return 1; }
+        int receive(struct shore_link *link)
+        { int at = get(&link->slots); return at < 0 ? -1 : link->orders[at]; }
+        """
+    )
+    assert (ring.storage, ring.storage_form) == ("struct shore_link.orders", "pointer")
+    assert {index.name.split(".")[1]: index.role for index in ring.indices} == {"puts": "write", "gets": "read"}
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        # two augers in turn, and the hoppers in turn: nothing compares the two
+        "struct rota { unsigned auger, hopper, augers; };"
+        "unsigned next_auger(struct rota *r) { r->auger++; return r->auger % r->augers; }"
+        "unsigned next_hopper(struct rota *r) { r->hopper++; return r->hopper % r->augers; }",
+        # one only
+        "struct rota { unsigned auger, augers; };"
+        "unsigned next_auger(struct rota *r) { r->auger++; return r->auger % r->augers; }",
+        # compared, but no slot is given
+        "struct race { unsigned a, b, laps; };"
+        "int step(struct race *r) { r->a = (r->a + 1) % r->laps; r->b = (r->b + 2) % r->laps; return r->a == r->b; }",
+    ],
+)
+def test_members_that_go_round_without_being_a_ring(text: str) -> None:
+    assert rings(text) == []

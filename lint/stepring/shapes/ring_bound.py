@@ -69,6 +69,9 @@ def _told(key: Key) -> Key:
 def workers(merged: Catalogue, candidate: Candidate) -> tuple[tuple[str, ...], tuple[str, ...]]:
     """The functions that work on a ring: those that can be entered, and those that are only called by them."""
     keys = {*candidate.indices, *candidate.counts}
+    bound = bound_of(merged, candidate)
+    if bound is not None and bound.form == "member":
+        keys.add(bound.key)
     structs = {key[1] for key in keys if key[0] == "member"}
     entered = {id(facts) for facts in merged.entered}
     doors: dict[str, None] = {}

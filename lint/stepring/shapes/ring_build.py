@@ -10,7 +10,7 @@ from stepring.shapes.ring_arith import Low, Range, Value
 from stepring.shapes.ring_bound import bound_of, workers
 from stepring.shapes.ring_catalogue import Candidate, Catalogue, Moves, is_solid
 from stepring.shapes.ring_facts import Advance, Wrap
-from stepring.shapes.ring_keys import Key, byte_size, key_text, short_text
+from stepring.shapes.ring_keys import Key, byte_size, key_text, short_text, struct_name
 from stepring.shapes.ring_search import Access as Found
 from stepring.shapes.ring_search import Study, Witness, out_of_range
 from stepring.shapes.ring_sources import Use
@@ -57,22 +57,24 @@ def build(
     notes = []
     if candidate.capacity is None:
         notes.append("the capacity is set at run time")
+    if candidate.elsewhere:
+        notes.append("the storage is the caller's, who gets the slot")
     functions, helpers = workers(merged, candidate)
     return Ring(
         "/".join(storage),
-        key_text(storage),
+        struct_name(storage[1]) if candidate.elsewhere else key_text(storage),
         "member" if storage[0] == "member" else "variable",
         origin(where),
         candidate.capacity,
-        byte_size(touch.element, merged.structs),
+        None if candidate.elsewhere else byte_size(touch.element, merged.structs),
         indices,
-        tuple(_accesses(merged, candidate, uses, studied, origin)),
+        () if candidate.elsewhere else tuple(_accesses(merged, candidate, uses, studied, origin)),
         _scheme(merged, candidate, indices),
         wrap,
         tuple(notes),
         bound=bound_of(merged, candidate),
-        storage_key=storage,
-        storage_form="pointer" if storage[-1] == "*" else "array",
+        storage_key=() if candidate.elsewhere else storage,
+        storage_form="elsewhere" if candidate.elsewhere else "pointer" if storage[-1] == "*" else "array",
         struct=next((key[1] for key in candidate.indices if key[0] == "member"), ""),
         functions=functions,
         helpers=helpers,
@@ -105,7 +107,7 @@ def _index(
         type_.name,
         type_.low,
         type_.high,
-        "count" if key in candidate.counts else _role(key, uses),
+        "count" if key in candidate.counts else _role(candidate, key, uses),
         tuple(_steps(merged, candidate, key, moves, uses, studied, origin)),
         values,
         initial,
@@ -114,7 +116,9 @@ def _index(
     )
 
 
-def _role(key: Key, uses: Sequence[Use]) -> Role:
+def _role(candidate: Candidate, key: Key, uses: Sequence[Use]) -> Role:
+    if candidate.writer is not None:
+        return "write" if key == candidate.writer else "read"
     touches = [use.touch for use in uses if key in use.cells]
     stores = any(touch.kind == "store" or touch.copied == "to" for touch in touches)
     loads = any(touch.kind == "load" or touch.copied == "from" for touch in touches)

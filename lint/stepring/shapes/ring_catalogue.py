@@ -26,6 +26,7 @@ from stepring.meaning.types import (
     StructType,
 )
 from stepring.places import Position
+from stepring.shapes.ring_elsewhere import given, pairs, walked_together, writer_of
 from stepring.shapes.ring_facts import Advance, FlatFacts, Reset, Wrap, complete, facts_of
 from stepring.shapes.ring_flat import Flat, Outside, Spoil, Touch, flatten
 from stepring.shapes.ring_keys import Key, inner_structs, is_scalar, targets
@@ -67,16 +68,22 @@ class Catalogue:
     writers: dict[str, frozenset[Key]]
     structs: Mapping[str, StructLayout]
     written: set[Key] = field(default_factory=set)
+    together: dict[Key, frozenset[Key]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
 class Candidate:
-    """A ring before its indices were run: storage, capacity, indices in the order of their first use, counts."""
+    """A ring before its indices were run: storage, capacity, indices in the order of their first use, counts.
+
+    ``elsewhere``: the storage is the caller's; ``writer`` is then the index that stores, if the code tells.
+    """
 
     storage: Key
     capacity: int | None
     indices: tuple[Key, ...]
     counts: tuple[Key, ...]
+    elsewhere: bool = False
+    writer: Key | None = None
 
 
 def catalogue(
@@ -109,6 +116,10 @@ def catalogue(
     used = {key for item in facts for use in item.uses for key in use.cells}
     walked = {use.touch.storage for item in facts for use in item.uses}
     for item in facts:
+        item.given = list(given(item))
+    together = walked_together(facts)
+    used |= {key for keys in together.values() for key in keys}
+    for item in facts:
         touched = {touch.storage for touch in item.plain} | {use.touch.storage for use in item.uses}
         if item.stored & used or touched & walked:
             complete(item)
@@ -130,6 +141,7 @@ def catalogue(
         or item.flat.function.name in taken
     ]
     merged.writers = _writers(facts, structs)
+    merged.together = together
     return merged
 
 
@@ -235,7 +247,8 @@ def _writers(facts: Sequence[FlatFacts], structs: Mapping[str, StructLayout]) ->
 
 
 def candidates(merged: Catalogue) -> Iterator[Candidate]:
-    """The rings of the program, in the order of their storage."""
+    """The rings of the program, in the order of their storage; then those whose storage is their callers'."""
+    owned: set[Key] = set()
     for storage, uses in sorted(merged.uses.items(), key=lambda item: item[1][0].touch.position):
         if storage in merged.constant or not uses:
             continue
@@ -244,7 +257,20 @@ def candidates(merged: Catalogue) -> Iterator[Candidate]:
             capacity = None
         found = _candidate(merged, storage, uses, capacity)
         if found is not None:
+            owned.update(found.indices)
             yield found
+    yield from _without_storage(merged, owned)
+
+
+def _without_storage(merged: Catalogue, owned: set[Key]) -> Iterator[Candidate]:
+    """The rings that keep indices only and give their callers the slot; ``owned`` are indices of known storage."""
+    moving = frozenset(key for key, moves in merged.moves.items() if moves.advances)
+    for home, indices in pairs(merged.together, moving, merged.comparisons):
+        if owned.isdisjoint(indices):
+            uses = [use for item in merged.facts for use in item.given if use.touch.storage == home]
+            merged.uses[home] = sorted(uses, key=lambda use: use.touch.position)
+            merged.elements[home] = merged.uses[home][0].touch
+            yield Candidate(home, None, indices, (), True, writer_of(merged.facts, indices))
 
 
 def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: int | None) -> Candidate | None:

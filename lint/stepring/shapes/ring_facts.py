@@ -126,6 +126,7 @@ class FlatFacts:
     cross: dict[tuple[Key, Key], CellFacts] = field(default_factory=dict)
     copied: set[tuple[Key, Key]] = field(default_factory=set)
     listed: Table | None = None
+    given: list[Use] = field(default_factory=list)
 
     def table(self) -> Table:
         """The operations by what they do, worked out once."""
@@ -213,7 +214,7 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
     bare: list[tuple[int, Set, int, bool, bool]] = []
     for number, op, direct in nodes:
         steps = list(_steps(sight, op.value, op.frame, cell))
-        for form, limit, operator, at, term in _reductions(sight, op.value, op.frame, cell):
+        for form, limit, operator, at, term in reductions(sight, op.value, op.frame, cell):
             facts.wraps.append(Wrap(form, limit, operator, at or op.position, op.function, not direct, term))
             facts.roles[id(op)] = "wrap"
         value = written(op.value)
@@ -387,12 +388,12 @@ def _steps(sight: Sight, expr: Expr, frame: str, cell: Key) -> Iterator[int | No
                 yield fold(left)
 
 
-def _reductions(
+def reductions(
     sight: Sight, expr: Expr, frame: str, cell: Key
 ) -> Iterator[tuple[WrapForm, int | None, str, Position | None, Term | None]]:
     match expr:
         case Cast(operand=operand):
-            yield from _reductions(sight, operand, frame, cell)
+            yield from reductions(sight, operand, frame, cell)
         case Binary(op="%", left=left, right=right, position=position):
             if cell in sources(sight, left, frame):
                 yield "modulo", fold(right), "%", position, term_of(sight, right, frame)
@@ -402,7 +403,7 @@ def _reductions(
                 known = fold(mask)
                 yield "mask", None if known is None else known + 1, "&", position, mask_term(sight, inner, mask, frame)
         case Binary(op="+" | "-", left=left, right=right):
-            yield from _reductions(sight, left, frame, cell)
-            yield from _reductions(sight, right, frame, cell)
+            yield from reductions(sight, left, frame, cell)
+            yield from reductions(sight, right, frame, cell)
 
 

@@ -54,7 +54,8 @@ class _Scan:
 
     ``compared`` are integers compared with an upper end, ``emptied`` those compared with 0; ``reset`` are set to 0 or
     1, ``filled`` to more; ``ups`` and ``downs`` are moved so, ``turned`` reduced at their update. ``reduced`` are
-    brought into range where they subscript, ``via`` moved by way of a call; ``reads`` tell the caller something.
+    brought into range where they subscript, ``via`` moved by way of a call; ``reads`` tell the caller something,
+    ``slots`` a value that was brought into a range set at run time.
     ``turns`` says that the function compares or reduces something, as helpers that wrap do.
     """
 
@@ -72,6 +73,7 @@ class _Scan:
     downs: set[_Name] = field(default_factory=set)
     reads: set[_Name] = field(default_factory=set)
     reduced: set[_Name] = field(default_factory=set)
+    slots: set[_Name] = field(default_factory=set)
     via: set[tuple[_Name, str]] = field(default_factory=set)
     turned: set[_Name] = field(default_factory=set)
     turns: bool = False
@@ -97,6 +99,8 @@ def ring_functions(functions: Sequence[Function]) -> tuple[Function, ...]:
         for name in scan.moved & scan.turned
         if name[0] == "member" or ":" not in name[1]
     }
+    # The storage is the caller's, who gets the slot.
+    strong |= {name for scan in scans for name in scan.slots if name[0] == "member"} & moved
     owners = {name[1] for name in strong if name[0] == "member"}
     indices = strong | {name for scan in scans for name in scan.stored if name[0] == "member" and name[1] in owners}
     walked = {array for scan in scans for array, name in scan.indexed if name in strong}
@@ -178,6 +182,8 @@ def _scan(function: Function) -> _Scan:
                     _expr(look, value)
                 case Return(value=result) if result is not None:
                     look.scan.turns = look.scan.turns or _reduced(result)
+                    if _reduced(result, at_run_time=True):
+                        look.scan.slots.update(_sources(look, result))
                     _read(look, result)
                     _expr(look, result)
     scan = look.scan
@@ -381,15 +387,15 @@ def _falls(expr: Expr) -> bool:
     return isinstance(expr, Binary) and expr.op == "-"
 
 
-def _reduced(expr: Expr) -> bool:
+def _reduced(expr: Expr, at_run_time: bool = False) -> bool:
     match expr:
         case Cast(operand=operand):
-            return _reduced(operand)
-        case Binary(op="%"):
-            return True
+            return _reduced(operand, at_run_time)
+        case Binary(op="%", right=right):
+            return not at_run_time or fold(right) is None
         case Binary(op="&", left=left, right=right):
             mask = fold(right) if fold(right) is not None else fold(left)
-            return mask is None or 0 < mask < 1 << 24
+            return mask is None or (0 < mask < 1 << 24 and not at_run_time)
     return False
 
 

@@ -180,7 +180,7 @@ def use_of(sight: Sight, touch: Touch) -> Use | None:
         cells = cells & near(sight, touch.subscript, touch.frame, (), True) or cells
     if not cells:
         return None
-    form, modulus, at, term = _reduction(sight, touch.subscript, touch.frame, 0)
+    form, modulus, at, term = reduction_of(sight, touch.subscript, touch.frame, 0)
     return Use(touch, cells, form, modulus, at, _scaled(touch.subscript), term)
 
 
@@ -262,13 +262,13 @@ def _added(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...], strict: 
     return NOTHING
 
 
-def _reduction(
+def reduction_of(
     sight: Sight, expr: Expr, frame: str, depth: int
 ) -> tuple[WrapForm, int | None, Position | None, Term | None]:
     """How a subscript is brought into range at the access: the remainder or mask that is outermost in it."""
     match expr:
         case Cast(operand=operand):
-            return _reduction(sight, operand, frame, depth)
+            return reduction_of(sight, operand, frame, depth)
         case Binary(op="%", right=right, position=position):
             return "modulo", fold(right), position, term_of(sight, right, frame)
         case Binary(op="&", left=left, right=right, position=position):
@@ -280,7 +280,7 @@ def _reduction(
                 made = [op for _, op in sets if fold(op.value) is None]  # besides a constant that says "none"
                 if is_local(key) and len(made) == 1:
                     op = made[0]
-                    form, modulus, at, term = _reduction(sight, op.value, op.frame, depth + 1)
+                    form, modulus, at, term = reduction_of(sight, op.value, op.frame, depth + 1)
                     return form, modulus, at or op.position, term
     return "none", None, None, None
 
