@@ -13,7 +13,6 @@ from typing import Any, Literal, TypeAlias
 from stepring.meaning.types import IntType
 from stepring.paths.devices import Devices
 from stepring.paths.interpreter import run
-from stepring.paths.replay import pointed
 from stepring.paths.types import Event, Outcome, Unsettled
 from stepring.paths.witness import OutsideValue, Reference, WitnessCall
 from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Operation, World, arguments
@@ -21,6 +20,8 @@ from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Operation, World, 
 Policy: TypeAlias = Literal["zero", "one", "once", "token", "token once"]
 """What the outside gives in one call: always 0; always 1; 1 and then 0; the element; the element and then 0."""
 _GUARD = re.compile(r"assert|abort|panic|fatal|hardfault|unreachable|trap$", re.IGNORECASE)
+READY = 4000
+"""What making a function ready to run costs, in steps."""
 _ASSERTION = "an assertion of the program fails"
 
 
@@ -37,7 +38,8 @@ class Effect:
     """What a call did.
 
     ``before`` and ``after`` are the indices' values, ``stored`` the slots whose bytes changed as (slot, bytes as a
-    number). ``outputs`` are the channels with the element values that came out, in order.
+    number). ``outputs`` are the channels with the element values that came out, in order. ``prior`` is the call that
+    has to come before this one, where an element is looked at by one function and dropped by another.
     """
 
     call: WitnessCall
@@ -46,6 +48,7 @@ class Effect:
     after: tuple[Any, ...]
     stored: tuple[tuple[int, int], ...]
     outputs: dict[str, tuple[int, ...]]
+    prior: "Effect | None" = None
 
     @property
     def returned(self) -> bool:
@@ -121,13 +124,14 @@ def call(
         _hand_out(world, name, values, outputs)
         return ask(name) if name in world.group.wanted else 0
 
-    before, slots = world.values(), world.contents()
+    before, slots = world.values(), world.raw()
+    ready = len(world.group.program.codes)
     devices = Devices(world.group.program, world.memory, ask)
     most = min(purse.left, 3000 + 150 * world.slots)
     outcome = run(
         world.group.program,
         operation.function.identity,
-        [pointed(world.group.program, world.memory, item) for item in given],
+        [world.pointer(item) for item in given],
         external,
         steps=max(1, most),
         memory=world.memory,
@@ -136,9 +140,8 @@ def call(
         device=devices.register,
     )
     devices.settle()
-    purse.left -= outcome.steps + 60
-    now = world.contents()
-    stored = tuple((slot, new) for slot, (old, new) in enumerate(zip(slots, now, strict=True)) if old != new)
+    purse.left -= outcome.steps + 60 + READY * (len(world.group.program.codes) - ready)
+    stored = _changed(slots, world.raw(), world.element)
     for name, told in devices.told:
         outputs.setdefault(f"device {name}", []).append(told)
     made = WitnessCall(operation.function.identity, given, tuple(asked))
@@ -147,6 +150,15 @@ def call(
     mask = (1 << 8 * world.element) - 1
     effect.outputs.update({name: tuple(item & mask for item in values) for name, values in outputs.items()})
     return effect
+
+
+def _changed(old: bytes, new: bytes, size: int) -> tuple[tuple[int, int], ...]:
+    """The slots whose bytes differ, with the new bytes as a number."""
+    if old == new:
+        return ()
+    starts = range(0, len(new), size)
+    changed = ((at // size, new[at : at + size]) for at in starts if old[at : at + size] != new[at : at + size])
+    return tuple((slot, int.from_bytes(part, "little")) for slot, part in changed)
 
 
 def _clear(world: World) -> None:

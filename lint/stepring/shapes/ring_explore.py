@@ -13,7 +13,7 @@ from typing import Any
 
 from stepring.meaning.types import IntType
 from stepring.paths.interpreter import run as run_program
-from stepring.paths.replay import pointed, replay
+from stepring.paths.replay import replay
 from stepring.paths.types import Event
 from stepring.paths.witness import Ending, OutsideValue, Reference, StartValue, Value, Witness, WitnessCall
 from stepring.places import Origin, Position
@@ -21,23 +21,23 @@ from stepring.shapes.ring_calls import Effect, Purse, about_storage, below, call
 from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
 from stepring.shapes.ring_types import Disagreement, Doubt
 from stepring.shapes.ring_uses import (
+    SMALL,
     Probe,
     Use,
     designed,
     drained,
     occupancy_tests,
     others,
+    perform,
     puts,
     takes,
     ways_taken,
 )
-from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, Operation, World, world_of
+from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, World, world_of
 from stepring.shapes.types import OrbitStep, Ring
 
-BUDGET = 400_000
+BUDGET = 900_000
 """Interpreter steps for one ring."""
-SMALL = 8
-"""Rings with at most so many slots are searched state by state."""
 SHOWN = 12
 NEAR_END = 3
 Placer = Callable[[Position], Origin]
@@ -179,7 +179,7 @@ def _runs(world: World, made: WitnessCall) -> WitnessCall | None:
             asked.append(OutsideValue(name, 0))
         return 0
 
-    values = [pointed(world.group.program, world.memory, item) for item in made.arguments]
+    values = [world.pointer(item) for item in made.arguments]
     outcome = run_program(world.group.program, made.function, values, external, steps=5000, memory=world.memory)
     return replace(made, outside=tuple(asked)) if outcome.kind == "returned" else None
 
@@ -218,8 +218,12 @@ def _classify(search: Search) -> None:
             _inverted(search, put)
         return
     search.take = _checked_take(search, search.take)
+    _ranges(search)
     kept: list[Use] = []
     for put in found:
+        if put.operation.helper and kept:
+            kept.append(replace(put, room=kept[0].room))  # whoever calls it looks for it
+            continue
         known = designed(probe, put, search.take)
         if known is None:
             continue
@@ -239,7 +243,6 @@ def _classify(search: Search) -> None:
     more.extend(others(probe, search.put, search.take))
     more = [_checked_take(search, use) if use.kind in ("take", "drop") else use for use in more]
     search.uses = [*kept, *(_told(search, use) for use in more)]
-    _ranges(search)
 
 
 def _inverted(search: Search, put: Use) -> None:
@@ -270,55 +273,60 @@ def _inverted(search: Search, put: Use) -> None:
 
 
 def _ranges(search: Search) -> None:
-    """The range that each index keeps in plain use: round the ring twice, then full. None for free-running ones."""
+    """The range that each index keeps in plain use, twice round the ring. None for free-running ones.
+
+    What an index holds counts only if the next put and take go well.
+    """
     world, put, take = search.world, search.put, search.take
     assert put is not None and take is not None
     search.probe.back()
     seen = [world.values()]
-    turns = 2 * world.slots + 1
-    for number in range(turns):
-        call(world, put.operation, put.way, search.probe.purse, token=number)
-        seen.append(world.values())
-        call(world, take.operation, take.way, search.probe.purse)
-        seen.append(world.values())
-    free = [
-        old if isinstance(old, int) and isinstance(new, int) and new - old == turns else None
-        for old, new in zip(seen[0], seen[-1], strict=True)
-    ]
-    for number in range(search.room):
-        call(world, put.operation, put.way, search.probe.purse, token=number)
-        seen.append(world.values())
+    latest: list[tuple[Any, ...]] = []
+    turns = 0
+    for number in range(2 * world.slots + 1):
+        given = call(world, put.operation, put.way, search.probe.purse, token=number)
+        taken = perform(world, take, search.probe.purse)
+        value = given.stored[0][1] if given.stored else world.tokens[number % len(world.tokens)]
+        if taken.outputs.get(take.channel, ())[:1] != (value,):
+            break
+        seen.extend(latest)
+        latest = [given.after, taken.after]
+        turns += 1
+    free = [_free(old, new, turns - 1) for old, new in zip(seen[0], seen[-1], strict=True)]
     ranges: list[tuple[int, int] | None] = []
     for at, place in enumerate(world.places):
         values = [row[at] for row in seen]
-        if free[at] is not None or not all(isinstance(value, int) for value in values):
+        whole = isinstance(world.readers[at][2], IntType) and all(isinstance(value, int) for value in values)
+        if free[at] or not whole:
             ranges.append(None)
-            continue
-        if not isinstance(world.readers[at][2], IntType):
-            ranges.append(None)
-            continue
-        most = world.slots if place[3] == "count" else world.slots - 1
-        ranges.append((min(0, *values), max(most, *values)))
+        else:
+            most = world.slots if place[3] == "count" else world.slots - 1
+            ranges.append((min(0, *values), max(most, *values)))
     search.ranges = tuple(ranges)
+
+
+def _free(old: Any, new: Any, turns: int) -> bool:
+    """Whether an index counts on without coming back."""
+    return turns > 1 and isinstance(old, int) and isinstance(new, int) and new - old == turns
 
 
 def _checked_take(search: Search, use: Use) -> Use:
     """Whether a take looks itself if there is something: it says no on the empty ring."""
     probe = search.probe
     probe.back()
-    effect = call(search.world, use.operation, use.way, probe.purse, number=1)
+    effect = perform(search.world, use, probe.purse, number=1)
     if effect.refused or use.checked:
         return replace(use, checked=True)
     assert search.put is not None
     tests = occupancy_tests(probe, use.operation)
     probe.back()
     events: list[Event] = []
-    call(search.world, use.operation, use.way, probe.purse, number=1, watch=events)
+    perform(search.world, use, probe.purse, number=1, watch=events)
     empty = ways_taken(events, tests)
     call(search.world, search.put.operation, search.put.way, probe.purse)
     call(search.world, search.put.operation, search.put.way, probe.purse, token=1)
     events = []
-    call(search.world, use.operation, use.way, probe.purse, number=1, watch=events)
+    perform(search.world, use, probe.purse, number=1, watch=events)
     return replace(use, checked=bool(empty - ways_taken(events, tests)) and not use.operation.helper)
 
 
@@ -341,9 +349,10 @@ def _checked_put(search: Search, put: Use, held: Sequence[Content], given: Conte
         taken = ways_taken(events, tests)
         if number < put.room:
             before |= taken
-            run.append(_made(effect, put))
+            run.extend(_made(search, effect))
         else:
             at = set(taken)
+            state = replace(state, suspect=_suspect(search, state, put, effect, {"token": number}))
     notices = bool(at - before) or put.design == "refuses"
     if put.operation.helper or not notices or put.room + 1 >= len(held) or put.room + 1 > search.world.slots + 1:
         return replace(put, checked=False, design="unchecked")
@@ -353,9 +362,10 @@ def _checked_put(search: Search, put: Use, held: Sequence[Content], given: Conte
         what = f"{put.name} on a ring that holds {put.room} elements loses {lost} of {put.room + 1}"
         _content(search, state, put, "room", what, given[: put.room + 1], after, token=put.room)
     else:
-        what = f"{put.name} on a ring that holds {put.room} elements leaves them in another order"
+        due = given[1 : put.room + 1]
+        what = f"{put.name} on a ring that holds {put.room} makes it give {_shown(after)} where {_shown(due)} is due"
         doubt: Doubt = "room" if put.room >= search.world.slots - 1 and put.design == "refuses" else "order"
-        _content(search, state, put, doubt, what, given[1 : put.room + 1], after, token=put.room)
+        _content(search, state, put, doubt, what, due, after, token=put.room)
     return replace(put, checked=False, design="unchecked")
 
 
@@ -423,7 +433,9 @@ def _search(search: Search, first: State) -> None:
     world = search.world
     if world.slots > SMALL:
         for state in _plain_ways(search, first):
-            _look_round(search, state)
+            for after in _look_round(search, state):
+                if after.suspect is not None:
+                    _look_round(search, after)
             if search.spent:
                 return
         return
@@ -482,6 +494,8 @@ def _plain_ways(search: Search, first: State) -> Iterator[State]:
         state = state and _take(search, state, take, deep=False)
         if state is None or search.spent:
             return
+        if state.suspect is not None:
+            yield state
 
 
 def _look_round(search: Search, state: State) -> list[State]:
@@ -508,7 +522,7 @@ def _look_round(search: Search, state: State) -> list[State]:
 
 def _call(search: Search, state: State, use: Use, **given: Any) -> Effect:
     search.world.load(state.saved)
-    return call(search.world, use.operation, use.way, search.probe.purse, token=state.token, **given)
+    return perform(search.world, use, search.probe.purse, **{"token": state.token, **given})
 
 
 def _fault(search: Search, state: State, use: Use, effect: Effect, **given: Any) -> bool:
@@ -521,7 +535,7 @@ def _fault(search: Search, state: State, use: Use, effect: Effect, **given: Any)
         doubt: Doubt = "overflow" if search.overflow else "below zero" if below(effect) else "past end"
         ending = Ending("undefined", search.origin(outcome.position), outcome.fault)
         what = f"{use.name} leaves the storage: {outcome.reason}"
-        _report(search, state, use.operation, effect, doubt, what, outcome.position, outcome.function, ending)
+        _report(search, state, effect, doubt, what, outcome.position, outcome.function, ending)
     return True
 
 
@@ -552,15 +566,18 @@ def _after(
     search: Search, state: State, use: Use, effect: Effect, saved: Any, held: Content, given: int, **more: Any
 ) -> State:
     """The state after a call that went well; it is suspect if an index is out of the range that plain use keeps."""
-    suspect = state.suspect
-    if suspect is None:
-        for at, (limits, value) in enumerate(zip(search.ranges, effect.after, strict=False)):
-            if limits is not None and isinstance(value, int) and not limits[0] <= value <= limits[1]:
-                position, function = _index_store(search, state, use, more)
-                what = f"{use.name} leaves {search.world.places[at][0]} at {value}"
-                suspect = Suspect(position, function, f"{what}; its range is {limits[0]} to {limits[1]}")
-                break
-    return State(saved, held, (*state.run, _made(effect, use)), state.token + given, suspect)
+    suspect = state.suspect or _suspect(search, state, use, effect, more)
+    return State(saved, held, (*state.run, *_made(search, effect)), state.token + given, suspect)
+
+
+def _suspect(search: Search, state: State, use: Use, effect: Effect, given: dict[str, Any]) -> Suspect | None:
+    """Whether a call leaves an index out of the range that plain use keeps."""
+    for at, (limits, value) in enumerate(zip(search.ranges, effect.after, strict=False)):
+        if limits is not None and isinstance(value, int) and not limits[0] <= value <= limits[1]:
+            position, function = _index_store(search, state, use, given)
+            what = f"{use.name} leaves {search.world.places[at][0]} at {value}"
+            return Suspect(position, function, f"{what}; its range is {limits[0]} to {limits[1]}")
+    return None
 
 
 def _most(search: Search, state: State, more: int) -> int:
@@ -635,7 +652,7 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
             place = _return_place(search, state, use, number=number)
             ending = Ending("result", place, None, "", str(effect.outcome.value), str(due))
             at = _return_position(search, state, use, number=number)
-            _report(search, state, use.operation, effect, "occupancy", what, at, use.name, ending)
+            _report(search, state, effect, "occupancy", what, at, use.name, ending)
             continue
         yield _after(search, state, use, effect, saved, now, 0, number=number)
 
@@ -681,7 +698,7 @@ def _tell(search: Search, state: State, use: Use) -> None:
     what = f"{use.name} returns {found}; {words}"
     ending = Ending("result", _return_place(search, state, use), None, "", str(found), str(int(due)))
     position = _return_position(search, state, use)
-    _report(search, state, use.operation, effect, "occupancy", what, position, use.name, ending)
+    _report(search, state, effect, "occupancy", what, position, use.name, ending)
 
 
 def _part(search: Search, effect: Effect, found: int, true: int) -> bool:
@@ -703,7 +720,7 @@ def _near_overflow(search: Search) -> None:
     before = world.values()
     for number in range(turns):
         call(world, put.operation, put.way, search.probe.purse, token=number)
-        call(world, take.operation, take.way, search.probe.purse)
+        perform(world, take, search.probe.purse)
     after = world.values()
     free: list[tuple[int, IntType]] = []
     for at, (old, new) in enumerate(zip(before, after, strict=True)):
@@ -734,8 +751,11 @@ def _near_overflow(search: Search) -> None:
 # ----------------------------------------------------------------------------------------------------------- reporting
 
 
-def _made(effect: Effect, use: Use) -> Made:
-    return Made(effect.call, use.name, effect.after, _result_text(effect))
+def _made(search: Search, effect: Effect) -> tuple[Made, ...]:
+    """The call (and the one before it) as part of a run."""
+    name = search.world.group.functions[effect.call.function].name
+    made = Made(effect.call, name, effect.after, _result_text(effect))
+    return (made,) if effect.prior is None else (*_made(search, effect.prior), made)
 
 
 def _shown(held: Sequence[int]) -> str:
@@ -758,7 +778,7 @@ def _events(search: Search, state: State, use: Use, given: dict[str, Any]) -> li
     events: list[Event] = []
     search.world.load(state.saved)
     given = {"token": state.token, **given}
-    call(search.world, use.operation, use.way, search.probe.purse, watch=events, **given)
+    perform(search.world, use, search.probe.purse, watch=events, **given)
     return events
 
 
@@ -788,7 +808,7 @@ def _output_report(search: Search, state: State, use: Use, effect: Effect, doubt
     if function == use.name and effect.before == effect.after:
         position = _return_position(search, state, use)
     ending = _output_ending(search, use, effect, due, search.origin(position))
-    _report(search, state, use.operation, effect, doubt, what, position, function, ending)
+    _report(search, state, effect, doubt, what, position, function, ending)
 
 
 def _output_ending(search: Search, use: Use, effect: Effect, due: int, where: Origin) -> Ending:
@@ -816,7 +836,7 @@ def _index_report(search: Search, state: State, use: Use, effect: Effect, doubt:
     position, function = _index_store(search, state, use, {})
     at = next((n for n, (old, new) in enumerate(zip(effect.before, effect.after, strict=True)) if old != new), 0)
     ending = _index_ending(search, effect, search.origin(position), str(effect.before[at]))
-    _report(search, state, use.operation, effect, doubt, what, position, function, ending)
+    _report(search, state, effect, doubt, what, position, function, ending)
 
 
 def _content(
@@ -837,11 +857,11 @@ def _content(
     position, function = _index_store(search, state, use, given)
     search.world.load(state.saved)
     full = {"token": state.token, **given}
-    effect = call(search.world, use.operation, use.way, search.probe.purse, **full)
-    run = (*state.run, _made(effect, use))
+    effect = perform(search.world, use, search.probe.purse, **full)
+    run = (*state.run, *_made(search, effect))
     place = search.origin(position)
     for number in range(len(due) + search.world.slots + 2):
-        last = call(search.world, take.operation, take.way, search.probe.purse)
+        last = perform(search.world, take, search.probe.purse)
         out = last.outputs.get(take.channel, ())[:1]
         wanted = due[number : number + 1]
         if last.refused and not wanted:
@@ -853,15 +873,14 @@ def _content(
                 else _index_ending(search, last, place, "unchanged, the ring being empty")
             )
             after = State(None, due, run, state.token, state.suspect)
-            _report(search, after, take.operation, last, doubt, what, position, function, ending)
+            _report(search, after, last, doubt, what, position, function, ending)
             return
-        run = (*run, _made(last, take))
+        run = (*run, *_made(search, last))
 
 
 def _report(
     search: Search,
     state: State,
-    operation: Operation,
     effect: Effect,
     doubt: Doubt,
     what: str,
@@ -877,8 +896,7 @@ def _report(
     mark = (doubt, function)
     if mark in search.found:
         return
-    last = Made(effect.call, operation.function.name, effect.after, _result_text(effect))
-    run = (*state.run, last)
+    run = (*state.run, *_made(search, effect))
     base = search.base
     calls = (*base.calls, *(item.call for item in run))
     witness = _trimmed(replace(base, calls=calls, ending=ending))

@@ -33,6 +33,8 @@ from stepring.shapes.ring_world import Group, Operation, World, called
 
 Kind: TypeAlias = Literal["put", "take", "look", "drop", "clear", "tell"]
 PLAIN = Way()
+SMALL = 8
+"""Rings with at most so many slots are looked at state by state."""
 POLICIES: tuple[Policy, ...] = ("zero", "one", "once")
 
 
@@ -43,8 +45,8 @@ class Use:
     ``bulk``: it moves as many elements as its length says; ``numbered``: it drops as many as its number says.
     ``channel`` is where a take's or look's elements come out. ``design`` and ``room`` belong to a put. ``checked``: it
     looks at what the ring holds before (or after) it works, so that no caller need do it. ``tells`` names what a result
-    tells: ``held``, ``free``, ``empty``, ``some``, ``full``, ``room`` (not full); ``counts``: the result is the number
-    of elements moved.
+    tells: ``held``, ``free``, ``empty``, ``some``, ``full``, ``not full``; ``counts``: the result is the number
+    of elements moved. ``first`` is the look that goes before a drop, where the two together are a take.
     """
 
     operation: Operation
@@ -58,6 +60,7 @@ class Use:
     checked: bool = False
     tells: str = ""
     counts: bool = False
+    first: "Use | None" = None
 
     @property
     def name(self) -> str:
@@ -76,6 +79,26 @@ class Probe:
 
     def back(self) -> None:
         self.world.load(self.start)
+
+
+def perform(
+    world: World,
+    use: Use,
+    purse: Purse,
+    *,
+    token: int = 0,
+    number: int | None = None,
+    length: int = 1,
+    watch: list[Event] | None = None,
+) -> Effect:
+    """Call what a use consists of; arguments as for ``call``."""
+    if use.first is None:
+        return call(world, use.operation, use.way, purse, token=token, number=number, length=length, watch=watch)
+    seen = call(world, use.first.operation, use.first.way, purse, watch=watch)
+    if not seen.returned:
+        return seen
+    done = call(world, use.operation, use.way, purse, number=1, watch=watch)
+    return replace(done, outputs={use.channel: seen.outputs.get(use.channel, ())}, prior=seen)
 
 
 # ------------------------------------------------------------------------------------------------------------- puts
@@ -113,6 +136,7 @@ def _as_put(probe: Probe, operation: Operation) -> Use | None:
 def _stores(probe: Probe, operation: Operation, way: Way, token: int, length: int) -> Effect | None:
     """The effect of a put on the ring as it starts; None if nothing was put."""
     probe.back()
+    probe.world.blot()
     effect = call(probe.world, operation, way, probe.purse, token=token, length=length)
     return effect if effect.returned and effect.before != effect.after and effect.stored else None
 
@@ -146,7 +170,37 @@ def takes(probe: Probe, put: Use) -> list[Use]:
         use = _as_take(probe, operation, state, held)
         if use is not None:
             found.append(use)
-    return sorted(found, key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
+    found.sort(key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
+    return found or _in_two_steps(probe, state, held, mine)
+
+
+def _in_two_steps(probe: Probe, state: Any, held: Content, mine: set[str]) -> list[Use]:
+    """Takes that consist of a look at the oldest element and a drop of it, by two functions."""
+    looks: list[Use] = []
+    drops: list[Use] = []
+    for operation in probe.world.operations:
+        if operation.function.identity in mine:
+            continue
+        probe.world.load(state)
+        way = Way("zero", operation.has("buffer"))
+        one = call(probe.world, operation, way, probe.purse, number=1)
+        if not one.returned or one.stored:
+            continue
+        if one.before != one.after:
+            if not operation.has("buffer"):
+                drops.append(Use(operation, "drop", way, numbered=operation.has("value")))
+            continue
+        named = [name for name, values in one.outputs.items() if values[:1] == held[:1]]
+        if named:
+            looks.append(Use(operation, "look", way, channel=named[0]))
+    for look in looks:
+        for drop in drops:
+            pair = replace(drop, kind="take", channel=look.channel, numbered=False, first=look)
+            probe.world.load(state)
+            perform(probe.world, pair, probe.purse)
+            if perform(probe.world, pair, probe.purse).outputs.get(look.channel, ())[:1] == held[1:2]:
+                return [pair]
+    return []
 
 
 def _as_take(probe: Probe, operation: Operation, state: Any, held: Content) -> Use | None:
@@ -178,7 +232,7 @@ def drained(probe: Probe, take: Use, most: int) -> tuple[Content, list[Effect]]:
     held: list[int] = []
     calls: list[Effect] = []
     while len(held) < most:
-        effect = call(probe.world, take.operation, take.way, probe.purse)
+        effect = perform(probe.world, take, probe.purse)
         calls.append(effect)
         if effect.refused or not effect.returned:
             break
@@ -249,7 +303,7 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, tak
 def _follows(probe: Probe, operation: Operation, way: Way, state: Any, take: Use, channel: str, held: Content) -> bool:
     """Whether a look gives the next element once the oldest was taken."""
     probe.world.load(state)
-    call(probe.world, take.operation, take.way, probe.purse)
+    perform(probe.world, take, probe.purse)
     after = call(probe.world, operation, way, probe.purse)
     return after.outputs.get(channel, ())[:1] == held[1:2]
 
@@ -278,12 +332,12 @@ def designed(probe: Probe, put: Use, take: Use) -> tuple[Use, tuple[Content, ...
         given = effect.stored[0][1] if effect.stored else world.tokens[number % len(world.tokens)]
         put_in.append(given)
         state = world.save()
-        if world.slots <= 8 or number + 1 in (1, 2) or number >= world.slots - 3:
+        if world.slots <= SMALL or number + 1 == 1 or number + 1 >= world.slots - 1:
             held.append(drained(probe, take, len(put_in) + extra)[0])
             world.load(state)
         else:
             held.append(tuple(put_in))  # looked at when it is nearly full
-        if number >= world.slots + 3 and world.slots > 8:
+        if number >= world.slots + 1 and world.slots > SMALL:
             break
     everything = tuple(put_in)
     room = room_of(held, everything)

@@ -31,7 +31,7 @@ from stepring.meaning.types import (
 )
 from stepring.paths.interpreter import Program, program
 from stepring.paths.memory import Cells, Memory, read_value
-from stepring.paths.replay import Unfit, prepared
+from stepring.paths.replay import Unfit, pointed, prepared
 from stepring.paths.types import Undefined, Unsettled
 from stepring.paths.witness import Ending, Made, Reference, StartValue, Value, Witness
 from stepring.places import Origin
@@ -40,6 +40,8 @@ from stepring.shapes.types import Ring
 
 NOWHERE = Ending("endless", Origin("", 1, 1, 1))
 RING, STORAGE, GIVEN, TAKEN = "ring", "storage", "given", "taken"
+MOST_BLOCKS = 150
+"""Functions with more blocks than this do more than work on a ring, and are not run."""
 THING_BYTES = 1 << 16
 """The size of the largest structure that is made only to give a function something to point to."""
 _LENGTH = re.compile(r"len|^n$|^n[a-z]?_|num|size|count|cnt|bytes|bt[rwp]$|amount|items|max|^nb|^l$|^sz$")
@@ -113,6 +115,7 @@ class World:
     kept: list[Cells] = field(default_factory=list)
     readers: list[tuple[Cells, int, CType]] = field(default_factory=list)
     tokens: tuple[int, ...] = ()
+    pointers: dict[Reference, Any] = field(default_factory=dict)
 
     def values(self) -> tuple[Any, ...]:
         """What the indices and counts hold; a pointer as its offset."""
@@ -130,6 +133,27 @@ class World:
         assert self.storage is not None
         at = self.offset + number * self.element
         return int.from_bytes(self.storage.data[at : at + self.element], "little")
+
+    def raw(self) -> bytes:
+        """All slots' bytes."""
+        if self.storage is None:
+            return b""
+        return bytes(self.storage.data[self.offset : self.offset + self.slots * self.element])
+
+    def blot(self) -> None:
+        """Fill all slots with what no element is, so that a store of zero shows too."""
+        if self.storage is not None:
+            size = self.slots * self.element
+            self.storage.data[self.offset : self.offset + size] = b"\xa5" * size
+
+    def pointer(self, value: Value) -> Any:
+        """A witness's value as the interpreter has it."""
+        if not isinstance(value, Reference):
+            return 0 if value is None else value
+        known = self.pointers.get(value)
+        if known is None:
+            known = self.pointers[value] = pointed(self.group.program, self.memory, value)
+        return known
 
     def contents(self) -> tuple[int, ...]:
         """All slots."""
@@ -451,6 +475,8 @@ def _operations(
 ) -> Iterator[Operation]:
     entered = set(ring.functions)
     for function in functions:
+        if len(function.blocks) > MOST_BLOCKS:
+            continue
         parameters = _parameters(group, function, root, made, bound)
         if parameters is not None:
             yield Operation(function, parameters, function.identity not in entered)
