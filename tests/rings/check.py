@@ -11,7 +11,7 @@ import time
 from collections import Counter
 from collections.abc import Iterable, Sequence
 from concurrent.futures import ProcessPoolExecutor
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 
 from tests.rings.programs import Made, make
@@ -56,7 +56,9 @@ class Compared:
     proved_by_run: int
     seconds: float
     rings: int
-    rules: tuple[str, ...] = field(default=())
+    rules: tuple[str, ...] = ()
+    # For each line with a bad access and no finding: what is said of it instead.
+    silent: tuple[str, ...] = ()
 
 
 def compare(made: Made, truth: Truth, folder: Path) -> Compared:
@@ -88,7 +90,21 @@ def compare(made: Made, truth: Truth, folder: Path) -> Compared:
         seconds,
         len(outcome.program.rings),
         tuple(sorted({item.rule for item in failed})),
+        tuple(_silent(truth, ring, len(outcome.program.rings))) if not failed else (),
     )
+
+
+def _silent(truth: Truth, ring: Sequence[Obligation], rings: int) -> Iterable[str]:
+    """What is said of the lines where accesses go wrong in a program without findings."""
+    for line in sorted(truth.lines(*BOUNDS.values(), "outside")):
+        here = [item for item in ring if item.where.line == line and item.rule in BOUNDS]
+        opens = sorted({f"open: {item.open_as or item.reason}" for item in here if item.kind == "open"})
+        if opens:
+            yield opens[0]
+        elif here:
+            yield "passes"
+        else:
+            yield "no obligation there" if rings else "no ring found"
 
 
 def _shown(item: Obligation) -> str:
@@ -207,6 +223,9 @@ def table(found: Sequence[Compared]) -> str:
     shows = Counter(min_kind(item.events) for item in missed)
     all_shows = Counter(min_kind(item.events) for item in broken)
     lines += [f"    {shows[kind]:4} of {count:4}  {kind}" for kind, count in all_shows.most_common()]
+    silent = Counter(text for item in missed for text in item.silent)
+    lines.append("missed lines with a bad access, by what is said of them:")
+    lines += [f"    {count:5}  {text}" for text, count in silent.most_common()]
     return "\n".join(lines)
 
 

@@ -43,7 +43,7 @@ def _add(w: Writer) -> None:
     body: Body = []
     if plan.walk == "lazy":
         body += [f"if ({w.head} >= {w.limit('head')}) {{", f"    {w.head} = 0;", "}"]
-    write = [line.replace("@", w.slot("head")) for line in stores]
+    write = [w.placed(line, "head") for line in stores]
     if _summed(w) and not w.members:
         write = [f"{_sum(w)} -= {_as_number(w, w.slot('head'))};", *write, f"{_sum(w)} += {_as_number(w, 'value')};"]
     body += [*write, (w.advance("head"), "head")]

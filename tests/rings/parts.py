@@ -252,7 +252,10 @@ def _fits(made: Plan) -> bool:
             return True
         case "wrap_short" | "wrap_long" | "no_wrap":
             return made.walk not in ("natural", "mask", *FREE) and made.slots > 3
-        case "wrap_to_one" | "two_step":
+        case "wrap_to_one":
+            resets = ("reset", "reset_equal", "reset_first", "choice", "last", "exclusive", "local", "helper")
+            return made.walk in resets and made.other_walk in resets and made.slots > 3
+        case "two_step":
             return normal and made.walk != "mask" and made.slots > 3 and made.direction > 0
         case "wrap_greater":
             return made.walk != "pointer" and made.walk != "down"

@@ -148,7 +148,7 @@ def _put(w: Writer) -> None:
         write: Body = [f"{at} = {w.tail} + {w.count};", *wrap, *(line.replace("@", f"{w.data}[at]") for line in stores)]
         moving: Body = []
     else:
-        write = [line.replace("@", w.slot("head")) for line in stores]
+        write = [w.placed(line, "head") for line in stores]
         moving = [([f"{w.head} = next;"], "head")] if plan.scheme == "one_slot" else [(w.advance("head"), "head")]
         if plan.walk == "lazy":
             write = [f"if ({w.head} >= {w.limit('head')}) {{", f"    {w.head} = 0;", "}", *write]

@@ -238,6 +238,12 @@ class Writer:
         name = self.head if role == "head" else self.tail
         return f"*{name}" if self.plan.walk == "pointer" else f"{self.data}[{self.subscript(role)}]"
 
+    def placed(self, line: str, role: str) -> str:
+        """A statement in which ``@`` stands for the slot."""
+        if self.plan.walk == "pointer":
+            line = line.replace("@.", f"{self.head if role == 'head' else self.tail}->")
+        return line.replace("@", self.slot(role))
+
     def advance(self, role: str, name: str = "") -> list[str]:
         """The statements that bring an index (or a copy of it called ``name``) to the next slot."""
         i = name or (self.head if role == "head" else self.tail)
