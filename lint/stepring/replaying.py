@@ -278,9 +278,9 @@ def gathered_units(log: Log, root: Path) -> _Units:
         settings=settings,
         current=here,
     )
-    if not found.units:
-        said = next((notice.text for notice in found.notices if notice.level == "error"), "no C was found")
-        raise BadLog(f"the units of the log could not be gathered: {said.rstrip('.')}")
+    said = next((notice.text for notice in found.notices if notice.level == "error"), "")
+    if said or not found.units:
+        raise BadLog(f"the units of the log could not be gathered: {said.rstrip('.') or 'no C was found'}")
     options = Options(data_model=asked.data_model or settings.data_model, use_compiler=asked.use_compiler)
     return _Units(root, found.units, Worker(found.root, options))
 
@@ -340,7 +340,13 @@ def replay_log(log: Log, root: Path, wishes: Wishes) -> Iterator[Judged]:
     units = gathered_units(log, root)
     names: dict[str, int] = {}
     for claim in log.claims:
-        yield _judge(claim, units, wishes, _program_name(claim, names))
+        one = _judge(claim, units, wishes, _program_name(claim, names))
+        yield replace(one, why=_shown(one.why, root), program_why=_shown(one.program_why, root))
+
+
+def _shown(text: str, root: Path) -> str:
+    """A text without the root's own path."""
+    return text.replace(str(root).rstrip("/") + "/", "")
 
 
 def _program_name(claim: Claim, names: dict[str, int]) -> str:
@@ -351,14 +357,15 @@ def _program_name(claim: Claim, names: dict[str, int]) -> str:
 
 
 def _judge(claim: Claim, units: _Units, wishes: Wishes, name: str) -> Judged:
+    without: Ended = "not possible" if wishes.compile else "not tried"
     try:
         witness = witness_from_json(claim.data, str(units.root))
     except BadWitness as trouble:
-        return Judged(claim, False, f"the log's witness is malformed: {trouble}", "not possible", "it has no witness")
+        return Judged(claim, False, f"the log's witness is malformed: {trouble}", without, "it has no witness")
     try:
         chosen = choose(units, witness)
     except BadLog as trouble:
-        return Judged(claim, False, str(trouble), "not possible", "the code that it needs is not there")
+        return Judged(claim, False, str(trouble), without, "the code that it needs is not there")
     done = _interpreted(chosen, witness)
     if not wishes.compile:
         return Judged(claim, done.held, done.why, "not tried", "")
@@ -407,6 +414,7 @@ def _as_program(
         witness,
         tuple(_relative(str(one.unit.source), root) for one in chosen.named),
         frozenset(_owned(chosen.named)),
+        frozenset(function.name for one in chosen.every for function in one.typed.functions),
         place,
     )
     heading = Heading(

@@ -22,7 +22,7 @@ from stepring.paths.types import Fault
 from stepring.paths.witness import Made, Reference, Value, Witness, WitnessCall
 
 MARK = "replay:"
-ENDLESS_SECONDS = 5
+ENDLESS_SECONDS = 2
 
 _UNSEEN: dict[Fault, str] = {
     "uninitialised": "a value read before it was set",
@@ -50,14 +50,16 @@ class Plan:
     """What a program is made of.
 
     ``included`` are the files to include, as the include directive spells them; ``owned`` the identities of all
-    functions and objects that are reached by that. ``place`` is where the finding is, as ``file:line``. ``undefined``
-    are symbols that no linked file defines and that the run does not need.
+    functions and objects that are reached by that, ``bodies`` the names of all functions that the files define.
+    ``place`` is where the finding is, as ``file:line``. ``undefined`` are symbols that no linked file defines and that
+    the run does not need.
     """
 
     program: Program
     witness: Witness
     included: tuple[str, ...]
     owned: frozenset[str]
+    bodies: frozenset[str]
     place: str
     undefined: tuple[str, ...] = ()
 
@@ -95,12 +97,11 @@ def _refuse(plan: Plan) -> None:
     fault = witness.ending.fault
     if witness.ending.kind == "undefined" and fault in _UNSEEN:
         raise NotPossible(f"the compiler's checks do not look for {_UNSEEN[fault]}")
-    bodies = {function.name for unit in plan.program.units for function in unit.functions}
     for call in witness.calls:
         for given in call.outside:
             if given.name.startswith("0x"):
                 raise NotPossible(f"the code reads the device register at {given.name}, which a host does not have")
-            if given.name in bodies:
+            if given.name in plan.bodies:
                 raise NotPossible(f"{given.name} has a body, which would run in place of the witness's value")
 
 
