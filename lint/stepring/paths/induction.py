@@ -19,8 +19,8 @@ import z3
 from stepring.meaning.types import IntType
 from stepring.paths.induction_loops import LoopRelation, loop_relations
 from stepring.paths.symbolic_memory import Pointer, State, Value, added, address_mark, guard_of, home_of, read, row_of
-from stepring.paths.symbolic_terms import Number, Term, Truth, as_truth, both, stretch
-from stepring.paths.symbolic_types import Limits, Point, Trace
+from stepring.paths.symbolic_terms import Number, Term, Truth, as_truth, both, either, equal, negated, stretch
+from stepring.paths.symbolic_types import FLAG, SET_FRAME, Limits, Point, Trace
 from stepring.shapes.ring_keys import Key
 
 Look: TypeAlias = Callable[[Key], Value]
@@ -106,6 +106,7 @@ class Induction:
     loops: dict[str, LoopRelation] = field(default_factory=dict)
     dropped: dict[str, tuple[str, Point, str]] = field(default_factory=dict)
     given: frozenset[str] = frozenset()
+    setting: tuple[Key, ...] = ()
     queries: int = 0
     exhausted: str = ""
     deadline: float | None = None
@@ -120,16 +121,18 @@ def induct(
     ends: Sequence[Callable[[View], Number]],
     limits: Limits,
     given: Sequence[str] = (),
+    setting: Iterable[Key] = (),
 ) -> Induction:
     """Drop the relations that an operation breaks, or that a function which sets up does not establish.
 
     ``ends`` are numbers (a capacity) that loops' variables are compared with; ``given`` the relations that the callers
-    of functions which set up see to.
+    of functions which set up see to, and ``setting`` the keys (a capacity, a buffer) whose store sets up an object.
     """
     made = Induction(family, limits, {relation.text: relation for relation in relations})
     made.deadline = perf_counter() + limits.seconds if limits.seconds is not None else None
     made.active = set(made.relations)
     made.given = frozenset(given)
+    made.setting = tuple(sorted(setting))
     for trace, assumes in (*((trace, True) for trace in operations), *((trace, False) for trace in setups)):
         made.bodies.append(_prepared(made, trace, assumes, ends))
     _settle(made)
@@ -185,7 +188,7 @@ def _prepared(made: Induction, trace: Trace, assumes: bool, ends: Sequence[Calla
         if not concerns(made.family, point):
             continue
         match point.kind:
-            case "entry" if assumes:
+            case "entry":
                 _assume(made, body, point, "")
             case "after call" if assumes:
                 _assume(made, body, point, "")
@@ -217,13 +220,40 @@ def _at(made: Induction, body: Body, point: Point, mark: str) -> list[tuple[str,
     found = []
     for base in body.objects:
         view = look_at(made.family, body.trace, point.state, base)
+        concerned = _concerned(made, body, point, base)
         for text, relation in made.relations.items():
-            found.append((text + mark, as_truth(relation.formula(view))))
+            found.append((text + mark, as_truth(either(negated(concerned), relation.formula(view)))))
     if mark:
         for own in made.loops.values():
             if own.mark == mark:
                 found.append((own.text, as_truth(own.formula(point.state))))
     return found
+
+
+def _concerned(made: Induction, body: Body, point: Point, base: Number | None) -> Truth:
+    """Whether a function that sets up has to do with an object at a point, as far as candidates go.
+
+    What it found is taken to be set up already, but not the objects that it sets up itself; at its end, only what it
+    has set up counts (it may have refused to).
+    """
+    if body.assumes:
+        return True
+    family, memories = made.family, body.trace.memories
+    if point.kind == "entry":
+        others = [
+            equal(added(memories, at, -family.offsets.get(key, 0)), base, memories.address)
+            for key in made.setting
+            for at in body.trace.sets.get(key, ())
+            if base is not None
+        ]
+        if base is None or not body.trace.spoiled.isdisjoint(made.setting):
+            return False
+        return negated(either(*others))
+    flags = []
+    for key in sorted(made.setting):
+        flag = point.state.local.get((SET_FRAME, "/".join(key)), 0)
+        flags.append(negated(equal(flag, 0, FLAG.width)))
+    return either(*flags)
 
 
 def _assume(made: Induction, body: Body, point: Point, mark: str, only: frozenset[str] | None = None) -> None:

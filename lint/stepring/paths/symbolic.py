@@ -17,8 +17,8 @@ from stepring.paths.symbolic_graph import graph_of
 from stepring.paths.symbolic_memory import Memories, State, Value, guard_of, new_epoch
 from stepring.paths.symbolic_run import new_frame, run_body
 from stepring.paths.symbolic_terms import Term, Terms, as_truth
-from stepring.paths.symbolic_types import Around, Limits, Point, Trace
-from stepring.paths.symbolic_values import Engine, Frame, anything, home, locate, store, trouble
+from stepring.paths.symbolic_types import CUT, FLAG, Around, Limits, Point, Trace
+from stepring.paths.symbolic_values import Engine, Frame, anything, cut, home, locate, store, trouble
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -109,6 +109,8 @@ def _traced(
     engine.doubted = doubted
     engine.private = private
     frame = _enter(engine, function, state, None)
+    engine.trace.types[CUT] = FLAG
+    cut(engine, state)
     engine.trace.points.append(Point("entry", state.copy(), function.position))
     if graph_of(function).irreducible:
         trouble(engine, "not modelled", "a loop is entered in the middle")

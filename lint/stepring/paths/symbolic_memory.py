@@ -361,6 +361,11 @@ def joined(memories: Memories, states: Sequence[State], types: dict[tuple[int, s
             for way, value in zip(reversed(ways[:-1]), reversed(values[:-1]), strict=True):
                 found = merged(memories, way, value, found, types[name])
             local[name] = found
+        elif name[0] == -1:
+            found = 0
+            for way, value in zip(reversed(ways), reversed(values), strict=True):
+                found = chosen(way, value or 0 if isinstance(value, int | None) else value, found, 16)
+            local[name] = found
         # One that has no value on some way is left out: reading it gives a fresh one.
     if all(state.epoch is first.epoch for state in states):
         epoch = first.epoch

@@ -44,7 +44,6 @@ from stepring.paths.symbolic_graph import Graph, graph_of
 from stepring.paths.symbolic_memory import (
     Pointer,
     State,
-    Stored,
     Target,
     Value,
     added,
@@ -65,10 +64,12 @@ from stepring.paths.symbolic_values import (
     Frame,
     Spot,
     anything,
+    cut,
     evaluate,
     forget,
     locate,
     note,
+    put,
     spoil,
     spoil_struct,
     store,
@@ -127,7 +128,7 @@ def _copy(engine: Engine, state: State, key: Key, type_: CType, goal: object, or
         meet(memories, key, origin)
         memories.types.setdefault(key, type_)
         row = row_of(memories, state, key)
-        state.rows[key] = Stored(row, goal, read(memories, row, origin, type_))
+        put(engine, state, key, goal, read(memories, row, origin, type_))
 
 
 def fill_struct(engine: Engine, state: State, struct: str, at: object) -> None:
@@ -158,7 +159,7 @@ def _fill(engine: Engine, state: State, key: Key, type_: CType, at: object) -> N
         zero: Value = (
             0 if isinstance(type_, IntType) else Pointer(0, 0, None) if isinstance(type_, PointerType) else None
         )
-        state.rows[key] = Stored(row_of(engine.memories, state, key), at, zero)
+        put(engine, state, key, at, zero)
 
 
 # --------------------------------------------------------------------------------------------------------- statements
@@ -295,6 +296,7 @@ def _leave(engine: Engine, state: State, frame: Frame, statement: Call, name: st
         for key in sorted(state.rows):
             if key[0] == "local" and _given(engine, key):
                 spoil(engine, state, key)
+    cut(engine, state)
     engine.trace.points.append(Point("after call", state.copy(), statement.position, name, keys=keys))
     if statement.result is not None:
         if isinstance(statement.result.type, StructType):
@@ -545,6 +547,7 @@ def _head(engine: Engine, frame: Frame, state: State, body: frozenset[int], bloc
             # A variable of a frame inside may have been stored into by way of its address.
             if key[0] == "local" and writes.calls:
                 spoil(engine, state, key)
+    cut(engine, state)
     engine.trace.points.append(Point("loop", state.copy(), position, loop=loop, frame=frame.number, moved=moved))
 
 

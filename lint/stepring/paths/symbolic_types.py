@@ -8,7 +8,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Literal, TypeAlias
 
-from stepring.meaning.types import CType, DataModel, Expr, Function, StructLayout
+from stepring.meaning.types import CType, DataModel, Expr, Function, IntType, StructLayout
 from stepring.paths.symbolic_memory import Memories, Pointer, State, Value
 from stepring.paths.symbolic_terms import Number, Terms
 from stepring.places import Position
@@ -77,6 +77,13 @@ class Accessed:
     written: Expr | None = None
 
 
+CUT: tuple[int, str] = (0, "%cut")
+"""In a state's variables: the number of the latest beginning of a stretch (entry, loop, return of a call)."""
+SET_FRAME = -1
+"""In a state's variables, with a key: 1 where something was stored into memory of that key."""
+FLAG = IntType("unsigned int", 16, False, 3)
+
+
 PointKind: TypeAlias = Literal["entry", "return", "call", "after call", "before loop", "loop", "round"]
 
 
@@ -124,7 +131,9 @@ class Trace:
     """What a run leaves: its terms, what was accessed, and the points in the order they were come to.
 
     ``troubles`` say what was not modelled, each a reason of the ledger with a clause; ``calls`` are the functions that
-    were called but not laid out, ``covered`` the positions of the statements that ran.
+    were called but not laid out, ``sets`` the addresses that each key was stored into, ``spoiled`` the keys of which
+    nothing was known any more at some point,
+    ``covered`` the positions of the statements that ran.
     """
 
     function: Function
@@ -141,4 +150,6 @@ class Trace:
     volatile: dict[Key, None] = field(default_factory=dict)
     types: dict[tuple[int, str], CType] = field(default_factory=dict)
     arguments: dict[str, Value] = field(default_factory=dict)
+    sets: dict[Key, list[Number]] = field(default_factory=dict)
+    spoiled: set[Key] = field(default_factory=set)
     bounded: bool = False

@@ -46,6 +46,7 @@ from stepring.paths.symbolic_memory import (
     Target,
     Value,
     added,
+    address_mark,
     address_of,
     home_of,
     meet,
@@ -67,7 +68,7 @@ from stepring.paths.symbolic_terms import (
     negated,
     stretch,
 )
-from stepring.paths.symbolic_types import Accessed, AccessKind, Around, Limits, Store, Trace
+from stepring.paths.symbolic_types import CUT, SET_FRAME, Accessed, AccessKind, Around, Limits, Store, Trace
 from stepring.places import Position
 from stepring.shapes.ring_keys import Key, inner_structs
 
@@ -108,6 +109,7 @@ class Engine:
     frames: int = 0
     loops: int = 0
     work: int = 0
+    cuts: int = 0
     private: bool = False
     doubted: set[tuple[str, int, str]] = field(default_factory=set)
 
@@ -289,15 +291,35 @@ def store(
         return
     meet(engine.memories, spot.key, spot.at)
     engine.memories.types.setdefault(spot.key, spot.type)
-    state.rows[spot.key] = Stored(row_of(engine.memories, state, spot.key), spot.at, value)
+    put(engine, state, spot.key, spot.at, value)
     if spot.key[0] != "local" and position is not None:
         engine.trace.stores.append(Store(spot.key, spot.at, position, frame.function.name, state.copy()))
+
+
+def put(engine: Engine, state: State, key: Key, at: Number, value: Value) -> None:
+    """Add a store to a key's memory, and note that it was made."""
+    state.rows[key] = Stored(row_of(engine.memories, state, key), at, value)
+    if key[0] == "local":
+        return
+    places = engine.trace.sets.setdefault(key, [])
+    if all(address_mark(other) != address_mark(at) for other in places):
+        places.append(at)
+    state.local[SET_FRAME, "/".join(key)] = 1
+
+
+def cut(engine: Engine, state: State) -> None:
+    """Note that a new stretch of the run begins here: that nothing is stored in it yet."""
+    engine.cuts += 1
+    state.local[CUT] = engine.cuts
 
 
 def spoil(engine: Engine, state: State, key: Key) -> None:
     """Nothing is known any more of what a key holds."""
     engine.memories.epochs += 1
     state.rows[key] = Start(key, engine.memories.epochs)
+    if key[0] != "local":
+        engine.trace.spoiled.add(key)
+        state.local[SET_FRAME, "/".join(key)] = 1
 
 
 def spoil_struct(engine: Engine, state: State, struct: str) -> None:

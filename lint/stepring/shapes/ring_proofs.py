@@ -36,8 +36,9 @@ from stepring.paths.induction import (
     proved,
 )
 from stepring.paths.symbolic_memory import Node, Pointer, Start, State, Stored, added, address_mark, row_of
-from stepring.paths.symbolic_terms import Number, Truth, bits, both, compared, either, equal, stretch
-from stepring.paths.symbolic_types import Accessed, Limits, Point, Trace
+from stepring.paths.symbolic_terms import Number, Truth, bits, both, compared, either, equal, negated, stretch
+from stepring.paths.symbolic_types import CUT, FLAG, Accessed, Limits, Point, Trace
+from stepring.paths.symbolic_writes import own_writes
 from stepring.places import Origin, Position
 from stepring.shapes.ring_apart import defined_often, told_apart
 from stepring.shapes.ring_keys import Key, inner_structs, key_text, short_text, struct_name
@@ -50,6 +51,7 @@ from stepring.shapes.types import Access, Ring
 __all__ = ["prove_rings"]
 
 EVERYTHING = Outside()
+MOST_COMPANIONS = 4
 
 
 @dataclass(slots=True, eq=False)
@@ -64,6 +66,7 @@ class Case:
     program: RingProgram
     slots: Slots | None
     family: Family | None
+    setting: frozenset[Key] = frozenset()
     operations: list[Trace] = field(default_factory=list)
     setups: list[Trace] = field(default_factory=list)
     induction: Induction | None = None
@@ -115,13 +118,14 @@ def _leave_open(case: Case, reason: OpenReason, detail: str) -> None:
 
 def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
     ring, program = case.ring, case.program
-    case.family = family_of(ring, case.slots, program.structs, program.variables)
+    case.family = family_of(ring, case.slots, program.structs, program.variables, _companions(case))
     if case.family is None:
         _leave_open(case, "not modelled", "its integers do not live in one structure, nor all in variables")
         return
     family = case.family
     moved_storage = _storage_pointer(ring)
-    setting = {key for key in (case.slots.key if case.slots is not None else None, moved_storage) if key is not None}
+    bound = case.slots.key if case.slots is not None else None
+    setting = case.setting = frozenset(key for key in (bound, moved_storage) if key is not None)
     pending = list(touching(program, family.keys | _storage_keys(ring), family.struct))
     opaque = frozenset(function.identity for function in pending if setting and program.sets(function, setting))
     done: set[str] = set()
@@ -138,10 +142,27 @@ def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], 
             body = program.around.resolve(function, name)
             if body is not None and program.mentions(body) & family.keys:
                 pending.append(body)
-    _look_for_trouble(case, outside, often, setting)
+    _look_for_trouble(case, outside, often)
     if case.open_as is not None:
         return
     _find_kept(case, outside, often, limits)
+
+
+def _companions(case: Case) -> tuple[Key, ...]:
+    """Further integers that the ring's functions store into beside its indices: a second index that no access shows."""
+    ring, program = case.ring, case.program
+    keys = {index.key for index in ring.indices}
+    structs = {key[1] for key in keys if key[0] == "member"}
+    found: set[Key] = set()
+    for function in program.functions:
+        for key in own_writes(program.around, function).keys:
+            if (key[0] == "member" and key[1] in structs and len(key) == 3) or (
+                key[0] == "var" and len(key) == 2 and not structs and function.identity in ring.functions
+            ):
+                found.add(key)
+    bound = case.slots.key if case.slots is not None else None
+    chosen = [key for key in sorted(found - keys) if key != bound]
+    return tuple(chosen)[:MOST_COMPANIONS]
 
 
 def _storage_pointer(ring: Ring) -> Key | None:
@@ -160,7 +181,7 @@ def _article(struct: str) -> str:
     return f"every {name}" if name.startswith(("struct ", "union ")) else f"every object of type {name}"
 
 
-def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], setting: set[Key]) -> None:
+def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]) -> None:
     """What makes all proofs about the ring impossible."""
     family, program = case.family, case.program
     assert family is not None
@@ -216,7 +237,9 @@ def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]
     ends = [slots.number] if slots is not None else []
     given: tuple[str, ...] = ()
     while True:
-        case.induction = induct(family, relations, case.operations, case.setups, ends, limits, given=given)
+        case.induction = induct(
+            family, relations, case.operations, case.setups, ends, limits, given=given, setting=case.setting
+        )
         # A capacity that a caller chooses cannot be shown to be one; that it is, is the caller's part.
         lost = [text for text in _callers_part(case) if text not in case.induction.active and text not in given]
         if not lost or case.induction.exhausted:
@@ -327,13 +350,16 @@ def _proofs(case: Case, origin: Callable[[Position], Origin]) -> Iterator[Proof]
                         places.setdefault(origin(position), []).append((body, access))
     always = [*case.assumed, *_context(case)]
     asked: set[tuple[Origin, str]] = set()
+    inside = True
     for item in ring.accesses:
         if (item.where, item.function) in asked:
             continue
         asked.add((item.where, item.function))
-        yield _access_proof(case, item, places.get(item.where, []), always)
+        found = _access_proof(case, item, places.get(item.where, []), always)
+        inside = inside and found.holds
+        yield found
     for index in ring.indices:
-        yield _range_proof(case, index.name, index.key, index.role, index.where, always)
+        yield _range_proof(case, index.name, index.key, index.role, index.where, always, inside)
     for index in ring.indices:
         for step in index.steps:
             if isinstance(step, CheckedStep) and index.role != "count":
@@ -441,8 +467,10 @@ def _inside(case: Case, body: Body, access: Accessed, item: Access, more: list[s
         return both(compared(">=", first, 0, width, True), compared(top, first, length, width, True))
     unit = access.unit or 1
     size = bits(wide(access.bytes_), width)
-    end = bits(first, width) * z3.BitVecVal(unit, width) + size
-    limit = bits(length, width) * z3.BitVecVal(unit, width)
+    end, limit = bits(first, width) + size, bits(length, width)
+    if unit != 1:
+        end = bits(first, width) * z3.BitVecVal(unit, width) + size
+        limit = limit * z3.BitVecVal(unit, width)
     inside = both(compared(">=", first, 0, width, True), compared("<=", end, limit, width, True))
     return either(equal(size, 0, width), both(compared(">=", size, 0, width, True), inside))
 
@@ -493,7 +521,9 @@ def _detail(case: Case, body: Body, access: Accessed) -> str:
     return f"{body.trace.function.name} does not show it"
 
 
-def _range_proof(case: Case, name: str, key: Key, role: str, where: Origin, assumed: Sequence[str]) -> Proof:
+def _range_proof(
+    case: Case, name: str, key: Key, role: str, where: Origin, assumed: Sequence[str], inside: bool
+) -> Proof:
     if case.open_as is not None or case.induction is None:
         return _open(case, "range", where, "", name, case.open_as or "not modelled", case.detail)
     if case.slots is None:
@@ -506,6 +536,10 @@ def _range_proof(case: Case, name: str, key: Key, role: str, where: Origin, assu
     if key in family.types and family.types[key].signed:
         wanted.append(f"{short} >= 0")
     missing = [relation for relation in wanted if relation not in active]
+    resting = f"{short} <= {text}"
+    if missing == wanted[:1] and role != "count" and resting in active and inside:
+        # It may rest at the end: every access brings it back before.
+        wanted[0], missing = resting, []
     if not missing:
         return Proof("range", where, "", name, True, tuple(wanted), tuple(assumed))
     function, point, _ = case.induction.dropped.get(missing[0], ("", None, ""))
@@ -552,9 +586,9 @@ def _advance_proof(
             reason, detail = next(iter(body.trace.troubles))
             return left(cast(OpenReason, reason), detail)
         some = True
-        for began, ended in _stretches(case, body):
+        for began, ended, way in _stretches(body):
             for base in body.objects:
-                goal = _one_on(case, body, began, ended, base, key, slots, step.by)
+                goal = either(negated(way), _one_on(case, body, began, ended, base, key, slots, step.by))
                 verdict = proved(case.induction, body, ended.state, goal)
                 cores += basis(case.induction)
                 if verdict != "holds":
@@ -565,24 +599,20 @@ def _advance_proof(
     return Proof("advance", where, function, name, True, tuple(dict.fromkeys(cores)), tuple(assumed))
 
 
-def _stretches(case: Case, body: Body) -> Iterator[tuple[Point, Point]]:
+def _stretches(body: Body) -> Iterator[tuple[Point, Point, Truth]]:
     """Pieces of runs without loops in them: from where a function or loop begins, or a call came back, to what ends it.
 
-    Every way from a beginning to an end lies in one of these pairs; a pair that no way connects proves nothing wrong,
-    as its end is then reached from another beginning.
+    Each with the truth that the latest beginning before the end is that one.
     """
-    began: list[Point] = []
-    for point in body.trace.points:
-        if point.kind in ("entry", "after call", "loop"):
-            began.append(point)
+    began = [point for point in body.trace.points if point.kind in ("entry", "after call", "loop")]
     ended = [point for point in body.trace.points if point.kind in ("return", "call", "before loop", "round")]
-    if len(began) == 1:
-        for end in ended:
-            yield began[0], end
-        return
     for end in ended:
+        latest = end.state.local.get(CUT)
         for begin in began:
-            yield begin, end
+            number = begin.state.local.get(CUT)
+            way = equal(latest, number, FLAG.width)
+            if way is not False:
+                yield begin, end, way
 
 
 def _one_on(
@@ -594,15 +624,15 @@ def _one_on(
     before, after = bits(first.number(key), family.width), bits(last.number(key), family.width)
     limit = bits(slots.number(last), family.width)
     one = z3.BitVecVal(1, family.width)
-    same = equal(after, before, family.width)
-    if by > 0:
-        nexts = either(
-            both(equal(after, before + one, family.width), compared("<", after, limit, family.width, True)),
-            both(equal(after, 0, family.width), equal(before + one, limit, family.width)),
-        )
-    else:
-        nexts = either(
-            both(equal(after, before - one, family.width), compared(">=", after, 0, family.width, True)),
-            both(equal(before, 0, family.width), equal(after + one, limit, family.width)),
-        )
-    return either(same, nexts)
+    zero = z3.BitVecVal(0, family.width)
+    # An index may rest at the end and be brought back before it is used: that is slot 0.
+    before = z3.If(before == limit, zero, before)
+    after = z3.If(after == limit, zero, after)
+    if by < 0:
+        before, after = after, before
+    inside = compared("<", after, limit, family.width, True)
+    nexts = either(
+        both(equal(after, before + one, family.width), inside),
+        both(equal(after, 0, family.width), equal(before + one, limit, family.width)),
+    )
+    return either(equal(after, before, family.width), nexts)

@@ -4,7 +4,7 @@ Each candidate is a relation that rings of one form or another keep; which of th
 trying (``paths.induction``). Widths are such that no sum of two of the integers wraps round.
 """
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import z3
@@ -69,7 +69,11 @@ def slots_of(ring: Ring) -> Slots | None:
 
 
 def family_of(
-    ring: Ring, slots: Slots | None, structs: Mapping[str, StructLayout], variables: Mapping[str, CType]
+    ring: Ring,
+    slots: Slots | None,
+    structs: Mapping[str, StructLayout],
+    variables: Mapping[str, CType],
+    companions: Sequence[Key] = (),
 ) -> Family | None:
     """What makes up one object of the ring; None where its integers are not all in one structure or in variables."""
     keys = [index.key for index in ring.indices if index.form == "integer"]
@@ -84,6 +88,10 @@ def family_of(
         if not isinstance(type_, IntType):
             return None
         types[key] = type_
+    for key in companions:
+        type_ = field_type(structs, variables, key)
+        if isinstance(type_, IntType) and not any(other[-1] == "[]" for other in types):
+            types[key] = type_
     pointers: dict[Key, object] = {}
     if ring.storage_key and ring.storage_key[-1] == "*":
         key = ring.storage_key[:-1]
@@ -122,6 +130,8 @@ def relations_of(ring: Ring, slots: Slots | None, family: Family, constants: fro
     """The candidates of a ring; ``constants`` are numbers of the program that its integers may stay below."""
     walkers = [index.key for index in ring.indices if index.form == "integer" and index.role != "count"]
     counts = [index.key for index in ring.indices if index.role == "count"]
+    taken = {*walkers, *counts, *([slots.key] if slots is not None and slots.key is not None else [])}
+    walkers += [key for key in family.types if key not in taken]
     width = family.width
     elements = any(key[-1] == "[]" for key in family.offsets)
     for key in (*walkers, *counts):
