@@ -499,3 +499,35 @@ def test_storage_that_is_reached_with_the_slot_that_a_helper_gives_is_the_rings(
 )
 def test_members_that_go_round_without_being_a_ring(text: str) -> None:
     assert rings(text) == []
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        # a block that is worked on whenever it is full, filled in parts
+        "void *memcpy(void *to, const void *from, unsigned long n); void mix(const uint8_t *block);"
+        "struct digest { uint8_t block[64]; unsigned held; };"
+        "void add(struct digest *d, const uint8_t *data, unsigned n) {"
+        " if (n < 64 - d->held) { memcpy(&d->block[d->held], data, n); d->held += n; return; }"
+        " memcpy(&d->block[d->held], data, 64 - d->held); mix(d->block); data += 64 - d->held; n -= 64 - d->held;"
+        " d->held = 0; while (n >= 64) { mix(data); data += 64; n -= 64; }"
+        " memcpy(d->block, data, n); d->held = n; }",
+        # the same, the place taken from the number of all bytes
+        "void *memcpy(void *to, const void *from, unsigned long n); void mix(const uint8_t *block);"
+        "struct digest { uint8_t block[64]; unsigned total; };"
+        "void add(struct digest *d, const uint8_t *data, unsigned n) {"
+        " unsigned left = d->total & 63, fill = 64 - left; d->total += n;"
+        " if (left && n >= fill) { memcpy(d->block + left, data, fill); mix(d->block); data += fill; n -= fill; left = 0; }"
+        " while (n >= 64) { mix(data); data += 64; n -= 64; }"
+        " if (n > 0) memcpy(d->block + left, data, n); }",
+        # what is left of a message, counted from where its reader stands
+        "void *memcpy(void *to, const void *from, unsigned long n);"
+        "struct message { uint8_t *at; unsigned left, asked; };"
+        "int fill(struct message *m, const uint8_t *data, unsigned n) {"
+        " if (m->left < m->asked) { memcpy(m->at, data, n); m->at += n; m->left -= n; return 1; }"
+        " if (m->left == m->asked) { memcpy(m->at, data, m->left); m->at += m->left; m->left = 0; return 2; }"
+        " memcpy(m->at + m->left, data, n); m->at += m->left; m->left = m->left - 1; return 3; }",
+    ],
+)
+def test_blocks_and_cursors_are_no_rings(text: str) -> None:
+    assert rings(text) == []

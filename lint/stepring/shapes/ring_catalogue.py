@@ -42,6 +42,7 @@ class Moves:
     resets: dict[Position, Reset] = field(default_factory=dict)
     copies: set[Position] = field(default_factory=set)
     handed: set[Key] = field(default_factory=set)
+    filled: set[Key] = field(default_factory=set)
 
     @property
     def both_ways(self) -> bool:
@@ -69,6 +70,7 @@ class Catalogue:
     structs: Mapping[str, StructLayout]
     written: set[Key] = field(default_factory=set)
     together: dict[Key, frozenset[Key]] = field(default_factory=dict)
+    cursors: set[Key] = field(default_factory=set)
 
 
 @dataclass(frozen=True, slots=True)
@@ -161,6 +163,7 @@ def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, K
     merged.types.update(facts.types)
     merged.comparisons.extend(facts.comparisons)
     merged.copied |= facts.copied
+    merged.cursors |= {(*key, "*") for key in facts.cursors}
     for key, length in facts.flat.lengths.items():
         merged.lengths.setdefault(key, length)
     for key, found in facts.cells.items():
@@ -174,6 +177,7 @@ def _merge(merged: Catalogue, facts: FlatFacts, seen: set[tuple[Position, str, K
             moves.resets.setdefault(reset.position, reset)
         moves.copies.update(found.copies)
         moves.handed |= found.handed
+        moves.filled |= found.filled
     merged.written.update(touch.storage for touch in facts.plain if touch.kind == "store")
     merged.written.update(use.touch.storage for use in facts.uses if use.touch.kind == "store")
     for use in facts.uses:
@@ -294,6 +298,10 @@ def _candidate(merged: Catalogue, storage: Key, uses: Sequence[Use], capacity: i
         return None
     if indices and all(storage in merged.moves[key].handed for key in indices):
         return None  # a block that is worked on when it is full
+    if storage in merged.cursors:
+        return None  # what is left of a message, counted from where its reader stands
+    if len(indices) == 1 and not followers and storage in merged.moves[indices[0]].filled:
+        return None
     if len(indices) + len(followers) == 1 and _borrowed(merged, storage, uses):
         return None
     counts = _counts(merged, storage, uses, {*indices, *followers})

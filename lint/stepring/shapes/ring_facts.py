@@ -20,11 +20,14 @@ from stepring.meaning.types import (
     Const,
     Expr,
     IntType,
+    Load,
+    PointerStep,
+    PointerType,
     VariablePlace,
 )
 from stepring.places import Position
 from stepring.shapes.ring_flat import Flat, FlatOp, Outside, Set, Spoil, Touch, whole_arrays
-from stepring.shapes.ring_keys import NOTHING, Key, place_keys
+from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
 from stepring.shapes.ring_sources import (
     Comparison,
     Order,
@@ -88,7 +91,8 @@ class Reset:
 class CellFacts:
     """What one flat function does to one lasting integer; ``roles`` says it of every operation.
 
-    ``handed`` are arrays that are given away whole where a comparison of the integer decides on its wrap.
+    ``handed`` are arrays that are given away whole where a comparison of the integer decides on its wrap, ``filled``
+    those that are where any comparison of the integer alone decides on that.
     """
 
     roles: dict[int, Role] = field(default_factory=dict)
@@ -97,6 +101,7 @@ class CellFacts:
     wraps: list[Wrap] = field(default_factory=list)
     resets: list[Reset] = field(default_factory=list)
     handed: set[Key] = field(default_factory=set)
+    filled: set[Key] = field(default_factory=set)
     copies: list[Position] = field(default_factory=list)
 
 
@@ -121,6 +126,7 @@ class FlatFacts:
     sources: dict[Key, frozenset[Key]]
     types: dict[Key, IntType]
     stored: frozenset[Key]
+    cursors: frozenset[Key] = frozenset()
     cells: dict[Key, CellFacts] = field(default_factory=dict)
     comparisons: list[Comparison] = field(default_factory=list)
     cross: dict[tuple[Key, Key], CellFacts] = field(default_factory=dict)
@@ -169,7 +175,29 @@ def facts_of(flat: Flat) -> FlatFacts:
                 else:
                     op.indexed = True
                     uses.append(use)
-    return FlatFacts(sight, flat, uses, plain, sight.sources, sight.types, frozenset(sight.stored))
+    return FlatFacts(
+        sight, flat, uses, plain, sight.sources, sight.types, frozenset(sight.stored), _cursors(flat)
+    )
+
+
+def _cursors(flat: Flat) -> frozenset[Key]:
+    """The lasting pointers that are moved on from where they stand: what is counted from them is no ring's slot."""
+    found: set[Key] = set()
+    for block in flat.blocks:
+        for op in block.ops:
+            if isinstance(op, Set) and isinstance(op.place.type, PointerType):
+                inner = op.value
+                while isinstance(inner, Cast):
+                    inner = inner.operand
+                if not isinstance(inner, PointerStep):
+                    continue
+                base = inner.pointer
+                while isinstance(base, Cast):
+                    base = base.operand
+                if isinstance(base, Load):
+                    keys = place_keys(op.place, op.place_frame, flat.points)
+                    found |= {key for key in keys & place_keys(base.place, op.frame, flat.points) if not is_local(key)}
+    return frozenset(found)
 
 
 def complete(facts: FlatFacts) -> None:
@@ -262,6 +290,9 @@ def _cell(sight: Sight, target: Key, base: Key | None = None) -> CellFacts | Non
     turned = {at for number, op, _ in nodes if facts.roles.get(id(op)) == "wrap" for _, at in guards.get(number, ())}
     if turned:
         facts.handed = _handed(sight, turned)
+    if facts.advances and base is None:
+        alone = {item.position for item in compared(sight).values() if item.left | item.right == {cell}}
+        facts.filled = _handed(sight, alone) if alone else set()
     stepping = {
         at for number, op, _ in nodes if facts.roles.get(id(op)) == "advance" for _, at in guards.get(number, ())
     }
