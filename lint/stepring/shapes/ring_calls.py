@@ -20,7 +20,7 @@ from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Operation, World, 
 Policy: TypeAlias = Literal["zero", "one", "once", "token", "token once"]
 """What the outside gives in one call: always 0; always 1; 1 and then 0; the element; the element and then 0."""
 _GUARD = re.compile(r"assert|abort|panic|fatal|hardfault|unreachable|trap$", re.IGNORECASE)
-READY = 4000
+READY = 2000
 """What making a function ready to run costs, in steps."""
 _ASSERTION = "an assertion of the program fails"
 
@@ -140,7 +140,7 @@ def call(
         device=devices.register,
     )
     devices.settle()
-    purse.left -= outcome.steps + 60 + READY * (len(world.group.program.codes) - ready)
+    purse.left -= outcome.steps + 40 + READY * (len(world.group.program.codes) - ready)
     stored = _changed(slots, world.raw(), world.element)
     for name, told in devices.told:
         outputs.setdefault(f"device {name}", []).append(told)

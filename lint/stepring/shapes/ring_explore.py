@@ -36,7 +36,7 @@ from stepring.shapes.ring_uses import (
 from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, World, world_of
 from stepring.shapes.types import OrbitStep, Ring
 
-BUDGET = 900_000
+BUDGET = 1_200_000
 """Interpreter steps for one ring."""
 SHOWN = 12
 NEAR_END = 3
@@ -97,21 +97,34 @@ class Search:
         return self.probe.purse.left <= 0
 
 
-def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -> tuple[Disagreement, ...]:
+@dataclass(frozen=True, slots=True)
+class Exploration:
+    """What came of exploring a ring.
+
+    ``compared``: its elements were put in and taken out, so that it means something that nothing was found.
+    """
+
+    disagreements: tuple[Disagreement, ...]
+    compared: bool
+
+
+def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -> Exploration:
     """The disagreements of a ring with the ideal queue, each with a witness that was run again.
 
     ``group`` is the program (``ring_world.group_of``), ``origin`` gives a position's original place, ``budget`` bounds
     the interpreter steps.
     """
     purse = Purse(budget)
+    compared = False
     for slots in _sizes(ring):
         world = world_of(group, ring, slots)
         if world is None:
             continue
         found = _explored(world, purse, origin)
-        if found or purse.left <= 0:
-            return found
-    return ()
+        compared = compared or found.compared
+        if found.disagreements or purse.left <= 0:
+            return Exploration(found.disagreements, compared)
+    return Exploration((), compared)
 
 
 def _sizes(ring: Ring) -> tuple[int, ...]:
@@ -123,7 +136,7 @@ def _sizes(ring: Ring) -> tuple[int, ...]:
     return (4, 2) if masked or ring.wrap == "free-running" else (4, 3)
 
 
-def _explored(world: World, purse: Purse, origin: Placer) -> tuple[Disagreement, ...]:
+def _explored(world: World, purse: Purse, origin: Placer) -> Exploration:
     probe = Probe(world, purse, world.save())
     base = _set_up(probe)
     search = Search(probe, origin, base)
@@ -131,7 +144,8 @@ def _explored(world: World, purse: Purse, origin: Placer) -> tuple[Disagreement,
     if search.put is not None and search.take is not None:
         _search(search, State(probe.start, (), (), 0))
         _near_overflow(search)
-    return tuple(search.found.values())
+    compared = search.put is not None and search.take is not None and bool(search.uses)
+    return Exploration(tuple(search.found.values()), compared)
 
 
 def _set_up(probe: Probe) -> Witness:
@@ -292,7 +306,8 @@ def _ranges(search: Search) -> None:
         seen.extend(latest)
         latest = [given.after, taken.after]
         turns += 1
-    free = [_free(old, new, turns - 1) for old, new in zip(seen[0], seen[-1], strict=True)]
+    whole_way = turns == 2 * world.slots + 1
+    free = [whole_way and _free(old, new, turns - 1) for old, new in zip(seen[0], seen[-1], strict=True)]
     ranges: list[tuple[int, int] | None] = []
     for at, place in enumerate(world.places):
         values = [row[at] for row in seen]
@@ -472,7 +487,7 @@ def _plain_ways(search: Search, first: State) -> Iterator[State]:
     put, take = search.put, search.take
     assert put is not None and take is not None
     slots, room = search.world.slots, search.room
-    for lead in dict.fromkeys((0, slots - 2, slots // 2)):
+    for lead in dict.fromkeys((0, slots - 2) if slots > 100 else (0, slots - 2, slots // 2)):
         state: State | None = first
         for _ in range(lead):
             state = state and _put(search, state, put, deep=False)
@@ -861,6 +876,7 @@ def _content(
     run = (*state.run, *_made(search, effect))
     place = search.origin(position)
     for number in range(len(due) + search.world.slots + 2):
+        before = State(search.world.save(), due, run, state.token, state.suspect)
         last = perform(search.world, take, search.probe.purse)
         out = last.outputs.get(take.channel, ())[:1]
         wanted = due[number : number + 1]
@@ -872,9 +888,12 @@ def _content(
                 if wanted
                 else _index_ending(search, last, place, "unchanged, the ring being empty")
             )
-            after = State(None, due, run, state.token, state.suspect)
-            _report(search, after, last, doubt, what, position, function, ending)
+            _report(search, before, last, doubt, what, position, function, ending)
             return
+        if state.suspect is None:
+            now_saved = search.world.save()
+            state = replace(state, suspect=_suspect(search, before, take, last, {}))
+            search.world.load(now_saved)
         run = (*run, *_made(search, last))
 
 
