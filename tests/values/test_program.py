@@ -249,3 +249,76 @@ def test_the_state_of_a_machine_has_the_hull_of_its_states() -> None:
     text += "void step(int go) { switch (state) { case IDLE: if (go) state = PRIME; break; "
     _, program = solved(text + "case PRIME: state = FEED; break; default: state = IDLE; } }")
     assert cells(program, "state") == Interval(0, 8, 4)
+
+
+def test_a_member_whose_address_is_taken_in_one_object_can_be_stored_into_through_that_pointer_in_all() -> None:
+    unit, program = solved(
+        "struct bin { unsigned *link; unsigned mass; }; struct bin hopper = {&hopper.mass, 8};"
+        "struct bin *const at = &hopper; void fill(unsigned more) { hopper.link[0] = more; }"
+    )
+    struct = next(name for name, layout in unit.types.structs.items() if layout.field("mass"))
+    anything = Interval(0, 0xFFFFFFFF, 1)
+    assert program.value(FieldCell(struct, ("mass",))) == anything
+    assert program.value(VariableCell("hopper", (".mass",))) == anything
+
+
+def test_a_member_of_a_nested_structure_has_one_range_under_all_its_names() -> None:
+    unit, program = solved(
+        "struct bin { struct { unsigned row[4]; } in; }; struct bin hopper; struct bin *const at = &hopper;"
+        "void fill(unsigned slot) { hopper.in.row[slot & 3] = 9; }"
+    )
+    for name, layout in unit.types.structs.items():
+        path = ("in", "row", "[]") if layout.field("in") else ("row", "[]")
+        assert program.value(FieldCell(name, path)) == Interval(0, 9, 9)
+
+
+HELPER = """
+struct bin { unsigned mass; unsigned row[4]; };
+static struct bin hopper, spare;
+static unsigned level;
+static unsigned even(struct bin *b, unsigned n) {
+    %s
+    return n ? even(b, n - 1) : level;
+}
+void fill(void) { %s = 9; level = even(&spare, 4); }
+"""
+
+
+@pytest.mark.parametrize(
+    "body, place",
+    (
+        ("switch (3) { case 5: hopper.row[3] = 1; }", "hopper.row[3]"),
+        ("switch (3) { case 5: level = 1; }", "level"),
+        ("b->mass = 5;", "hopper.mass"),
+        ("if (n == 2) b->mass = 5;", "hopper.mass"),
+    ),
+)
+def test_what_a_callee_only_seems_to_store_into_keeps_what_its_caller_left_there(body: str, place: str) -> None:
+    unit, program = solved(HELPER % (body, place))
+    cell = VariableCell(
+        next(item.variable.identity for item in unit.objects if item.variable.name == place.split(".")[0]),
+        ((".mass",) if "mass" in place else (".row", "[]") if "row" in place else ()),
+    )
+    found = program.value(cell)
+    assert found is not None and found.high >= 9
+
+
+def test_bytes_of_different_types_behind_pointers_are_told_apart() -> None:
+    _, program = solved(
+        'static const char *const text = "\\x81"; _Bool on; _Bool *const link = &on; int seen;'
+        "void look(int i) { if (*link) seen = text[i & 1]; }"
+    )
+    assert program.value(VariableCell("seen")) == Interval(-128, 127, 1)
+
+
+@pytest.mark.parametrize("where", ("lasting", "here"))
+def test_an_object_seen_as_the_other_sign_is_converted(where: str) -> None:
+    _, program = solved(
+        f"int lasting; unsigned seen; void look(void) {{ int here; {where} = -1; seen = *(unsigned *)&{where}; }}"
+    )
+    assert program.value(VariableCell("seen")) == Interval(0, 0xFFFFFFFF, 0xFFFFFFFF)
+
+
+def test_a_store_as_the_other_sign_is_converted() -> None:
+    _, program = solved("int level; void put(void) { *(unsigned *)&level = 0xFFFFFFFEu; }")
+    assert program.value(VariableCell("level")) == Interval(-2, 0, 2)

@@ -179,6 +179,17 @@ def _taken_in_place(place: PlaceExpr, taken: set[str], cells: set[Cell]) -> None
         place = place.base
 
 
+def member_cell(place: PlaceExpr) -> FieldCell | None:
+    """The member that a place is, or lies in as an array's element, of whichever object of its structure; an array's
+    element as ``[]``."""
+    kind, steps = place.type, 0
+    while isinstance(kind, ArrayType):
+        kind, steps = kind.element, steps + 1
+    while isinstance(place, ElementPlace):
+        place, steps = place.base, steps + 1
+    return FieldCell(place.struct, (place.name, *["[]"] * steps)) if isinstance(place, MemberPlace) else None
+
+
 def _take(place: PlaceExpr, taken: set[str], cells: set[Cell]) -> None:
     kind = place.type
     cell = cell_of(place)
@@ -188,8 +199,8 @@ def _take(place: PlaceExpr, taken: set[str], cells: set[Cell]) -> None:
             cell = VariableCell(cell.variable, (*cell.path, "[]"))
         elif isinstance(cell, FieldCell):
             cell = FieldCell(cell.struct, (*cell.path, "[]"))
-    if cell is not None and number_type(kind) is not None:
-        cells.add(cell)
+    if number_type(kind) is not None:
+        cells |= {name for name in (cell, member_cell(place)) if name is not None}
     base = place
     while isinstance(base, (MemberPlace, ElementPlace)):
         base = base.base

@@ -199,6 +199,16 @@ class Callees:
                         outward = True
         return _Written(frozenset(cells), pointees, outward, frozenset(calls))
 
+    def forgets(self, identity: str, names: set[Cell]) -> bool:
+        """Whether a caller takes a cell, by any of its names, for changed after a call of the function.
+
+        Where the call leads on to unknown code the caller itself notes what it leaves.
+        """
+        effect = self.effects[identity]
+        if effect.through_pointers and not names.isdisjoint(self.exposure.cells):
+            return True
+        return any(name in effect.writes for name in names)
+
     def thresholds(self, identity: str) -> Sequence[int]:
         """The constants of a function and of the callees that may be run in place in it."""
         known = self._constants.get(identity)

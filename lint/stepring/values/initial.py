@@ -64,11 +64,25 @@ def shared_cells(kind: CType, path: tuple[str, ...], exposure: Exposure) -> list
         path = path[1:]
     if not isinstance(kind, StructType):
         return []
-    for way in exposure.members.get(kind.identity, ()):
-        if tuple("." + name if struct else name for struct, name, _ in way) == path:
+    return [*inner_cells(FieldCell(kind.identity, tuple(step.removeprefix(".") for step in path)), exposure)]
+
+
+def inner_cells(cell: FieldCell, exposure: Exposure) -> list[FieldCell]:
+    """The field cells that stand for a member, seen from each of the structures around it; the outermost first."""
+    for way in exposure.members.get(cell.struct, ()):
+        if tuple(name for _, name, _ in way) == cell.path:
             return [
                 FieldCell(struct, tuple(name for _, name, _ in way[number:]))
                 for number, (struct, _, _) in enumerate(way)
                 if struct
             ]
     return []
+
+
+def field_range(cell: Cell, exposure: Exposure) -> Interval | None:
+    """The values of a member's type; None for what is no member."""
+    if isinstance(cell, FieldCell):
+        for way in exposure.members.get(cell.struct, ()):
+            if tuple(name for _, name, _ in way) == cell.path:
+                return whole(way[-1][2])
+    return None

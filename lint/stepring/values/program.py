@@ -28,7 +28,7 @@ from stepring.values.engine import FunctionValues, analyse
 from stepring.values.exposure import Leaks, exposure_of, leaks_of
 from stepring.values.graph import WIDTHS
 from stepring.values.growth import Growth
-from stepring.values.initial import Table, initial_cells, shared_cells
+from stepring.values.initial import Table, field_range, initial_cells, inner_cells, shared_cells
 from stepring.values.intervals import FALSE, UNBOUNDED, is_subset, number_type, union, whole
 from stepring.values.spots import pointee_cell
 from stepring.values.surroundings import Effect, Logged, Record, Surroundings
@@ -122,8 +122,10 @@ class ProgramValues:
             if more is None:
                 return None
             value = union(value, more)
-        if cell in self.exposure.cells or any(step in self.exposure.bytes_of for step in self._structs_of(cell)):
-            limits = self._ranges.get(cell)
+        names = [cell, *self._also(cell)]
+        bytewise = any(isinstance(name, FieldCell) and name.struct in self.exposure.bytes_of for name in names)
+        if bytewise or any(name in self.exposure.cells for name in names):
+            limits = self._ranges.get(cell) or next(filter(None, (field_range(n, self.exposure) for n in names)), None)
             for width in WIDTHS:
                 stored = self.summaries.get(pointee_cell(width))
                 if stored is not None:
@@ -134,15 +136,11 @@ class ProgramValues:
     def _also(self, cell: Cell) -> list[Cell]:
         """The cells under which the cell's objects are also reached."""
         if isinstance(cell, FieldCell):
-            other = self._shared_as.get(cell)
-            return [other] if other is not None and other != cell else []
+            return [other for other in inner_cells(cell, self.exposure) if other != cell]
         kind = self._types.get(cell.variable)
         if kind is None or cell.variable not in self.exposure.variables:
             return []
         return shared_cells(kind, cell.path, self.exposure)
-
-    def _structs_of(self, cell: Cell) -> list[str]:
-        return [other.struct for other in (cell, *self._also(cell)) if isinstance(other, FieldCell)]
 
     def own(self, cell: Cell) -> Interval | None:
         """What is kept under the cell's own name; see ``value`` for all that it can hold."""
@@ -305,6 +303,12 @@ class ProgramValues:
             other = self._shared_as.get(cell)
             if other is not None and other != cell:
                 add(other, value)
+        for cell, value in self._between.get(function.identity, {}).items():
+            single = isinstance(cell, VariableCell) and "[]" not in cell.path
+            # Its callers forget what they had there, so what it leaves as it found it is noted here.
+            names = {cell, *self._also(cell)}
+            if not (single and cell in record.stored) and self.callees.forgets(function.identity, names):
+                add(cell, value)
         for width, value in record.pointees.items():
             add(pointee_cell(width), value)
         if found.solution.leaving is not None:

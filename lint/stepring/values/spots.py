@@ -35,9 +35,9 @@ class Exposure:
     """What the whole program does with addresses.
 
     ``variables``: identities of variables whose address, or a part's, is taken. ``cells``: cells whose own address
-    is taken. ``bytes_of``: structures that are also reached through pointers to characters. ``unions``: structures
-    that overlap with others in a union. ``members``: the integer and pointer members of each structure, by path, as
-    far as the code names them.
+    is taken; of a member, the member of whichever object too. ``bytes_of``: structures that are also reached through
+    pointers to characters. ``unions``: structures that overlap with others in a union. ``members``: the integer and
+    pointer members of each structure, by path, as far as the code names them.
     """
 
     variables: frozenset[str] = frozenset()
@@ -157,14 +157,16 @@ class Places:
         """The spot of a place; the same one for every place with the same access path."""
         number = number_type(access.type)
         width = number.width if number is not None else 0
+        # What a pointer to a scalar points to has no cell whose type could tell it from another of its width.
+        kind = number if access.cell is None else width
         definite = access.definite and not (access.path and _variable_index(access.path[-1]))
         key: tuple[object, ...]
         if definite:
-            key = (access.root, access.path, access.cell, width)
+            key = (access.root, access.path, access.cell, kind)
         elif access.reached:
-            key = ("?", access.cell, width)
+            key = ("?", access.cell, kind)
         else:
-            key = ("…", access.root, access.cell, width)
+            key = ("…", access.root, access.cell, kind)
         found = self._spots.get(key)
         if found is not None:
             return found
@@ -246,9 +248,11 @@ class Places:
                 buckets.append(("bytes",))
         elif width and open_to_pointers:
             known = self.exposure
-            if known is None or access.cell in known.cells or (access.local and access.exposed):
+            member = FieldCell(access.view[0], access.view[1:]) if access.view else None
+            taken = known is None or access.cell in known.cells or member in known.cells
+            if taken or (access.local and access.exposed):
                 buckets += [("scalar", width), ("bytes",)]
-            elif access.view and access.view[0] in known.bytes_of:
+            elif known is not None and access.view and access.view[0] in known.bytes_of:
                 buckets.append(("bytes",))
         return tuple(buckets)
 

@@ -80,6 +80,31 @@ def adapt(value: Interval, spot: Spot) -> Interval:
     return (convert(value, kind) if kind is not None else None) or whole(spot.type)
 
 
+def holds_type(spot: Spot, place: PlaceExpr) -> bool:
+    """Whether a place sees its spot as an object of the spot's own type, not of another sign (6.5p7)."""
+    return spot.type is place.type or number_type(spot.type) == number_type(place.type)
+
+
+def read_place(frame: Frame, state: State, place: PlaceExpr) -> Interval:
+    """What a place may hold, seen as its own type."""
+    spot = frame.spot(place)
+    value = read_spot(frame.places, state, spot)
+    if holds_type(spot, place):
+        return value
+    kind = number_type(place.type)
+    if kind is None or value is UNBOUNDED:
+        return whole(place.type)
+    return value if fits(value, kind) else convert(value, kind) or whole(kind)
+
+
+def limit_place(frame: Frame, state: State, place: PlaceExpr, allowed: Interval, depth: int) -> bool:
+    """Keep only ``allowed`` values of a place; nothing is learned of a spot that it sees as another type."""
+    spot = frame.spot(place)
+    if not holds_type(spot, place):
+        return meet(read_place(frame, state, place), allowed) is not None
+    return limit_spot(frame.places, state, spot, allowed, depth)
+
+
 @dataclass(slots=True)
 class View:
     """A state as the places of one frame see it. ``observe`` is told of every store.
@@ -93,7 +118,7 @@ class View:
 
     def read(self, place: PlaceExpr) -> Interval:
         """The values that the place may hold."""
-        return read_spot(self.frame.places, self.state, self.frame.spot(place))
+        return read_place(self.frame, self.state, place)
 
     def evaluate(self, expression: Expr) -> Interval:
         """The values that the expression may have."""
@@ -101,7 +126,7 @@ class View:
 
     def limit(self, place: PlaceExpr, allowed: Interval) -> bool:
         """Keep only ``allowed`` values of the place; False if none is left."""
-        return limit_spot(self.frame.places, self.state, self.frame.spot(place), allowed, DEPTH)
+        return limit_place(self.frame, self.state, place, allowed, DEPTH)
 
     def cells(self) -> dict[Cell, Interval]:
         """What the cells that are known here may hold, all spots of one cell together."""
@@ -118,7 +143,10 @@ class View:
     def store(self, place: PlaceExpr, value: Interval, source: Expr | None = None) -> Spot:
         """Store a value in a place; ``source`` is the expression that gave it, if it would give the same again."""
         spot = self.frame.spot(place)
-        definition = self._definition(source, spot) if source is not None and spot.definite and spot.tracked else None
+        own = holds_type(spot, place)
+        value = value if own else adapt(value, spot)
+        named = own and spot.definite and spot.tracked
+        definition = self._definition(source, spot) if source is not None and named else None
         store_spot(self.frame.places, self.state, spot, value, self.observe)
         if definition is not None:
             self.state.definitions[spot] = definition
@@ -171,10 +199,10 @@ class _Deeper:
     depth: int
 
     def read(self, place: PlaceExpr) -> Interval:
-        return read_spot(self.frame.places, self.state, self.frame.spot(place))
+        return read_place(self.frame, self.state, place)
 
     def limit(self, place: PlaceExpr, allowed: Interval) -> bool:
-        return limit_spot(self.frame.places, self.state, self.frame.spot(place), allowed, self.depth)
+        return limit_place(self.frame, self.state, place, allowed, self.depth)
 
 
 def forget_definitions(state: State, changed: frozenset[Spot]) -> None:
