@@ -213,7 +213,7 @@ def replay(log: Path, root: Path | None, keep: Path | None, no_programs: bool, c
 
     try:
         read = replaying.read_log(log)
-        place = Path(os.path.normpath(Path.cwd() / root)) if root is not None else Path.cwd()
+        place = Path(os.path.normpath(_current_folder() / (root or ".")))
         for sentence in replaying.changed_files(read, place):
             click.echo(f"stepring: {sentence}", err=True)
         wishes = replaying.Wishes(not no_programs, keep, () if compiler is None else (compiler,))
@@ -253,6 +253,13 @@ def rule(identity: str | None) -> int:
         else:
             click.echo(page.rstrip("\n"))
     return FOUND_NOTHING
+
+
+def _current_folder() -> Path:
+    try:
+        return Path.cwd()
+    except OSError as error:
+        _refuse(f"the current folder cannot be used: {error.strerror or error}")
 
 
 def _refuse(text: str) -> NoReturn:

@@ -370,7 +370,7 @@ def _judge(claim: Claim, units: _Units, wishes: Wishes, name: str) -> Judged:
     if not wishes.compile:
         return Judged(claim, done.held, done.why, "not tried", "")
     try:
-        ended, why, kept = _as_program(claim, chosen, witness, units.root, wishes, name)
+        ended, why, kept = _as_program(claim, chosen, witness, done, units.root, wishes, name)
     except NotPossible as trouble:
         ended, why, kept = "not possible", str(trouble), None
     return Judged(claim, done.held, done.why, ended, why, kept)
@@ -399,7 +399,7 @@ def _interpreted(chosen: _Chosen, witness: Witness) -> Replayed:
 
 
 def _as_program(
-    claim: Claim, chosen: _Chosen, witness: Witness, root: Path, wishes: Wishes, name: str
+    claim: Claim, chosen: _Chosen, witness: Witness, done: Replayed, root: Path, wishes: Wishes, name: str
 ) -> tuple[Ended, str, Path | None]:
     """Make the witness's program, build it, run it and say where it stopped."""
     model = chosen.typed[0].types.model
@@ -416,6 +416,7 @@ def _as_program(
         frozenset(_owned(chosen.named)),
         frozenset(function.name for one in chosen.every for function in one.typed.functions),
         place,
+        done.before,
     )
     heading = Heading(
         (f"{claim.rule}, {claim.file}, line {claim.line}:", claim.text),

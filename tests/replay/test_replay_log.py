@@ -121,6 +121,56 @@ def test_the_report_and_the_exit_code(project: Path, capsys: Any) -> None:
     ]
 
 
+VALUES = """
+#include <limits.h>
+#include <stdint.h>
+#include <stddef.h>
+enum shore { SHORE_DOWN = -3, SHORE_UP };
+struct record { unsigned kind : 3; signed mass : 5; uint64_t serial; uint8_t *bytes; };
+static int8_t a; uint8_t b; static short c; static int32_t d; static int64_t e, f; static uint64_t g; static _Bool h;
+static enum shore i; static char j; static struct record k[2]; static uint32_t *l; static const struct record *m;
+static uint8_t buffer[4];
+int held(void)
+{
+    return a == INT8_MIN && b == 255 && c == SHRT_MIN && d == INT32_MIN && e == INT64_MIN && f == INT64_MAX
+        && g == UINT64_MAX && h == 1 && i == SHORE_DOWN && j == -7 && k[1].kind == 5 && k[1].mass == -16
+        && k[1].serial == 1ULL << 63 && k[1].bytes == &buffer[2] && l == NULL && m == &k[1];
+}
+int given(int8_t v, uint64_t w, int64_t x, _Bool y, const uint8_t *p, const struct record *q, uint16_t z)
+{
+    return v == INT8_MIN && w == UINT64_MAX && x == INT64_MIN && y == 1 && p == &buffer[3] && q == NULL && z == 65535;
+}
+int main(int count, char **words) { return words == NULL && count == 3; }
+"""
+
+
+@needs_host
+def test_every_kind_of_value_reaches_the_program_as_it_is(project: Path) -> None:
+    values = project / "src/values.c"
+    values.write_text(VALUES, "utf-8")
+    database = project / "compile_commands.json"
+    entry = {"directory": ".", "arguments": ["cc", "-c", "src/values.c"], "file": "src/values.c"}
+    database.write_text(json.dumps([entry]), "utf-8")
+    file = f"{project}/src/values.c:"
+    start = [
+        *((f"{file}a", "", -128), ("b", "", 255), (f"{file}c", "", -(2**15)), (f"{file}d", "", -(2**31))),
+        *((f"{file}e", "", -(2**63)), (f"{file}f", "", 2**63 - 1), (f"{file}g", "", 2**64 - 1), (f"{file}h", "", 1)),
+        *((f"{file}i", "", -3), (f"{file}j", "", -7), (f"{file}k", "[1].kind", 5), (f"{file}k", "[1].mass", -16)),
+        *((f"{file}k", "[1].serial", 2**63), (f"{file}k", "[1].bytes", Reference(f"{file}buffer", 2))),
+        *((f"{file}l", "", None), (f"{file}m", "", Reference(f"{file}k", 1))),
+    ]
+    ending = Ending("result", at(project, "return", "src/values.c"), None, "", "1", "0")
+    placed = tuple(StartValue(item, path, value) for item, path, value in start)
+    arguments = (-128, 2**64 - 1, -(2**63), 1, Reference(f"{file}buffer", 3), None, 65535)
+    found = judged(
+        project,
+        witness(ending, ("held", ()), start=placed),
+        witness(ending, ("given", arguments)),
+        witness(ending, ("main", (3, None))),
+    )
+    assert [(one.held, one.ended) for one in found] == 3 * [(True, "stopped")], found
+
+
 # ------------------------------------------------------------------------------------------------------ kept programs
 
 
@@ -153,6 +203,8 @@ def test_a_kept_program_stops_until_the_defect_is_mended(project: Path, name: st
     assert one.kept is not None
     status, messages = build_and_run(project, one.kept)
     assert status != 0
+    if name == "bounds":
+        assert "(void)feed_put(&q, 20); /* with head 3 */" in one.kept.read_text("utf-8")
     assert re.search(rf"src/queue\.c:{given.ending.where.line}\b", messages)
     source = project / QUEUE
     before, after = MENDED[name]

@@ -22,6 +22,7 @@ from stepring.paths.types import Fault
 from stepring.paths.witness import Made, Reference, Value, Witness, WitnessCall
 
 MARK = "replay:"
+MAIN = "replay_main_of_the_unit"
 ENDLESS_SECONDS = 2
 
 _UNSEEN: dict[Fault, str] = {
@@ -51,8 +52,8 @@ class Plan:
 
     ``included`` are the files to include, as the include directive spells them; ``owned`` the identities of all
     functions and objects that are reached by that, ``bodies`` the names of all functions that the files define.
-    ``place`` is where the finding is, as ``file:line``. ``undefined`` are symbols that no linked file defines and that
-    the run does not need.
+    ``place`` is where the finding is, as ``file:line``. ``before`` are the watched places' values before each call,
+    for comments. ``undefined`` are symbols that no linked file defines and that the run does not need.
     """
 
     program: Program
@@ -61,6 +62,7 @@ class Plan:
     owned: frozenset[str]
     bodies: frozenset[str]
     place: str
+    before: tuple[tuple[tuple[str, str], ...], ...] = ()
     undefined: tuple[str, ...] = ()
 
 
@@ -75,7 +77,7 @@ def driver_text(plan: Plan, heading: Heading) -> str:
     lines = [
         *_comment(heading, witness),
         "",
-        "#define main replay_main_of_the_unit",
+        f"#define main {MAIN}",
         *(f'#include "{_spelled(file)}"' for file in plan.included),
         "#undef main",
         "",
@@ -252,9 +254,13 @@ def _main(plan: Plan, memory: Memory) -> Iterator[str]:
     for number, call in enumerate(witness.calls, 1):
         yield from _given(plan, memory, call, singles)
         spelled = _call(plan, memory, call, singles)
+        before = plan.before[number - 1] if number <= len(plan.before) else ()
+        shown = f" /* with {_harmless(', '.join(' '.join(pair) for pair in before))} */" if before else ""
         if number < last:
-            yield f"(void){spelled};" if _returns(plan, call) else f"{spelled};"
+            yield (f"(void){spelled};" if _returns(plan, call) else f"{spelled};") + shown
         else:
+            if shown:
+                yield shown.strip()
             yield from _ending(plan, spelled, call, singles)
     yield "return 0;"
 
@@ -273,7 +279,8 @@ def _call(plan: Plan, memory: Memory, call: WitnessCall, singles: set[str]) -> s
     if function is None or function.identity not in plan.owned:
         raise NotPossible(f"{_plain(call.function)} is not in a file that can be included")
     arguments = ", ".join(_value(plan, memory, value, singles) for value in call.arguments)
-    return f"{_plain(call.function)}({arguments})"
+    name = _plain(call.function)
+    return f"{MAIN if name == 'main' else name}({arguments})"
 
 
 def _returns(plan: Plan, call: WitnessCall) -> bool:

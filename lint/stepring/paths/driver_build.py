@@ -10,9 +10,11 @@ import os
 import re
 import signal
 import subprocess
+import tempfile
 from collections.abc import Sequence
 from contextlib import suppress
 from dataclasses import dataclass
+from functools import lru_cache
 from pathlib import Path
 
 from stepring.gather.compilers import choose_compiler, choose_named
@@ -98,12 +100,26 @@ def find_host(model: DataModel, unit: Unit, root: Path, named: Sequence[str] = (
             theirs = None if known is None else model_from_macros(known.predefined)
             if known is None or theirs is None:
                 continue
-            if _sizes(theirs) == _sizes(model):
-                strict = () if "__clang__" in known.predefined else ("-fsanitize=bounds-strict",)
-                return Host(program, extra, (*CHECKS, *strict))
+            strict = () if "__clang__" in known.predefined else ("-fsanitize=bounds-strict",)
+            host = Host(program, extra, (*CHECKS, *strict))
+            if _sizes(theirs) == _sizes(model) and (not extra or _builds(host)):
+                return host
             built = built or theirs.name
-    names = " and ".join(dict.fromkeys(Path(program).name for program in programs))
-    return f"the witness is for the data model {model.name}, and {names} builds for {built or 'another one'}"
+    names = list(dict.fromkeys(Path(program).name for program in programs))
+    verb = "builds" if len(names) == 1 else "build"
+    return f"the witness is for the data model {model.name}, and {' and '.join(names)} {verb} for {built or 'another'}"
+
+
+@lru_cache(maxsize=16)
+def _builds(host: Host) -> bool:
+    """Whether a compiler has what its options ask for: the libraries of another word size often are not there."""
+    with tempfile.TemporaryDirectory(prefix="stepring-") as made:
+        folder = Path(made)
+        source, target = folder / "empty.c", folder / "empty.o"
+        source.write_text("#include <stdint.h>\nint main(void) { return 0; }\n", encoding="utf-8")
+        return (
+            not compile_file(host, (), source, target, folder) and not link(host, [target], folder / "empty", folder)[0]
+        )
 
 
 def _asked(unit: Unit, program: str, options: tuple[str, ...]) -> Unit:

@@ -44,11 +44,15 @@ class ReplayStep:
 
 @dataclass(frozen=True, slots=True)
 class Replayed:
-    """What came of a witness: ``held`` if it ended as it says; ``why`` is one clause, what happened instead if not."""
+    """What came of a witness: ``held`` if it ended as it says; ``why`` is one clause, what happened instead if not.
+
+    ``before`` are the watched places' values before each call that was made.
+    """
 
     held: bool
     why: str
     steps: tuple[ReplayStep, ...] = ()
+    before: tuple[tuple[tuple[str, str], ...], ...] = ()
 
 
 class Unfit(Exception):
@@ -64,6 +68,7 @@ class _Replay:
     memory: Memory
     origin: Placer
     steps: list[ReplayStep] = field(default_factory=list)
+    before: list[tuple[tuple[str, str], ...]] = field(default_factory=list)
     given: list[OutsideValue] = field(default_factory=list)
     last: tuple[tuple[str, str], ...] = ()
     where: Position = field(default_factory=lambda: Position("", 0))
@@ -120,7 +125,8 @@ def replay(program: Program, witness: Witness, *, origin: Placer, steps: int = S
     trouble_text = _mismatch(state, outcome)
     if not trouble_text:
         state.note(_end_place(state, outcome), _shown_end(state, outcome))
-    return Replayed(not trouble_text, trouble_text or _shown_end(state, outcome), _kept(state.steps))
+    why = trouble_text or _shown_end(state, outcome)
+    return Replayed(not trouble_text, why, _kept(state.steps), tuple(state.before))
 
 
 def _kept(steps: Sequence[ReplayStep]) -> tuple[ReplayStep, ...]:
@@ -217,6 +223,7 @@ def _call(state: _Replay, call: WitnessCall, steps: int) -> Outcome:
     state.given = list(call.outside)
     state.where = function
     state.note(state.origin(function), call_text(call))
+    state.before.append(state.last)
     devices = Devices(state.program, state.memory, state.outside)
     try:
         outcome = run(
