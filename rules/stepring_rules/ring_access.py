@@ -44,8 +44,11 @@ def judged(program: Program, words: Words) -> Iterator[Obligation]:
         groups: dict[tuple[object, ...], list[CheckedAccess]] = {}
         for access in checked(ring):
             proof = proofs.get((access.where, access.function))
-            if proof is not None and proof.holds and (ring.unseen or not access.settled) and access.bad is None:
+            partly = bool(ring.unseen) or not access.settled or access.kind == "address"
+            if proof is not None and proof.holds and partly and access.bad is None:
                 yield from _proved(ring, (proof,), words)
+            elif ring.explored and access.settled and access.kind == "address":
+                yield _handed_on(ring, access, words, proof)
             elif access.settled and ring.unseen:
                 yield _unseen(ring, access, words)
             elif access.settled:
@@ -120,6 +123,21 @@ def _unseen(ring: Ring, access: CheckedAccess, words: Words) -> Obligation:
         "indices may be stored into elsewhere.",
         reason="; ".join(ring.unseen),
         open_as=unseen_as(ring),
+        function=access.function,
+    )
+
+
+def _handed_on(ring: Ring, access: CheckedAccess, words: Words, proof: Proof | None) -> Obligation:
+    """An address inside the storage that something else goes on from: how far was for the solver to say."""
+    return about(
+        words.rule,
+        ring,
+        "open",
+        access.where,
+        f"The address of an element of {ring.storage} is taken here; it is inside, but how far what gets it goes "
+        "on from there is not settled.",
+        reason=(proof.detail if proof is not None else "") or "the solver did not follow the address",
+        open_as=(proof.reason if proof is not None else None) or "not modelled",
         function=access.function,
     )
 

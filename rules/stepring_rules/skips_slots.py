@@ -56,7 +56,7 @@ def _check(turn: Turn) -> Iterator[Obligation]:
             related=(declared(ring),),
             witness=(WitnessStep(step.where, f"{name} is moved on", values),),
         )
-    elif turn.cause is None and step.settled and step.pairs and not step.odd and step.by in (1, -1):
+    elif turn.cause is None and step.settled and step.pairs and step.by in (1, -1) and _follow(turn):
         if ring.unseen:
             yield about(
                 "RB03",
@@ -80,6 +80,17 @@ def _check(turn: Turn) -> Iterator[Obligation]:
         )
     elif turn.cause is None and not step.odd:
         yield _unsettled(turn)
+
+
+def _follow(turn: Turn) -> bool:
+    """Whether every pair, one that may not occur included, leads to the next slot, or round the end to the other."""
+    by = turn.step.by or 0
+    return all(
+        after == before + by
+        if 0 <= before + by < turn.capacity
+        else after == (before + by) % turn.capacity and 0 <= before < turn.capacity
+        for before, after in turn.step.pairs
+    )
 
 
 def _unsettled(turn: Turn) -> Obligation:
