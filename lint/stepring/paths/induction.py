@@ -27,6 +27,18 @@ Look: TypeAlias = Callable[[Key], Value]
 """What a key holds, in the object and at the point that are asked about."""
 
 
+SCHEDULE = (
+    ("sums", 15_000),
+    ("bits", 300_000),
+    ("sums", 100_000),
+    ("bits", 1_500_000),
+    ("sums", 500_000),
+    ("bits", 6_000_000),
+)
+"""Tries at a question, each with its effort in the solver's units. Most code about rings adds and compares, which is
+settled at once by arithmetic; masks and what wraps round need bits."""
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Relation:
     """A candidate: its text as a C expression, the keys that it speaks of, and the formula over what they hold."""
@@ -81,8 +93,7 @@ class Body:
     trace: Trace
     assumes: bool
     objects: list[Number | None] = field(default_factory=list)
-    solver: Term = None
-    loaded: int = 0
+    assumed: dict[str, list[Term]] = field(default_factory=dict)
     switches: dict[str, Term] = field(default_factory=dict)
     goals: list[tuple[Point, Term, list[tuple[str, Term]]]] = field(default_factory=list)
     done: list[frozenset[str]] = field(default_factory=list)
@@ -178,9 +189,6 @@ def concerns(family: Family, point: Point) -> bool:
 
 def _prepared(made: Induction, trace: Trace, assumes: bool, ends: Sequence[Callable[[View], Number]]) -> Body:
     body = Body(trace, assumes)
-    body.solver = z3.SolverFor("QF_BV")
-    body.solver.set("rlimit", made.limits.effort)
-    body.solver.set("random_seed", 0)
     body.objects = objects_of(made.family, trace)
     number = len(made.bodies)
     heads: dict[int, Point] = {}
@@ -261,10 +269,9 @@ def _assume(made: Induction, body: Body, point: Point, mark: str, only: frozense
     for name, term in _at(made, body, point, mark):
         if only is not None and name not in only:
             continue
-        switch = body.switches.get(name)
-        if switch is None:
-            switch = body.switches[name] = z3.Bool(f"keeps {name}")
-        body.solver.add(z3.Implies(z3.And(switch, guard), term))
+        body.assumed.setdefault(name, []).append(z3.Implies(guard, term))
+        if name not in body.switches:
+            body.switches[name] = z3.Bool(f"keeps {name}")
 
 
 def _ask(made: Induction, body: Body, point: Point, mark: str, but: frozenset[str] = frozenset()) -> None:
@@ -316,13 +323,6 @@ def _drop(made: Induction, body: Body, point: Point, guard: Term, goals: Sequenc
         dropped = True
 
 
-def _load(body: Body) -> None:
-    facts = body.trace.terms.facts
-    while body.loaded < len(facts):
-        body.solver.add(facts[body.loaded])
-        body.loaded += 1
-
-
 def _question(made: Induction, body: Body, terms: Sequence[Term]) -> tuple[Verdict, Term]:
     """Whether terms cannot hold together under what is active; a model where they can."""
     if made.queries >= made.limits.queries:
@@ -332,17 +332,48 @@ def _question(made: Induction, body: Body, terms: Sequence[Term]) -> tuple[Verdi
         made.exhausted = "time limit"
         return "unknown", None
     made.queries += 1
-    _load(body)
-    switches = [switch for name, switch in body.switches.items() if name in made.active]
-    body.solver.push()
-    body.solver.add(*terms)
-    found = body.solver.check(*switches)
-    made.core = tuple(sorted(str(term) for term in body.solver.unsat_core())) if found == z3.unsat else ()
-    model = body.solver.model() if found == z3.sat else None
-    body.solver.pop()
-    if found == z3.unsat:
-        return "holds", None
-    return ("fails", model) if found == z3.sat else ("unknown", None)
+    made.core = ()
+    active = [name for name in body.assumed if name in made.active]
+    facts = [*body.trace.terms.facts, *terms]
+    for kind, effort in SCHEDULE:
+        if effort > made.limits.effort:
+            break
+        found, model = _tried(made, body, facts, active, kind, effort)
+        if found != "unknown":
+            return found, model
+    return "unknown", None
+
+
+def _tried(
+    made: Induction, body: Body, facts: Sequence[Term], active: Sequence[str], kind: str, effort: int
+) -> tuple[Verdict, Term]:
+    """One try at a question."""
+    if kind == "sums":
+        solver = z3.SimpleSolver()
+        solver.set("smt.bv.solver", 2)  # bit-vectors as integers: sums and orders, no bits
+    else:
+        steps = ("simplify", "propagate-values", "solve-eqs", "elim-uncnstr", "simplify", "smt")
+        solver = z3.Then(*steps).solver()
+    solver.set("rlimit", effort)
+    solver.set("random_seed", 0)
+    solver.add(*facts)
+    switches = []
+    for name in active:
+        for term in body.assumed[name]:
+            solver.add(z3.Implies(body.switches[name], term) if kind == "sums" else term)
+        switches.append(body.switches[name])
+    try:
+        answer = solver.check(*switches) if kind == "sums" else solver.check()
+        if answer == z3.unsat:
+            names = {str(term).removeprefix("keeps ") for term in solver.unsat_core()} if kind == "sums" else active
+            made.core = tuple(sorted(names))
+            return "holds", None
+        if answer == z3.sat:
+            return "fails", solver.model()
+    except z3.Z3Exception:
+        # A tactic that gives up says so by an exception.
+        return "unknown", None
+    return "unknown", None
 
 
 def proved(made: Induction, body: Body, state: State, goal: Truth) -> Verdict:
@@ -354,8 +385,7 @@ def proved(made: Induction, body: Body, state: State, goal: Truth) -> Verdict:
 
 def basis(made: Induction) -> tuple[str, ...]:
     """The relations on which the latest proof rests, as C expressions."""
-    names = {name.removeprefix("keeps ") for name in made.core}
-    return tuple(text for text in made.relations if text in names)
+    return tuple(text for text in made.relations if text in made.core)
 
 
 def kept_by(made: Induction) -> tuple[str, ...]:

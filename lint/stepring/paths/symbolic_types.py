@@ -24,7 +24,7 @@ class Limits:
     blocks of one run in all, ``unroll`` how often a path goes round a loop.
     """
 
-    effort: int = 3_000_000
+    effort: int = 1_500_000
     queries: int = 600
     paths: int = 256
     depth: int = 4
