@@ -4,6 +4,7 @@ import pytest
 from tests.shapes.ring_support import origin
 from tests.support import lower_text
 
+from stepring.shapes.ring_types import CheckedAccess
 from stepring.shapes.rings import find_rings, ring_functions
 from stepring.shapes.types import Ring
 
@@ -517,7 +518,8 @@ def test_members_that_go_round_without_being_a_ring(text: str) -> None:
         "struct digest { uint8_t block[64]; unsigned total; };"
         "void add(struct digest *d, const uint8_t *data, unsigned n) {"
         " unsigned left = d->total & 63, fill = 64 - left; d->total += n;"
-        " if (left && n >= fill) { memcpy(d->block + left, data, fill); mix(d->block); data += fill; n -= fill; left = 0; }"
+        " if (left && n >= fill)"
+        " { memcpy(d->block + left, data, fill); mix(d->block); data += fill; n -= fill; left = 0; }"
         " while (n >= 64) { mix(data); data += 64; n -= 64; }"
         " if (n > 0) memcpy(d->block + left, data, n); }",
         # what is left of a message, counted from where its reader stands
@@ -531,3 +533,27 @@ def test_members_that_go_round_without_being_a_ring(text: str) -> None:
 )
 def test_blocks_and_cursors_are_no_rings(text: str) -> None:
     assert rings(text) == []
+
+
+ASKED = "static uint8_t q[8]; static uint8_t at; void put(uint8_t c) { q[at] = c; at = (at + 1) % 8; }"
+
+
+@pytest.mark.parametrize(
+    ("look", "certain"),
+    [
+        # nobody shows that a caller passes the last slot
+        ("uint8_t look(uint8_t slot) { return q[slot + at - at + 1]; }", False),
+        # the function's own check lets the last slot through
+        ("uint8_t look(uint8_t slot) { if (slot >= 8) return 0; return q[slot + at - at + 1]; }", True),
+        # a caller passes it
+        ("uint8_t look(uint8_t slot) { return q[slot + at - at + 1]; } uint8_t last(void) { return look(7); }", True),
+        # the callers pass others
+        ("uint8_t look(uint8_t slot) { return q[slot + at - at + 1]; } uint8_t last(void) { return look(6); }", False),
+    ],
+)
+def test_an_argument_is_trusted_as_far_as_the_code_shows_it(look: str, certain: bool) -> None:
+    (ring,) = rings(ASKED + look)
+    bad = {access.function for access in ring.accesses if isinstance(access, CheckedAccess) and access.bad is not None}
+    assert bad == ({"look"} if certain else set())
+    (access,) = [item for item in ring.accesses if item.function == "look"]
+    assert isinstance(access, CheckedAccess) and not access.settled

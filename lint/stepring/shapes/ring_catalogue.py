@@ -71,6 +71,7 @@ class Catalogue:
     written: set[Key] = field(default_factory=set)
     together: dict[Key, frozenset[Key]] = field(default_factory=dict)
     cursors: set[Key] = field(default_factory=set)
+    inlined: set[str] = field(default_factory=set)
 
 
 @dataclass(frozen=True, slots=True)
@@ -134,7 +135,7 @@ def catalogue(
         _merge(merged, item, seen)
     _cross(merged)
     taken = _taken(functions, objects)
-    inlined = {name for item in facts for name in item.flat.inlined}
+    inlined = merged.inlined = {name for item in facts for name in item.flat.inlined}
     merged.entered = [
         item
         for item in facts

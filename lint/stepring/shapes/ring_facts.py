@@ -43,6 +43,7 @@ from stepring.shapes.ring_sources import (
     sources,
     spread,
     term_of,
+    unchecked,
     use_of,
 )
 from stepring.shapes.types import WrapForm
@@ -127,6 +128,7 @@ class FlatFacts:
     types: dict[Key, IntType]
     stored: frozenset[Key]
     cursors: frozenset[Key] = frozenset()
+    unchecked: frozenset[Key] = frozenset()
     cells: dict[Key, CellFacts] = field(default_factory=dict)
     comparisons: list[Comparison] = field(default_factory=list)
     cross: dict[tuple[Key, Key], CellFacts] = field(default_factory=dict)
@@ -176,7 +178,15 @@ def facts_of(flat: Flat) -> FlatFacts:
                     op.indexed = True
                     uses.append(use)
     return FlatFacts(
-        sight, flat, uses, plain, sight.sources, sight.types, frozenset(sight.stored), _cursors(flat)
+        sight,
+        flat,
+        uses,
+        plain,
+        sight.sources,
+        sight.types,
+        frozenset(sight.stored),
+        _cursors(flat),
+        unchecked(sight) if flat.function.parameters else NOTHING,
     )
 
 

@@ -120,10 +120,11 @@ def ring_functions(functions: Sequence[Function]) -> tuple[Function, ...]:
 
 
 def _callers(functions: Sequence[Function], scans: list[_Scan], kept: set[int]) -> set[int]:
-    """The callers of static functions, to some levels: what they check, their callees need not check again."""
+    """The callers, to some levels, of static functions and of those that subscript with a parameter: what they check,
+    their callees need not check again."""
     by_name: dict[str, list[int]] = defaultdict(list)
-    for number, function in enumerate(functions):
-        if function.static:
+    for number, (function, scan) in enumerate(zip(functions, scans, strict=True)):
+        if function.static or any(name[0] == "parameter" for name in scan.subscripts):
             by_name[function.name].append(number)
     callers: dict[int, list[int]] = defaultdict(list)
     for number, scan in enumerate(scans):
@@ -354,6 +355,8 @@ def _sources(look: _Look, expr: Expr) -> Iterator[_Name]:
     match expr:
         case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
             yield from look.made_of.get(variable.identity, ())
+            if variable.storage == "parameter" and isinstance(variable.type, IntType):
+                yield "parameter", variable.identity
         case Load(place=place, type=IntType() | UnknownType()):
             name = _known(look, place)
             if name is not None:

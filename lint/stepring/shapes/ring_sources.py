@@ -170,6 +170,50 @@ def _scaled(expr: Expr) -> bool:
     return False
 
 
+def unchecked(sight: Sight) -> frozenset[Key]:
+    """The integer parameters that slots or lasting integers are made from and that the function compares with no
+    limit: only its callers know what they can be.
+
+    A value that the function's own check lets through is one that it must be able to deal with.
+    """
+    function = sight.flat.function
+    keys = {
+        ("local", "", parameter.identity) for parameter in function.parameters if isinstance(parameter.type, IntType)
+    }
+    if not keys:
+        return NOTHING
+    made: dict[Key, set[Key]] = defaultdict(set)
+    for key, sets in sight.sets.items():
+        if is_local(key):
+            made[key] = {other for _, op in sets for other in locals_of(sight, op.value, op.frame)}
+    data: list[Key] = []
+    compared_with: list[Key] = []
+    for block in sight.flat.blocks:
+        for op in block.ops:
+            if isinstance(op, Touch):
+                data.extend(locals_of(sight, op.subscript, op.frame))
+            elif isinstance(op, Set) and any(is_scalar(key) for key in place_keys(op.place, op.place_frame, {})):
+                data.extend(locals_of(sight, op.value, op.frame))
+        if isinstance(block.end, Branch):
+            condition, frame = _told(sight, block.end.condition, block.frame, 0)
+            if isinstance(condition, Binary) and condition.op in ("<", "<=", ">", ">="):
+                for side in (condition.left, condition.right):
+                    compared_with.extend(locals_of(sight, side, frame))
+    return frozenset(keys & _origins(made, data) - _origins(made, compared_with))
+
+
+def _origins(made: Mapping[Key, set[Key]], keys: list[Key]) -> set[Key]:
+    """Some locals, with all that they are made of."""
+    found: set[Key] = set()
+    pending = list(keys)
+    while pending:
+        key = pending.pop()
+        if key not in found:
+            found.add(key)
+            pending.extend(made.get(key, ()))
+    return found
+
+
 # ---------------------------------------------------------------------------------------------------------- uses
 
 

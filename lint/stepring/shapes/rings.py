@@ -92,7 +92,7 @@ def _relied(
 
 def _scene(merged: Catalogue) -> Scene:
     """What the studies need of the program."""
-    names = {facts.flat.function.identity for facts in merged.entered}
+    names = {facts.flat.function.identity for facts in merged.entered if not _left_to_callers(merged, facts)}
     stored = [(facts, *_reach(facts, names)) for facts in merged.entered]
 
     def events(tracked: frozenset[Key], arrays: frozenset[Key]) -> list[FlatFacts]:
@@ -119,6 +119,11 @@ def _scene(merged: Catalogue) -> Scene:
         return merged.writers.get(name, frozenset())
 
     return Scene(events, homes, depths, initial, merged.types, writes)
+
+
+def _left_to_callers(merged: Catalogue, facts: FlatFacts) -> bool:
+    """Whether only its callers, which were read, show what a function's arguments can be."""
+    return bool(facts.unchecked) and facts.flat.function.identity in merged.inlined
 
 
 def _places(merged: Catalogue) -> tuple[dict[Key, list[int]], dict[tuple[Key, Position], int]]:

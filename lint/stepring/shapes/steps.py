@@ -111,7 +111,8 @@ class Walk:
 
     ``tracked`` are the lasting integers that are followed, in the order of the values that ``run`` takes. ``touches``
     are the accesses that matter, by ``id``; with ``moving`` all stores of tracked integers do as well. ``capacity``
-    bounds parameters that reach a subscript or an index: a caller is trusted to pass a slot number. ``wholes`` are the
+    bounds parameters that reach a subscript or an index: a caller is trusted to pass a slot number, for certain only
+    where the function itself checks the parameter. ``wholes`` are the
     values of each tracked integer's type, ``ranges`` bounds of integers that are not tracked, and ``writes`` tells what
     a function stores into; ``types`` is filled with the types of all that is read.
     """
@@ -299,10 +300,11 @@ class Walk:
         if not split:
             return [(Range(type_.low, type_.high, True), True)]
         top = min(self.capacity - 1, type_.high)
+        sure = ("local", "", parameter.identity) not in self.facts.unchecked
         if top < SPLIT:
-            found: list[tuple[Value, bool]] = [(value, True) for value in range(top + 1)]
+            found: list[tuple[Value, bool]] = [(value, sure) for value in range(top + 1)]
         else:
-            found = [(value, True) for value in (0, 1, top - 1, top)]
+            found = [(value, sure) for value in (0, 1, top - 1, top)]
             found.append((Range(0, top, True), False))
         if top < type_.high:
             found.append((Range(top + 1, type_.high, True), False))
