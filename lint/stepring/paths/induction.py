@@ -27,16 +27,17 @@ Look: TypeAlias = Callable[[Key], Value]
 """What a key holds, in the object and at the point that are asked about."""
 
 
-SCHEDULE = (
-    ("sums", 15_000),
+DROPPING = (("bits", 200_000), ("sums", 10_000), ("bits", 1_500_000), ("sums", 100_000), ("bits", 6_000_000))
+PROVING = (
+    ("sums", 5_000),
     ("bits", 300_000),
-    ("sums", 100_000),
+    ("sums", 50_000),
     ("bits", 1_500_000),
-    ("sums", 500_000),
+    ("sums", 200_000),
     ("bits", 6_000_000),
 )
 """Tries at a question, each with its effort in the solver's units. Most code about rings adds and compares, which is
-settled at once by arithmetic; masks and what wraps round need bits."""
+settled at once by arithmetic, which also tells what a proof rests on; models, masks and what wraps round need bits."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -323,7 +324,9 @@ def _drop(made: Induction, body: Body, point: Point, guard: Term, goals: Sequenc
         dropped = True
 
 
-def _question(made: Induction, body: Body, terms: Sequence[Term]) -> tuple[Verdict, Term]:
+def _question(
+    made: Induction, body: Body, terms: Sequence[Term], schedule: Sequence[tuple[str, int]] = DROPPING
+) -> tuple[Verdict, Term]:
     """Whether terms cannot hold together under what is active; a model where they can."""
     if made.queries >= made.limits.queries:
         made.exhausted = "query limit"
@@ -335,7 +338,7 @@ def _question(made: Induction, body: Body, terms: Sequence[Term]) -> tuple[Verdi
     made.core = ()
     active = [name for name in body.assumed if name in made.active]
     facts = [*body.trace.terms.facts, *terms]
-    for kind, effort in SCHEDULE:
+    for kind, effort in schedule:
         if effort > made.limits.effort:
             break
         found, model = _tried(made, body, facts, active, kind, effort)
@@ -380,7 +383,7 @@ def proved(made: Induction, body: Body, state: State, goal: Truth) -> Verdict:
     """Whether a goal holds in a state of a body, in all runs, given what all operations keep."""
     if body.trace.troubles:
         return "unknown"
-    return _question(made, body, [as_truth(both(guard_of(state))), z3.Not(as_truth(goal))])[0]
+    return _question(made, body, [as_truth(both(guard_of(state))), z3.Not(as_truth(goal))], PROVING)[0]
 
 
 def basis(made: Induction) -> tuple[str, ...]:
