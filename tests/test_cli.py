@@ -112,6 +112,38 @@ def test_the_inventory_is_no_judgement(outcome: Outcome) -> None:
     assert main(["inventory", "--fail-level", "error", "--report", "none"]) == 1
 
 
+@pytest.mark.parametrize("identity", ["RB01", "RB03"])
+def test_the_page_of_a_ring_rule_states_what_its_verdicts_rest_on(
+    identity: str, capsys: pytest.CaptureFixture[str]
+) -> None:
+    assert main(["rule", identity]) == 0
+    page = capsys.readouterr().out
+    assert "## Assumptions" in page
+    assert "- Functions of the C library do what ISO C says of them." in page
+    assert main(["rule", "SM01"]) == 0
+    assert "## Assumptions" not in capsys.readouterr().out
+
+
+def test_limits_and_doing_without_the_solver_reach_the_pipeline(
+    outcome: Outcome, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    asked = answer_with(monkeypatch, outcome)
+    main(["inspect", "--report", "none"])
+    main(["inspect", "--report", "none", "--no-proofs", "--query-limit", "5000", "--time-limit", "2.5"])
+    plain, limited = (options for _, options in asked)
+    assert (plain.proofs, plain.query_limit, plain.time_limit) == (True, None, None)
+    assert (limited.proofs, limited.query_limit, limited.time_limit) == (False, 5000, 2.5)
+
+
+@pytest.mark.parametrize("given", [("--query-limit", "0"), ("--time-limit", "0"), ("--time-limit", "soon")])
+def test_a_limit_that_is_none_is_refused(
+    outcome: Outcome, given: tuple[str, str], capsys: pytest.CaptureFixture[str]
+) -> None:
+    assert main(["inspect", *given]) == 2
+    (line,) = capsys.readouterr().err.splitlines()
+    assert given[0] in line
+
+
 # ------------------------------------------------------------------------------------------------- what goes where
 
 

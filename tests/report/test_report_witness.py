@@ -14,6 +14,7 @@ from test_report_readable import printed
 from stepring.paths.witness import Ending, Made, OutsideValue, Reference, StartValue, Witness, WitnessCall
 from stepring.paths.witness_json import witness_from_json
 from stepring.pipeline import Options, asked
+from stepring.report.lines import report_lines
 from stepring.report.sarif import sarif_log
 from stepring.report.serialise import to_bytes
 from stepring.report.types import Inspection, Outcome
@@ -146,8 +147,17 @@ def test_only_the_chosen_verdicts_are_written_everywhere(tmp_path: Path, kind: s
     log: Any = sarif_log(outcome, (kind,))
     assert {one["kind"] for one in results(log)} == {kind}
     assert len(results(log)) == sum(one.kind == kind for one in outcome.obligations)
+    lines = report_lines(outcome, (kind,), tmp_path)
+    assert len(lines) == len(results(log))
     heads = [line for line in printed(outcome, kinds=(kind,)) if line[:1].isdigit()]
     assert len(heads) == len(results(log))
+
+
+def test_a_line_of_an_open_one_names_its_reason(tmp_path: Path) -> None:
+    outcome = barge(tmp_path)
+    left_open = replace(outcome.obligations[2], open_as="bound reached")
+    (line,) = report_lines(replace(outcome, obligations=(left_open,)), ("open",), tmp_path)
+    assert ": left open (bound reached), rule RB04: " in line
 
 
 # ------------------------------------------------------------------------------------------------ the printed witness

@@ -30,7 +30,7 @@ def _line(one: Obligation, source: Source, base: Path | None) -> str:
     column = display_column(source.line(one.where.line) or "", one.where.column)
     place = f"{shown_path(source.file, base)}:{one.where.line}:" + (f"{column}:" if column else "")
     # The verdict comes first: a sentence that begins with an identifier could not begin in lower case.
-    verdict = level_of(one) or VERDICT_WORDS[one.kind]
+    verdict = level_of(one) or VERDICT_WORDS[one.kind] + (f" ({one.open_as})" if one.open_as else "")
     text = printable(" ".join(one.what.split())).rstrip(".")
     return f"{place} {verdict}, rule {one.rule}: {text}"
 
