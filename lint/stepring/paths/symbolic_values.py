@@ -68,7 +68,7 @@ from stepring.paths.symbolic_terms import (
     negated,
     stretch,
 )
-from stepring.paths.symbolic_types import CUT, SET_FRAME, Accessed, AccessKind, Around, Limits, Store, Trace
+from stepring.paths.symbolic_types import CUT, FLAG, SET_FRAME, Accessed, AccessKind, Around, Limits, Store, Trace
 from stepring.places import Position
 from stepring.shapes.ring_keys import Key, inner_structs
 
@@ -304,7 +304,13 @@ def put(engine: Engine, state: State, key: Key, at: Number, value: Value) -> Non
     places = engine.trace.sets.setdefault(key, [])
     if all(address_mark(other) != address_mark(at) for other in places):
         places.append(at)
-    state.local[SET_FRAME, "/".join(key)] = 1
+    _flag(engine, state, key)
+
+
+def _flag(engine: Engine, state: State, key: Key) -> None:
+    mark = (SET_FRAME, "/".join(key))
+    engine.trace.types[mark] = FLAG
+    state.local[mark] = 1
 
 
 def cut(engine: Engine, state: State) -> None:
@@ -319,7 +325,7 @@ def spoil(engine: Engine, state: State, key: Key) -> None:
     state.rows[key] = Start(key, engine.memories.epochs)
     if key[0] != "local":
         engine.trace.spoiled.add(key)
-        state.local[SET_FRAME, "/".join(key)] = 1
+        _flag(engine, state, key)
 
 
 def spoil_struct(engine: Engine, state: State, struct: str) -> None:
