@@ -93,8 +93,7 @@ def call(
     which is no element (by default it is the element); ``length`` how many elements a buffer has.
     """
     element = world.tokens[token % len(world.tokens)]
-    parts = 1 if world.element <= 2 else world.element
-    buffer = Reference(TAKEN) if way.taking else Reference(GIVEN, token % len(world.tokens) * parts)
+    buffer = Reference(TAKEN) if way.taking else Reference(GIVEN, token % len(world.tokens) * world.parts)
     if way.taking:
         _clear(world)
     given = arguments(
@@ -156,9 +155,15 @@ def _changed(old: bytes, new: bytes, size: int) -> tuple[tuple[int, int], ...]:
     """The slots whose bytes differ, with the new bytes as a number."""
     if old == new:
         return ()
-    starts = range(0, len(new), size)
-    changed = ((at // size, new[at : at + size]) for at in starts if old[at : at + size] != new[at : at + size])
-    return tuple((slot, int.from_bytes(part, "little")) for slot, part in changed)
+    found: list[tuple[int, int]] = []
+    chunk = 64 * size
+    for start in range(0, len(new), chunk):
+        if old[start : start + chunk] != new[start : start + chunk]:
+            for at in range(start, min(start + chunk, len(new)), size):
+                part = new[at : at + size]
+                if part != old[at : at + size]:
+                    found.append((at // size, int.from_bytes(part, "little")))
+    return tuple(found)
 
 
 def _clear(world: World) -> None:
@@ -208,7 +213,13 @@ def about_storage(world: World, effect: Effect) -> bool:
     if re.search(rf"\bof ({GIVEN}|{TAKEN}|thing_\d+)\b", outcome.reason):
         return False
     short = re.split(r"[.\[]", world.ring.storage.replace("[]", ""))[-1]
-    return bool(re.search(rf"\b{re.escape(short)}\b|\bof {STORAGE}\b", outcome.reason))
+    if re.search(rf"\b{re.escape(short)}\b|\bof {STORAGE}\b", outcome.reason):
+        return True
+    if world.storage is None:
+        return False
+    end = world.offset + world.slots * world.element
+    limits = rf"bytes {world.offset} to ({end - 1}|{end}) of {re.escape(world.storage.name)}\b"
+    return re.search(limits, outcome.reason) is not None
 
 
 def below(effect: Effect) -> bool:

@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
-from stepring.meaning.types import IntType
+from stepring.meaning.types import IntType, TypedUnit
 from stepring.paths.interpreter import run as run_program
 from stepring.paths.replay import replay
 from stepring.paths.types import Event
@@ -33,12 +33,14 @@ from stepring.shapes.ring_uses import (
     takes,
     ways_taken,
 )
-from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, World, world_of
+from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, World, group_of, world_of
 from stepring.shapes.types import OrbitStep, Ring
 
 BUDGET = 1_200_000
 """Interpreter steps for one ring."""
 SHOWN = 12
+TRIES = 2
+"""How many witnesses of one kind may turn out not to hold."""
 NEAR_END = 3
 Placer = Callable[[Position], Origin]
 
@@ -87,6 +89,7 @@ class Search:
     overflow: bool = False
     ranges: tuple[tuple[int, int] | None, ...] = ()
     found: dict[tuple[Doubt, str], Disagreement] = field(default_factory=dict)
+    failed: dict[tuple[Doubt, str], int] = field(default_factory=dict)
 
     @property
     def world(self) -> World:
@@ -125,6 +128,18 @@ def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -
         if found.disagreements or purse.left <= 0:
             return Exploration(found.disagreements, compared)
     return Exploration((), compared)
+
+
+def with_runs(rings: Sequence[Ring], units: Sequence[TypedUnit], origin: Placer) -> tuple[Ring, ...]:
+    """The rings of one program with what running their operations showed."""
+    if not rings:
+        return ()
+    group = group_of(units)
+    found: list[Ring] = []
+    for ring in rings:
+        done = explore(ring, group, origin)
+        found.append(replace(ring, disagreements=done.disagreements, explored=done.compared))
+    return tuple(found)
 
 
 def _sizes(ring: Ring) -> tuple[int, ...]:
@@ -234,12 +249,14 @@ def _classify(search: Search) -> None:
     search.take = _checked_take(search, search.take)
     _ranges(search)
     kept: list[Use] = []
+    spoilt: list[Use] = []
     for put in found:
         if put.operation.helper and kept:
             kept.append(replace(put, room=kept[0].room))  # whoever calls it looks for it
             continue
         known = designed(probe, put, search.take)
         if known is None:
+            spoilt.append(put)
             continue
         use, held, given = known
         use = _checked_put(search, use, held, given)
@@ -253,6 +270,9 @@ def _classify(search: Search) -> None:
             search.put = None
         return
     search.put = next((use for use in kept if use.operation == search.put.operation), kept[0])
+    for use in spoilt:
+        # Not even its first element comes out, though another put's do.
+        _put(search, State(probe.start, (), (), 0), use, deep=True)
     more = [use for use in probe.uses if use.kind == "take"]
     more.extend(others(probe, search.put, search.take))
     more = [_checked_take(search, use) if use.kind in ("take", "drop") else use for use in more]
@@ -466,20 +486,29 @@ def _search(search: Search, first: State) -> None:
 
 
 def _key(search: Search, state: State) -> Any:
-    """What makes two states the same: all the functions can see, with elements as their places in the queue."""
+    """What makes two states the same: all the functions can see, with elements as their places in the queue.
+
+    Of an index that counts on for ever only the slot counts: near its overflow a search of its own begins.
+    """
     world = search.world
-    slots: list[int] = []
+    world.load(state.saved)
+    slots = [state.held.index(value) if value in state.held else -1 for value in world.contents()]
+    blank: dict[int, list[tuple[int, int]]] = {}
     if world.storage is not None:
-        for value in world.contents():
-            slots.append(state.held.index(value) if value in state.held else -1)
-    parts = []
+        blank[id(world.storage)] = [(world.offset, world.slots * world.element)]
+    rest: list[Any] = []
+    for (cells, offset, type_), limits, value in zip(world.readers, search.ranges, world.values(), strict=True):
+        if limits is None and isinstance(value, int) and isinstance(type_, IntType) and not search.overflow:
+            blank.setdefault(id(cells), []).append((offset, type_.width // 8))
+            rest.append(value % world.slots)
     for cells in dict.fromkeys((*world.kept, *world.memory.others)):
-        if cells is world.storage:
-            size = world.slots * world.element
-            parts.append(bytes(cells.data[: world.offset]) + bytes(cells.data[world.offset + size :]))
-        elif cells.name not in (GIVEN, TAKEN):
-            parts.append(bytes(cells.data))
-    return tuple(slots), len(state.held), tuple(parts)
+        if cells.name in (GIVEN, TAKEN):
+            continue
+        data = bytearray(cells.data)
+        for offset, size in blank.get(id(cells), ()):
+            data[offset : offset + size] = bytes(size)
+        rest.append(bytes(data))
+    return tuple(slots), len(state.held), tuple(rest)
 
 
 def _plain_ways(search: Search, first: State) -> Iterator[State]:
@@ -487,13 +516,14 @@ def _plain_ways(search: Search, first: State) -> Iterator[State]:
     put, take = search.put, search.take
     assert put is not None and take is not None
     slots, room = search.world.slots, search.room
+    levels = (0, 1, 2, room - 2, room - 1) if slots <= 64 else (1, room - 1)
     for lead in dict.fromkeys((0, slots - 2) if slots > 100 else (0, slots - 2, slots // 2)):
         state: State | None = first
         for _ in range(lead):
             state = state and _put(search, state, put, deep=False)
             state = state and _take(search, state, take, deep=False)
         for level in range(room):
-            if state is not None and level in (0, 1, 2, room - 2, room - 1):
+            if state is not None and level in levels:
                 yield state
             state = state and _put(search, state, put, deep=False)
         if state is None:
@@ -523,9 +553,13 @@ def _look_round(search: Search, state: State) -> list[State]:
             case "put":
                 after = _put(search, state, use, deep=True)
                 found.extend(() if after is None else (after,))
+                if use.bulk:
+                    found.extend(_put_many(search, state, use))
             case "take":
                 after = _take(search, state, use, deep=True)
                 found.extend(() if after is None else (after,))
+                if use.bulk:
+                    found.extend(_take_many(search, state, use))
             case "drop" | "clear":
                 found.extend(_dropped(search, state, use))
             case "look":
@@ -621,7 +655,7 @@ def _take(search: Search, state: State, use: Use, *, deep: bool) -> State | None
         got = "nothing" if effect.refused else str(out[0]) if out else "nothing"
         what = f"{use.name} gives {got} where {due} is due: {len(state.held)} elements are stored"
         doubt: Doubt = "overflow" if search.overflow else "order"
-        _output_report(search, state, use, effect, doubt, what, due)
+        _output_report(search, state, use, effect, doubt, what, (due,))
         return None
     saved = search.world.save()
     rest = state.held[1:]
@@ -633,6 +667,63 @@ def _take(search: Search, state: State, use: Use, *, deep: bool) -> State | None
             _content(search, state, use, "order", what, rest, now)
             return None
     return _after(search, state, use, effect, saved, rest, 0)
+
+
+def _put_many(search: Search, state: State, use: Use) -> Iterator[State]:
+    """The states after a put of several elements at once: two, as many as there is room for, one more."""
+    free = search.room - len(state.held)
+    guarded = not use.checked or use.operation.helper
+    for length in dict.fromkeys((2, free, free + 1)):
+        if length < 2 or (length > free and guarded):
+            continue
+        effect = _call(search, state, use, length=length)
+        if _fault(search, state, use, effect, length=length) or effect.refused:
+            continue
+        tokens = [search.world.tokens[(state.token + at) % len(search.world.tokens)] for at in range(length)]
+        new = {value for _, value in effect.stored}
+        if search.world.parts == 1 and search.world.element <= 4 and not new <= set(tokens):
+            continue  # structures' elements are known by one member only
+        if search.world.element > 4 or not new <= set(tokens):
+            continue
+        saved = search.world.save()
+        assert search.take is not None
+        now, _ = drained(search.probe, search.take, _most(search, state, length))
+        added = tuple(tokens)
+        if not search.take.checked:
+            added = added[: max(0, free)]
+        if not after_put(now, state.held, added, use.design, search.room):
+            whole = (*state.held, *added[: max(0, free)])
+            what = f"after {use.name} of {length} the ring gives {_shown(now)} where {_shown(whole)} is due"
+            _content(search, state, use, "order", what, whole, now, length=length)
+            continue
+        yield _after(search, state, use, effect, saved, now, length, length=length)
+
+
+def _take_many(search: Search, state: State, use: Use) -> Iterator[State]:
+    """The states after a take of several elements at once: two, all, one more."""
+    level = len(state.held)
+    guarded = not use.checked or use.operation.helper
+    for length in dict.fromkeys((2, level, level + 1)):
+        if length < 2 or level == 0 or (length > level and guarded):
+            continue
+        effect = _call(search, state, use, length=length)
+        if _fault(search, state, use, effect, length=length) or effect.refused:
+            continue
+        out = effect.outputs.get(use.channel, ())
+        due = state.held[:length]
+        if use.channel == "buffer" and out != due and not (length > level and not out):
+            what = f"{use.name} of {length} gives {_shown(out)} where {_shown(due)} is due"
+            _output_report(search, state, use, effect, "order", what, due, length=length)
+            continue
+        saved = search.world.save()
+        assert search.take is not None
+        rest = state.held[length:]
+        now, _ = drained(search.probe, search.take, _most(search, state, -length))
+        if now != rest:
+            what = f"after {use.name} of {length} the ring gives {_shown(now)} where {_shown(rest)} is due"
+            _content(search, state, use, "order", what, rest, now, length=length)
+            continue
+        yield _after(search, state, use, effect, saved, rest, 0, length=length)
 
 
 def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
@@ -681,7 +772,7 @@ def _look(search: Search, state: State, use: Use) -> None:
     out = effect.outputs.get(use.channel, ())
     if out[:1] != state.held[:1]:
         what = f"{use.name} gives {out[0] if out else 'nothing'} where {state.held[0]} comes next"
-        _output_report(search, state, use, effect, "order", what, state.held[0])
+        _output_report(search, state, use, effect, "order", what, state.held[:1])
 
 
 def _tell(search: Search, state: State, use: Use) -> None:
@@ -776,7 +867,7 @@ def _made(search: Search, effect: Effect) -> tuple[Made, ...]:
 def _shown(held: Sequence[int]) -> str:
     if not held:
         return "nothing"
-    shown = ", ".join(map(str, held[:8]))
+    shown = ", ".join("no element" if value < 0 else str(value) for value in held[:8])
     return shown + (f" and {len(held) - 8} more" if len(held) > 8 else "")
 
 
@@ -817,22 +908,28 @@ def _return_place(search: Search, state: State, use: Use, **given: Any) -> Origi
     return search.origin(_return_position(search, state, use, **given))
 
 
-def _output_report(search: Search, state: State, use: Use, effect: Effect, doubt: Doubt, what: str, due: int) -> None:
-    """A call that gives another element than is due."""
-    position, function = _index_store(search, state, use, {})
+def _output_report(
+    search: Search, state: State, use: Use, effect: Effect, doubt: Doubt, what: str, due: Content, **given: Any
+) -> None:
+    """A call that gives other elements than are due."""
+    position, function = _index_store(search, state, use, given)
     if function == use.name and effect.before == effect.after:
-        position = _return_position(search, state, use)
-    ending = _output_ending(search, use, effect, due, search.origin(position))
+        position = _return_position(search, state, use, **given)
+    out = effect.outputs.get(use.channel, ())
+    at = next((n for n, value in enumerate(due) if out[n : n + 1] != (value,)), len(due))
+    ending = _output_ending(search, use, effect, at, due, search.origin(position))
     _report(search, state, effect, doubt, what, position, function, ending)
 
 
-def _output_ending(search: Search, use: Use, effect: Effect, due: int, where: Origin) -> Ending:
+def _output_ending(search: Search, use: Use, effect: Effect, at: int, due: Content, where: Origin) -> Ending:
+    """An ending by the element at a position of what came out."""
+    wanted = str(due[at]) if at < len(due) else "nothing"
     if use.channel == "result" and isinstance(effect.outcome.value, int):
-        return Ending("result", where, None, "", str(effect.outcome.value), str(due))
-    if use.channel == "buffer" and search.world.element <= 2:
+        return Ending("result", where, None, "", str(effect.outcome.value), wanted)
+    if use.channel == "buffer" and search.world.element in (1, 2, 4) and search.world.parts == 1:
         out = effect.outputs.get("buffer", ())
-        return Ending("value", where, None, f"{TAKEN}[0]", str(out[0] if out else 0), str(due))
-    return _index_ending(search, effect, where, f"where the call hands out {due}")
+        return Ending("value", where, None, f"{TAKEN}[{at}]", str(out[at] if at < len(out) else 0), wanted)
+    return _index_ending(search, effect, where, f"where the call hands out {wanted}")
 
 
 def _index_ending(search: Search, effect: Effect, where: Origin, due: str) -> Ending:
@@ -884,7 +981,7 @@ def _content(
             break
         if last.refused or out != wanted:
             ending = (
-                _output_ending(search, take, last, wanted[0], place)
+                _output_ending(search, take, last, 0, wanted, place)
                 if wanted
                 else _index_ending(search, last, place, "unchanged, the ring being empty")
             )
@@ -913,7 +1010,7 @@ def _report(
         what = f"{state.suspect.what}; then {what}"
         ending = replace(ending, where=ending.where if ending.kind == "undefined" else search.origin(position))
     mark = (doubt, function)
-    if mark in search.found:
+    if mark in search.found or search.failed.get(mark, 0) >= TRIES:
         return
     run = (*state.run, *_made(search, effect))
     base = search.base
@@ -921,6 +1018,7 @@ def _report(
     witness = _trimmed(replace(base, calls=calls, ending=ending))
     done = replay(search.world.group.program, witness, origin=search.origin)
     if not done.held:
+        search.failed[mark] = search.failed.get(mark, 0) + 1
         return
     steps = _steps(search, run, ending)
     where = search.origin(position)
@@ -937,8 +1035,9 @@ def _trimmed(witness: Witness) -> Witness:
     named = {item.to for call_ in witness.calls for item in call_.arguments if isinstance(item, Reference)}
     named |= {item.value.to for item in witness.start if isinstance(item.value, Reference)}
     named |= {item.object for item in witness.start if item.object not in (GIVEN, TAKEN)}
+    most = 16 * 8  # a call may use some elements from there on
     used = [item for call_ in witness.calls for item in call_.arguments if isinstance(item, Reference)]
-    end = max((item.at for item in used if item.to == GIVEN), default=-1) + 16
+    end = max((item.at for item in used if item.to == GIVEN), default=-1) + 1 + most
     start = tuple(
         item for item in witness.start if item.object != GIVEN or (GIVEN in named and int(item.path.strip("[]")) < end)
     )
@@ -978,7 +1077,6 @@ def _value_text(search: Search, value: Value) -> str:
     if isinstance(value, Reference):
         name = value.to.rsplit(":", 1)[-1]
         if value.to == GIVEN:
-            parts = 1 if search.world.element <= 2 else search.world.element
-            return f"element {search.world.tokens[value.at // parts]}"
+            return f"element {search.world.tokens[value.at // search.world.parts]}"
         return f"&{name}{value.path}"
     return str(value)

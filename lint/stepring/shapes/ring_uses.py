@@ -144,12 +144,12 @@ def _stores(probe: Probe, operation: Operation, way: Way, token: int, length: in
 # ------------------------------------------------------------------------------------------------------------- takes
 
 
-def filled(probe: Probe, put: Use, count: int) -> Content | None:
+def filled(probe: Probe, put: Use, count: int, first: int = 0) -> Content | None:
     """Put some elements into the ring as it starts; what they are in the storage, None if one was refused."""
     probe.back()
     held: list[int] = []
     for number in range(count):
-        effect = call(probe.world, put.operation, put.way, probe.purse, token=number)
+        effect = call(probe.world, put.operation, put.way, probe.purse, token=first + number)
         if not effect.returned or len(effect.stored) != 1:
             return None
         held.append(effect.stored[0][1])
@@ -167,7 +167,7 @@ def takes(probe: Probe, put: Use) -> list[Use]:
     for operation in probe.world.operations:
         if operation.function.identity in mine or operation.has("value"):
             continue
-        use = _as_take(probe, operation, state, held)
+        use = _as_take(probe, operation, state, held, put)
         if use is not None:
             found.append(use)
     found.sort(key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
@@ -203,7 +203,7 @@ def _in_two_steps(probe: Probe, state: Any, held: Content, mine: set[str]) -> li
     return []
 
 
-def _as_take(probe: Probe, operation: Operation, state: Any, held: Content) -> Use | None:
+def _as_take(probe: Probe, operation: Operation, state: Any, held: Content, put: Use) -> Use | None:
     taking = operation.has("buffer")
     for policy in POLICIES:
         way = Way(policy, taking)
@@ -217,6 +217,10 @@ def _as_take(probe: Probe, operation: Operation, state: Any, held: Content) -> U
         if len(held) > 1:
             two = call(probe.world, operation, way, probe.purse)
             channels = [name for name in channels if two.outputs.get(name) == held[1:2]]
+        elif channels:
+            again = filled(probe, put, 1, first=3)
+            two = call(probe.world, operation, way, probe.purse)
+            channels = [name for name in channels if again and two.outputs.get(name) == again]
         if channels:
             bulk = False
             if operation.has("length") and len(held) > 1:

@@ -36,7 +36,7 @@ from stepring.paths.types import Undefined, Unsettled
 from stepring.paths.witness import Ending, Made, Reference, StartValue, Value, Witness
 from stepring.places import Origin
 from stepring.shapes.ring_keys import inner_structs
-from stepring.shapes.types import Ring
+from stepring.shapes.types import Bound, Ring
 
 NOWHERE = Ending("endless", Origin("", 1, 1, 1))
 RING, STORAGE, GIVEN, TAKEN = "ring", "storage", "given", "taken"
@@ -98,8 +98,9 @@ class Group:
 class World:
     """A ring's object in memory: ``slots`` elements of ``element`` bytes from ``offset`` on in ``storage``.
 
-    ``base`` is the witness without calls that this memory was made from. ``places`` are the indices and counts that can
-    be read, as (shown, object, path, role). ``kept`` are the objects that the ring's functions can change.
+    ``base`` is the witness without calls that this memory was made from; ``parts`` objects of callers' buffers make an
+    element. ``places`` are the indices and counts that can be read, as (shown, object, path, role).
+    ``kept`` are the objects that the ring's functions can change.
     """
 
     ring: Ring
@@ -115,12 +116,17 @@ class World:
     kept: list[Cells] = field(default_factory=list)
     readers: list[tuple[Cells, int, CType]] = field(default_factory=list)
     tokens: tuple[int, ...] = ()
+    parts: int = 1
     pointers: dict[Reference, Any] = field(default_factory=dict)
 
     def values(self) -> tuple[Any, ...]:
         """What the indices and counts hold; a pointer as its offset."""
         found: list[Any] = []
         for cells, offset, type_ in self.readers:
+            if cells.known is None and isinstance(type_, IntType):
+                size = max(1, type_.width // 8)
+                found.append(int.from_bytes(cells.data[offset : offset + size], "little", signed=type_.signed))
+                continue
             try:
                 value = read_value(self.memory, cells, offset, type_, "index")
             except (Undefined, Unsettled):
@@ -247,7 +253,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     needed = {key[1] for key in _keys(ring) if key and key[0] == "member"}
     root: _Root | None = None
     if needed:
-        root = _root(group, functions, needed)
+        root = _root(group, functions, needed, set(ring.functions))
         if root is None:
             return None
     made: list[Made] = []
@@ -281,12 +287,13 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
         places.append((shown, *found, index.role))
         if index.form == "pointer" and pointed:
             start.append(StartValue(*found, Reference(STORAGE)))
-    tokens = tokens_for(element, slots)
-    given = _data_type(element)
-    made.append(Made(GIVEN, given[0], len(tokens) * given[1]))
-    made.append(Made(TAKEN, given[0], (2 * slots + 4) * given[1]))
-    start.extend(_given(tokens, given))
-    operations = tuple(_operations(group, ring, functions, root, made, bound))
+    struct = _element_struct(group, place, root, pointed)
+    data = _data(group, element, struct)
+    tokens = tokens_for(data.width, slots)
+    made.append(Made(GIVEN, data.type, len(tokens) * data.parts))
+    made.append(Made(TAKEN, data.type, (2 * slots + 4) * data.parts))
+    start.extend(_given(tokens, data))
+    operations = tuple(_operations(group, ring, functions, root, made, struct))
     base = Witness(
         group.program.model.name,
         tuple(made),
@@ -298,7 +305,20 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     )
     try:
         memory = prepared(group.program, base)
-        world = World(ring, group, slots, element, base, memory, None, 0, tuple(places), operations, tokens=tokens)
+        world = World(
+            ring,
+            group,
+            slots,
+            element,
+            base,
+            memory,
+            None,
+            0,
+            tuple(places),
+            operations,
+            tokens=tokens,
+            parts=data.parts,
+        )
         _bind(world, place, pointed)
     except (Unfit, KeyError, ValueError, Undefined, Unsettled):
         return None
@@ -334,23 +354,24 @@ def _keys(ring: Ring) -> Iterator[tuple[str, ...]]:
     yield from (index.key for index in ring.indices)
 
 
-def _root(group: Group, functions: Sequence[Function], needed: set[str]) -> _Root | None:
+def _root(group: Group, functions: Sequence[Function], needed: set[str], entered: set[str]) -> _Root | None:
     """The object that holds all the structures that are needed."""
     holders: Counter[str] = Counter()
     statics: Counter[str] = Counter()
     known: dict[str, Variable] = {}
     for function in functions:
+        weight = 100 if function.identity in entered else 1  # a function for all says less than who calls it
         for parameter in function.parameters:
             struct = _struct_of(parameter.type)
             if struct is not None and needed <= inner_structs(struct, group.structs):
-                holders[struct] += 1
+                holders[struct] += weight
         for variable in function.variables:
             if variable.lasting:
                 inner = variable.type
                 while isinstance(inner, ArrayType):
                     inner = inner.element
                 if isinstance(inner, StructType) and needed <= inner_structs(inner.identity, group.structs):
-                    statics[variable.identity] += 1
+                    statics[variable.identity] += weight
                     known[variable.identity] = variable
     if holders and holders.total() >= statics.total():
         # The outermost structure serves the most functions: those that get a part of it get its address.
@@ -409,14 +430,30 @@ def path_to(structs: Mapping[str, StructLayout], type_: CType, struct: str) -> s
     return None
 
 
+def _type_at(group: Group, place: tuple[str, str], root: _Root | None) -> CType:
+    made = (Made(RING, root.made, 1),) if root is not None and root.made else ()
+    memory = prepared(group.program, Witness(group.program.model.name, made, (), (), NOWHERE))
+    return memory.type_at("".join(place))
+
+
 def _pointed_type(group: Group, place: tuple[str, str], root: _Root | None) -> CType:
     """What a pointer at a place points to."""
-    memory = prepared(
-        group.program,
-        Witness(group.program.model.name, (Made(RING, root.made, 1),) if root and root.made else (), (), (), NOWHERE),
-    )
-    type_ = memory.type_at("".join(place))
+    type_ = _type_at(group, place, root)
     return type_.to if isinstance(type_, PointerType) else VoidType()
+
+
+def _element_struct(
+    group: Group, place: tuple[str, str] | None, root: _Root | None, pointed: bool
+) -> StructType | None:
+    """The structure that the ring's elements are, if they are one."""
+    if place is None:
+        return None
+    type_ = _type_at(group, place, root)
+    if pointed:
+        type_ = type_.to if isinstance(type_, PointerType) else VoidType()
+    while isinstance(type_, ArrayType):
+        type_ = type_.element
+    return type_ if isinstance(type_, StructType) else None
 
 
 def _type_name(type_: CType) -> tuple[str, int] | None:
@@ -433,33 +470,63 @@ def _type_name(type_: CType) -> tuple[str, int] | None:
     return None
 
 
-def _data_type(element: int) -> tuple[str, int]:
-    """The integer type of callers' buffers, and how many make one element."""
-    names = {1: "unsigned char", 2: "unsigned short"}
-    return (names[element], 1) if element in names else ("unsigned char", element)
+def tokens_for(width: int, slots: int) -> tuple[int, ...]:
+    """Element values of ``width`` bytes that are told apart easily and that no protocol takes for something special."""
+    letters = [*range(0x41, 0x5B), *range(0x61, 0x7B), *range(0x30, 0x3A)]
+    count = max(64, min(600, 2 * slots + 40))
+    found: list[int] = []
+    for number in range(count):
+        high, low = divmod(number, len(letters))
+        found.append(letters[low] + (0x41 + high << 8 if width > 1 else 0))
+    return tuple(found)
 
 
-def tokens_for(element: int, slots: int) -> tuple[int, ...]:
-    """Element values that are told apart easily and that no protocol takes for something special."""
-    if element == 1:
-        letters = [*range(0x41, 0x5B), *range(0x61, 0x7B), *range(0x30, 0x3A)]
-        count = max(64, min(600, 4 * slots))
-        return tuple(letters[number % len(letters)] for number in range(count))
-    size = min(element, 8)
-    count = max(64, min(600, 4 * slots))
-    return tuple(
-        int.from_bytes(bytes((number % 251 + 1, *(number // 251 + 1,) * (size - 1))), "little") & 0x7FFFFFFF
-        for number in range(count)
-    )
+@dataclass(frozen=True, slots=True)
+class Data:
+    """What callers' buffers are made of: ``parts`` objects of ``type`` make one element; the element's value goes to
+    ``member`` (a path in it, empty for the whole), an integer of ``width`` bytes."""
+
+    type: str
+    parts: int
+    member: str
+    width: int
 
 
-def _given(tokens: Sequence[int], given: tuple[str, int]) -> Iterator[StartValue]:
+def _data(group: Group, element: int, struct: StructType | None) -> Data:
+    if struct is not None:
+        member = _widest(group.structs, struct, "")
+        if member is not None:
+            return Data(struct.identity, 1, *member)
+    names = {1: "unsigned char", 2: "unsigned short", 4: "unsigned int"}
+    if element in names:
+        return Data(names[element], 1, "", element)
+    return Data("unsigned char", element, "", min(element, 2))
+
+
+def _widest(structs: Mapping[str, StructLayout], struct: StructType, path: str) -> tuple[str, int] | None:
+    """A structure's widest integer member by its path, with its size in bytes."""
+    layout = structs.get(struct.identity)
+    found: list[tuple[str, int]] = []
+    for member in layout.fields if layout is not None else ():
+        type_, where = member.type, f"{path}.{member.name}"
+        while isinstance(type_, ArrayType):
+            type_, where = type_.element, where + "[0]"
+        if isinstance(type_, IntType) and member.bits is None and member.name and type_.name != "_Bool":
+            found.append((where, max(1, type_.width // 8)))
+        elif isinstance(type_, StructType) and member.name:
+            inner = _widest(structs, type_, where)
+            if inner is not None:
+                found.append(inner)
+    return max(found, key=lambda item: item[1], default=None)
+
+
+def _given(tokens: Sequence[int], data: Data) -> Iterator[StartValue]:
     for number, token in enumerate(tokens):
-        if given[1] == 1:
-            yield StartValue(GIVEN, f"[{number}]", token)
+        if data.parts == 1:
+            yield StartValue(GIVEN, f"[{number}]{data.member}", token)
             continue
-        for byte, value in enumerate(token.to_bytes(max(8, given[1]), "little")[: given[1]]):
-            yield StartValue(GIVEN, f"[{number * given[1] + byte}]", value)
+        for byte in range(data.width):
+            yield StartValue(GIVEN, f"[{number * data.parts + byte}]", token >> 8 * byte & 0xFF)
 
 
 # ----------------------------------------------------------------------------------------------------------- parameters
@@ -471,19 +538,26 @@ def _operations(
     functions: Sequence[Function],
     root: _Root | None,
     made: list[Made],
-    bound: Any,
+    struct: StructType | None,
 ) -> Iterator[Operation]:
     entered = set(ring.functions)
+    needed = {key[1] for key in _keys(ring) if key and key[0] == "member"}
     for function in functions:
         if len(function.blocks) > MOST_BLOCKS:
             continue
-        parameters = _parameters(group, function, root, made, bound)
+        parameters = _parameters(group, function, root, made, ring.bound, struct, needed)
         if parameters is not None:
             yield Operation(function, parameters, function.identity not in entered)
 
 
 def _parameters(
-    group: Group, function: Function, root: _Root | None, made: list[Made], bound: Any
+    group: Group,
+    function: Function,
+    root: _Root | None,
+    made: list[Made],
+    bound: Bound | None,
+    struct: StructType | None,
+    needed: set[str],
 ) -> tuple[Parameter, ...] | None:
     """What each parameter is for; None where one cannot be given a value."""
     found: list[Parameter] = []
@@ -499,13 +573,14 @@ def _parameters(
         if not isinstance(type_, PointerType):
             return None
         to = type_.to
-        path = path_to(group.structs, root.type, to.identity) if root and isinstance(to, StructType) else None
+        holds = isinstance(to, StructType) and not needed.isdisjoint(inner_structs(to.identity, group.structs))
+        path = path_to(group.structs, root.type, to.identity) if root and holds and isinstance(to, StructType) else None
         if path is not None and not mine:
             mine = True
             found.append(Parameter("ring", type_, path, name, root.name if root else ""))
         elif isinstance(to, FunctionType):
             found.append(Parameter("null", type_, name=name))
-        elif isinstance(to, IntType | VoidType | PointerType):
+        elif isinstance(to, IntType | VoidType | PointerType) or (struct is not None and to == struct):
             found.append(Parameter("buffer", type_, name=name))
         elif isinstance(to, StructType) and (size_of(group.structs, to) or THING_BYTES) < THING_BYTES:
             thing = f"thing_{len(made)}"
