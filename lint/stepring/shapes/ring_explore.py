@@ -17,7 +17,7 @@ from stepring.paths.replay import replay
 from stepring.paths.types import Event
 from stepring.paths.witness import Ending, OutsideValue, Reference, StartValue, Value, Witness, WitnessCall
 from stepring.places import Origin, Position
-from stepring.shapes.ring_calls import Effect, Purse, about_storage, below, call
+from stepring.shapes.ring_calls import Effect, Purse, Way, about_storage, below, call
 from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
 from stepring.shapes.ring_types import Disagreement, Doubt
 from stepring.shapes.ring_uses import (
@@ -88,6 +88,7 @@ class Search:
     room: int = 0
     overflow: bool = False
     ranges: tuple[tuple[int, int] | None, ...] = ()
+    odd: Suspect | None = None
     found: dict[tuple[Doubt, str], Disagreement] = field(default_factory=dict)
     failed: dict[tuple[Doubt, str], int] = field(default_factory=dict)
 
@@ -283,10 +284,10 @@ def _inverted(search: Search, put: Use) -> None:
     """Report what does nothing while elements are stored and moves an index that puts leave alone when none is."""
     probe, world = search.probe, search.world
     for operation in world.operations:
-        plain = not (operation.helper or operation.has("value") or operation.has("buffer"))
+        plain = not (operation.helper or operation.has("value") or operation.has("length"))
         if not plain or operation == put.operation or not occupancy_tests(probe, operation):
             continue
-        use = Use(operation, "take")
+        use = Use(operation, "take", Way("zero", operation.has("buffer")))
         probe.back()
         effect = call(world, operation, use.way, probe.purse)
         if not effect.returned or effect.before == effect.after or effect.stored:
@@ -318,8 +319,12 @@ def _ranges(search: Search) -> None:
     latest: list[tuple[Any, ...]] = []
     turns = 0
     for number in range(2 * world.slots + 1):
+        start = world.save()
         given = call(world, put.operation, put.way, search.probe.purse, token=number)
+        between = world.save()
         taken = perform(world, take, search.probe.purse)
+        _walks(search, put, given, start, number)
+        _walks(search, take, taken, between, number)
         value = given.stored[0][1] if given.stored else world.tokens[number % len(world.tokens)]
         if taken.outputs.get(take.channel, ())[:1] != (value,):
             break
@@ -338,6 +343,21 @@ def _ranges(search: Search) -> None:
             most = world.slots if place[3] == "count" else world.slots - 1
             ranges.append((min(0, *values), max(most, *values)))
     search.ranges = tuple(ranges)
+
+
+def _walks(search: Search, use: Use, effect: Effect, before: Any, token: int) -> None:
+    """Note the first call that moves an index to another slot than the next one."""
+    world = search.world
+    for at, (old, new) in enumerate(zip(effect.before, effect.after, strict=True)):
+        number = isinstance(world.readers[at][2], IntType) and world.places[at][3] != "count"
+        if not number or old == new or not isinstance(old, int) or not isinstance(new, int):
+            continue
+        if (new - old) % world.slots in (1, world.slots - 1) or search.odd is not None or not 0 <= new < world.slots:
+            continue
+        after = world.save()
+        position, function = _index_store(search, State(before, (), (), token), use, {})
+        world.load(after)
+        search.odd = Suspect(position, function, f"{use.name} moves {world.places[at][0]} from {old} to {new}")
 
 
 def _free(old: Any, new: Any, turns: int) -> bool:
@@ -434,6 +454,10 @@ def _told(search: Search, use: Use) -> Use:
         if results == values:
             return replace(use, tells=name)
     flags = [bool(item) for item in results]
+    if "empty" in use.name.lower() and flags[0] and not flags[1]:
+        return replace(use, tells="empty")
+    if "full" in use.name.lower() and not flags[0] and flags[room]:
+        return replace(use, tells="full")
     if len(set(results)) <= 2:
         for name, wanted in (
             ("empty", [level == 0 for level in levels]),
@@ -622,6 +646,8 @@ def _after(
 def _suspect(search: Search, state: State, use: Use, effect: Effect, given: dict[str, Any]) -> Suspect | None:
     """Whether a call leaves an index out of the range that plain use keeps."""
     for at, (limits, value) in enumerate(zip(search.ranges, effect.after, strict=False)):
+        if search.world.places[at][3] == "count":
+            continue  # too many are counted where there was no room: that is said of the room
         if limits is not None and isinstance(value, int) and not limits[0] <= value <= limits[1]:
             position, function = _index_store(search, state, use, given)
             what = f"{use.name} leaves {search.world.places[at][0]} at {value}"
@@ -1009,6 +1035,10 @@ def _report(
         doubt, position, function = "out of range", state.suspect.position, state.suspect.function
         what = f"{state.suspect.what}; then {what}"
         ending = replace(ending, where=ending.where if ending.kind == "undefined" else search.origin(position))
+    elif search.odd is not None and doubt in ("order", "room", "data", "occupancy"):
+        doubt, position, function = "slots", search.odd.position, search.odd.function
+        what = f"{search.odd.what}; then {what}"
+        ending = replace(ending, where=search.origin(position))
     mark = (doubt, function)
     if mark in search.found or search.failed.get(mark, 0) >= TRIES:
         return
