@@ -171,6 +171,26 @@ def test_every_kind_of_value_reaches_the_program_as_it_is(project: Path) -> None
     assert [(one.held, one.ended) for one in found] == 3 * [(True, "stopped")], found
 
 
+@needs_host
+def test_what_a_witness_says_nothing_of_does_nothing(project: Path) -> None:
+    source = project / "src/locked.c"
+    source.write_text(
+        """
+        void panel_lock(void); int panel_unlock(int level); struct pair { int low, high; };
+        struct pair panel_pair(void); extern int panel_levels[3];
+        int unlocked(int n)
+        { panel_lock(); (void)panel_unlock(n); if (n > 5) { panel_pair(); } return n + panel_levels[1]; }
+        """,
+        "utf-8",
+    )
+    entry = {"directory": ".", "arguments": ["cc", "-c", "src/locked.c"], "file": "src/locked.c"}
+    (project / "compile_commands.json").write_text(json.dumps([entry]), "utf-8")
+    ending = Ending("result", at(project, "unlocked", "src/locked.c"), None, "", "4", "3")
+    start = tuple(StartValue("panel_levels", f"[{number}]", 0) for number in range(3))
+    (one,) = judged(project, witness(ending, ("unlocked", (4,)), start=start))
+    assert (one.held, one.ended) == (True, "stopped"), one
+
+
 # ------------------------------------------------------------------------------------------------------ kept programs
 
 

@@ -179,20 +179,38 @@ def _stubs(plan: Plan) -> Iterator[str]:
     for name in wanted:
         yield from _stub(name, types.get(name))
     if plan.undefined:
-        yield "/* What the file needs to be linked and this run does not. */"
+        yield "/* What else the file needs to be linked; nothing comes from it in this run. */"
     for name in plan.undefined:
-        if name in wanted:
-            continue
-        variable = _extern_variable(plan.program, name)
-        if variable is not None:
-            yield _definition(variable)
-        else:
-            yield f'void replay_unused_{name}(void) REPLAY_SYMBOL("{name}");'
-            yield (
-                f'void replay_unused_{name}(void) {{ replay_say(2, "{MARK} {name} is called, which has no body\\n"); '
-                "__builtin_trap(); }"
-            )
+        if name not in wanted:
+            yield from _idle(plan.program, name, types.get(name))
     yield ""
+
+
+def _idle(program: Program, name: str, type_: CType | None) -> Iterator[str]:
+    """A definition of what the witness says nothing of: a function that does nothing, or an object that is zero."""
+    variable = _extern_variable(program, name)
+    if variable is not None:
+        yield _definition(variable)
+        return
+    result = _result_type(type_)
+    body = "" if result == "void" else "return 0; "
+    if result is None:
+        result, body = "void", f'replay_say(2, "{MARK} {name} is called and is not there\\n"); __builtin_trap(); '
+    shown = result if result.endswith("*") else result + " "
+    yield f'{shown}replay_idle_{name}(void) REPLAY_SYMBOL("{name}");'
+    yield f"{shown}replay_idle_{name}(void) {{ {body}}}"
+
+
+def _result_type(type_: CType | None) -> str | None:
+    """What a function gives, as C; None where it is not known or neither void, an integer nor a pointer."""
+    match type_:
+        case FunctionType(returns=VoidType()):
+            return "void"
+        case FunctionType(returns=IntType(name=spelled)):
+            return spelled
+        case FunctionType(returns=PointerType()):
+            return "void *"
+    return None
 
 
 def _stub(name: str, type_: CType | None) -> Iterator[str]:
@@ -200,15 +218,12 @@ def _stub(name: str, type_: CType | None) -> Iterator[str]:
         raise NotPossible(f"{name} is no function")
     if not isinstance(type_, FunctionType):
         raise NotPossible(f"{name} is read from outside and is no function")
-    match type_.returns:
-        case VoidType():
-            result, body = "void", f'(void)replay_taken("{name}");'
-        case IntType(name=spelled):
-            result, body = spelled, f'return ({spelled})replay_taken("{name}");'
-        case PointerType():
-            result, body = "void *", f'return (void *)(__UINTPTR_TYPE__)replay_taken("{name}");'
-        case _:
-            raise NotPossible(f"{name} gives a value that is neither an integer nor a pointer")
+    result = _result_type(type_)
+    if result is None:
+        raise NotPossible(f"{name} gives a value that is neither an integer nor a pointer")
+    taken = f'replay_taken("{name}")'
+    bodies = {"void": f"(void){taken};", "void *": f"return (void *)(__UINTPTR_TYPE__){taken};"}
+    body = bodies.get(result, f"return ({result}){taken};")
     shown = result if result.endswith("*") else result + " "
     yield f'{shown}replay_{name}(void) REPLAY_SYMBOL("{name}");'
     yield f"{shown}replay_{name}(void) {{ {body} }}"
