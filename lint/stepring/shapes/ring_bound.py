@@ -96,7 +96,9 @@ def works_on(facts: FlatFacts, storage: Key, keys: set[Key], structs: set[str]) 
                 case Set():
                     if place_keys(op.place, op.place_frame, facts.flat.points) & keys:
                         return True
-    return not keys.isdisjoint(_loaded(facts.flat))
+    if facts.loaded is None:
+        facts.loaded = frozenset(_loaded(facts.flat))
+    return not facts.loaded.isdisjoint(keys)
 
 
 def _loaded(flat: Flat) -> Iterator[Key]:

@@ -135,6 +135,7 @@ class FlatFacts:
     copied: set[tuple[Key, Key]] = field(default_factory=set)
     listed: Table | None = None
     given: list[Use] = field(default_factory=list)
+    loaded: frozenset[Key] | None = None
 
     def table(self) -> Table:
         """The operations by what they do, worked out once."""
@@ -218,7 +219,7 @@ def complete(facts: FlatFacts) -> None:
         if found is not None:
             facts.cells[key] = found
         for _, op in sight.sets[key]:
-            for other in (sources(sight, op.value, op.frame) & near(sight, op.value, op.frame, (), True)) - {key}:
+            for other in (sources(sight, op.value, op.frame) & near(sight, op.value, op.frame, True)) - {key}:
                 facts.copied.add((key, other))
                 if (key, other) not in facts.cross:
                     crossing = _cell(sight, key, other)

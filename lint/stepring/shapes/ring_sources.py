@@ -81,7 +81,7 @@ class Sight:
     sets: dict[Key, list[tuple[int, Set]]] = field(default_factory=lambda: defaultdict(list))
     stored: list[Key] = field(default_factory=list)
     order: Order | None = None
-    close: dict[tuple[Key, bool], frozenset[Key]] = field(default_factory=dict)
+    close: dict[bool, dict[Key, frozenset[Key]]] = field(default_factory=dict)
     compared: dict[int, Comparison] | None = None
 
 
@@ -221,88 +221,133 @@ def use_of(sight: Sight, touch: Touch) -> Use | None:
     cells = _scaled_sources(sight, touch.subscript, touch.frame)
     if cells:
         cells &= near(sight, touch.subscript, touch.frame)
-        cells = cells & near(sight, touch.subscript, touch.frame, (), True) or cells
+        cells = cells & near(sight, touch.subscript, touch.frame, True) or cells
     if not cells:
         return None
     form, modulus, at, term = reduction_of(sight, touch.subscript, touch.frame, 0)
     return Use(touch, cells, form, modulus, at, _scaled(touch.subscript), term)
 
 
-def near(
-    sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...] = (), strict: bool = False
-) -> frozenset[Key]:
+def near(sight: Sight, expr: Expr, frame: str, strict: bool = False) -> frozenset[Key]:
     """The lasting integers that an expression is near to: their value, or a copy that was stepped or reduced.
 
     A local that starts from something else and only adds up what came from a lasting integer is not near to it. With
     ``strict``, how far two lasting integers are apart is near to neither.
     """
+    table = sight.close.get(strict)
+    if table is None:
+        table = sight.close[strict] = _nearness(sight, strict)
+    return _near(sight, expr, frame, table, strict)
+
+
+def _near(
+    sight: Sight, expr: Expr, frame: str, table: Mapping[Key, frozenset[Key]], strict: bool
+) -> frozenset[Key]:
     match expr:
         case Load(place=place):
             found: frozenset[Key] = NOTHING
             for key in place_keys(place, frame, sight.flat.points):
-                found |= _close_local(sight, key, seen, strict) if is_local(key) else frozenset((key,))
+                found |= table.get(key, NOTHING) if is_local(key) else frozenset((key,))
             return found
         case Cast(operand=operand):
-            return near(sight, operand, frame, seen, strict)
+            return _near(sight, operand, frame, table, strict)
         case Binary(op="+" | "&" | "*", left=left, right=right):
-            return near(sight, left, frame, seen, strict) | near(sight, right, frame, seen, strict)
+            return _near(sight, left, frame, table, strict) | _near(sight, right, frame, table, strict)
         case Binary(op="-", left=left, right=right) if fold(left) is not None:
-            return near(sight, right, frame, seen, strict)  # slots counted down from the end
+            return _near(sight, right, frame, table, strict)  # slots counted down from the end
         case Binary(op="-", right=right) if strict and sources(sight, right, frame):
             return NOTHING  # how far two are apart
         case Binary(op="-" | "%" | "<<", left=left):
-            return near(sight, left, frame, seen, strict)
+            return _near(sight, left, frame, table, strict)
     return NOTHING
 
 
-def _close_local(sight: Sight, key: Key, seen: tuple[Key, ...], strict: bool) -> frozenset[Key]:
-    settled = sight.close.get((key, strict))
-    if settled is not None or key in seen:
-        return settled or NOTHING
-    seen = (*seen, key)
-    found: frozenset[Key] = NOTHING
+@dataclass(slots=True)
+class _Made:
+    """What a local is made of: copies and steps of its own (expression, frame, whether it is a step), and the blocks
+    in which a constant replaces that."""
+
+    parts: list[tuple[Expr, str, bool]]
+    replaced: list[int]
+
+
+def _nearness(sight: Sight, strict: bool) -> dict[Key, frozenset[Key]]:
+    """The lasting integers that every local is near to."""
+    made = {key: _made(sight, key) for key, found in sight.sources.items() if found}
+    lost: set[Key] = set()
+    while True:
+        table = _spread_near(sight, made, lost, strict)
+        more = {key for key, item in made.items() if table.get(key) and _is_replaced(sight, item, table[key])}
+        if not more:
+            return table
+        lost |= more
+
+
+def _spread_near(
+    sight: Sight, made: Mapping[Key, _Made], lost: set[Key], strict: bool
+) -> dict[Key, frozenset[Key]]:
+    table: dict[Key, frozenset[Key]] = {}
+    pending = True
+    while pending:
+        pending = False
+        for key, item in made.items():
+            if key in lost:
+                continue
+            known = table.get(key, NOTHING)
+            found = known
+            for expr, frame, step in item.parts:
+                found |= (_added if step else _near)(sight, expr, frame, table, strict)
+            if found != known:
+                table[key] = found
+                pending = True
+    return table
+
+
+def _made(sight: Sight, key: Key) -> _Made:
     constants: list[tuple[int, Position]] = []
     copies: list[Position] = []
     steps: list[Position] = []
+    parts: list[tuple[Expr, str, bool]] = []
     for number, op in sight.sets.get(key, ()):
         if fold(op.value) is not None:
             constants.append((number, op.position))
             continue
-        if key in locals_of(sight, op.value, op.frame):
-            steps.append(op.position)
-            found |= _added(sight, op.value, op.frame, seen, strict)
-        else:
-            copies.append(op.position)
-            found |= near(sight, op.value, op.frame, seen, strict)
+        step = key in locals_of(sight, op.value, op.frame)
+        (steps if step else copies).append(op.position)
+        parts.append((op.value, op.frame, step))
     first = min(copies) if copies and not any(step < min(copies) for step in steps) else None
     # A first value that is replaced before anything is done with it does not count.
-    numbers = [number for number, at in constants if first is None or at > first]
-    if found and numbers:
-        known, decides = compared(sight), control_order(sight)[1]
-        for number in numbers:
-            if not any(
-                found & (known[branch].left | known[branch].right)
-                for branch in decides.get(number, ())
-                if branch in known
-            ):
-                found = NOTHING
-                break
-    if len(seen) == 1:
-        sight.close[key, strict] = found
-    return found
+    return _Made(parts, [number for number, at in constants if first is None or at > first])
 
 
-def _added(sight: Sight, expr: Expr, frame: str, seen: tuple[Key, ...], strict: bool) -> frozenset[Key]:
+def _is_replaced(sight: Sight, item: _Made, found: frozenset[Key]) -> bool:
+    """Whether a constant replaces the value where no comparison of what it was made from decides on that."""
+    if not item.replaced:
+        return False
+    known, decides = compared(sight), control_order(sight)[1]
+    return any(
+        not any(
+            found & (known[branch].left | known[branch].right)
+            for branch in decides.get(number, ())
+            if branch in known
+        )
+        for number in item.replaced
+    )
+
+
+def _added(
+    sight: Sight, expr: Expr, frame: str, table: Mapping[Key, frozenset[Key]], strict: bool
+) -> frozenset[Key]:
     """What a local's step adds to it, if that is a lasting integer as it stands (``at += count``): a local that says
     how far to go (``at += part``) is no place, whatever it was made from."""
     match expr:
         case Cast(operand=operand):
-            return _added(sight, operand, frame, seen, strict)
+            return _added(sight, operand, frame, table, strict)
         case Binary(op="+" | "&" | "%", left=left, right=right):
-            return _added(sight, left, frame, seen, strict) | _added(sight, right, frame, seen, strict)
+            return _added(sight, left, frame, table, strict) | _added(sight, right, frame, table, strict)
         case Load(place=place):
             if not any(is_local(key) for key in place_keys(place, frame, sight.flat.points)):
-                return near(sight, expr, frame, seen, strict)
+                return _near(sight, expr, frame, table, strict)
     return NOTHING
 
 
