@@ -28,6 +28,7 @@ from stepring.meaning.types import (
 from stepring.places import Position
 from stepring.shapes.ring_flat import Flat, FlatOp, Outside, Set, Spoil, Touch, whole_arrays
 from stepring.shapes.ring_keys import NOTHING, Key, is_local, place_keys
+from stepring.shapes.ring_near import near, unchecked, use_of
 from stepring.shapes.ring_sources import (
     Comparison,
     Order,
@@ -39,12 +40,9 @@ from stepring.shapes.ring_sources import (
     guards_of,
     locals_of,
     mask_term,
-    near,
     sources,
     spread,
     term_of,
-    unchecked,
-    use_of,
 )
 from stepring.shapes.types import WrapForm
 
