@@ -263,3 +263,38 @@ def test_a_helper_is_only_run_where_its_callers_would(tmp_path: Path) -> None:
     text = STATIC.replace(taken, "    *grams = hopper_next();\n")
     found, _ = _explored(tmp_path, text.replace("bool hopper_get", helper + "bool hopper_get"))
     assert found.compared and found.disagreements == ()
+
+
+HISTORY = """
+static int16_t weight_grams[10];
+static uint8_t weight_at;
+void weight_note(int16_t grams)
+{
+    weight_grams[weight_at] = grams;
+    weight_at++;
+    if (weight_at >= 10) weight_at = 0;
+}
+int weight_sum(void)
+{ int sum = 0; for (unsigned i = 0; i < 10; i++) sum += weight_grams[i]; return sum; }
+"""
+
+
+@pytest.mark.parametrize(
+    ("doubt", "right", "wrong"),
+    [
+        ("past end", "if (weight_at >= 10) weight_at = 0;", "if (weight_at > 10) weight_at = 0;"),
+        ("slots", "if (weight_at >= 10) weight_at = 0;", "if (weight_at >= 10) weight_at = 1;"),
+        ("slots", "if (weight_at >= 10) weight_at = 0;", "weight_at &= 9;"),
+        (
+            "overflow",
+            "weight_grams[weight_at] = grams;\n    weight_at++;\n    if (weight_at >= 10) weight_at = 0;",
+            "weight_grams[weight_at % 10] = grams;\n    weight_at++;",
+        ),
+    ],
+)
+def test_a_history_has_no_reader_to_compare_with(tmp_path: Path, doubt: str, right: str, wrong: str) -> None:
+    assert _explored(tmp_path, HISTORY)[0].disagreements == ()
+    found, group = _explored(tmp_path, HISTORY.replace(right, wrong))
+    item = _one(found, doubt, "weight_note")
+    assert not found.compared
+    assert replay(group.program, item.witness, origin=origin).held
