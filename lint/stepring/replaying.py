@@ -44,6 +44,9 @@ from stepring.report.serialise import write_whole
 from stepring.report.text import clean, unescape_message
 from stepring.report.types import Inspection
 
+_INSIDE = ("bounds", "overlap", "lifetime")
+"""Faults of which the compiler's checks see some only."""
+
 Ended: TypeAlias = Literal["stopped", "did not stop", "not possible", "not tried"]
 
 
@@ -436,7 +439,11 @@ def _as_program(
     if ran.stop is not None and ran.stop.line:
         at = f"{_relative(ran.stop.file, root)}, line {ran.stop.line}"
         return "did not stop", f"it stops at {at} instead ({ran.stop.message})", kept
-    ending = "it runs to its end" if ran.status == 0 else f"it ends with {ran.status}"
+    ending = "it runs to its end" if ran.status == 0 else f"it ends with status {ran.status}"
+    if isinstance(ran.status, str):
+        ending = f"it {ran.status}"
+    if ran.status == 0 and done.held and witness.ending.fault in _INSIDE:
+        ending += "; the compiler's checks see only some faults of this kind"
     return "did not stop", ending if ran.stop is None else f"{ending} ({ran.stop.message})", kept
 
 

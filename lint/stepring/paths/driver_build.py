@@ -247,7 +247,7 @@ def run_limited(arguments: Sequence[str], folder: Path, seconds: float) -> tuple
         status: int | str
         try:
             code = process.wait(timeout=seconds)
-            status = code if code >= 0 else f"ended by signal {-code}"
+            status = code if code >= 0 else f"was ended by signal {-code}"
         except subprocess.TimeoutExpired:
             status = f"did not end within {seconds:.0f} s"
         finally:
