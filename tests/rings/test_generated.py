@@ -15,8 +15,8 @@ OPEN_AT_MOST = 0.12
 """The share of obligations that may stay open; the aim is 0.05."""
 
 FOUND_AT_LEAST = 0.3
-"""The share of misbehaving programs with a finding. Bounds of the storage are a third of what goes wrong; the rest shows
-only beside an ideal queue."""
+"""The share of misbehaving programs with a finding. A third of what goes wrong leaves the storage; the rest shows only
+beside an ideal queue."""
 
 COUNT = 3000 if os.environ.get("STEPRING_MANY") else 200
 
