@@ -208,13 +208,13 @@ def replay(log: Path, root: Path | None, keep: Path | None, no_programs: bool, c
     """
     if keep is not None and no_programs:
         _refuse("--keep keeps programs, and --no-programs makes none; leave one of them out")
-    from stepring import replaying  # imported here, as the engines take a while to load
+    from stepring import replaying, witness_log  # imported here, as the engines take a while to load
     from stepring.report.replayed import replay_lines, replay_summary
 
     try:
-        read = replaying.read_log(log)
+        read = witness_log.read_log(log)
         place = Path(os.path.normpath(_current_folder() / (root or ".")))
-        for sentence in replaying.changed_files(read, place):
+        for sentence in witness_log.changed_files(read, place):
             click.echo(f"stepring: {sentence}", err=True)
         wishes = replaying.Wishes(not no_programs, keep, () if compiler is None else (compiler,))
         judged: list[replaying.Judged] = []
@@ -225,7 +225,7 @@ def replay(log: Path, root: Path | None, keep: Path | None, no_programs: bool, c
                     click.echo(line)
         with _writing():
             click.echo(replay_summary(judged))
-    except replaying.BadLog as trouble:
+    except witness_log.BadLog as trouble:
         _refuse(str(trouble))
     return FOUND_NOTHING if all(one.replayed for one in judged) else FOUND_SOMETHING
 

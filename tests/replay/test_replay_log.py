@@ -31,7 +31,8 @@ from log_checks import assert_sound
 from stepring.cli import main
 from stepring.paths import driver_build
 from stepring.paths.witness import Ending, Made, OutsideValue, Reference, StartValue, Witness, WitnessCall
-from stepring.replaying import Judged, Wishes, read_log, replay_log
+from stepring.replaying import Judged, Wishes, replay_log
+from stepring.witness_log import read_log
 
 HOST = next((name for name in driver_build.COMPILERS if shutil.which(name)), None)
 needs_host = pytest.mark.skipif(HOST is None, reason="no C compiler (cc, gcc, clang) is on PATH to build programs with")
