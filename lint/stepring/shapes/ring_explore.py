@@ -1194,7 +1194,9 @@ def _trimmed(witness: Witness) -> Witness:
     used = [item for call_ in witness.calls for item in call_.arguments if isinstance(item, Reference)]
     end = max((item.at for item in used if item.to == GIVEN), default=-1) + 1 + most
     start = tuple(
-        item for item in witness.start if item.object != GIVEN or (GIVEN in named and int(item.path.strip("[]")) < end)
+        item
+        for item in witness.start
+        if item.object != GIVEN or (GIVEN in named and int(item.path[1:].partition("]")[0]) < end)
     )
     return replace(witness, made=tuple(item for item in witness.made if item.name in named), start=start)
 
