@@ -46,10 +46,10 @@ def program_text(draw: random.Random, tag: str) -> str:
     make = Maker(draw, tag, draw.choice((0.0, 0.0, 0.01, 0.04)))
     lines = _globals(make)
     everywhere = (list(make.readable), list(make.writable), list(make.steppable))
+    lines += _struct_functions(make)
     for number in range(draw.randint(1, 3)):
         lines += _function(make, f"f{number}_{tag}", everywhere)
         make.functions.append(f"f{number}_{tag}")
-    lines += _struct_functions(make)
     lines += _entry(make, everywhere)
     return "\n".join(lines) + "\n"
 
@@ -84,7 +84,7 @@ def _globals(make: Maker) -> list[str]:
     lines.append(
         f"struct s_{t} {{ {fields[0]} a; {bits[0][0]} b : {bits[0][1]}; {bits[1][0]} c : {bits[1][1]};"
         f" struct {{ {fields[1]} x; {fields[1]} row[4]; }} in; union {{ unsigned w; unsigned char by[4]; }};"
-        f" {fields[2]} *link; {fields[2]} z; }};"
+        f" {fields[2]} *link; {fields[2]} z; _Bool on : 1; unsigned short wide : {draw.randint(8, 16)}; }};"
     )
     lines.append(
         f"struct s_{t} gs_{t} = {{ {_number(make, fields[0])}, 1, .in = {{ {_number(make, fields[1])}, {{1, 2}} }},"
@@ -102,7 +102,26 @@ def _globals(make: Maker) -> list[str]:
         make.writable += [(f"{base}a", fields[0]), (f"{base}{row}", fields[1]), (f"{base}w", "unsigned int")]
         make.writable += [(f"{base}b", "bits"), (f"{base}c", "bits"), (f"{base}by[@@4]", "unsigned char")]
         make.writable += [(f"{base}link[0]", fields[2])]
-    make.readable += [f"text_{t}[@@4]", f"(int)mode_{t}", f"PURGE_{t}"]
+    make.readable += [f"text_{t}[@@4]", f"(int)mode_{t}", f"PURGE_{t}", f"gs_{t}.on", f"gp_{t}->wide"]
+    make.writable += [(f"gs_{t}.on", "_Bool"), (f"gp_{t}->wide", "bits")]
+    return lines + _arrays(make, fields)
+
+
+def _arrays(make: Maker, fields: list[str]) -> list[str]:
+    """An array of structures and one of arrays, with a pointer to an element of the first."""
+    draw, t = make.draw, make.tag
+    kind, link = draw.choice(KINDS), f"&gs_{t}.z"
+    lines = [
+        f"static struct s_{t} bins_{t}[4] = {{ {{ {_number(make, fields[0])}, .z = 1, .link = {link} }},"
+        f" [2] = {{ .in = {{ 3 }}, .link = {link} }}, [1].link = {link}, [3].link = {link} }};",
+        f"static struct s_{t} *at_{t} = &bins_{t}[1];",
+        f"{kind} grid_{t}[2][4] = {{ {{ {_number(make, kind)}, 1 }}, {{ [3] = {_number(make, kind)} }} }};",
+    ]
+    make.readable += [f"bins_{t}[@4].a", f"bins_{t}[@@4].in.row[1]", f"bins_{t}[2].b", f"at_{t}->w", f"at_{t}->z"]
+    make.readable += [f"(int)(at_{t} - bins_{t})", f"grid_{t}[@2][3]", f"grid_{t}[1][@4]"]
+    make.writable += [(f"bins_{t}[@4].a", fields[0]), (f"bins_{t}[@@4].in.row[1]", fields[1]), (f"at_{t}->c", "bits")]
+    make.writable += [(f"at_{t}->z", fields[2]), (f"bins_{t}[@4].w", "unsigned int")]
+    make.writable += [(f"grid_{t}[@2][3]", kind), (f"grid_{t}[1][@4]", kind)]
     return lines
 
 
@@ -289,7 +308,8 @@ def _local(make: Maker) -> str:
     if form < 0.84:
         name = _new(make, "s")
         literal = f"{{ 1, .w = 77u, .link = &gs_{make.tag}.z }}"
-        text = f"struct s_{make.tag} {name} = {draw.choice((f'gs_{make.tag}', f'*gp_{make.tag}', literal))};"
+        whole = (f"gs_{make.tag}", f"*gp_{make.tag}", literal, f"(struct s_{make.tag}){literal}", f"bins_{make.tag}[1]")
+        text = f"struct s_{make.tag} {name} = {draw.choice(whole)};"
         make.readable += [f"{name}.a", f"{name}.b", f"{name}.in.row[@4]", f"{name}.by[@@4]", f"{name}.w"]
         make.writable += [(f"{name}.c", "bits"), (f"{name}.w", "unsigned int"), (f"{name}.by[@@4]", "unsigned char")]
         return text + f" {name}.in = gs_{make.tag}.in; if ({_expression(make, 1)}) gs_{make.tag} = {name};"
@@ -325,9 +345,11 @@ def _statement(make: Maker, depth: int) -> str:
         return f"if ({_expression(make, 1)}) {draw.choice(('break', 'continue'))};"
     if form < 0.94 and make.labels:
         return f"if ({_expression(make, 1)}) goto {draw.choice(make.labels)};"
-    if form < 0.96:
+    if form < 0.95:
         return _library(make)
-    if form < 0.98:
+    if form < 0.97:
+        return _by_pointer(make)
+    if form < 0.985:
         return f"if ({_expression(make, 2)}) return {_expression(make, 1)};"
     return _block(make, depth - 1)
 
@@ -345,13 +367,33 @@ def _library(make: Maker) -> str:
     )
 
 
+def _by_pointer(make: Maker) -> str:
+    """Structures handed over and given back, and objects that are changed through a pointer."""
+    draw, t = make.draw, make.tag
+    word = next(place for place, kind in reversed(make.writable) if kind == "unsigned int" and "@" not in place)
+    name = draw.choice([place for place, _ in make.writable if place.isidentifier()])
+    walker, counter = _new(make, "p"), _new(make, "i")
+    return draw.choice(
+        (
+            f"bump_{t}(&{word}, {_expression(make, 1)});",
+            f"{name} = copy_{t}({draw.choice((f'gs_{t}', f'bins_{t}[3]'))}, {_expression(make, 1)}).w;",
+            f"at_{t} = &bins_{t}[({_expression(make, 1)}) & 3]; at_{t}->in = gp_{t}->in;",
+            f"bins_{t}[({_expression(make, 1)}) & 3] = *gp_{t};",
+            f"{{ const unsigned char *{walker} = gs_{t}.by; for (int {counter} = 0; {counter} < 4; {counter}++)"
+            f" {name} ^= *{walker}++; }}",
+            f"{{ struct s_{t} *{walker} = bins_{t}; while ({walker} < bins_{t} + 4) {{"
+            f" {walker}->w += 3u; {walker}++; }} }}",
+        )
+    )
+
+
 def _loop(make: Maker, depth: int) -> str:
     draw = make.draw
     counter = _new(make, "i")
     kept = make.loops, list(make.readable)
     make.loops += 1
     make.readable.append(counter)
-    form = draw.randrange(4)
+    form = draw.randrange(5)
     most = draw.randint(1, 5)
     if form == 0:
         kind = draw.choice(("int", "unsigned char", "short"))
@@ -362,6 +404,11 @@ def _loop(make: Maker, depth: int) -> str:
         body = _block(make, depth - 1, 3)
         make.readable.remove(counter)
         text = f"{{ int {counter} = 0; do {body} while (++{counter} < {most} && {_expression(make, 1)}); }}"
+    elif form == 3:
+        make.loops = 0  # no loop statement of its own: break and continue would leave it
+        label = _new(make, f"again_{make.tag}_")
+        body = _block(make, depth - 1, 3)
+        text = f"{{ int {counter} = 0; {label}: {body} if (++{counter} < {most}) goto {label}; }}"
     else:
         body = _block(make, depth - 1, 3)
         label = _new(make, f"out_{make.tag}_")
@@ -427,6 +474,7 @@ def _struct_functions(make: Maker) -> list[str]:
     return [
         f"static struct s_{t} copy_{t}(struct s_{t} given, unsigned n) {{",
         "  given.w += n; given.in.row[1] = n; return given; }",
+        f"static void bump_{t}(unsigned *at, unsigned by) {{ if (*at > 50u) *at -= 50u; *at += by & 31; }}",
         f"static unsigned take_{t}(struct s_{t} *at) {{ at->w ^= 5u; return at->w; }}",
         f"static unsigned (*const table_{t}[2])(struct s_{t} *) = {{ take_{t}, 0 }};",
     ]

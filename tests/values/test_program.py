@@ -291,6 +291,8 @@ void fill(void) { %s = 9; level = even(&spare, 4); }
         ("switch (3) { case 5: level = 1; }", "level"),
         ("b->mass = 5;", "hopper.mass"),
         ("if (n == 2) b->mass = 5;", "hopper.mass"),
+        ("if (!n) return 1; level = 3;", "level"),
+        ("if (level < 2) return 1; switch (3) { case 5: level = 1; }", "level"),
     ),
 )
 def test_what_a_callee_only_seems_to_store_into_keeps_what_its_caller_left_there(body: str, place: str) -> None:

@@ -239,6 +239,8 @@ class Engine(Execution):
     def settle_looks(self, record: Record) -> None:
         """Other code could see the lasting cells in some states: note what those hold that the run stores into."""
         for state in record.looks:
+            held = {spot.cell for spot in state.values if spot.definite and not spot.reached and spot.cell is not None}
+            record.replaced = frozenset(held if record.replaced is None else held & record.replaced)
             for spot in state.values:
                 if spot.private or spot.cell is None or spot.cell not in record.stored:
                     continue

@@ -306,8 +306,8 @@ class ProgramValues:
         for cell, value in self._between.get(function.identity, {}).items():
             single = isinstance(cell, VariableCell) and "[]" not in cell.path
             # Its callers forget what they had there, so what it leaves as it found it is noted here.
-            names = {cell, *self._also(cell)}
-            if not (single and cell in record.stored) and self.callees.forgets(function.identity, names):
+            gone = single and cell in record.stored and cell in (record.replaced or ())
+            if not gone and self.callees.forgets(function.identity, {cell, *self._also(cell)}):
                 add(cell, value)
         for width, value in record.pointees.items():
             add(pointee_cell(width), value)

@@ -70,7 +70,8 @@ class Record:
 
     ``stored``: the join of all stores. ``left``: the join over returns and calls that are not run in place, of the
     cells that were stored into. ``pointees``: what is stored through pointers to scalars, by width. ``returned``:
-    the value returned.
+    the value returned. ``replaced``: variables and members of them that no longer hold what they held at the start,
+    wherever other code can look; None if it never can.
     """
 
     stored: dict[Cell, Interval] = field(default_factory=dict)
@@ -79,6 +80,7 @@ class Record:
     arguments: dict[str, list[Interval]] = field(default_factory=dict)
     entered: dict[str, tuple[list[Interval], dict[Cell, Interval]]] = field(default_factory=dict)
     returned: Interval | None = None
+    replaced: frozenset[Cell] | None = None
     looks: list[State] = field(default_factory=list)
 
     def pass_to(self, callee: str, arguments: list[Interval]) -> None:
