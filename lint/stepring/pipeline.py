@@ -21,6 +21,7 @@ from stepring.gather.types import Unit
 from stepring.meaning.models import MODELS, model_from_macros
 from stepring.meaning.types import DataModel, Function, Object, StructLayout, TypedUnit
 from stepring.meaning.unit import Meanings, lower_unit
+from stepring.paths.symbolic_types import Limits
 from stepring.places import Notice, Origin, Position
 from stepring.read.preprocess import preprocess
 from stepring.read.reader import Reader
@@ -31,6 +32,7 @@ from stepring.shapes.facts import StateFacts
 from stepring.shapes.machines import find_machines
 from stepring.shapes.positions import positions_of
 from stepring.shapes.ring_called import called_by
+from stepring.shapes.ring_evidence import Code, UnitCode, with_evidence
 from stepring.shapes.ring_ranges import with_ranges
 from stepring.shapes.ring_writers import Noter, Writers, outside_of
 from stepring.shapes.rings import find_rings, ring_functions
@@ -174,7 +176,8 @@ def _inspect(paths: Sequence[Path], options: Options, progress: Progress | None)
     rules = load_rules()
     obligations: list[Obligation] = []
     said: list[Notice] = [*notices, *gathered.notices]
-    program = merge(summaries, said, whole=not any(path.is_file() for path in paths))
+    whole = not any(path.is_file() for path in paths)
+    program = merge(summaries, said, whole=whole, limits=limits_of(options) if options.proofs else None)
     for summary in summaries:
         said.extend(summary.notices)
     for rule in rules:
@@ -206,6 +209,12 @@ def asked(paths: Sequence[Path], options: Options, root: Path) -> Inspection:
         tuple(Path(name).name for name in options.compilers),
         options.use_compiler,
     )
+
+
+def limits_of(options: Options) -> Limits:
+    """The solver's limits: the usual ones where nothing else was asked for."""
+    usual = Limits()
+    return replace(usual, effort=options.query_limit or usual.effort, seconds=options.time_limit)
 
 
 def project_settings(paths: Sequence[Path]) -> tuple[Settings, tuple[Notice, ...]]:
@@ -265,7 +274,9 @@ def _guarded(worker: Worker, unit: Unit) -> UnitSummary:
         return UnitSummary(unit, model, False, empty, (), (), {}, {}, (), (notice,))
 
 
-def merge(summaries: Sequence[UnitSummary], said: list[Notice], *, whole: bool = True) -> Program:
+def merge(
+    summaries: Sequence[UnitSummary], said: list[Notice], *, whole: bool = True, limits: Limits | None = None
+) -> Program:
     """The program: machines and rings from all summaries. If the search for one kind fails, the other is kept."""
     unread: dict[str, str] = {}
     for summary in summaries:
@@ -281,14 +292,19 @@ def merge(summaries: Sequence[UnitSummary], said: list[Notice], *, whole: bool =
     except Exception as trouble:  # what was found of the other kind must not be lost
         said.append(Notice("internal", "error", f"Machines were not found ({type(trouble).__name__}: {trouble})."))
     try:
-        rings = merge_rings(summaries, unread=unread, whole=whole)
+        rings = merge_rings(summaries, said, unread=unread, whole=whole, limits=limits)
     except Exception as trouble:
         said.append(Notice("internal", "error", f"Rings were not found ({type(trouble).__name__}: {trouble})."))
     return Program(machines, rings)
 
 
 def merge_rings(
-    summaries: Sequence[UnitSummary], *, unread: Mapping[str, str] = MappingProxyType({}), whole: bool = True
+    summaries: Sequence[UnitSummary],
+    said: list[Notice],
+    *,
+    unread: Mapping[str, str] = MappingProxyType({}),
+    whole: bool = True,
+    limits: Limits | None = None,
 ) -> tuple[Ring, ...]:
     """The rings of all units of one data model together; a program has one model, but a tree may hold several."""
     rings: list[Ring] = []
@@ -315,7 +331,23 @@ def merge_rings(
         outside = outside_of((summary.writers for summary in group), run, unread, whole)
         known = tuple(functions.values())
         found = find_rings(known, tuple(objects.values()), structs, model, origin, outside)
-        rings.extend(with_ranges(found, known, origin))
+        found = with_ranges(found, known, origin)
+        if limits is not None and found:
+            code = Code(
+                known,
+                tuple(objects.values()),
+                structs,
+                model,
+                outside,
+                tuple(
+                    UnitCode(summary.ring_functions, summary.called, summary.objects, summary.structs)
+                    for summary in group
+                    if summary.ring_functions
+                ),
+                frozenset(place.name for summary in group for place in summary.functions),
+            )
+            found = with_evidence(found, code, origin, limits, said)
+        rings.extend(found)
     return tuple(sorted(rings, key=lambda ring: (ring.where, ring.identity)))
 
 

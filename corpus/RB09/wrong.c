@@ -1,0 +1,34 @@
+/* Commands from shore: the test for an empty queue is the wrong way round. */
+#include <stdbool.h>
+#include <stdint.h>
+
+#define COMMANDS 8u
+
+static uint8_t commands[COMMANDS];
+static uint8_t head;
+static uint8_t tail;
+
+static uint8_t after(uint8_t slot)
+{
+    return (uint8_t)((slot + 1u) % COMMANDS);
+}
+
+bool command_put(uint8_t code)
+{
+    if (after(head) == tail) {
+        return false;
+    }
+    commands[head] = code;
+    head = after(head);
+    return true;
+}
+
+bool command_take(uint8_t *code)
+{
+    if (head != tail) {
+        return false;
+    }
+    *code = commands[tail];
+    tail = after(tail); /* finding: RB09 */
+    return true;
+}

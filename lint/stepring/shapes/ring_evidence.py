@@ -1,0 +1,86 @@
+"""Rings with their evidence: what runs of their operations showed, and what the solver proved of all runs.
+
+Only here do the two engines meet. Runs come first and are bounded in steps; proofs are asked for what runs cannot
+show. Where an engine fails, what the other found is kept, and the failure is said.
+"""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+
+from stepring.meaning.types import DataModel, Function, Object, StructLayout, TypedUnit, TypeTable
+from stepring.paths.symbolic_types import Limits
+from stepring.places import Notice, Origin, Position
+from stepring.shapes.ring_explore import with_runs
+from stepring.shapes.ring_proofs import prove_rings
+from stepring.shapes.ring_writers import Outside
+from stepring.shapes.types import Ring
+
+
+@dataclass(frozen=True, slots=True)
+class UnitCode:
+    """What one unit brings: the functions that may be part of a ring, those that they call, objects, structures."""
+
+    rings: tuple[Function, ...]
+    called: tuple[Function, ...]
+    objects: tuple[Object, ...]
+    structs: Mapping[str, StructLayout]
+
+
+@dataclass(frozen=True, slots=True)
+class Code:
+    """The program's code of one data model as the ring finder was given it, and unit by unit.
+
+    ``defined`` are the names of all functions that the program defines, read or not.
+    """
+
+    functions: tuple[Function, ...]
+    objects: tuple[Object, ...]
+    structs: Mapping[str, StructLayout]
+    model: DataModel
+    outside: Outside
+    units: tuple[UnitCode, ...]
+    defined: frozenset[str]
+
+
+def with_evidence(
+    rings: tuple[Ring, ...],
+    code: Code,
+    origin: Callable[[Position], Origin],
+    limits: Limits,
+    said: list[Notice],
+) -> tuple[Ring, ...]:
+    """The rings with ``disagreements`` and ``proofs``."""
+    if not rings:
+        return ()
+    units = [
+        TypedUnit((*unit.rings, *unit.called), unit.objects, TypeTable(code.model, unit.structs), ())
+        for unit in code.units
+    ]
+    called: dict[tuple[str, Position], Function] = {}
+    for unit in code.units:
+        called.update({(function.identity, function.position): function for function in unit.called})
+
+    def proved(found: tuple[Ring, ...]) -> tuple[Ring, ...]:
+        return prove_rings(
+            found,
+            code.functions,
+            code.objects,
+            code.structs,
+            code.model,
+            origin,
+            outside=code.outside,
+            called=tuple(called.values()),
+            defined=code.defined,
+            limits=limits,
+        )
+
+    steps: tuple[tuple[str, Callable[[tuple[Ring, ...]], tuple[Ring, ...]]], ...] = (
+        ("The operations of rings were not run", lambda found: with_runs(found, units, origin)),
+        ("Nothing was proved of rings", proved),
+    )
+    for what, step in steps:
+        try:
+            rings = step(rings)
+        except Exception as trouble:  # what is known of the rings so far must not be lost
+            said.append(Notice("internal", "warning", f"{what} ({type(trouble).__name__}: {trouble})."))
+    return rings
