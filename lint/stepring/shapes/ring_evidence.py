@@ -4,7 +4,7 @@ Only here do the two engines meet. Runs come first and are bounded in steps; pro
 show. Where an engine fails, what the other found is kept, and the failure is said.
 """
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 from stepring.meaning.types import DataModel, Function, Object, StructLayout, TypedUnit, TypeTable
@@ -52,10 +52,6 @@ def with_evidence(
     """The rings with ``disagreements`` and ``proofs``."""
     if not rings:
         return ()
-    units = [
-        TypedUnit((*unit.rings, *unit.called), unit.objects, TypeTable(code.model, unit.structs), ())
-        for unit in code.units
-    ]
     called: dict[tuple[str, Position], Function] = {}
     for unit in code.units:
         called.update({(function.identity, function.position): function for function in unit.called})
@@ -75,7 +71,7 @@ def with_evidence(
         )
 
     steps: tuple[tuple[str, Callable[[tuple[Ring, ...]], tuple[Ring, ...]]], ...] = (
-        ("The operations of rings were not run", lambda found: with_runs(found, units, origin)),
+        ("The operations of rings were not run", lambda found: _run(found, code, origin)),
         ("Nothing was proved of rings", proved),
     )
     for what, step in steps:
@@ -84,3 +80,44 @@ def with_evidence(
         except Exception as trouble:  # what is known of the rings so far must not be lost
             said.append(Notice("internal", "warning", f"{what} ({type(trouble).__name__}: {trouble})."))
     return rings
+
+
+def _run(rings: tuple[Ring, ...], code: Code, origin: Callable[[Position], Origin]) -> tuple[Ring, ...]:
+    """Run the operations of each ring in the program that it belongs to."""
+    units = [
+        TypedUnit((*unit.rings, *unit.called), unit.objects, TypeTable(code.model, unit.structs), ())
+        for unit in code.units
+    ]
+    programs: dict[tuple[int, ...], list[Ring]] = {}
+    for ring in rings:
+        programs.setdefault(_program_of(ring, units), []).append(ring)
+    found: dict[str, Ring] = {}
+    for numbers, members in programs.items():
+        for ring in with_runs(members, [units[number] for number in numbers], origin):
+            found[ring.identity] = ring
+    return tuple(found.get(ring.identity, ring) for ring in rings)
+
+
+def _program_of(ring: Ring, units: Sequence[TypedUnit]) -> tuple[int, ...]:
+    """The numbers of the units that make up the ring's program.
+
+    A tree may hold several programs that define the same names. Those units come first that hold the ring's functions;
+    a unit that defines a name once more is of another program.
+    """
+    mine = {*ring.functions, *ring.helpers}
+    file = ring.where.file
+    first = [number for number, unit in enumerate(units) if _holds(unit, mine, file)]
+    first = first or [number for number, unit in enumerate(units) if _holds(unit, mine, None)]
+    taken: dict[str, Position] = {}
+    chosen: list[int] = []
+    for number in dict.fromkeys((*first, *range(len(units)))):
+        given = {item.name: item.position for item in units[number].functions if not item.static}
+        if all(taken.get(name, position) == position for name, position in given.items()):
+            chosen.append(number)
+            taken.update(given)
+    return tuple(sorted(chosen))
+
+
+def _holds(unit: TypedUnit, functions: set[str], file: str | None) -> bool:
+    """Whether a unit defines one of the functions, in the ring's own file if that is asked for."""
+    return any(item.identity in functions and (file is None or item.position.file == file) for item in unit.functions)
