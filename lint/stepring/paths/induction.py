@@ -27,7 +27,14 @@ Look: TypeAlias = Callable[[Key], Value]
 """What a key holds, in the object and at the point that are asked about."""
 
 
-DROPPING = (("bits", 200_000), ("sums", 10_000), ("bits", 1_500_000), ("sums", 100_000), ("bits", 6_000_000))
+DROPPING = (
+    ("bits", 200_000),
+    ("sums", 10_000),
+    ("bits", 1_500_000),
+    ("sums", 100_000),
+    ("bits", 6_000_000),
+    ("sums", 1_000_000),
+)
 PROVING = (
     ("sums", 5_000),
     ("bits", 300_000),

@@ -16,7 +16,11 @@ from typing import cast
 
 import z3
 
+from stepring.meaning.fold import fold
 from stepring.meaning.types import (
+    Assign,
+    Binary,
+    Cast,
     DataModel,
     Function,
     IntType,
@@ -37,11 +41,11 @@ from stepring.paths.induction import (
 )
 from stepring.paths.symbolic_memory import Node, Pointer, Start, State, Stored, added, address_mark, row_of
 from stepring.paths.symbolic_terms import Number, Truth, bits, both, compared, either, equal, negated, stretch
-from stepring.paths.symbolic_types import CUT, FLAG, Accessed, Limits, Point, Trace
+from stepring.paths.symbolic_types import CUT, FLAG, SET_FRAME, Accessed, Limits, Point, Trace
 from stepring.paths.symbolic_writes import own_writes
 from stepring.places import Origin, Position
 from stepring.shapes.ring_apart import defined_often, told_apart
-from stepring.shapes.ring_keys import Key, inner_structs, key_text, short_text, struct_name
+from stepring.shapes.ring_keys import Key, inner_structs, key_text, place_keys, short_text, struct_name
 from stepring.shapes.ring_program import RingProgram, ring_program, touching
 from stepring.shapes.ring_relations import Slots, family_of, holds_for, relations_of, slots_of
 from stepring.shapes.ring_types import CheckedStep, OpenReason, Proof
@@ -118,6 +122,12 @@ def _leave_open(case: Case, reason: OpenReason, detail: str) -> None:
 
 def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
     ring, program = case.ring, case.program
+    if case.slots is not None and case.slots.plus == 1 and case.slots.key is not None:
+        if not _stands_for_mask(program, case.slots.key):
+            _leave_open(
+                case, "capacity not known", f"{short_text(case.slots.key)} is used as a mask and not stored as one"
+            )
+            return
     case.family = family_of(ring, case.slots, program.structs, program.variables, _companions(case))
     if case.family is None:
         _leave_open(case, "not modelled", "its integers do not live in one structure, nor all in variables")
@@ -146,6 +156,28 @@ def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], 
     if case.open_as is not None:
         return
     _find_kept(case, outside, often, limits)
+
+
+def _stands_for_mask(program: RingProgram, key: Key) -> bool:
+    """Whether what is used as a mask is stored as one less than something, or as a constant of low bits.
+
+    A number of slots that is used as a mask by mistake is not: the buffer does not have one slot more than that.
+    """
+    some = False
+    for function in program.functions:
+        for block in function.blocks:
+            for statement in block.statements:
+                if not isinstance(statement, Assign) or key not in place_keys(statement.place, "", {}):
+                    continue
+                value = statement.value
+                while isinstance(value, Cast):
+                    value = value.operand
+                known = fold(value)
+                less = isinstance(value, Binary) and value.op == "-" and fold(value.right) == 1
+                if not less and (known is None or known <= 0 or (known & (known + 1)) != 0):
+                    return False
+                some = True
+    return some
 
 
 def _companions(case: Case) -> tuple[Key, ...]:
@@ -229,7 +261,7 @@ def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]
     assert family is not None
     relations = [
         relation
-        for relation in relations_of(case.ring, case.slots, family, _constants(case))
+        for relation in relations_of(case.ring, case.slots, family, _constants(case), case.program.around.model.pointer)
         if _survives(case, relation, outside, often)
     ]
     relations = _start(case, relations)
@@ -245,10 +277,27 @@ def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]
         if not lost or case.induction.exhausted:
             break
         given = (*given, lost[0])
+    for body in case.induction.bodies if given else ():
+        if not body.assumes and not _can_set_up(case, body):
+            _leave_open(case, "capacity not known", f"{body.trace.function.name} can set up none that fits its use")
     names = ", ".join(sorted({trace.function.name for trace in case.setups}))
+    if any(trace.calls for trace in case.setups):
+        case.assumed.append(f"nothing uses the ring while {names} runs")
     for text in given:
         if text in case.induction.active:
             case.assumed.append(f"{names} is given a capacity such that {text}")
+
+
+def _can_set_up(case: Case, body: Body) -> bool:
+    """Whether a function can set up an object at all under what is assumed of its callers."""
+    assert case.induction is not None
+    for point in body.trace.points:
+        if point.kind == "return":
+            flags = [point.state.local.get((SET_FRAME, "/".join(key)), 0) for key in sorted(case.setting)]
+            never = both(*(equal(flag, 0, FLAG.width) for flag in flags))
+            if proved(case.induction, body, point.state, never) == "fails":
+                return True
+    return False
 
 
 def _callers_part(case: Case) -> Iterator[str]:
@@ -260,6 +309,8 @@ def _callers_part(case: Case) -> Iterator[str]:
     masked = any(access.reduction == "mask" for access in ring.accesses)
     if masked or any(step.wrap in ("mask", "free-running") for index in ring.indices for step in index.steps):
         yield f"{slots.text} is a power of two"
+    if case.family is not None and case.family.types[slots.key].width >= case.program.around.model.pointer:
+        yield f"{slots.text} <= PTRDIFF_MAX"
 
 
 def _constants(case: Case) -> frozenset[int]:
@@ -503,7 +554,9 @@ def _why(case: Case, body: Body, verdict: str) -> OpenReason:
     assert induction is not None
     if induction.exhausted:
         return cast(OpenReason, induction.exhausted)
-    if verdict == "unknown":
+    if verdict == "unknown" or any(
+        found == "unknown" and "[loop" not in text for text, (_, _, found) in induction.dropped.items()
+    ):
         return "query limit"
     if body.trace.calls and any(point.kind == "after call" for point in body.trace.points):
         return "call to unknown code"
@@ -542,10 +595,12 @@ def _range_proof(
         wanted[0], missing = resting, []
     if not missing:
         return Proof("range", where, "", name, True, tuple(wanted), tuple(assumed))
-    function, point, _ = case.induction.dropped.get(missing[0], ("", None, ""))
+    function, point, verdict = case.induction.dropped.get(missing[0], ("", None, ""))
     reason: OpenReason = "start value not known" if not function else "not modelled"
     if case.induction.exhausted:
         reason = cast(OpenReason, case.induction.exhausted)
+    elif verdict == "unknown":
+        reason = "query limit"
     elif point is not None and point.kind in ("call", "after call"):
         reason = "call to unknown code"
     return _open(case, "range", where, "", name, reason, f"{function or 'the start'} does not show {missing[0]}")

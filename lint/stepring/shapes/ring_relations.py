@@ -126,7 +126,9 @@ def family_of(
 # --------------------------------------------------------------------------------------------------------- candidates
 
 
-def relations_of(ring: Ring, slots: Slots | None, family: Family, constants: frozenset[int]) -> Iterator[Relation]:
+def relations_of(
+    ring: Ring, slots: Slots | None, family: Family, constants: frozenset[int], pointer: int
+) -> Iterator[Relation]:
     """The candidates of a ring; ``constants`` are numbers of the program that its integers may stay below."""
     walkers = [index.key for index in ring.indices if index.form == "integer" and index.role != "count"]
     counts = [index.key for index in ring.indices if index.role == "count"]
@@ -145,7 +147,7 @@ def relations_of(ring: Ring, slots: Slots | None, family: Family, constants: fro
             if constant < 1 << (width - 2):
                 yield _order(family, f"{name} < {constant}", key, "<", None, constant)
     if slots is not None and slots.key is not None:
-        yield from _capacity(slots, family)
+        yield from _capacity(slots, family, pointer)
     if elements:
         return
     for place, one in enumerate(walkers):
@@ -156,7 +158,7 @@ def relations_of(ring: Ring, slots: Slots | None, family: Family, constants: fro
             yield _either_order(f"{short_text(count)} <= {short_text(key)}", count, key, "<=", width)
 
 
-def _capacity(slots: Slots, family: Family) -> Iterator[Relation]:
+def _capacity(slots: Slots, family: Family, pointer: int) -> Iterator[Relation]:
     width = family.width
     key = slots.key
     assert key is not None
@@ -170,6 +172,12 @@ def _capacity(slots: Slots, family: Family) -> Iterator[Relation]:
 
     yield Relation(f"{slots.text} > 0", (key,), some)
     yield Relation(f"{slots.text} is a power of two", (key,), power)
+    if family.types[key].width >= pointer:
+        # No object is larger than half of what can be addressed: pointers into it must have a difference.
+        most = (1 << (pointer - 1)) - 1
+        yield Relation(
+            f"{slots.text} <= PTRDIFF_MAX", (key,), lambda view: compared("<=", slots.number(view), most, width, True)
+        )
 
 
 def _pair(one: Key, other: Key, slots: Slots | None, counts: list[Key], family: Family) -> Iterator[Relation]:
