@@ -409,12 +409,31 @@ def _proofs(case: Case, origin: Callable[[Position], Origin]) -> Iterator[Proof]
         found = _access_proof(case, item, places.get(item.where, []), always)
         inside = inside and found.holds
         yield found
+    for item in _copies(case, origin, {where for where, _ in asked}):
+        found = _access_proof(case, item, places.get(item.where, []), always)
+        inside = inside and found.holds
+        yield found
     for index in ring.indices:
         yield _range_proof(case, index.name, index.key, index.role, index.where, always, inside)
     for index in ring.indices:
         for step in index.steps:
             if isinstance(step, CheckedStep) and index.role != "count":
                 yield _advance_proof(case, index.name, index.key, step, origin, always)
+
+
+def _copies(case: Case, origin: Callable[[Position], Origin], known: set[Origin]) -> Iterator[Access]:
+    """The accesses to the storage by whole ranges (``memcpy`` to its start) that no subscript shows."""
+    found: dict[Origin, Access] = {}
+    for body in case.induction.bodies if case.induction is not None else ():
+        for access in body.trace.accesses:
+            if access.bytes_ is None or access.also is None or not _is_storage(case, access):
+                continue
+            places = {origin(access.position), origin(access.also)}
+            if known.isdisjoint(places):
+                where = origin(access.also)
+                found.setdefault(where, Access(access.function, where, "", access.kind, None, None, "none", None))
+    for where in sorted(found):
+        yield found[where]
 
 
 def _context(case: Case) -> Iterator[str]:
