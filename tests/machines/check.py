@@ -27,7 +27,7 @@ from stepring_rules.machine_common import short
 ZERO = "0"
 OPTIONS = Options(use_compiler=False)
 _NEGATED = re.compile(r"!\([^()]*\)")
-_EVENT = re.compile(r"\bEV_[A-Z]+\b")
+_EVENT = re.compile(r"\bEV_[A-Z0-9_]+\b")
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,7 +78,7 @@ def compare(made: Made, folder: Path) -> Compared:
         graph, events = edge_faults(made, machines[0])
     return Compared(
         made.number,
-        made.form,
+        made.label,
         made.style.storage,
         made.style.family,
         len(made.table.states),

@@ -47,6 +47,13 @@ class Made:
     def name(self) -> str:
         return f"p{self.number:04}"
 
+    @property
+    def label(self) -> str:
+        """The form, told apart where one writer knows two."""
+        if self.form == "switch" and not self.style.chains:
+            return "state then event"
+        return "handlers in a table" if self.form == "next returned" and self.style.variant % 2 else self.form
+
     def after(self, state: str, event: str, inputs: Inputs) -> str:
         """What the program does."""
         if state == self.style.unhandled:
@@ -365,6 +372,17 @@ SLIPS: dict[str, tuple[Slip, tuple[str, ...], tuple[str, ...]]] = {
 }
 """Each slip with the rules that should speak of it and the forms that it is made in."""
 
+LABELS = (*FORMS, "state then event", "handlers in a table")
+"""All forms by their labels."""
+
+AS_WELL = {
+    # Where each event has its own switch, a state that knows no event is one that nothing handles.
+    **{("trap", form): ("SM02",) for form in BY_EVENT},
+    # Among plain numbers a state is what has a case.
+    ("unhandled state", "numbers"): ("SM05",),
+}
+"""Rules that see the same slip in a form or a family of constants."""
+
 REVIEWS = frozenset({"SM11", "SM12", "SM17", "SM18", "SM19", "SM20"})
 """Rules that cannot know the intent: a ``review`` of theirs counts as found."""
 
@@ -403,6 +421,7 @@ def _make(number: int, dice: random.Random) -> Made:
     if slip:
         slipped, rules, _ = SLIPS[slip]
         slipped(draft)
+        rules += AS_WELL.get((slip, form), AS_WELL.get((slip, style.family), ()))
     check_fit(draft)
     style = replace(draft.style, table=draft.table)
     text, lines = clean(FORMS[form](style))

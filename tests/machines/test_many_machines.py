@@ -6,57 +6,19 @@ run makes some dozen programs of each form; with ``STEPRING_MANY=1`` there are 2
 
 import os
 import re
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
-from typing import Any
 
 import pytest
 from tests.machines.check import Compared, compare_numbers
 from tests.machines.host import COMPILER, differences
-from tests.machines.programs import SLIPS, Made, make
+from tests.machines.programs import LABELS, SLIPS, Made, make
+from tests.machines.to_come import EVENTS_TO_COME, FORMS_TO_COME, SLIPS_TO_COME, STORAGES_TO_COME, params
 from tests.machines.written import FORMS
 
 MANY = bool(os.environ.get("STEPRING_MANY"))
 COUNT = 2000 if MANY else 152
-
-FORMS_TO_COME = {
-    "table": "a table of next states is no dispatch yet",
-    "rows": "a list of rows is no dispatch yet",
-    "function pointer": "a pointer to the handler is no state yet",
-    "goto": "labels are no states yet",
-    "next returned": "handlers called through a table, or from cases, are not followed to the stored state",
-}
-"""Forms that are not found yet, with the reason."""
-
-STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
-
-EVENTS_TO_COME = dict.fromkeys(
-    ["switch", "event then state", "next variable", "working copy", "setter"],
-    "where branches join again, and where the event is told before the state, the event is not told yet",
-)
-
-SLIPS_TO_COME = {
-    "break missing before default": "a fall into the default is not told yet",
-    "trap": "a state that knows no event has no case where there is a switch for each event",
-    **dict.fromkeys(
-        [
-            "transition overwritten",
-            "guard never holds",
-            "silent default",
-            "not committed",
-            "hole in a table",
-            "handler missing",
-            "= for ==",
-            "other enumeration",
-            "event dropped",
-            "zero is no state",
-            "dispatches differ",
-        ],
-        "the rule is not there yet",
-    ),
-}
-"""Slips that are not found yet in the forms and places that are."""
 
 
 @pytest.fixture(scope="module")
@@ -98,20 +60,14 @@ def test_a_program_that_does_something_else_is_noticed(form: str, made: list[Mad
     assert set(differences([replace(program, table=replace(table, cells=cells))], tmp_path)) == {program.number}
 
 
-def params(names: Iterable[str], to_come: Mapping[str, str]) -> list[Any]:
-    """Parameters for tests, those to come marked as failing with the reason."""
-    marks = {name: pytest.mark.xfail(reason=why, strict=True) for name, why in to_come.items()}
-    return [pytest.param(name, marks=marks.get(name, ())) for name in names]
-
-
-@pytest.mark.parametrize("form", params(FORMS, FORMS_TO_COME))
+@pytest.mark.parametrize("form", params(LABELS, FORMS_TO_COME))
 def test_the_graph_is_the_one_that_was_made(form: str, compared: list[Compared]) -> None:
     mine = [one for one in compared if one.form == form and one.storage not in STORAGES_TO_COME]
     wrong = [f"{one.number}: {one.graph}" for one in mine if one.graph]
     assert holds([not one.graph for one in mine], 0.99), wrong
 
 
-@pytest.mark.parametrize("form", params(FORMS, FORMS_TO_COME | EVENTS_TO_COME))
+@pytest.mark.parametrize("form", params(LABELS, FORMS_TO_COME | EVENTS_TO_COME))
 def test_each_transition_is_told_with_its_event(form: str, compared: list[Compared]) -> None:
     mine = [one for one in compared if one.form == form and one.storage not in STORAGES_TO_COME]
     wrong = [f"{one.number}: {one.graph or one.events}" for one in mine if one.graph or one.events]

@@ -71,7 +71,7 @@ def test_the_tap_is_its_table(tap: Machine) -> None:
 
 
 def test_figures_of_the_tap(tap: Machine) -> None:
-    graph = networkx.DiGraph(tap.graph())
+    graph: networkx.DiGraph[str] = networkx.DiGraph(tap.graph())
     assert sorted(networkx.nodes_with_selfloops(graph)) == sorted(
         f"TAP_{name}" for name in ("TEST_LOGIC_RESET", "RUN_TEST_IDLE", "SHIFT_DR", "SHIFT_IR", "PAUSE_DR", "PAUSE_IR")
     )
@@ -132,7 +132,7 @@ def test_figures_of_the_negotiation_automaton(lcp: Machine) -> None:
     assert len(pairs) == 46
     assert sum(source == target for source, target in pairs) == 10
     assert sum(step.source != step.target for step in lcp.transitions) == 53
-    graph = networkx.DiGraph(lcp.graph())
+    graph: networkx.DiGraph[str] = networkx.DiGraph(lcp.graph())
     assert networkx.number_strongly_connected_components(graph) == 1
     assert networkx.eccentricity(graph, "LCP_INITIAL") == 4
     assert networkx.diameter(graph) == 4

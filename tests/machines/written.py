@@ -37,7 +37,7 @@ class Style:
     uninitialised: bool = False
     extra: tuple[str, ...] = ()  # functions beside the machine's own
     declared: tuple[str, ...] = field(default=())  # declarations of what those use
-    header: str = ""
+    comment: tuple[str, ...] = ()  # what stands at the top
     event_word: str = "event"
 
     def s(self, state: str) -> str:
@@ -110,7 +110,9 @@ class Style:
 
 
 def clean(text: str) -> tuple[str, tuple[int, ...]]:
-    """A text without its marks, and the lines they stood on."""
+    """A text without its marks, and the lines they stood on; what is declared and not used goes."""
+    if text.count("fault_report") == 1:
+        text = text.replace("extern void fault_report(void);\n", "")
     lines = text.splitlines()
     return text.replace(MARK, ""), tuple(number for number, line in enumerate(lines, 1) if MARK in line)
 
@@ -128,7 +130,7 @@ def constants(style: Style, named: bool = True) -> list[str]:
     ``named`` False: the states are functions or labels, and have no constants.
     """
     table = style.table
-    lines = ["#include <stdbool.h>", "#include <stdint.h>", ""] if style.header == "" else [style.header, ""]
+    lines = [*style.comment, "#include <stdbool.h>", "#include <stdint.h>", ""]
     if not named:
         pass
     elif style.family == "enum":
@@ -158,11 +160,11 @@ def storage(style: Style) -> list[str]:
             return [f"static {style.type} {noun}_state{start};{MARK if style.uninitialised else ''}", ""]
         case "member" | "bit-field":
             bits = " : 6" if style.storage == "bit-field" else ""
-            lines = [f"struct {noun} {{", "    long grams;", f"    {style.type} state{bits};", "};", ""]
-            body = [f"{noun[0]}->grams = 0;", f"{noun[0]}->state = {start};"]
+            lines = [f"struct {noun} {{", "    long ticks;", f"    {style.type} state{bits};", "};", ""]
+            body = [f"{noun[0]}->ticks = 0;", f"{noun[0]}->state = {start};"]
             return [*lines, *function(f"void {noun}_init(struct {noun} *{noun[0]})", body)]
         case "object member":
-            lines = ["static struct {", "    long grams;", f"    {style.type} state;"]
+            lines = ["static struct {", "    long ticks;", f"    {style.type} state;"]
             return [*lines, f"}} {noun} = {{ .state = {start} }};", ""]
         case "pointer":
             return []
@@ -525,7 +527,7 @@ def pointer(style: Style) -> str:
     lines += [f"static void {handler(style, state)}({takes});" for state in of.states]
     start = handler(style, of.initial)
     if field_:
-        lines += ["", f"struct {noun} {{", "    long grams;", f"    void (*handle)({takes});", "};", ""]
+        lines += ["", f"struct {noun} {{", "    long ticks;", f"    void (*handle)({takes});", "};", ""]
         lines += function(f"void {noun}_init(struct {noun} *{noun[0]})", [f"{lvalue} = {start};"])
     else:
         lines += ["", f"static void (*{noun}_handle)({takes}) = {start};", ""]
