@@ -2,9 +2,10 @@
 
 For each compile database, in one run: (a) the whole inspection with one job and no cache, from the command's inputs to
 the log's bytes; (b) parsing the same units, preprocessed and turned into ISO C by the same code, one by one with
-pycparser and nothing else. The ratio (a)/(b) below 1 means that an inspection costs less than parsing every unit. Then
-the share of each stage in (a), and how the time grows: all units against the mean of two halves (every second
-unit), of which they should take at most twice the time.
+pycparser and nothing else; (c) the inspection without runs and proofs (``--no-proofs``). The ratio (a)/(b) below 1
+means that an inspection costs less than parsing every unit; (a)/(c) is what evidence costs. Then the share of each
+stage in (a), and how the time grows: all units against the mean of two halves (every second unit), of which they
+should take at most twice the time.
 
 All times are CPU seconds of the process and of the programs it runs (compilers as preprocessors), because other work on
 the machine lengthens the clock's. Each measurement has a process of its own, so that none finds what another kept.
@@ -22,7 +23,7 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
-STAGES = ("gather", "preprocess", "read", "meaning", "machines", "rings", "rules", "report", "other")
+STAGES = ("gather", "preprocess", "read", "meaning", "machines", "rings", "runs", "proofs", "rules", "report", "other")
 
 
 def cpu() -> float:
@@ -69,12 +70,13 @@ class Clock:
         return sum(self.seconds.values())
 
 
-def inspect(database: Path) -> dict[str, Any]:
+def inspect(database: Path, proofs: bool = True) -> dict[str, Any]:
     """(a): the whole inspection, with its stages."""
     from stepring import pipeline
     from stepring.read.reader import Reader
     from stepring.report.sarif import sarif_log
     from stepring.report.serialise import to_bytes
+    from stepring.shapes import ring_evidence
 
     clock = Clock()
     clock.watch(pipeline, "gather", "gather")
@@ -85,8 +87,10 @@ def inspect(database: Path) -> dict[str, Any]:
     clock.watch(pipeline, "find_machines", "machines")
     clock.watch(pipeline, "ring_functions", "rings")
     clock.watch(pipeline, "merge_rings", "rings")
+    clock.watch(ring_evidence, "with_runs", "runs")
+    clock.watch(ring_evidence, "prove_rings", "proofs")
     clock.watch(pipeline, "judge", "rules")
-    outcome = pipeline.inspect([], pipeline.Options(compile_commands=database, jobs=1))
+    outcome = pipeline.inspect([], pipeline.Options(compile_commands=database, jobs=1, proofs=proofs))
     with clock.stage("report"):
         size = len(to_bytes(sarif_log(outcome, ("fail",), 0)))
     return {
@@ -98,6 +102,11 @@ def inspect(database: Path) -> dict[str, Any]:
         "rings": len(outcome.program.rings),
         "log": size,
     }
+
+
+def inspect_without(database: Path) -> dict[str, Any]:
+    """(c): the inspection without runs and proofs."""
+    return inspect(database, proofs=False)
 
 
 def parse(database: Path) -> dict[str, Any]:
@@ -152,6 +161,7 @@ def half_of(database: Path, folder: Path, first: int) -> Path:
 def compare(database: Path) -> None:
     """Measure one database and print it."""
     whole = measured("inspect", database)
+    without = measured("without", database)
     plain = measured("parse", database)
     with tempfile.TemporaryDirectory() as folder:
         halves = [measured("inspect", half_of(database, Path(folder), first)) for first in (0, 1)]
@@ -163,6 +173,8 @@ def compare(database: Path) -> None:
     print(f"  (b) plain parsing         {plain['seconds']:8.2f} s CPU  ", end="")
     print(f"({plain['characters'] / 1e6:.1f} MB in {plain['units']} units, {plain['refused']} not parsed)")
     print(f"  ratio (a)/(b)             {whole['seconds'] / plain['seconds']:8.2f}")
+    print(f"  (c) without evidence      {without['seconds']:8.2f} s CPU")
+    print(f"  ratio (a)/(c)             {whole['seconds'] / without['seconds']:8.2f}")
     spent = plain["spent"]
     together = sum(spent.values())
     print(f"  (b) with preprocessing    {together:8.2f} s CPU  (ratio {whole['seconds'] / together:.2f})")
@@ -177,10 +189,12 @@ def compare(database: Path) -> None:
 def main() -> None:
     reader = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     reader.add_argument("databases", nargs="+", type=Path, metavar="DATABASE")
-    reader.add_argument("--only", choices=["inspect", "parse"], help=argparse.SUPPRESS)
+    reader.add_argument("--only", choices=["inspect", "without", "parse"], help=argparse.SUPPRESS)
     given = reader.parse_args()
     if given.only is not None:
-        print(json.dumps({"inspect": inspect, "parse": parse}[given.only](given.databases[0])))
+        print(
+            json.dumps({"inspect": inspect, "without": inspect_without, "parse": parse}[given.only](given.databases[0]))
+        )
         return
     for database in given.databases:
         if not database.is_file():
