@@ -148,4 +148,4 @@ def can_hold(
     found = solver.check(z3.Or(*wanted))
     if found == z3.unsat:
         return "no"
-    return "yes" if found == z3.sat and trace.terms.unknowns == 0 else "unknown"
+    return "yes" if found == z3.sat and all(item.guesses == 0 for item in here) else "unknown"

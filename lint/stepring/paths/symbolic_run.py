@@ -594,7 +594,9 @@ def _ends(engine: Engine, frame: Frame, state: State, block: int) -> Iterator[tu
             yield state, target, None
         case Branch(condition=condition, then=then, otherwise=otherwise):
             holds = truth(engine, state, frame, condition)
-            engine.trace.branches.append(Branching(frame.function.identity, block, state.copy(), holds))
+            engine.trace.branches.append(
+                Branching(frame.function.identity, block, state.copy(), holds, engine.terms.unknowns)
+            )
             for way, target in ((holds, then), (negated(holds), otherwise)):
                 if way is not False:
                     yield _with(state, way), target, None

@@ -118,12 +118,13 @@ class Store:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Branching:
-    """A condition where it stands, with the state there."""
+    """A condition where it stands, with the state there; ``guesses`` counts what was not settled on the way."""
 
     function: str
     block: int
     state: State
     holds: object
+    guesses: int
 
 
 @dataclass(slots=True, eq=False)
