@@ -167,12 +167,17 @@ def inspect(fail_level: str | None, **given: Any) -> int:
 @commands.command()
 @_reading_options
 @_fail_level_option("the default is none")
-def inventory(fail_level: str | None, **given: Any) -> int:
+@click.option(
+    "--html", metavar="FILE", type=click.Path(path_type=Path), help="Write one page with tables and drawings."
+)
+@click.option("--markdown", metavar="FILE", type=click.Path(path_type=Path), help="Write the tables as Markdown.")
+def inventory(fail_level: str | None, html: Path | None, markdown: Path | None, **given: Any) -> int:
     """List the state machines and rings of the C below each PATH, with their tables.
 
     Without PATH the current folder is inspected.
     """
-    return _run(fail_level or "none", print_report_kind=_write_inventory, **given)
+    pages = tuple((kind, target) for kind, target in (("html", html), ("markdown", markdown)) if target is not None)
+    return _run(fail_level or "none", print_report_kind=_write_inventory, pages=pages, **given)
 
 
 @commands.command()
@@ -284,6 +289,7 @@ def _run(
     no_proofs: bool,
     query_limit: int | None,
     time_limit: float | None,
+    pages: Sequence[tuple[str, Path]] = (),
 ) -> int:
     # Imported here: the engines take a while to load, and the other commands need none of them.
     from stepring import pipeline
@@ -301,8 +307,10 @@ def _run(
     with _progress() as progress:
         outcome = pipeline.inspect(paths, options, progress)
     code = exit_code(outcome, fail_level or outcome.fail_level or DEFAULT_FAIL_LEVEL)
-    trouble = None if sarif is None else _write_sarif(outcome, sarif, kinds, code)
-    notices = outcome.notices if trouble is None else (*outcome.notices, trouble)
+    troubles = [] if sarif is None else [_write_sarif(outcome, sarif, kinds, code)]
+    troubles += [_write_page(outcome, kind, target) for kind, target in pages]
+    trouble = next((one for one in troubles if one is not None), None)
+    notices = (*outcome.notices, *(one for one in troubles if one is not None))
     for sentence in notice_sentences(notices):
         click.echo(f"stepring: {sentence}", err=True)
     form = report or ("none" if sarif == "-" else "full")
@@ -338,6 +346,21 @@ def _write_sarif(outcome: Outcome, target: str, kinds: Sequence[str], code: int)
     except (OSError, ValueError) as error:
         why = getattr(error, "strerror", None) or str(error)
         return Notice("unwritable", "error", f"The SARIF log could not be written to {target}: {why}")
+    return None
+
+
+def _write_page(outcome: Outcome, kind: str, target: Path) -> Notice | None:
+    """Write the inventory as a page, whole or not at all."""
+    # Imported here: layout and templates take a while to load.
+    from stepring.report.inventory_markdown import inventory_markdown
+    from stepring.report.page import inventory_page
+
+    make = {"html": inventory_page, "markdown": inventory_markdown}[kind]
+    try:
+        write_whole(target, make(outcome, target).encode("utf-8"))
+    except (OSError, ValueError) as error:
+        why = getattr(error, "strerror", None) or str(error)
+        return Notice("unwritable", "error", f"The inventory could not be written to {target}: {why}")
     return None
 
 
