@@ -85,12 +85,13 @@ def unexplained(program: Program, static: Iterable[Obligation], words: Words) ->
     for ring in program.rings:
         if ring.identity in explained:
             continue
-        said: set[tuple[str, str]] = set()
+        # What one line does wrong shows in several ways; the first is of the shortest run.
+        said: set[tuple[str, int, str]] = set()
         for one in ring.disagreements:
-            mark = (one.doubt, one.function)
-            if one.doubt in words.doubts and mark not in said:
-                said.add(mark)
+            mark = (one.where.file, one.where.line, one.function)
+            if mark not in said and one.doubt in words.doubts:
                 yield finding(ring, one, words)
+            said.add(mark)
 
 
 def finding(ring: Ring, one: Disagreement, words: Words) -> Obligation:

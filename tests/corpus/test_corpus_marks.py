@@ -9,6 +9,7 @@ import json
 import shutil
 import subprocess
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -16,7 +17,7 @@ from tests.marks import CORPUS, DATA, failures, marks
 
 from stepring.pipeline import Options, inspect
 from stepring.report.types import Outcome
-from stepring.rule import load_rules
+from stepring.rule import Obligation, load_rules
 
 FILES = sorted(path for path in CORPUS.glob("*/*.c") if path.stem in ("wrong", "right"))
 SLOTS = sorted((DATA / "four_slots").glob("*.c"))
@@ -82,11 +83,16 @@ def test_four_slots(path: Path, use_compiler: bool) -> None:
     assert bool(marks([path])) == path.stem.startswith("slip_")
 
 
+def _of_any_model(item: Obligation) -> Obligation:
+    """The compiler says what its data model is; without one the usual model is taken."""
+    return item if item.evidence is None else replace(item, evidence=replace(item.evidence, model=""))
+
+
 @pytest.mark.skipif(shutil.which("cc") is None, reason="this machine has no C compiler named cc")
 @pytest.mark.parametrize("name", FIRMWARES)
 def test_both_preprocessors_lead_to_the_same_obligations(name: str) -> None:
     one, other = (outcome_of(CORPUS / name, use_compiler) for use_compiler in (False, True))
-    assert one.obligations == other.obligations
+    assert [_of_any_model(item) for item in one.obligations] == [_of_any_model(item) for item in other.obligations]
     assert one.coverage == other.coverage
     assert [machine.transitions for machine in one.program.machines] == [
         machine.transitions for machine in other.program.machines

@@ -210,7 +210,7 @@ def about_storage(world: World, effect: Effect) -> bool:
     outcome = effect.outcome
     if outcome.kind != "undefined" or outcome.fault not in ("bounds", "pointer"):
         return False
-    if re.search(rf"\bof ({GIVEN}|{TAKEN}|thing_\d+)\b", outcome.reason):
+    if re.search(rf"\bof ({GIVEN}|{TAKEN}|(?:thing|told)_\d+)\b", outcome.reason):
         return False
     short = re.split(r"[.\[]", world.ring.storage.replace("[]", ""))[-1]
     if re.search(rf"\b{re.escape(short)}\b|\bof {STORAGE}\b", outcome.reason):

@@ -300,7 +300,33 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, tak
         every, nothing = left(len(held))
         if every.returned and every.before != every.after and nothing == 0:
             return Use(operation, "drop", way, numbered=True, checked=one.asserted)
+        return _spoilt_drop(probe, operation, way, state, held, take)
+    return None
+
+
+def _spoilt_drop(probe: Probe, operation: Operation, way: Way, state: Any, held: Content, take: Use) -> Use | None:
+    """What is to drop elements and does something else: it moves what a take moves, and never more than there is.
+
+    It does nothing on the empty ring, and asked for one more than there is it does as for all there is. What takes
+    elements back does something only where elements were taken.
+    """
+    world = probe.world
+    probe.back()
+    if not call(world, operation, way, probe.purse, number=1).refused:
         return None
+    world.load(state)
+    taken = perform(world, take, probe.purse)
+    moved = [old != new for old, new in zip(taken.before, taken.after, strict=True)]
+    ends: list[Effect] = []
+    for number in (1, len(held), len(held) + 1):
+        world.load(state)
+        effect = call(world, operation, way, probe.purse, number=number)
+        mine = [old != new for old, new in zip(effect.before, effect.after, strict=True)]
+        if not effect.returned or effect.stored or (number <= len(held) and mine != moved):
+            return None
+        ends.append(effect)
+    if ends[2].refused or ends[1].after == ends[2].after:
+        return Use(operation, "drop", way, numbered=True, checked=True)
     return None
 
 
@@ -392,6 +418,8 @@ def _made_of(
                         keys = _keys_in(value, made_of) & indices
                     case Call(callee=FunctionName(name=name), result=VariablePlace(variable=variable)):
                         keys = frozenset(_told_by(group, name, indices, depth))
+                        for given in statement.arguments:
+                            keys |= _keys_in(given, made_of) & indices
                     case _:
                         continue
                 made_of[variable.identity] = made_of.get(variable.identity, frozenset()) | keys

@@ -293,7 +293,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     made.append(Made(GIVEN, data.type, len(tokens) * data.parts))
     made.append(Made(TAKEN, data.type, (2 * slots + 4) * data.parts))
     start.extend(_given(tokens, data))
-    operations = tuple(_operations(group, ring, functions, root, made, struct))
+    operations = tuple(_operations(group, ring, functions, root, made, struct, element))
     base = Witness(
         group.program.model.name,
         tuple(made),
@@ -539,6 +539,7 @@ def _operations(
     root: _Root | None,
     made: list[Made],
     struct: StructType | None,
+    element: int,
 ) -> Iterator[Operation]:
     entered = set(ring.functions)
     needed = {key[1] for key in _keys(ring) if key and key[0] == "member"}
@@ -547,6 +548,7 @@ def _operations(
             continue
         parameters = _parameters(group, function, root, made, ring.bound, struct, needed)
         if parameters is not None:
+            parameters = tuple(_lengths(tuple(_one_buffer(parameters, element, made))))
             yield Operation(function, parameters, function.identity not in entered)
 
 
@@ -590,7 +592,27 @@ def _parameters(
             found.append(Parameter("thing", type_, known or thing, name))
         else:
             found.append(Parameter("null", type_, name=name))
-    return tuple(_lengths(found))
+    return tuple(found)
+
+
+def _one_buffer(found: Sequence[Parameter], element: int, made: list[Made]) -> Iterator[Parameter]:
+    """Of several pointers to numbers one is the buffer of elements; a count comes back through the others."""
+
+    def fits(item: Parameter) -> int:
+        to = item.type.to if isinstance(item.type, PointerType) else VoidType()
+        if isinstance(to, IntType):
+            return 2 if to.width == 8 * element else 0
+        return 1 if isinstance(to, VoidType) else 3 if isinstance(to, StructType) else 0
+
+    buffer = max((item for item in found if item.role == "buffer"), key=fits, default=None)
+    for item in found:
+        to = item.type.to if isinstance(item.type, PointerType) else None
+        if item.role != "buffer" or item is buffer or not isinstance(to, IntType):
+            yield item
+            continue
+        name = f"told_{len(made)}"
+        made.append(Made(name, to.name, 1))
+        yield Parameter("thing", item.type, name, item.name)
 
 
 def _lengths(found: Sequence[Parameter]) -> Iterator[Parameter]:
