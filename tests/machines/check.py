@@ -18,6 +18,7 @@ from pathlib import Path
 from tests.machines.host import differences
 from tests.machines.programs import REVIEWS, Made, make
 from tests.machines.tables import Edge
+from tests.machines.written import event_function
 
 from stepring.pipeline import Options, inspect
 from stepring.rule import Obligation, load_rules
@@ -110,7 +111,7 @@ def _names(made: Made, machine: Machine) -> dict[str, str]:
     if made.slip == "zero is no state":
         values[0] = ZERO
     if made.slip == "other enumeration":
-        values[55] = ZERO  # what it is compared with
+        values[61] = ZERO  # what it is compared with
     return {one.name: values.get(one.value, "") for one in machine.states}
 
 
@@ -142,16 +143,19 @@ def edge_faults(made: Made, machine: Machine) -> tuple[str, str]:
     for step in machine.transitions:
         if names[step.source] == ZERO:
             continue
-        edge = (names[step.source], event_of(made, step), names[step.target])
+        source, target = names[step.source], names[step.target]
         said = f"{step.source} to {step.target} ({step.function}, {step.guard!r})"
-        if (edge[0], edge[2]) not in possible:
+        if (source, target) not in possible:
             return f"{said} is no transition", ""
-        told.add(edge)
-        whole = all((edge[0], event, edge[2]) in known for event in made.table.events)
-        if not {edge, (edge[0], "*", edge[2])} & known and not (edge[1] == "*" and whole):
-            events = events or f"{said} is not taken by {edge[1]}"
-        elif short(step.function) not in made.functions(edge) and not {edge, (edge[0], "*", edge[2])} & loose:
-            return f"{said} is not taken by that function", ""
+        whole = all((source, event, target) in known for event in made.table.events)
+        for event in events_of(made, step):
+            edge = (source, event, target)
+            told.add(edge)
+            free = {edge, (source, "*", target)}
+            if not free & known and not (event == "*" and whole):
+                events = events or f"{said} is not taken by {event}"
+            elif short(step.function) not in made.functions(edge) and not free & loose:
+                return f"{said} is not taken by that function", ""
     if missing := pairs - {(source, target) for source, _, target in told}:
         return f"{' to '.join(min(missing))} is missing", ""
     for edge in sorted(wanted - loose - told):
@@ -160,18 +164,17 @@ def edge_faults(made: Made, machine: Machine) -> tuple[str, str]:
     return "", events
 
 
-def event_of(made: Made, step: Transition) -> str:
-    """The event that a transition is told to be taken by; ``*`` for any."""
+def events_of(made: Made, step: Transition) -> set[str]:
+    """The events that a transition is told to be taken by; ``*`` for any."""
     if made.form == "event functions":
         function = short(step.function)
         for event in made.table.events:
-            if function == f"{made.table.noun}_{event.removeprefix('EV_').lower()}":
-                return event
+            if function == event_function(made.style, event):
+                return {event}
     for text in (step.event, _NEGATED.sub("", step.guard)):
-        found = _EVENT.findall(text)
-        if len(set(found)) == 1:
-            return str(found[0])
-    return "*"
+        if found := set(_EVENT.findall(text)):
+            return found
+    return {"*"}
 
 
 def compare_numbers(numbers: Sequence[int], folder: Path) -> list[Compared]:

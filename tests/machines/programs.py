@@ -18,7 +18,7 @@ ASSIGNING = (*SWITCHES, *BY_EVENT, "if-chain")
 VALUED = (*ASSIGNING, "table", "rows", "next returned")
 STORAGES: tuple[Storage, ...] = ("static", "member", "object member", "pointer", "element", "bit-field")
 COUNTS = (3, 4, 5, 6, 7, 8, 9, 10, 12, 15, 20, 28, 40)
-PUMP = ("enum pump_state { PUMP_SHUT = 54, PUMP_RUNNING, PUMP_JAMMED };", "extern enum pump_state pump_state(void);")
+PUMP = ("enum pump_state { PUMP_SHUT = 60, PUMP_RUNNING, PUMP_JAMMED };", "extern enum pump_state pump_state(void);")
 
 
 @dataclass(frozen=True, slots=True)
@@ -150,7 +150,7 @@ class Draft:
 
     def beside(self, head: str, *body: str) -> None:
         """Add a function beside the machine's own."""
-        self.style = replace(self.style, extra=("", f"{head}({self.style.owner or 'void'})", "{", *body, "}"))
+        self.style = replace(self.style, extra=(f"{head}({self.style.owner or 'void'})", "{", *body, "}"))
 
 
 def graph(edges: set[Edge]) -> "networkx.DiGraph[str]":
@@ -241,8 +241,8 @@ def no_state(draft: Draft) -> None:
     """A stored value that is no state: a plain number, or another enumeration's constant."""
     cell = draft.moving()
     value, name = max(draft.table.states.values()) + draft.dice.randint(1, 3), ""
-    if draft.dice.random() < 0.5 and value < 54:
-        value, name = 56, "PUMP_JAMMED"
+    if draft.dice.random() < 0.5 and value < 60:
+        value, name = 62, "PUMP_JAMMED"
         draft.style = replace(draft.style, declared=PUMP)
     name = f"#{name or value}"
     step, *rest = draft.table.cells[cell]
@@ -377,7 +377,7 @@ LABELS = (*FORMS, "state then event", "handlers in a table")
 
 AS_WELL = {
     # Where each event has its own switch, a state that knows no event is one that nothing handles.
-    **{("trap", form): ("SM02",) for form in BY_EVENT},
+    **{("trap", form): ("SM02", "SM05") for form in BY_EVENT},
     # Among plain numbers a state is what has a case.
     ("unhandled state", "numbers"): ("SM05",),
 }

@@ -9,7 +9,7 @@ from pathlib import Path
 
 import networkx
 import pytest
-from tests.machines.check import edge_faults, event_of, state_fault
+from tests.machines.check import edge_faults, events_of, state_fault
 from tests.machines.host import COMPILER, differences
 from tests.machines.programs import Made
 from tests.machines.standards import MACHINES, STYLES, published
@@ -84,7 +84,7 @@ def test_the_graph_is_the_table(name: str, form: str, seen: Seen) -> None:
 def test_each_cell_of_the_table_is_a_transition(name: str, form: str, seen: Seen) -> None:
     made, machine = the_machine(seen, name, form)
     assert edge_faults(made, machine) == ("", "")
-    told = {(step.source, event_of(made, step), step.target) for step in machine.transitions}
+    told = {(step.source, event, step.target) for step in machine.transitions for event in events_of(made, step)}
     cells = {(made.spelled(source), event, made.spelled(target)) for source, event, target in made.table.edges()}
     if made.form == "next returned":
         told, cells = ({one for one in found if one[0] != one[2]} for found in (told, cells))
@@ -108,7 +108,7 @@ def test_figures_of_the_tap(form: str, seen: Seen) -> None:
 def test_five_clocks_with_tms_high_reset_the_tap_and_no_shorter_word_does(form: str, seen: Seen) -> None:
     made, machine = the_machine(seen, "tap", form)
     # Where a handler gives its own state back without a test of TMS, that is the step of the value not tested.
-    step = {(one.source, event_of(made, one)): one.target for one in machine.transitions}
+    step = {(one.source, event): one.target for one in machine.transitions for event in events_of(made, one)}
 
     def after(state: str, event: str) -> str:
         return step.get((state, event)) or step[state, "*"]
