@@ -15,7 +15,8 @@ from stepring.paths.devices import Devices
 from stepring.paths.interpreter import run
 from stepring.paths.types import Event, Outcome, Unsettled
 from stepring.paths.witness import OutsideValue, Reference, WitnessCall
-from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Operation, World, arguments
+from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN, Operation, arguments
+from stepring.shapes.ring_world import World
 
 Policy: TypeAlias = Literal["zero", "one", "once", "token", "token once"]
 """What the outside gives in one call: always 0; always 1; 1 and then 0; the element; the element and then 0."""

@@ -14,6 +14,7 @@ from stepring.meaning.types import IntType
 from stepring.paths.witness import Ending, StartValue
 from stepring.shapes.ring_calls import Effect, about_storage, below, call
 from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
+from stepring.shapes.ring_parameters import GIVEN, TAKEN
 from stepring.shapes.ring_report import (
     Search,
     State,
@@ -35,7 +36,6 @@ from stepring.shapes.ring_uses import (
     drained,
     perform,
 )
-from stepring.shapes.ring_world import GIVEN, TAKEN
 
 NEAR_END = 3
 

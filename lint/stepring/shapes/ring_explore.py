@@ -17,12 +17,13 @@ from stepring.shapes.ring_alone import alone
 from stepring.shapes.ring_calls import Purse
 from stepring.shapes.ring_classify import classify
 from stepring.shapes.ring_compare import near_overflow, search_states
+from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN
 from stepring.shapes.ring_report import Placer, Search, State
 from stepring.shapes.ring_types import Disagreement
 from stepring.shapes.ring_uses import (
     Probe,
 )
-from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, Group, World, group_of, world_of
+from stepring.shapes.ring_world import Group, World, group_of, world_of
 from stepring.shapes.types import Ring
 
 BUDGET = 1_200_000

@@ -15,13 +15,14 @@ from stepring.paths.witness import Ending, Reference, Value, Witness, WitnessCal
 from stepring.places import Origin, Position
 from stepring.shapes.ring_calls import Effect
 from stepring.shapes.ring_ideal import Content
+from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN
 from stepring.shapes.ring_types import Disagreement, Doubt
 from stepring.shapes.ring_uses import (
     Probe,
     Use,
     perform,
 )
-from stepring.shapes.ring_world import GIVEN, STORAGE, TAKEN, World
+from stepring.shapes.ring_world import World
 from stepring.shapes.types import OrbitStep
 
 SHOWN = 12

@@ -29,7 +29,8 @@ from stepring.places import Position
 from stepring.shapes.ring_calls import Effect, Policy, Purse, Way, call
 from stepring.shapes.ring_ideal import Content, Design, design_of, room_of
 from stepring.shapes.ring_keys import place_keys
-from stepring.shapes.ring_world import Group, Operation, World, called
+from stepring.shapes.ring_parameters import Operation
+from stepring.shapes.ring_world import Group, World, called
 
 Kind: TypeAlias = Literal["put", "take", "look", "drop", "clear", "tell"]
 PLAIN = Way()

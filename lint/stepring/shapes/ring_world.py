@@ -6,21 +6,17 @@ capacity and buffer are start values (or what the ring's own function for settin
 again stands in the same world.
 """
 
-import re
 from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Any, Literal, TypeAlias
+from typing import Any
 
-from stepring.meaning.scope import size_of
 from stepring.meaning.types import (
     ArrayType,
     Call,
     CType,
-    FloatType,
     Function,
     FunctionName,
-    FunctionType,
     IntType,
     PointerType,
     StructLayout,
@@ -36,46 +32,21 @@ from stepring.paths.types import Undefined, Unsettled
 from stepring.paths.witness import Ending, Made, Reference, StartValue, Value, Witness
 from stepring.places import Origin
 from stepring.shapes.ring_keys import inner_structs
-from stepring.shapes.types import Bound, Ring
+from stepring.shapes.ring_parameters import (
+    GIVEN,
+    RING,
+    STORAGE,
+    TAKEN,
+    THING_BYTES,
+    Operation,
+    Root,
+    keys_of,
+    operations_of,
+    path_to,
+)
+from stepring.shapes.types import Ring
 
 NOWHERE = Ending("endless", Origin("", 1, 1, 1))
-RING, STORAGE, GIVEN, TAKEN = "ring", "storage", "given", "taken"
-MOST_BLOCKS = 150
-"""Functions with more blocks than this do more than work on a ring, and are not run."""
-THING_BYTES = 1 << 16
-"""The size of the largest structure that is made only to give a function something to point to."""
-_LENGTH = re.compile(r"len|^n$|^n[a-z]?_|num|size|count|cnt|bytes|bt[rwp]$|amount|items|max|^nb|^l$|^sz$")
-
-Role: TypeAlias = Literal["ring", "bound", "length", "value", "buffer", "thing", "null", "other"]
-
-
-@dataclass(frozen=True, slots=True)
-class Parameter:
-    """What a parameter of a ring's function is for.
-
-    ``ring``: a pointer to (a part of) the ring's object at ``path``. ``buffer``: a pointer to ``type``s. ``length``: a
-    number beside a buffer. ``value``: the only number. ``other``: a further number. ``thing``: a pointer to another
-    structure. ``bound``: the capacity.
-    """
-
-    role: Role
-    type: CType
-    path: str = ""
-    name: str = ""
-    to: str = ""
-
-
-@dataclass(frozen=True, slots=True)
-class Operation:
-    """A function of the ring with its parameters; ``helper``: only other functions of the program call it."""
-
-    function: Function
-    parameters: tuple[Parameter, ...]
-    helper: bool
-
-    def has(self, role: Role) -> bool:
-        """Whether some parameter has that role."""
-        return any(item.role == role for item in self.parameters)
 
 
 @dataclass(slots=True, eq=False)
@@ -238,20 +209,11 @@ def called(group: Group, identity: str) -> frozenset[str]:
 # ----------------------------------------------------------------------------------------------------------- the object
 
 
-@dataclass(frozen=True, slots=True)
-class _Root:
-    """The object that holds the ring: a made structure, or one of the program's own."""
-
-    name: str
-    type: CType
-    made: str
-
-
 def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     """The ring with that many slots, None where its object cannot be made or its indices cannot be read."""
     functions = [group.functions[name] for name in (*ring.functions, *ring.helpers) if name in group.functions]
-    needed = {key[1] for key in _keys(ring) if key and key[0] == "member"}
-    root: _Root | None = None
+    needed = {key[1] for key in keys_of(ring) if key and key[0] == "member"}
+    root: Root | None = None
     if needed:
         root = _root(group, functions, needed, set(ring.functions))
         if root is None:
@@ -293,7 +255,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     made.append(Made(GIVEN, data.type, len(tokens) * data.parts))
     made.append(Made(TAKEN, data.type, (2 * slots + 4) * data.parts))
     start.extend(_given(tokens, data))
-    operations = tuple(_operations(group, ring, functions, root, made, struct, element))
+    operations = tuple(operations_of(group.structs, ring, functions, root, made, struct, element))
     base = Witness(
         group.program.model.name,
         tuple(made),
@@ -349,12 +311,7 @@ def _bind(world: World, place: tuple[str, str] | None, pointed: bool) -> None:
     world.kept = [memory.cells[number] for number in sorted(numbers)]
 
 
-def _keys(ring: Ring) -> Iterator[tuple[str, ...]]:
-    yield ring.storage_key
-    yield from (index.key for index in ring.indices)
-
-
-def _root(group: Group, functions: Sequence[Function], needed: set[str], entered: set[str]) -> _Root | None:
+def _root(group: Group, functions: Sequence[Function], needed: set[str], entered: set[str]) -> Root | None:
     """The object that holds all the structures that are needed."""
     holders: Counter[str] = Counter()
     statics: Counter[str] = Counter()
@@ -383,10 +340,10 @@ def _root(group: Group, functions: Sequence[Function], needed: set[str], entered
         layout = group.structs.get(best)
         if layout is None or layout.size is None or layout.size > THING_BYTES:
             return None
-        return _Root(RING, StructType(best, layout.union), best)
+        return Root(RING, StructType(best, layout.union), best)
     if statics:
         best = min(statics, key=lambda name: (-statics[name], name))
-        return _Root(best, known[best].type, "")
+        return Root(best, known[best].type, "")
     return None
 
 
@@ -394,7 +351,7 @@ def _struct_of(type_: CType) -> str | None:
     return type_.to.identity if isinstance(type_, PointerType) and isinstance(type_.to, StructType) else None
 
 
-def _place_of(group: Group, key: tuple[str, ...], root: _Root | None) -> tuple[str, str] | None:
+def _place_of(group: Group, key: tuple[str, ...], root: Root | None) -> tuple[str, str] | None:
     """The object and path of what a key names."""
     if not key:
         return None
@@ -411,40 +368,19 @@ def _place_of(group: Group, key: tuple[str, ...], root: _Root | None) -> tuple[s
     return root.name, f"{inner}.{key[2]}{rest_path}"
 
 
-def path_to(structs: Mapping[str, StructLayout], type_: CType, struct: str) -> str | None:
-    """The path from an object of a type to the first structure of that identity in it."""
-    pending: list[tuple[str, CType]] = [("", type_)]
-    while pending:
-        path, at = pending.pop(0)
-        while isinstance(at, ArrayType):
-            path, at = path + "[0]", at.element
-        if isinstance(at, StructType):
-            if at.identity == struct:
-                return path
-            layout = structs.get(at.identity)
-            for member in layout.fields if layout is not None else ():
-                if member.name:
-                    pending.append((f"{path}.{member.name}", member.type))
-                elif isinstance(member.type, StructType):
-                    pending.append((path, member.type))
-    return None
-
-
-def _type_at(group: Group, place: tuple[str, str], root: _Root | None) -> CType:
+def _type_at(group: Group, place: tuple[str, str], root: Root | None) -> CType:
     made = (Made(RING, root.made, 1),) if root is not None and root.made else ()
     memory = prepared(group.program, Witness(group.program.model.name, made, (), (), NOWHERE))
     return memory.type_at("".join(place))
 
 
-def _pointed_type(group: Group, place: tuple[str, str], root: _Root | None) -> CType:
+def _pointed_type(group: Group, place: tuple[str, str], root: Root | None) -> CType:
     """What a pointer at a place points to."""
     type_ = _type_at(group, place, root)
     return type_.to if isinstance(type_, PointerType) else VoidType()
 
 
-def _element_struct(
-    group: Group, place: tuple[str, str] | None, root: _Root | None, pointed: bool
-) -> StructType | None:
+def _element_struct(group: Group, place: tuple[str, str] | None, root: Root | None, pointed: bool) -> StructType | None:
     """The structure that the ring's elements are, if they are one."""
     if place is None:
         return None
@@ -527,128 +463,3 @@ def _given(tokens: Sequence[int], data: Data) -> Iterator[StartValue]:
             continue
         for byte in range(data.width):
             yield StartValue(GIVEN, f"[{number * data.parts + byte}]", token >> 8 * byte & 0xFF)
-
-
-# ----------------------------------------------------------------------------------------------------------- parameters
-
-
-def _operations(
-    group: Group,
-    ring: Ring,
-    functions: Sequence[Function],
-    root: _Root | None,
-    made: list[Made],
-    struct: StructType | None,
-    element: int,
-) -> Iterator[Operation]:
-    entered = set(ring.functions)
-    needed = {key[1] for key in _keys(ring) if key and key[0] == "member"}
-    for function in functions:
-        if len(function.blocks) > MOST_BLOCKS:
-            continue
-        parameters = _parameters(group, function, root, made, ring.bound, struct, needed)
-        if parameters is not None:
-            parameters = tuple(_lengths(tuple(_one_buffer(parameters, element, made))))
-            yield Operation(function, parameters, function.identity not in entered)
-
-
-def _parameters(
-    group: Group,
-    function: Function,
-    root: _Root | None,
-    made: list[Made],
-    bound: Bound | None,
-    struct: StructType | None,
-    needed: set[str],
-) -> tuple[Parameter, ...] | None:
-    """What each parameter is for; None where one cannot be given a value."""
-    found: list[Parameter] = []
-    mine = False
-    for variable in function.parameters:
-        type_ = variable.type
-        name = variable.name
-        if isinstance(type_, IntType | FloatType):
-            told = bound is not None and bound.form == "argument" and bound.key[-1] == name
-            role: Role = "bound" if told else "value"
-            found.append(Parameter(role, type_, name=name))
-            continue
-        if not isinstance(type_, PointerType):
-            return None
-        to = type_.to
-        holds = isinstance(to, StructType) and not needed.isdisjoint(inner_structs(to.identity, group.structs))
-        path = path_to(group.structs, root.type, to.identity) if root and holds and isinstance(to, StructType) else None
-        if path is not None and not mine:
-            mine = True
-            found.append(Parameter("ring", type_, path, name, root.name if root else ""))
-        elif isinstance(to, FunctionType):
-            found.append(Parameter("null", type_, name=name))
-        elif isinstance(to, IntType | VoidType | PointerType) or (struct is not None and to == struct):
-            found.append(Parameter("buffer", type_, name=name))
-        elif isinstance(to, StructType) and (size_of(group.structs, to) or THING_BYTES) < THING_BYTES:
-            thing = f"thing_{len(made)}"
-            known = next((item.name for item in made if item.type == to.identity and item.name.startswith("thing")), "")
-            if not known:
-                made.append(Made(thing, to.identity, 1))
-            found.append(Parameter("thing", type_, known or thing, name))
-        else:
-            found.append(Parameter("null", type_, name=name))
-    return tuple(found)
-
-
-def _one_buffer(found: Sequence[Parameter], element: int, made: list[Made]) -> Iterator[Parameter]:
-    """Of several pointers to numbers one is the buffer of elements; a count comes back through the others."""
-
-    def fits(item: Parameter) -> int:
-        to = item.type.to if isinstance(item.type, PointerType) else VoidType()
-        if isinstance(to, IntType):
-            return 2 if to.width == 8 * element else 0
-        return 1 if isinstance(to, VoidType) else 3 if isinstance(to, StructType) else 0
-
-    buffer = max((item for item in found if item.role == "buffer"), key=fits, default=None)
-    for item in found:
-        to = item.type.to if isinstance(item.type, PointerType) else None
-        if item.role != "buffer" or item is buffer or not isinstance(to, IntType):
-            yield item
-            continue
-        name = f"told_{len(made)}"
-        made.append(Made(name, to.name, 1))
-        yield Parameter("thing", item.type, name, item.name)
-
-
-def _lengths(found: Sequence[Parameter]) -> Iterator[Parameter]:
-    """Tell which number is the length of a buffer, which the only value, and which something else."""
-    numbers = [item for item in found if item.role == "value"]
-    buffers = any(item.role == "buffer" for item in found)
-    length: Parameter | None = None
-    if buffers and numbers:
-        named = [item for item in numbers if _LENGTH.search(item.name.lower())]
-        length = (named or numbers)[-1]
-    for item in found:
-        if item.role != "value" or (not buffers and item is numbers[0]):
-            yield item
-        else:
-            yield Parameter("length" if item is length else "other", item.type, name=item.name)
-
-
-def arguments(operation: Operation, *, number: int, given: Value, length: int, bound: int) -> tuple[Value, ...]:
-    """The arguments of one call: ``number`` for a value, ``given`` for a buffer, ``length`` for its length."""
-    found: list[Value] = []
-    for item in operation.parameters:
-        match item.role:
-            case "ring":
-                found.append(Reference(item.to, 0, item.path))
-            case "bound":
-                found.append(bound)
-            case "length":
-                found.append(length)
-            case "value":
-                found.append(number)
-            case "buffer":
-                found.append(given)
-            case "thing":
-                found.append(Reference(item.path))
-            case "null":
-                found.append(None)
-            case "other":
-                found.append(0)
-    return tuple(found)
