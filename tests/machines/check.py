@@ -26,6 +26,7 @@ from stepring.shapes.types import Machine, Transition
 from stepring_rules.machine_common import short
 
 ZERO = "0"
+"""Stands for a value that is no state and may be told: what storage starts as, a count, another's constant."""
 OPTIONS = Options(use_compiler=False)
 _NEGATED = re.compile(r"!\([^()]*\)")
 _EVENT = re.compile(r"\bEV_[A-Z0-9_]+\b")
@@ -110,6 +111,8 @@ def _names(made: Made, machine: Machine) -> dict[str, str]:
     values = {value: state for state, value in states}
     if made.slip == "zero is no state":
         values[0] = ZERO
+    if made.style.counted:
+        values[len(made.table.states)] = ZERO  # how many there are
     if made.slip == "other enumeration":
         values[61] = ZERO  # what it is compared with
     return {one.name: values.get(one.value, "") for one in machine.states}

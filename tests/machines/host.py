@@ -20,8 +20,8 @@ COMPILER = shutil.which("gcc") or shutil.which("cc") or shutil.which("clang")
 BATCH = 60
 _WORDS = (
     "auto bool break case char const continue default do else enum extern false for goto if int long return short "
-    "signed sizeof static struct switch true typedef unsigned void while uint8_t defined HOST_shut HOST_kg HOST_next "
-    "HOST_show HOST_is setjmp HOST_end"
+    "signed sizeof volatile static struct switch true typedef unsigned void while uint8_t defined HOST_shut HOST_kg "
+    "HOST_next HOST_show HOST_is setjmp HOST_end"
 )
 _KEPT = frozenset(_WORDS.split())
 _WORD = re.compile(r'"(?:\\.|[^"\\])*"|/\*.*?\*/|#\s*\w+|\b[A-Za-z_]\w*', re.DOTALL)
@@ -64,6 +64,7 @@ def bodies(made: Made) -> str:
     """What the functions outside the program do."""
     special = {
         "lid_shut": "return HOST_shut;",
+        "waited_ms": "return HOST_kg > 0 ? HOST_kg * 100u : 0u;",
         "hopper_kg": "return HOST_kg;",
         "panel_show": "HOST_show(text);",
         f"{made.table.noun}_wait": "return HOST_next();",
@@ -73,6 +74,16 @@ def bodies(made: Made) -> str:
         kind, name, takes = found.groups()
         lines.append(f"{kind} {name}({takes}) {{ {special.get(name, '' if kind == 'void' else 'return 0;')} }}")
     return "\n".join(lines)
+
+
+def reachable(made: Made) -> str:
+    """The text with a state that is static in its function moved out of it, where the driver can set it."""
+    if made.style.storage != "local":
+        return made.text
+    kept = re.search(rf"^    static .* {made.table.noun}_state = .*;$", made.text, re.MULTILINE)
+    assert kept is not None
+    before, head, after = made.text.replace(kept[0], "").rpartition(f"void {made.table.noun}_step(")
+    return f"{before}{kept[0]}\n{head}{after}"
 
 
 def driver(made: Made) -> str:
@@ -97,6 +108,7 @@ def driver(made: Made) -> str:
     else:
         place = {
             "static": f"{noun}_state",
+            "local": f"{noun}_state",
             "object member": f"{noun}.state",
             "pointer": "one",
             "element": f"{noun}_state[2]",
@@ -119,7 +131,7 @@ def driver(made: Made) -> str:
 def program(batch: Sequence[Made]) -> str:
     parts = [HEAD]
     for made in batch:
-        parts.append(renamed("\n".join([made.text, bodies(made), driver(made)]), f"{made.name}_"))
+        parts.append(renamed("\n".join([reachable(made), bodies(made), driver(made)]), f"{made.name}_"))
     choose = "".join(f"case {at}: got = {made.name}_host(start); break;" for at, made in enumerate(batch))
     return (
         "\n".join(parts)

@@ -15,8 +15,19 @@ from tests.machines.written import FORMS, MARK, Family, Storage, Style, clean, e
 SWITCHES = ("switch", "next variable", "working copy", "setter")
 BY_EVENT = ("event then state", "event functions")
 ASSIGNING = (*SWITCHES, *BY_EVENT, "if-chain")
+AT_ONCE = ("switch", "event then state", "if-chain")
+ONE_FUNCTION = (
+    "switch",
+    "event then state",
+    "if-chain",
+    "next variable",
+    "working copy",
+    "table",
+    "rows",
+    "next returned",
+)
 VALUED = (*ASSIGNING, "table", "rows", "next returned")
-STORAGES: tuple[Storage, ...] = ("static", "member", "object member", "pointer", "element", "bit-field")
+STORAGES: tuple[Storage, ...] = ("static", "local", "member", "object member", "pointer", "element", "bit-field")
 COUNTS = (3, 4, 5, 6, 7, 8, 9, 10, 12, 15, 20, 28, 40)
 PUMP = ("enum pump_state { PUMP_SHUT = 60, PUMP_RUNNING, PUMP_JAMMED };", "extern enum pump_state pump_state(void);")
 
@@ -150,7 +161,10 @@ class Draft:
 
     def beside(self, head: str, *body: str) -> None:
         """Add a function beside the machine's own."""
-        self.style = replace(self.style, extra=(f"{head}({self.style.owner or 'void'})", "{", *body, "}"))
+        if self.style.storage == "local":
+            raise Unfit
+        text = ("", f"{head}({self.style.owner or 'void'})", "{", *body, "}")
+        self.style = replace(self.style, extra=(*self.style.extra, *text))
 
 
 def graph(edges: set[Edge]) -> "networkx.DiGraph[str]":
@@ -245,11 +259,12 @@ def no_state(draft: Draft) -> None:
         value, name = 62, "PUMP_JAMMED"
         draft.style = replace(draft.style, declared=PUMP)
     name = f"#{name or value}"
+    draft.style = replace(draft.style, counted=False)
     step, *rest = draft.table.cells[cell]
     draft.put(*cell, replace(step, target=name, marked=True), *rest)
     draft.table = replace(draft.table, foreign={name: value})
     draft.about = (name.removeprefix("#"), str(value))
-    draft.loose = {(name, "*", draft.table.initial)}
+    draft.loose |= {(name, "*", draft.table.initial)}
 
 
 def unreachable_code(draft: Draft) -> None:
@@ -336,7 +351,7 @@ def event_dropped(draft: Draft) -> None:
 def zero_is_no_state(draft: Draft) -> None:
     """States from 1 upward, and a variable that starts as 0."""
     draft.table = replace(draft.table, states={name: value + 1 for name, value in draft.table.states.items()})
-    draft.style = replace(draft.style, storage="static", uninitialised=True, default="reports")
+    draft.style = replace(draft.style, storage="static", uninitialised=True, default="reports", counted=False)
 
 
 def dispatches_differ(draft: Draft) -> None:
@@ -349,6 +364,126 @@ def dispatches_differ(draft: Draft) -> None:
     draft.beside(f"unsigned {draft.table.noun}_colour", *lines, "    default:", "        return 0u;", "    }")
     draft.about = (state,)
 
+
+def no_time_limit(draft: Draft) -> None:
+    """A state that waits on one event for ever, where its siblings give up after a time."""
+    state = draft.inner()
+    tick, event = draft.table.events[:2]
+    for name in draft.table.states:
+        if name != draft.table.initial:
+            draft.put(name, tick, Step(draft.table.initial, Guard("late")))
+    for each in draft.table.events:
+        draft.table.cells.pop((state, each), None)
+    draft.put(state, event, Step(draft.other(state)))
+    draft.about = (state,)
+    draft.follows = ("SM11",)
+
+
+def entered_again(draft: Draft) -> None:
+    """A state stored after a call that steps the machine itself."""
+    if draft.style.owner or draft.style.storage == "local":
+        raise Unfit
+    noun = draft.table.noun
+    state, event = draft.moving()
+    step, *rest = draft.table.cells[state, event]
+    nested = draft.dice.choice([each for each in draft.table.events if each != event])
+    if (state, nested) not in draft.table.cells:
+        raise Unfit
+    draft.put(state, event, replace(step, actions=(*step.actions, f"{noun}_notify"), marked=True), *rest)
+    kg = ", 0" if draft.table.guarded() else ""
+    draft.style = replace(
+        draft.style,
+        internal=(f"{noun}_notify",),
+        declared=(*draft.style.declared, f"static void {noun}_notify(void);"),
+    )
+    draft.beside(f"static void {noun}_notify", f"    {noun}_step({nested}{kg});")
+
+
+def busy_left(draft: Draft) -> None:
+    """A busy flag that one way out of the function leaves set, where the others clear it."""
+    working(draft)
+    cells = draft.dice.sample(sorted(draft.table.cells), 3)
+    for cell in cells:
+        step, *rest = draft.table.cells[cell]
+        draft.put(*cell, replace(step, leaves="forgets" if cell == cells[0] else "clears"), *rest)
+
+
+def working(draft: Draft) -> None:
+    """A flag that is set while the machine works."""
+    flag = f"static bool {draft.table.noun}_busy;"
+    draft.style = replace(draft.style, busy=True, declared=(*draft.style.declared, flag))
+
+
+# ---------------------------------------------------------------------------------------------------------- variety
+
+
+def run_on_as_meant(draft: Draft) -> None:
+    """A case that runs on, with a comment that says so."""
+    break_missing(draft)
+    draft.style = replace(draft.style, fall_marked=True)
+
+
+def stacked_labels(draft: Draft) -> None:
+    """Two states that share a case."""
+    names = list(draft.table.states)
+    at = draft.dice.randrange(len(names) - 1)
+    for event in draft.table.events:
+        draft.table.cells.pop((names[at], event), None)
+        if (names[at + 1], event) in draft.table.cells:
+            draft.put(names[at], event, *draft.table.cells[names[at + 1], event])
+    draft.style = replace(draft.style, stacked=names[at])
+
+
+def early_returns(draft: Draft) -> None:
+    """A busy flag that every way out clears."""
+    working(draft)
+    for cell in draft.dice.sample(sorted(draft.table.cells), 2):
+        step, *rest = draft.table.cells[cell]
+        draft.put(*cell, replace(step, leaves="clears"), *rest)
+
+
+def reset(draft: Draft) -> None:
+    """A function that starts the machine again."""
+    start = draft.table.initial
+    draft.beside(f"void {draft.table.noun}_restart", f"    {draft.style.lvalue} = {draft.style.s(start)};")
+    draft.loose |= {(state, "*", start) for state in draft.table.states}
+
+
+def query(draft: Draft) -> None:
+    """A function that says whether the machine is in one of two states."""
+    one = draft.inner()
+    tests = [f"{draft.style.lvalue} == {draft.style.s(state)}" for state in (one, draft.other(one))]
+    draft.beside(f"bool {draft.table.noun}_moves", f"    return {tests[0]} || {tests[1]};")
+
+
+def names(draft: Draft) -> None:
+    """A function that gives each state a text."""
+    lines = [f"    switch ({draft.style.lvalue}) {{"]
+    for state in draft.table.states:
+        lines += [f"    case {draft.style.s(state)}:", f'        return "{state.split("_", 1)[1].lower()}";']
+    draft.beside(f"const char *{draft.table.noun}_text", *lines, "    default:", '        return "?";', "    }")
+
+
+def interrupt(draft: Draft) -> None:
+    """A function that looks at the state and stores another, as an interrupt does."""
+    state = draft.inner()
+    to = draft.other(state)
+    lvalue = draft.style.lvalue
+    lines = [f"    if ({lvalue} == {draft.style.s(state)}) {{", f"        {lvalue} = {draft.style.s(to)};", "    }"]
+    draft.beside(f"void {draft.table.noun}_jammed", *lines)
+    draft.loose |= {(state, "*", to)}
+
+
+VARIETY: tuple[tuple[Slip, tuple[str, ...]], ...] = (
+    (run_on_as_meant, SWITCHES),
+    (stacked_labels, SWITCHES),
+    (early_returns, AT_ONCE),
+    (reset, VALUED),
+    (query, VALUED),
+    (names, VALUED),
+    (interrupt, VALUED),
+)
+"""What right programs have besides, and the forms that can have it."""
 
 SLIPS: dict[str, tuple[Slip, tuple[str, ...], tuple[str, ...]]] = {
     "break missing": (break_missing, ("SM06",), (*SWITCHES, *BY_EVENT)),
@@ -368,6 +503,9 @@ SLIPS: dict[str, tuple[Slip, tuple[str, ...], tuple[str, ...]]] = {
     "other enumeration": (other_enumeration, ("SM14",), ASSIGNING),
     "event dropped": (event_dropped, ("SM11",), ("switch", "event then state", "if-chain", "next variable")),
     "zero is no state": (zero_is_no_state, ("SM13",), ("switch", "next variable", "setter")),
+    "no time limit": (no_time_limit, ("SM12",), ("switch", "if-chain", "next variable", "event then state")),
+    "entered again": (entered_again, ("SM19",), AT_ONCE),
+    "busy flag left set": (busy_left, ("SM20",), AT_ONCE),
     "dispatches differ": (dispatches_differ, ("SM18",), (*SWITCHES, "if-chain")),
 }
 """Each slip with the rules that should speak of it and the forms that it is made in."""
@@ -404,17 +542,24 @@ def _make(number: int, dice: random.Random) -> Made:
         forms, turn = list(SLIPS[slip][2]), turn // len(SLIPS)
     form = forms[turn % len(forms)]
     # Tables and arrays of handlers have the states' values for subscripts.
-    table = random_table(dice, dice.choice(COUNTS), sparse=form not in ("table", "next returned"))
+    count = dice.choice(COUNTS)
+    table = random_table(dice, count, sparse=form not in ("table", "next returned"))
     if form == "table" or dice.random() < 0.3:
         table = table.without_guards()
     places = ("static", "member") if form in ("function pointer", "goto") else STORAGES
+    likely = [4, 1 if form in ONE_FUNCTION else 0, 4, 1, 1, 1, 1]
+    storage: Storage = dice.choices(places, likely[:: 2 if len(places) == 2 else 1][: len(places)])[0]
+    family: Family = dice.choice(FAMILIES)
     style = Style(
         table,
-        storage=dice.choices(places, [3, 3, 1, 1, 1, 1][: len(places)])[0],
-        family=dice.choice(FAMILIES),
+        storage=storage,
+        family=family,
         default=dice.choice(["recovers", "recovers", "reports"]),
         chains=dice.random() < 0.5,
         variant=dice.randrange(4),
+        named_type=dice.random() < 0.3,
+        counted=family == "enum" and list(table.states.values()) == list(range(count)) and dice.random() < 0.25,
+        volatile=storage != "pointer" and form not in ("function pointer", "goto") and dice.random() < 0.15,
     )
     draft = Draft(dice, form, table, style)
     rules: tuple[str, ...] = ()
@@ -422,6 +567,12 @@ def _make(number: int, dice: random.Random) -> Made:
         slipped, rules, _ = SLIPS[slip]
         slipped(draft)
         rules += AS_WELL.get((slip, form), AS_WELL.get((slip, style.family), ()))
+    else:
+        for add, fitting in VARIETY:
+            if form in fitting and storage != "local" and dice.random() < 0.15:
+                # What runs on neither shares a case nor leaves early.
+                if not (draft.style.falls and add in (stacked_labels, early_returns)):
+                    add(draft)
     check_fit(draft)
     style = replace(draft.style, table=draft.table)
     text, lines = clean(FORMS[form](style))

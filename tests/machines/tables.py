@@ -9,7 +9,7 @@ from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Literal, TypeAlias
 
-GuardKind: TypeAlias = Literal["over", "under", "shut", "never"]
+GuardKind: TypeAlias = Literal["over", "under", "shut", "late", "never"]
 Inputs: TypeAlias = tuple[int, bool]
 
 NOUNS = ["auger", "hopper", "blower", "spreader", "silo", "lift", "winch", "sluice", "feeder", "barge"]
@@ -38,23 +38,34 @@ class Guard:
             "over": f"kg > {self.limit}",
             "under": f"kg < {self.limit}",
             "shut": "lid_shut()",
+            "late": "waited_ms() > 5000u",
             "never": f"kg > {self.limit} && kg < {self.limit - 20}",
         }[self.kind]
 
     def holds(self, kg: int, shut: bool) -> bool:
-        return {"over": kg > self.limit, "under": kg < self.limit, "shut": shut, "never": False}[self.kind]
+        # The host lets 100 ms pass for each kg, so that one input serves for both.
+        late = kg * 100 > 5000
+        return {"over": kg > self.limit, "under": kg < self.limit, "shut": shut, "late": late, "never": False}[
+            self.kind
+        ]
+
+    @property
+    def name(self) -> str:
+        """A name for a function that tests it."""
+        return {"shut": "lid_is_shut", "late": "waited_long"}.get(self.kind, f"{self.kind}_{self.limit}_kg")
 
 
 @dataclass(frozen=True, slots=True)
 class Step:
     """Where a cell leads. ``first`` is a state stored before and overwritten; ``lost``: worked out, not committed;
-    ``marked``: the slip is here."""
+    ``leaves``: the function is left at once, and the busy flag cleared or forgotten; ``marked``: the slip is here."""
 
     target: str
     guard: Guard | None = None
     actions: tuple[str, ...] = ()
     first: str = ""
     lost: bool = False
+    leaves: Literal["", "clears", "forgets"] = ""
     marked: bool = False
 
 
@@ -141,8 +152,8 @@ def random_table(dice: random.Random, count: int, sparse: bool) -> Table:
 def _dressed(dice: random.Random, names: list[str], step: Step) -> Step:
     guard = None
     if dice.random() < 0.35:
-        kind: GuardKind = dice.choice(["over", "under", "shut"])
-        guard = Guard(kind, 0 if kind == "shut" else dice.choice([20, 40, 60]))
+        kind: GuardKind = dice.choice(["over", "over", "under", "under", "shut", "late"])
+        guard = Guard(kind, dice.choice([20, 40, 60]) if kind in ("over", "under") else 0)
     actions = tuple(dice.sample(ACTIONS, dice.choice([0, 0, 1, 1, 2])))
     return replace(step, guard=guard, actions=actions)
 

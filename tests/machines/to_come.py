@@ -15,10 +15,7 @@ FORMS_TO_COME = {
 
 STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
 
-EVENTS_TO_COME = dict.fromkeys(
-    ["state then event", "event then state", "next variable", "working copy", "setter"],
-    "where branches join again, and where the event is told before the state, the event is not told yet",
-)
+EVENTS_TO_COME = {"event then state": "an event that is told before the state is not told yet"}
 
 SLIPS_TO_COME = {
     "break missing before default": "a fall into the default is not told yet",
@@ -34,6 +31,9 @@ SLIPS_TO_COME = {
             "other enumeration",
             "event dropped",
             "zero is no state",
+            "no time limit",
+            "entered again",
+            "busy flag left set",
             "dispatches differ",
         ],
         "the rule is not there yet",

@@ -12,7 +12,7 @@ from typing import Literal, TypeAlias
 from tests.machines.tables import Step, Table
 
 MARK = "\x01"
-Storage: TypeAlias = Literal["static", "member", "object member", "pointer", "element", "bit-field"]
+Storage: TypeAlias = Literal["static", "local", "member", "object member", "pointer", "element", "bit-field"]
 Family: TypeAlias = Literal["enum", "define", "numbers"]
 Default: TypeAlias = Literal["recovers", "reports", "silent"]
 Store: TypeAlias = Callable[[Step], list[str]]
@@ -35,6 +35,13 @@ class Style:
     left_out: tuple[str, str] | None = None  # the cell that a table leaves out
     no_handler: str = ""  # the state without an entry in a table of handlers
     uninitialised: bool = False
+    fall_marked: bool = False  # a comment says that the case is meant to run on
+    stacked: str = ""  # the state that shares the next one's case
+    named_type: bool = False  # the enumeration has a typedef name and no tag
+    counted: bool = False  # a last enumerator counts the states
+    volatile: bool = False
+    busy: bool = False  # a flag is set while the machine works
+    internal: tuple[str, ...] = ()  # actions that are functions of the program
     extra: tuple[str, ...] = ()  # functions beside the machine's own
     declared: tuple[str, ...] = field(default=())  # declarations of what those use
     comment: tuple[str, ...] = ()  # what stands at the top
@@ -50,7 +57,14 @@ class Style:
     def type(self) -> str:
         if self.storage == "bit-field":
             return "unsigned"
-        return f"enum {self.table.noun}_state" if self.family == "enum" else "uint8_t"
+        if self.family != "enum":
+            return "uint8_t"
+        return f"{self.table.noun}_state_t" if self.named_type else f"enum {self.table.noun}_state"
+
+    @property
+    def kept(self) -> str:
+        """The type with which the state is kept."""
+        return f"volatile {self.type}" if self.volatile else self.type
 
     @property
     def event(self) -> str:
@@ -61,6 +75,7 @@ class Style:
         noun = self.table.noun
         return {
             "static": f"{noun}_state",
+            "local": f"{noun}_state",
             "member": f"{noun[0]}->state",
             "object member": f"{noun}.state",
             "pointer": "*state",
@@ -135,18 +150,20 @@ def constants(style: Style, named: bool = True) -> list[str]:
         pass
     elif style.family == "enum":
         counted = list(table.states.values()) == list(range(len(table.states)))
-        lines += [f"enum {table.noun}_state {{"]
+        lines += ["typedef enum {" if style.named_type else f"enum {table.noun}_state {{"]
         lines += [f"    {name}," if counted else f"    {name} = {value}," for name, value in table.states.items()]
-        lines += ["};", ""]
+        lines += [f"    {table.noun.upper()}_COUNT"] if style.counted else []
+        lines += [f"}} {table.noun}_state_t;" if style.named_type else "};", ""]
     elif style.family == "define":
         lines += [*(f"#define {name} {value}u" for name, value in table.states.items()), ""]
     else:
         words = ", ".join(f"{value} {name.split('_', 1)[1].lower()}" for name, value in table.states.items())
         lines += [*textwrap.wrap(f"/* {words} */", 100, subsequent_indent=" * "), ""]
     lines += [f"{style.event} {{", *(f"    {event}," for event in table.events), "};", ""]
-    lines += [f"extern void {action}(void);" for action in table.actions()]
-    if any(step.guard and step.guard.kind == "shut" for steps in table.cells.values() for step in steps):
-        lines.append("extern bool lid_shut(void);")
+    lines += [f"extern void {action}(void);" for action in table.actions() if action not in style.internal]
+    kinds = {step.guard.kind for steps in table.cells.values() for step in steps if step.guard is not None}
+    lines += ["extern bool lid_shut(void);"] if "shut" in kinds else []
+    lines += ["extern unsigned waited_ms(void);"] if "late" in kinds else []
     return [*lines, "extern void fault_report(void);", *style.declared, ""]
 
 
@@ -157,16 +174,16 @@ def storage(style: Style) -> list[str]:
     match style.storage:
         case "static":
             start = "" if style.uninitialised else f" = {start}"
-            return [f"static {style.type} {noun}_state{start};{MARK if style.uninitialised else ''}", ""]
+            return [f"static {style.kept} {noun}_state{start};{MARK if style.uninitialised else ''}", ""]
         case "member" | "bit-field":
             bits = " : 6" if style.storage == "bit-field" else ""
-            lines = [f"struct {noun} {{", "    long ticks;", f"    {style.type} state{bits};", "};", ""]
+            lines = [f"struct {noun} {{", "    long ticks;", f"    {style.kept} state{bits};", "};", ""]
             body = [f"{noun[0]}->ticks = 0;", f"{noun[0]}->state = {start};"]
             return [*lines, *function(f"void {noun}_init(struct {noun} *{noun[0]})", body)]
         case "object member":
             lines = ["static struct {", "    long ticks;", f"    {style.type} state;"]
             return [*lines, f"}} {noun} = {{ .state = {start} }};", ""]
-        case "pointer":
+        case "pointer" | "local":
             return []
         case "element":
             body = ["for (unsigned unit = 0; unit < 4; unit++) {", f"    {noun}_state[unit] = {start};", "}"]
@@ -191,10 +208,16 @@ def assign(style: Style, lvalue: str) -> Store:
         mark = MARK if step.marked else ""
         first = [f"{lvalue} = {style.s(step.first)};{MARK}", "fault_report();"] if step.first else []
         calls = [f"{action}();" for action in step.actions]
-        lost = ["return;" + MARK] if step.lost else []
-        return [*first, *calls, f"{lvalue} = {style.s(step.target)};{mark}", *lost]
+        return [*first, *calls, f"{lvalue} = {style.s(step.target)};{mark}", *leaving(style, step)]
 
     return store
+
+
+def leaving(style: Style, step: Step) -> list[str]:
+    """How a step leaves the function before its end, if it does."""
+    clears = [f"{style.table.noun}_busy = false;"] if step.leaves == "clears" else []
+    mark = "" if clears else MARK
+    return [*clears, f"return;{mark}"] if step.lost or step.leaves else []
 
 
 def returning(style: Style) -> Store:
@@ -254,7 +277,11 @@ def cases(style: Style, bodies: Iterable[tuple[str, list[str]]], last: list[str]
     for state, body in bodies:
         if state == style.unhandled:
             continue
-        end = [] if state == falls else ["break;"]
+        if state == style.stacked:
+            lines.append(f"case {style.s(state)}:")
+            continue
+        meant = ["/* falls through */"] if style.fall_marked else []
+        end = meant if state == falls else ["break;"]
         stray = [f"fault_report();{MARK}"] if state == style.stray else []
         lines += [f"case {style.s(state)}:{mark}", *indented([*body, *end, *stray])]
         mark = ""
@@ -280,8 +307,15 @@ def whole(style: Style, *parts: list[str]) -> str:
     return "\n".join(lines).rstrip("\n") + "\n"
 
 
-def step_head(style: Style) -> str:
-    return f"void {style.table.noun}_step({style.takes})"
+def step_function(style: Style, body: list[str]) -> list[str]:
+    """The function that takes an event."""
+    noun = style.table.noun
+    if style.busy:
+        forgets = any(step.leaves == "forgets" for steps in style.table.cells.values() for step in steps)
+        body = [f"{noun}_busy = true;{MARK if forgets else ''}", *body, f"{noun}_busy = false;"]
+    if style.storage == "local":
+        body = [f"static {style.kept} {noun}_state = {style.s(style.table.initial)};", "", *body]
+    return function(f"void {noun}_step({style.takes})", body)
 
 
 # ---------------------------------------------------------------------------------------------------------- forms
@@ -292,7 +326,7 @@ def switch(style: Style) -> str:
     store = assign(style, style.lvalue)
     bodies = [(state, by_event(style, state, store)) for state in style.table.states]
     body = [f"switch ({style.lvalue}) {{", *cases(style, bodies, default(style, style.lvalue)), "}"]
-    return whole(style, storage(style), function(step_head(style), body), owners(style))
+    return whole(style, storage(style), step_function(style, body), owners(style))
 
 
 def event_then_state(style: Style) -> str:
@@ -304,7 +338,7 @@ def event_then_state(style: Style) -> str:
         body += [f"case {event}:", f"    switch ({style.lvalue}) {{"]
         body += indented([*cases(style, bodies, [], event), "}", "break;"])
     body += ["default:", "    fault_report();", "    break;", "}"]
-    return whole(style, storage(style), function(step_head(style), body), owners(style))
+    return whole(style, storage(style), step_function(style, body), owners(style))
 
 
 def if_chain(style: Style) -> str:
@@ -317,7 +351,7 @@ def if_chain(style: Style) -> str:
             body += indented(by_event(style, state, store))
     last = default(style, style.lvalue)
     body += ["} else {", *indented(last), "}"] if last else ["}"]
-    return whole(style, storage(style), function(step_head(style), body), owners(style))
+    return whole(style, storage(style), step_function(style, body), owners(style))
 
 
 def next_variable(style: Style) -> str:
@@ -326,7 +360,7 @@ def next_variable(style: Style) -> str:
     bodies = [(state, by_event(style, state, store)) for state in style.table.states]
     body = [f"{style.type} next = {style.lvalue};", "", f"switch ({style.lvalue}) {{"]
     body += [*cases(style, bodies, default(style, "next")), "}", f"{style.lvalue} = next;"]
-    return whole(style, storage(style), function(step_head(style), body), owners(style))
+    return whole(style, storage(style), step_function(style, body), owners(style))
 
 
 def working_copy(style: Style) -> str:
@@ -335,7 +369,7 @@ def working_copy(style: Style) -> str:
     bodies = [(state, by_event(style, state, store)) for state in style.table.states]
     body = [f"{style.type} now = {style.lvalue};", "", "switch (now) {"]
     body += [*cases(style, bodies, default(style, "now")), "}", f"{style.lvalue} = now;"]
-    return whole(style, storage(style), function(step_head(style), body), owners(style))
+    return whole(style, storage(style), step_function(style, body), owners(style))
 
 
 def setter(style: Style) -> str:
@@ -347,14 +381,19 @@ def setter(style: Style) -> str:
     def store(step: Step) -> list[str]:
         first = [f"{noun}_enter({pass_on}{style.s(step.first)});{MARK}", "fault_report();"] if step.first else []
         calls = [f"{action}();" for action in step.actions]
-        return [*first, *calls, f"{noun}_enter({pass_on}{style.s(step.target)});{MARK if step.marked else ''}"]
+        return [
+            *first,
+            *calls,
+            f"{noun}_enter({pass_on}{style.s(step.target)});{MARK if step.marked else ''}",
+            *leaving(style, step),
+        ]
 
     bodies = [(state, by_event(style, state, store)) for state in style.table.states]
     last = [f"{noun}_enter({pass_on}{style.s(style.table.initial)});"] if style.default == "recovers" else []
     body = [f"switch ({style.lvalue}) {{", *cases(style, bodies, last or default(style, "")), "}"]
     entered = function(head, ["note_entry((unsigned)to);", f"{style.lvalue} = to;"])
     return whole(style, ["extern void note_entry(unsigned to);", "", *storage(style)], entered,
-                 function(step_head(style), body), owners(style))  # fmt: skip
+                 step_function(style, body), owners(style))  # fmt: skip
 
 
 def event_functions(style: Style) -> str:
@@ -394,10 +433,10 @@ def returned(style: Style) -> str:
         head = f"static {style.type} (*const {name}[{len(table.states)}])({takes}) = {{{mark}"
         lines = [head, *indented(rows), "};", ""]
         body = [f"{style.lvalue} = {name}[{style.lvalue}]({gives});"]
-        return whole(style, *parts, lines, function(step_head(style), body), owners(style))
+        return whole(style, *parts, lines, step_function(style, body), owners(style))
     bodies = [(state, [f"{style.lvalue} = {handler(style, state)}({gives});"]) for state in table.states]
     body = [f"switch ({style.lvalue}) {{", *cases(style, bodies, default(style, style.lvalue)), "}"]
-    return whole(style, *parts, function(step_head(style), body), owners(style))
+    return whole(style, *parts, step_function(style, body), owners(style))
 
 
 def composed(style: Style) -> tuple[dict[tuple[str, ...], str], list[str]]:
@@ -453,7 +492,7 @@ def table(style: Style) -> str:
         body = [f"{kind} next = {cell};", "", f"if (next != {stay}) {{", f"    {style.lvalue} = next;", "}"]
     else:
         body = [f"{style.lvalue} = {cell};"]
-    return whole(style, storage(style), lines, function(step_head(style), body), owners(style))
+    return whole(style, storage(style), lines, step_function(style, body), owners(style))
 
 
 def _unused(name: str, text: str) -> list[str]:
@@ -475,7 +514,7 @@ def rows(style: Style) -> str:
             if guarded:
                 test = ", 0"
                 if step.guard is not None:
-                    name = guards.setdefault(step.guard.text, f"{step.guard.kind}_{step.guard.limit}_kg")
+                    name = guards.setdefault(step.guard.text, step.guard.name)
                     test = f", {name}"
             place = f"{style.s(state)}, {event}, {style.s(step.target)}, {act}{test}"
             if style.variant % 2:
@@ -507,7 +546,7 @@ def rows(style: Style) -> str:
         "    }",
         "}",
     ]
-    return whole(style, storage(style), lines, function(step_head(style), body), owners(style))
+    return whole(style, storage(style), lines, step_function(style, body), owners(style))
 
 
 def pointer(style: Style) -> str:
