@@ -16,7 +16,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from tests.machines.host import differences
-from tests.machines.programs import REVIEWS, Made, make
+from tests.machines.programs import Made, make
+from tests.machines.slips import REVIEWS
 from tests.machines.tables import Edge
 from tests.machines.written import event_function
 

@@ -8,8 +8,9 @@ import csv
 import re
 
 from tests.machines.programs import Made
+from tests.machines.style import Family, Storage, Style, clean
 from tests.machines.tables import Cells, Step, Table
-from tests.machines.written import FORMS, Family, Storage, Style, clean
+from tests.machines.written import FORMS
 from tests.marks import DATA
 
 LCP_ACTIONS = (

@@ -13,7 +13,8 @@ from pathlib import Path
 import pytest
 from tests.machines.check import Compared, compare_numbers
 from tests.machines.host import COMPILER, differences
-from tests.machines.programs import LABELS, SLIPS, Made, make
+from tests.machines.programs import LABELS, Made, make
+from tests.machines.slips import SLIPS
 from tests.machines.to_come import EVENTS_TO_COME, FORMS_TO_COME, SLIPS_TO_COME, STORAGES_TO_COME, params
 from tests.machines.written import FORMS
 
