@@ -384,7 +384,7 @@ def test_guards_are_the_conditions_as_written(tmp_path: Path) -> None:
     assert {(step.source, step.target, step.guard) for step in machine.transitions} == {
         ("SHUT", "OPENING", "asked()"),
         ("OPENING", "OPEN", "at_end()"),
-        ("OPENING", "SHUT", "!(at_end()) && left_alone()"),
+        ("OPENING", "SHUT", "!at_end() && left_alone()"),
         ("OPEN", "SHUT", "left_alone()"),
     }
 

@@ -221,6 +221,7 @@ class Reader:
             inferred_types=tuple(sorted(inferred)),
             origin=find,
             marked_falls=frozenset(falls),
+            source=self._sources.get,
             notices=tuple(notices),
         )
 

@@ -25,6 +25,7 @@ from typing import Any, Literal
 
 from stepring.gather.types import Unit
 from stepring.places import Notice, Origin, Position
+from stepring.read.source import SourceFile
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,6 +88,11 @@ class FunctionPlace:
     read: bool
 
 
+def _no_source(file: str) -> SourceFile | None:
+    """The source of a text that is in no file."""
+    return None
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class ReadUnit:
     """A unit after reading.
@@ -97,6 +103,7 @@ class ReadUnit:
     text to the place and spelling a person sees; it never fails (a position that cannot be refined gives the line's
     first character).
     ``marked_falls`` are the (file, line) of statements or comments that mark a fall-through on purpose.
+    ``source`` gives an original file's tokens, None where it cannot be read.
     """
 
     unit: Unit
@@ -108,3 +115,4 @@ class ReadUnit:
     origin: Callable[[Position], Origin]
     marked_falls: frozenset[tuple[str, int]]
     notices: tuple[Notice, ...]
+    source: Callable[[str], SourceFile | None] = _no_source

@@ -184,7 +184,7 @@ def _about(outcome: Outcome, identity: str) -> tuple[Obligation, ...]:
 
 
 def _entry(number: int, step: Transition) -> Entry:
-    return Entry(number, step.target, step.guard, ", ".join(step.actions), step.where)
+    return Entry(number, step.target, step.condition, ", ".join(step.actions), step.where)
 
 
 def _users(accesses: Sequence[Access], kind: str) -> str:

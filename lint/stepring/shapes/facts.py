@@ -141,6 +141,9 @@ class TransitionFact:
     stored_by: str
     through: tuple[str, int] | None = None
     dispatched: bool = False
+    event: str = ""
+    actions: tuple[str, ...] = ()
+    timed: bool = False
 
 
 @dataclass(frozen=True, slots=True)

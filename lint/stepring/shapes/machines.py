@@ -20,6 +20,7 @@ from stepring.shapes.facts import (
     ForwardFact,
     KeyFact,
     StateFacts,
+    TransitionFact,
 )
 from stepring.shapes.names import starts_or_runs
 from stepring.shapes.state_kinds import MOST_STATES, Gathered, dispatches_of, is_machine, is_switched, stored_constants
@@ -369,13 +370,22 @@ def _stores(group: Gathered, by_value: Mapping[int, State]) -> Iterable[StateSto
 
 def _transitions(group: Gathered, states: Sequence[State]) -> Iterable[Transition]:
     by_value = {state.value: state for state in states}
-    seen: set[tuple[str, str, str, Origin]] = set()
+    seen: set[Transition] = set()
 
-    def step(source: State, target: int, function: str, guard: str, where: Origin) -> Iterable[Transition]:
-        mark = (source.name, by_value[target].name, function, where)
-        if mark not in seen:
-            seen.add(mark)
-            yield Transition(source.name, by_value[target].name, function, guard, where)
+    def step(source: State, target: int, move: TransitionFact) -> Iterable[Transition]:
+        found = Transition(
+            source.name,
+            by_value[target].name,
+            move.function,
+            move.guard,
+            move.where,
+            move.event,
+            move.actions,
+            move.timed,
+        )
+        if found not in seen:
+            seen.add(found)
+            yield found
 
     # A state that is only ever declared cannot be left by code that never sees it; it gets no transitions.
     real = [state for state in states if state.labelled or state.tested or state.stored or state.initial]
@@ -383,16 +393,18 @@ def _transitions(group: Gathered, states: Sequence[State]) -> Iterable[Transitio
         if move.source is not None:
             source = by_value.get(move.source)
             if source is not None and source in real:
-                yield from step(source, move.target.value, move.function, move.guard, move.where)
+                yield from step(source, move.target.value, move)
         else:
             for state in real:
                 if state.value not in move.mentioned:
-                    yield from step(state, move.target.value, move.function, move.guard, move.where)
+                    yield from step(state, move.target.value, move)
     followed = {(move.function, move.stored_by, move.target.value) for move in group.transitions}
     followed |= {(move.function, move.through[0], move.target.value) for move in group.transitions if move.through}
     for store, call, constant in sorted(group.setters, key=lambda one: (one[1].where, one[2].value)):
         if store.fresh or (call.function, store.function, constant.value) in followed:
             continue
         # A setter called from another file: from which state is not known, so from any.
+        text = f"calls {_short(call.callee)}"
+        handed = TransitionFact(store.key, call.function, None, (), constant, text, call.where, store.function)
         for state in real:
-            yield from step(state, constant.value, call.function, f"calls {_short(call.callee)}", call.where)
+            yield from step(state, constant.value, handed)

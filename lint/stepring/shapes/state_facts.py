@@ -27,10 +27,10 @@ from stepring.shapes.names import Names, constant_of, starts
 from stepring.shapes.state_aliases import getters, working_parameters
 from stepring.shapes.state_chain import chain_fact
 from stepring.shapes.state_dispatch import dispatch_fact
-from stepring.shapes.state_flow import spelled
 from stepring.shapes.state_keys import families_by_key, key_facts
 from stepring.shapes.state_moves import note_transitions
 from stepring.shapes.state_scan import Scan, Work, function_identity, scan_function, state_candidates
+from stepring.shapes.state_spelled import spelled
 from stepring.shapes.state_stores import before_all, may_set, note_forward, store_fact
 
 

@@ -7,26 +7,19 @@ function calls are followed. Method: the classic disjunctive constant propagatio
 so when the bound was met.
 """
 
-import re
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Literal, NamedTuple
 
-from stepring.meaning.builder import successors
 from stepring.meaning.fold import apply_binary, apply_unary, convert
-from stepring.meaning.show import expr_text, statement_text
 from stepring.meaning.types import (
     AddressOf,
-    Assign,
-    Branch,
     Call,
     Function,
     Load,
-    Switch,
-    VariablePlace,
 )
 from stepring.places import Position
-from stepring.shapes.keys import instance_text, place_key, uncast
+from stepring.shapes.keys import instance_text, uncast
 from stepring.shapes.state_slice import (
     BinaryTerm,
     CallOp,
@@ -100,6 +93,8 @@ class Move:
     through: tuple[str, int] | None = None
     # Whether a dispatch told the source, and not only a test.
     dispatched: bool = False
+    # The block that stores it, in ``function``.
+    block: int = -1
 
 
 class Exit(NamedTuple):
@@ -131,6 +126,8 @@ class Setting:
     stored: dict[tuple[str, Position], set[tuple[int, Chosen] | None]] = field(default_factory=dict)
     # What each call was seen to hand over, by the caller, the call's place and the number of the argument.
     handed: dict[tuple[str, Position, int], set[tuple[int, Chosen] | None]] = field(default_factory=dict)
+    # Where a function was called from while a state was known: the caller, the block, and the source then.
+    sites: dict[str, set[tuple[str, int, int | None]]] = field(default_factory=dict)
     # Whether a call that may store the state was too deep to be followed.
     cut: bool = False
     slices: dict[tuple[str, str], Slice] = field(default_factory=dict)
@@ -229,7 +226,9 @@ def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterato
         yield from _call(run, block, op, environment)
     elif isinstance(op, OutsideOp):
         for number, term in enumerate(op.arguments):
-            _note_move(run, _evaluate(run, block, term, environment), environment, op.position, (op.name, number))
+            _note_move(
+                run, block, _evaluate(run, block, term, environment), environment, op.position, (op.name, number)
+            )
         yield environment
     else:
         yield _store(run, block, op, _evaluate(run, block, op.term, environment), environment)
@@ -237,7 +236,7 @@ def _operate(run: _Run, block: int, op: Op, environment: Environment) -> Iterato
 
 def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Environment) -> Environment:
     if op.slot is None or op.commit:
-        _note_move(run, value, environment, op.position)
+        _note_move(run, block, value, environment, op.position)
     if op.slot is None:
         _note_seen(run.setting.stored.setdefault((run.part.function.identity, op.position), set()), value)
     if op.slot is not None:
@@ -247,7 +246,7 @@ def _store(run: _Run, block: int, op: StoreOp, value: Value, environment: Enviro
 
 
 def _note_move(
-    run: _Run, value: Value, environment: Environment, at: Position, through: tuple[str, int] | None = None
+    run: _Run, block: int, value: Value, environment: Environment, at: Position, through: tuple[str, int] | None = None
 ) -> None:
     if value.kind == "known" and value.chosen is not None and environment.source.kind != "any":
         source = environment.source
@@ -255,7 +254,7 @@ def _note_move(
         function = run.part.function.identity
         dispatched = source.chosen is not None
         run.setting.moves.add(
-            Move(function, known, source.excluded, value.number, value.chosen, at, through, dispatched)
+            Move(function, known, source.excluded, value.number, value.chosen, at, through, dispatched, block)
         )
 
 
@@ -278,6 +277,8 @@ def _call(run: _Run, block: int, op: CallOp, environment: Environment) -> Iterat
     instance = _instance_in(run, callee, op.call)
     if instance in setting.instances(callee.identity):
         setting.followed.add(callee.identity)
+    known = environment.source.number if environment.source.kind == "known" else None
+    setting.sites.setdefault(callee.identity, set()).add((run.part.function.identity, block, known))
     arguments = {
         parameter.identity: _evaluate(run, block, argument, environment)
         for parameter, argument in zip(callee.parameters, op.arguments, strict=False)
@@ -328,20 +329,20 @@ def _leave(
                 targets = next(
                     (case.targets for case in block.cases if case.low <= outcome.number <= case.high), block.otherwise
                 )
-                yield targets, _sourced(run, test, one, block.position)
+                yield targets, _sourced(run, number, test, one, block.position)
             else:
                 if outcome.kind == "any":
                     for case in block.cases:
                         told = _assume(run, number, test, one, case.low) if case.low == case.high else one
-                        yield case.targets, _sourced(run, test, told, block.position)
-                yield block.otherwise, _sourced(run, test, one, block.position)
+                        yield case.targets, _sourced(run, number, test, told, block.position)
+                yield block.otherwise, _sourced(run, number, test, one, block.position)
         return
     for one in _split_for_branch(run, test, environment):
         outcome = _evaluate(run, number, test, one)
         if outcome.kind != "known" or outcome.number:
-            yield block.then, _sourced(run, test, _told(run, number, test, one, True))
+            yield block.then, _sourced(run, number, test, _told(run, number, test, one, True))
         if outcome.kind != "known" or not outcome.number:
-            yield block.otherwise, _sourced(run, test, _told(run, number, test, one, False))
+            yield block.otherwise, _sourced(run, number, test, _told(run, number, test, one, False))
 
 
 def _split_for_switch(run: _Run, test: Term, block: SliceBlock, environment: Environment) -> Iterator[Environment]:
@@ -430,7 +431,7 @@ def _tested(term: Term) -> Iterator[Term]:
         yield from _tested(term.right)
 
 
-def _sourced(run: _Run, test: Term, environment: Environment, at: Position | None = None) -> Environment:
+def _sourced(run: _Run, block: int, test: Term, environment: Environment, at: Position | None = None) -> Environment:
     """At a dispatch or test of the state (or a copy of it) its value becomes the source of what follows.
 
     ``at`` is the place of a dispatch: there a constant in a working copy has become the state.
@@ -442,7 +443,7 @@ def _sourced(run: _Run, test: Term, environment: Environment, at: Position | Non
         if isinstance(term, HelperTerm) and value.chosen is not None:
             if term.slot not in run.part.aliases or at is None:
                 continue  # a constant meant for the state is no copy of it
-            _note_move(run, value, environment, at)
+            _note_move(run, block, value, environment, at)
         mark = Chosen(run.part.function.identity, -1, at, None) if at is not None else None
         before = environment.source
         if mark is None and before.kind == "known" and (value.kind, value.number) == (before.kind, before.number):
@@ -504,58 +505,3 @@ def _evaluate(run: _Run, block: int, term: Term, environment: Environment) -> Va
 
 def _computed(run: _Run, block: int, result: int) -> Value:
     return Value("known", result, Chosen(run.part.function.identity, block, None, None))
-
-
-def guard_text(function: Function, block: int, key: str, standing: frozenset[str] = frozenset()) -> str:
-    """The conditions under which control comes to a block, up to the dispatch on the state, as C text; ``standing`` are
-    variables that stand for the state."""
-    before: dict[int, list[int]] = {}
-    for number, item in enumerate(function.blocks):
-        for target in dict.fromkeys(successors(item.terminator)):
-            before.setdefault(target, []).append(number)
-    parts: list[str] = []
-    passed = {block}
-    while len(before.get(block, ())) == 1:
-        previous = before[block][0]
-        if previous in passed:
-            break
-        passed.add(previous)
-        terminator = function.blocks[previous].terminator
-        if isinstance(terminator, Branch):
-            text = spelled(function, expr_text(terminator.condition))
-            parts.append(text if terminator.then == block else f"!({text})")
-        elif isinstance(terminator, Switch):
-            control = uncast(terminator.value)
-            if isinstance(control, Load):
-                found = place_key(control.place, function.identity)
-                if found is not None and (found.key == key or found.instance in standing):
-                    break
-            labels = [case.name or str(case.low) for case in terminator.cases if case.target == block]
-            if labels:
-                parts.append(f"{spelled(function, expr_text(terminator.value))} == {' or '.join(labels)}")
-        block = previous
-    return " && ".join(reversed(parts))
-
-
-_TEMPORARY = re.compile(r"%\d+")
-
-
-def spelled(function: Function, text: str) -> str:
-    """A condition with its temporaries replaced by what they were computed from."""
-    if "%" not in text:
-        return text
-    meaning: dict[str, str] = {}
-    for block in function.blocks:
-        for statement in block.statements:
-            if isinstance(statement, Assign) and isinstance(statement.place, VariablePlace):
-                name, source = statement.place.variable.name, expr_text(statement.value)
-            elif isinstance(statement, Call) and isinstance(statement.result, VariablePlace):
-                name, source = statement.result.variable.name, statement_text(statement).split(" = ", 1)[-1]
-            else:
-                continue
-            if name.startswith("%"):
-                # Several sources: the arms of a choice.
-                meaning[name] = f"{meaning[name]} or {source}" if name in meaning else source
-    for _ in range(4):
-        text = _TEMPORARY.sub(lambda match: meaning.get(match[0], match[0]), text)
-    return text

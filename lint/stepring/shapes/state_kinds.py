@@ -22,6 +22,7 @@ from stepring.shapes.facts import (
     TestFact,
     TransitionFact,
 )
+from stepring.shapes.names import STATE_NAME
 
 MOST_STATES = 512
 # How errors, results and kinds of things are named, mapped in place and replied to (the same survey).
@@ -30,8 +31,6 @@ _OTHER_NAME = re.compile(
     r"index|idx|port|addr",
     re.IGNORECASE,
 )
-# How a state is named in two thirds of the firmware that was read for this (a survey's figure, not a rule of C).
-_STATE_NAME = re.compile(r"(?:state|phase|fsm|stage)[^.]*\Z|_st\Z", re.IGNORECASE)
 # Names that are given to states and to settings alike.
 _STAGE_NAME = re.compile(r"(?:status|mode|step|activity|progress)[^.]*\Z", re.IGNORECASE)
 # How results are named: constants of a group that says how something went.
@@ -118,7 +117,7 @@ def _moves_on(group: Gathered, dispatches: Sequence[DispatchFact]) -> bool:
     tested = {test.constant.value for test in group.tests}
     for move in group.transitions:
         # Told by a test alone, the source counts where the name says that this is a state; a mode is tested as well.
-        told = move.dispatched or (move.source is not None and _STATE_NAME.search(group.key.shown))
+        told = move.dispatched or (move.source is not None and STATE_NAME.search(group.key.shown))
         if not told or move.source == move.target.value or move.source not in labelled:
             continue
         if move.target.value in tested:
@@ -176,16 +175,16 @@ def evidence(group: Gathered) -> Evidence:
     values = tested | stored
     named = max((len(one) for one in families.values()), default=0)
     words = [constant.name for constant in constants if constant.name is not None]
-    saying = sum(bool(_STATE_NAME.search(word)) for word in words)
+    saying = sum(bool(STATE_NAME.search(word)) for word in words)
     name = group.key.shown.rsplit(".", 1)[-1]
-    of_type = bool(_STATE_NAME.search((group.key.enum or "").split("@", 1)[0]))
+    of_type = bool(STATE_NAME.search((group.key.enum or "").split("@", 1)[0]))
     return Evidence(
         frozenset(tested),
         frozenset(stored),
         frozenset(steps),
         named == len(values),
         named,
-        bool(_STATE_NAME.search(name)) or (len(values) > 2 and (of_type or 3 * saying > 2 * len(constants))),
+        bool(STATE_NAME.search(name)) or (len(values) > 2 and (of_type or 3 * saying > 2 * len(constants))),
         bool(_OTHER_NAME.search(name)),
         len({word for word in words if _RESULT_NAME.search(word)}),
         any(one.carried for one in chains),

@@ -4,10 +4,12 @@ Functions that dispatch or test come first, so that what they call is seen with 
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, field, replace
 
 from stepring.meaning.types import (
     Assign,
+    Call,
+    Function,
     Load,
     VariablePlace,
 )
@@ -19,11 +21,13 @@ from stepring.shapes.state_flow import (
     CHAIN_VISITS,
     ENTRY,
     FEW_VISITS,
+    MOST_DEPTH,
     Chosen,
+    Move,
     Setting,
     flow,
-    guard_text,
 )
+from stepring.shapes.state_guards import Condition, Guards, Way, actions, conditions, paths_of, way_of
 from stepring.shapes.state_scan import Scan, Work, function_identity, is_shared, stores_parameter
 from stepring.shapes.state_stores import is_fresh
 
@@ -114,6 +118,9 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
         return
     if setting.bounded:
         work.bounded.append(key)
+    paths = _Paths(work, key, setting, by_identity)
+    writing = [by_identity[identity].function for identity in writers if identity in by_identity]
+    paths.setters = frozenset(function.name for function in writing if _only_stores(function))
     for move in sorted(
         setting.moves,
         key=lambda move: (move.at, move.source is None, move.source or 0, move.target, move.chosen.block),
@@ -122,6 +129,7 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
             continue  # a local variable has no state before its first value
         here = move.chosen.position if move.chosen.position is not None and move.chosen.position.line else move.at
         where = work.names.origin(here)
+        way = _way(paths, move)
         target = constant_at(work.names, move.target, move.chosen.position, move.chosen.name, where)
         work.transitions.append(
             TransitionFact(
@@ -130,11 +138,14 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
                 move.source,
                 tuple(sorted(move.excluded)) if move.source is None else (),
                 target,
-                _guard(by_identity[move.chosen.function], move.chosen.block, key),
+                way.guard,
                 where,
                 move.function,
                 move.through,
                 move.dispatched,
+                way.event,
+                way.actions,
+                way.timed,
             )
         )
     if not setting.bounded and not setting.cut:
@@ -142,9 +153,67 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
         _settle_calls(work, key, setting)
 
 
-def _guard(scan: Scan, block: int, key: str) -> str:
-    standing = frozenset(alias.variable for alias in scan.aliases if alias.key.key == key)
-    return guard_text(scan.function, block, key, standing)
+@dataclass(slots=True)
+class _Paths:
+    """What is needed to say how a key's steps are taken."""
+
+    work: Work
+    key: str
+    setting: Setting
+    scans: Mapping[str, Scan]
+    guards: dict[str, Guards] = field(default_factory=dict)
+    # The names of functions that do nothing but store: as actions they say no more than the step itself.
+    setters: frozenset[str] = frozenset()
+
+
+def _guards(paths: _Paths, function: str) -> Guards:
+    found = paths.guards.get(function)
+    if found is None:
+        scan = paths.scans[function]
+        standing = {alias.variable for alias in scan.aliases if alias.key.key == paths.key}
+        standing |= {name for name, copied in scan.copies.items() if copied.key == paths.key}
+        known = paths.work.paths.get(function)
+        if known is None:
+            known = paths.work.paths[function] = paths_of(scan.function, paths.work.read)
+        found = paths.guards[function] = Guards(known, paths.key, frozenset(standing))
+    return found
+
+
+def _way(paths: _Paths, move: Move) -> Way:
+    """The conditions and actions of a step: where it was chosen, where it is stored, the calls between."""
+    places = [(move.chosen.function, move.chosen.block)]
+    if move.block >= 0 and (move.function, move.block) not in places:
+        places.append((move.function, move.block))
+    parts: list[Condition] = []
+    called: list[str] = []
+    for function, block in _callers(paths, places[0][0], move.source):
+        parts.extend(conditions(_guards(paths, function), block))
+    for function, block in places:
+        parts.extend(conditions(_guards(paths, function), block))
+        called.extend(actions(_guards(paths, function), block, paths.setters))
+    if move.through is not None:
+        called = [name for name in called if name != move.through[0]]
+    return way_of(parts, called, move.chosen.function)
+
+
+def _callers(paths: _Paths, function: str, source: int | None) -> list[tuple[str, int]]:
+    """Where a function of this file alone was called from in a state, if that is one place; outermost first."""
+    found: list[tuple[str, int]] = []
+    while function in paths.scans and paths.scans[function].function.static and len(found) < MOST_DEPTH:
+        sites = {(caller, block) for caller, block, known in paths.setting.sites.get(function, ()) if known == source}
+        if len(sites) != 1 or source is None:
+            break
+        (site,) = sites
+        if site in found:
+            break
+        found.insert(0, site)
+        function = site[0]
+    return found
+
+
+def _only_stores(function: Function) -> bool:
+    """Whether a function calls nothing."""
+    return not any(isinstance(statement, Call) for block in function.blocks for statement in block.statements)
 
 
 def _settle_stores(work: Work, key: str, setting: Setting) -> None:
@@ -217,11 +286,18 @@ def _has_setter(scans: Sequence[Scan], key: str) -> bool:
 
 def _unconditional(work: Work, key: str) -> None:
     """Stores in a unit that never looks at the state: from any state to each constant."""
-    for store, _ in work.stores:
-        if store.key == key and not store.fresh:
+    scans = {scan.function.identity: scan for scan in work.scans if key in scan.keys}
+    paths = _Paths(work, key, Setting(key, frozenset(), work.by_name.get, frozenset(), lambda _: frozenset()), scans)
+    for store, at in work.stores:
+        if store.key == key and not store.fresh and store.constants:
+            function, where = store.function, store.where
+            block = next((block for block, one, _ in scans[function].keys[key].stores if one.position == at), 0)
+            guards = _guards(paths, function)
+            way = way_of(conditions(guards, block), actions(guards, block, frozenset()), function)
             for constant in store.constants:
-                function, where = store.function, store.where
-                work.transitions.append(TransitionFact(key, function, None, (), constant, "", where, function))
+                work.transitions.append(
+                    TransitionFact(key, function, None, (), constant, way.guard, where, function, None, False, *way[1:])
+                )
 
 
 def _writers(work: Work, key: str, scans: Sequence[Scan], callers: Mapping[str, set[str]]) -> frozenset[str]:

@@ -40,8 +40,9 @@ from stepring.shapes.facts import (
     TransitionFact,
 )
 from stepring.shapes.keys import PlaceKey, is_integral, place_key, uncast
-from stepring.shapes.names import Names
+from stepring.shapes.names import STATE_NAME, Names
 from stepring.shapes.state_aliases import Alias, copies, working_copies
+from stepring.shapes.state_guards import Paths
 
 
 @dataclass(slots=True)
@@ -93,6 +94,8 @@ class Work:
     setters: dict[str, bool] = field(default_factory=dict)
     forwards: list[ForwardFact] = field(default_factory=list)
     commits: list[tuple[str, str]] = field(default_factory=list)
+    # The ways through each function, by its identity.
+    paths: dict[str, Paths] = field(default_factory=dict)
 
 
 def scan_function(function: Function, known: Mapping[str, PlaceKey], handed: tuple[Alias, ...]) -> Scan:
@@ -242,6 +245,7 @@ def may_chain(seen: Sequence[Seen], names: Names) -> bool:
     tested = {number.value: number for one in seen for _, number, _ in one.branches}
     stored: dict[int, Const] = {}
     computed = 0
+    counted = False
     for one in seen:
         for _, statement, _ in one.stores:
             inner = uncast(statement.value) if isinstance(statement, Assign) else None
@@ -249,14 +253,16 @@ def may_chain(seen: Sequence[Seen], names: Names) -> bool:
                 stored[inner.value] = inner
             else:
                 computed += 1
+                counted = counted or isinstance(inner, Binary)
     if not tested or not (stored or computed):
         return False
     values = tested | stored
     if len(values) < 2:
         return False
-    if len(values) > 2 or not {0, 1} >= set(values):
+    says = bool(STATE_NAME.search(seen[0].key.shown))
+    if (len(values) > 2 and not counted) or says:
         return True
-    return any(_is_named(const, names) for const in values.values())
+    return sum(_is_named(const, names) for const in values.values()) > 1
 
 
 def _is_named(const: Const, names: Names) -> bool:

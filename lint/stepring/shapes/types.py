@@ -102,12 +102,25 @@ class StateStore:
     initial: bool = False
 
 
+def _conjuncts(text: str) -> list[str]:
+    """The parts of a conjunction, cut where no parenthesis is open."""
+    parts: list[str] = []
+    depth = start = 0
+    for number, character in enumerate(text):
+        depth += (character in "([") - (character in ")]")
+        if depth == 0 and text.startswith(" && ", number):
+            parts.append(text[start:number])
+            start = number + 4
+    return [*parts, text[start:]] if text else []
+
+
 @dataclass(frozen=True, slots=True)
 class Transition:
     """From one state to another, taken by a function at a place; ``guard`` is source text or empty.
 
-    ``event`` is what the code tells apart on the way (``code == CMD_STOP``; empty where nothing is recognised or the
-    function itself is the event), ``actions`` are the functions called on the way.
+    ``event`` is that part of the guard which tells an event (``code == CMD_STOP``; empty where nothing is recognised or
+    the function itself is the event), ``condition`` the rest, ``actions`` are the functions called on the way.
+    ``timed``: a clock or a counter is looked at.
     """
 
     source: str
@@ -117,6 +130,13 @@ class Transition:
     where: Origin
     event: str = ""
     actions: tuple[str, ...] = ()
+    timed: bool = False
+
+    @property
+    def condition(self) -> str:
+        """The guard without what tells the event."""
+        told = {part.strip("()") for part in _conjuncts(self.event)}
+        return " && ".join(part for part in _conjuncts(self.guard) if part.strip("()") not in told)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
