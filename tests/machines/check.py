@@ -18,6 +18,7 @@ from pathlib import Path
 from tests.machines.host import differences
 from tests.machines.programs import Made, make
 from tests.machines.slips import REVIEWS
+from tests.machines.style import PHASES
 from tests.machines.tables import Edge
 from tests.machines.written import event_function
 
@@ -29,7 +30,7 @@ from stepring_rules.machine_common import short
 ZERO = "0"
 """Stands for a value that is no state and may be told: what storage starts as, a count, another's constant."""
 OPTIONS = Options(use_compiler=False)
-_NEGATED = re.compile(r"!\([^()]*\)")
+_NEGATED = re.compile(r"!\([^()]*\)|\w+ != \w+")
 _EVENT = re.compile(r"\bEV_[A-Z0-9_]+\b")
 
 
@@ -75,8 +76,12 @@ def compare(made: Made, folder: Path) -> Compared:
     found = [one for one in about if one.kind == "fail" or one.rule in REVIEWS]
     loud = [one for one in speaking if one.kind == "fail" and one.level in ("error", "warning")]
     alarms = [one for one in loud if one not in about and one.rule not in made.follows]
-    machines = outcome.program.machines
-    graph, events = state_fault(made, machines), ""
+    machines = list(outcome.program.machines)
+    inside = [one for one in machines if one.variable == f"{made.table.noun}_push"]
+    graph, events = nested_fault(made, inside), ""
+    if not graph:
+        machines = [one for one in machines if one not in inside]
+        graph = state_fault(made, machines)
     if not graph:
         graph, events = edge_faults(made, machines[0])
     return Compared(
@@ -101,6 +106,18 @@ def _is_about(made: Made, item: Obligation) -> bool:
         return True
     spelled = {made.spelled(state) if state in made.table.states else state for state in made.about}
     return bool(spelled & set(item.states))
+
+
+def nested_fault(made: Made, machines: Sequence[Machine]) -> str:
+    """What is wrong with the machine inside a state, where there is one."""
+    if not made.style.nested:
+        return f"{machines[0].variable} is none" if machines else ""
+    if len(machines) != 1:
+        return "the machine inside a state is not found"
+    names = [f"{made.table.noun.upper()}_PUSH_{phase}" for phase in PHASES]
+    ring = {(name, names[(at + 1) % len(names)]) for at, name in enumerate(names)}
+    told = {(step.source, step.target) for step in machines[0].transitions}
+    return "" if told == ring else f"the machine inside a state has {sorted(told ^ ring)[0]}"
 
 
 def _names(made: Made, machine: Machine) -> dict[str, str]:

@@ -25,6 +25,7 @@ _WORDS = (
 )
 _KEPT = frozenset(_WORDS.split())
 _WORD = re.compile(r'"(?:\\.|[^"\\])*"|/\*.*?\*/|#\s*\w+|\b[A-Za-z_]\w*', re.DOTALL)
+# A machine inside a state, or what else the program calls, is answered alike each time.
 _EXTERN = re.compile(r"^extern ((?:enum )?\w+) (\w+)\((.*)\);$", re.MULTILINE)
 Event = tuple[str, Inputs]
 

@@ -18,6 +18,7 @@ from tests.machines.slips import (
     check_fit,
     early_returns,
     graph,
+    machine_in_a_state,
     stacked_labels,
 )
 from tests.machines.style import Family, Storage, Style, clean
@@ -168,7 +169,7 @@ def _make(number: int, dice: random.Random) -> Made:
         for add, fitting in VARIETY:
             if form in fitting and storage != "local" and dice.random() < 0.15:
                 # What runs on neither shares a case nor leaves early.
-                if not (draft.style.falls and add in (stacked_labels, early_returns)):
+                if not (draft.style.falls and add in (stacked_labels, early_returns, machine_in_a_state)):
                     add(draft)
     check_fit(draft)
     style = replace(draft.style, table=draft.table)

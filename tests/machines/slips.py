@@ -9,7 +9,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 
 import networkx
-from tests.machines.style import MARK, Style
+from tests.machines.style import MARK, PHASES, Style
 from tests.machines.tables import Cells, Edge, Guard, Step, Table
 from tests.machines.written import FORMS
 
@@ -390,10 +390,24 @@ def interrupt(draft: Draft) -> None:
     draft.loose |= {(state, "*", to)}
 
 
+def machine_in_a_state(draft: Draft) -> None:
+    """A state that has a machine of its own."""
+    noun = draft.table.noun
+    names = [f"{noun.upper()}_PUSH_{phase}" for phase in PHASES]
+    words = (
+        f"enum {noun}_push {{ {', '.join(names)} }};",
+        f"static enum {noun}_push {noun}_push = {names[0]};",
+        "extern bool push_ready(void);",
+    )
+    state = draft.other(draft.style.stacked)
+    draft.style = replace(draft.style, nested=state, declared=(*draft.style.declared, *words))
+
+
 VARIETY: tuple[tuple[Slip, tuple[str, ...]], ...] = (
     (run_on_as_meant, SWITCHES),
     (stacked_labels, SWITCHES),
     (early_returns, AT_ONCE),
+    (machine_in_a_state, SWITCHES),
     (reset, VALUED),
     (query, VALUED),
     (names, VALUED),

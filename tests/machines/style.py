@@ -38,6 +38,7 @@ class Style:
     uninitialised: bool = False
     fall_marked: bool = False  # a comment says that the case is meant to run on
     stacked: str = ""  # the state that shares the next one's case
+    nested: str = ""  # the state with a machine of its own
     named_type: bool = False  # the enumeration has a typedef name and no tag
     counted: bool = False  # a last enumerator counts the states
     volatile: bool = False
@@ -269,6 +270,24 @@ def default(style: Style, lvalue: str) -> list[str]:
     return []
 
 
+PHASES = ("OUT", "WAIT", "IN")
+"""The states of a machine inside a state: each leads to the next, from the second on a condition."""
+
+
+def nested(style: Style) -> list[str]:
+    """A machine inside a state."""
+    noun = style.table.noun
+    names = [f"{noun.upper()}_PUSH_{phase}" for phase in PHASES]
+    lines = [f"switch ({noun}_push) {{"]
+    for at, name in enumerate(names):
+        store = [f"{noun}_push = {names[(at + 1) % len(names)]};"]
+        lines += [
+            f"case {name}:",
+            *indented([*(["if (push_ready()) {", *indented(store), "}"] if at == 1 else store), "break;"]),
+        ]
+    return [*lines, "default:", f"    {noun}_push = {names[0]};", "    break;", "}"]
+
+
 def cases(style: Style, bodies: Iterable[tuple[str, list[str]]], last: list[str], event: str = "") -> list[str]:
     """The cases of a ``switch`` on the state (of one event); a missing ``break`` is marked where it is missing and
     where it leads."""
@@ -284,7 +303,8 @@ def cases(style: Style, bodies: Iterable[tuple[str, list[str]]], last: list[str]
         meant = ["/* falls through */"] if style.fall_marked else []
         end = meant if state == falls else ["break;"]
         stray = [f"fault_report();{MARK}"] if state == style.stray else []
-        lines += [f"case {style.s(state)}:{mark}", *indented([*body, *end, *stray])]
+        inner = nested(style) if state == style.nested else []
+        lines += [f"case {style.s(state)}:{mark}", *indented([*inner, *body, *end, *stray])]
         mark = ""
         if state == falls:
             lines[-1] += MARK

@@ -15,7 +15,7 @@ from tests.machines.check import Compared, compare_numbers
 from tests.machines.host import COMPILER, differences
 from tests.machines.programs import LABELS, Made, make
 from tests.machines.slips import SLIPS
-from tests.machines.to_come import EVENTS_TO_COME, FORMS_TO_COME, SLIPS_TO_COME, STORAGES_TO_COME, params
+from tests.machines.to_come import FORMS_TO_COME, SLIPS_TO_COME, STORAGES_TO_COME, params
 from tests.machines.written import FORMS
 
 MANY = bool(os.environ.get("STEPRING_MANY"))
@@ -68,7 +68,7 @@ def test_the_graph_is_the_one_that_was_made(form: str, compared: list[Compared])
     assert holds([not one.graph for one in mine], 0.99), wrong
 
 
-@pytest.mark.parametrize("form", params(LABELS, FORMS_TO_COME | EVENTS_TO_COME))
+@pytest.mark.parametrize("form", params(LABELS, FORMS_TO_COME))
 def test_each_transition_is_told_with_its_event(form: str, compared: list[Compared]) -> None:
     mine = [one for one in compared if one.form == form and one.storage not in STORAGES_TO_COME]
     wrong = [f"{one.number}: {one.graph or one.events}" for one in mine if one.graph or one.events]

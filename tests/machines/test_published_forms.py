@@ -13,13 +13,12 @@ from tests.machines.check import edge_faults, events_of, state_fault
 from tests.machines.host import COMPILER, differences
 from tests.machines.programs import Made
 from tests.machines.standards import MACHINES, STYLES, published
-from tests.machines.to_come import EVENTS_TO_COME, FORMS_TO_COME, params
+from tests.machines.to_come import FORMS_TO_COME, params
 
 from stepring.pipeline import Options, inspect
 from stepring.report.types import Outcome
 from stepring.shapes.types import Machine
 
-NO_ACTIONS = dict.fromkeys(STYLES, "the functions called on the way are not told yet") | FORMS_TO_COME
 FORM_PARAMS = params(STYLES, FORMS_TO_COME)
 
 
@@ -78,7 +77,7 @@ def test_the_graph_is_the_table(name: str, form: str, seen: Seen) -> None:
     assert set(graph.edges) - free == pairs - free
 
 
-@pytest.mark.parametrize("form", params(STYLES, FORMS_TO_COME | EVENTS_TO_COME))
+@pytest.mark.parametrize("form", FORM_PARAMS)
 @pytest.mark.parametrize("name", MACHINES)
 def test_each_cell_of_the_table_is_a_transition(name: str, form: str, seen: Seen) -> None:
     made, machine = the_machine(seen, name, form)
@@ -103,7 +102,7 @@ def test_figures_of_the_tap(form: str, seen: Seen) -> None:
         assert networkx.number_of_selfloops(graph) == 6
 
 
-@pytest.mark.parametrize("form", params(STYLES, FORMS_TO_COME | EVENTS_TO_COME))
+@pytest.mark.parametrize("form", FORM_PARAMS)
 def test_five_clocks_with_tms_high_reset_the_tap_and_no_shorter_word_does(form: str, seen: Seen) -> None:
     made, machine = the_machine(seen, "tap", form)
     # Where a handler gives its own state back without a test of TMS, that is the step of the value not tested.
@@ -157,7 +156,7 @@ def test_published_machines_are_without_an_error_or_a_warning(name: str, form: s
     assert not loud, [f"{item.rule} {item.where.line} {item.what}" for item in loud]
 
 
-@pytest.mark.parametrize("form", params(STYLES, FORMS_TO_COME | NO_ACTIONS))
+@pytest.mark.parametrize("form", FORM_PARAMS)
 @pytest.mark.parametrize("name", ["lcp", "tcp"])
 def test_actions_are_those_of_the_table(name: str, form: str, seen: Seen) -> None:
     made, machine = the_machine(seen, name, form)

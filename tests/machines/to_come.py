@@ -5,7 +5,7 @@ from typing import Any
 
 import pytest
 
-FORMS_TO_COME = {
+FORMS_TO_COME: dict[str, str] = {
     "table": "a table of next states is no dispatch yet",
     "rows": "a list of rows is no dispatch yet",
     "function pointer": "a pointer to the handler is no state yet",
@@ -14,8 +14,6 @@ FORMS_TO_COME = {
 }
 
 STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
-
-EVENTS_TO_COME = {"event then state": "an event that is told before the state is not told yet"}
 
 SLIPS_TO_COME = {
     "break missing before default": "a fall into the default is not told yet",
