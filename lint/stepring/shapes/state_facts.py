@@ -32,6 +32,7 @@ from stepring.shapes.state_moves import note_transitions
 from stepring.shapes.state_scan import Scan, Work, function_identity, scan_function, state_candidates
 from stepring.shapes.state_spelled import spelled
 from stepring.shapes.state_stores import before_all, may_set, note_forward, store_fact
+from stepring.shapes.state_tables import Found, lookups, tables
 
 
 def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
@@ -41,11 +42,13 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
     known = getters(own)
     handed = working_parameters(own)
     scans = [scan_function(function, known, handed.get(function.identity, ())) for function in own]
-    chosen = state_candidates(scans, names)
     work = Work(unit, read, names, {function.name: function for function in own}, scans)
+    looked_up = _looked_up(work)
+    chosen = state_candidates(scans, names) | {found.dispatch.key for found in looked_up}
     for scan in scans:
         _function_facts(work, scan, chosen)
     note_transitions(work, chosen)
+    _note_lookups(work, looked_up)
     key_facts(work, chosen)
     return StateFacts(
         tuple(work.keys.values()),
@@ -61,6 +64,31 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         tuple(work.forwards),
         tuple(work.commits),
     )
+
+
+def _looked_up(work: Work) -> tuple[Found, ...]:
+    """The stores that take a state's next value out of a table."""
+    known = tables(work)
+    if not known:
+        return ()
+    return tuple(
+        found
+        for scan in work.scans
+        for key, seen in scan.keys.items()
+        if seen.stores and seen.key.scope != "parameter"
+        for found in lookups(work, scan, key, known)
+    )
+
+
+def _note_lookups(work: Work, looked_up: tuple[Found, ...]) -> None:
+    """A table's cells are steps; what the store stores is then known."""
+    for found in looked_up:
+        work.dispatches.append(found.dispatch)
+        work.transitions.extend(found.transitions)
+        for number, (store, at) in enumerate(work.stores):
+            if (store.key, store.function, at) == (found.dispatch.key, found.dispatch.function, found.at):
+                known = replace(store, constants=found.targets, why_unknown="", parameter=None, stepped=False)
+                work.stores[number] = (known, at)
 
 
 def _starters(work: Work) -> tuple[tuple[str, str | None], ...]:

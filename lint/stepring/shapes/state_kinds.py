@@ -59,7 +59,7 @@ class Gathered:
 
 def is_machine(group: Gathered) -> bool:
     """Whether a key is a state."""
-    return is_switched(group) or is_chained(group)
+    return is_switched(group) or is_chained(group) or is_tabled(group)
 
 
 def is_switched(group: Gathered) -> bool:
@@ -193,7 +193,7 @@ def evidence(group: Gathered) -> Evidence:
 
 def is_chained(group: Gathered) -> bool:
     """Whether a key that is only compared with constants is a state."""
-    chains = [one for one in group.dispatches if not one.line_numbers]
+    chains = [one for one in group.dispatches if not one.line_numbers and one.form == "if-chain"]
     if not chains or group.key.scope == "parameter":
         return False
     if all(one.characters for one in chains) or all(one.packet for one in chains):
@@ -216,6 +216,20 @@ def is_chained(group: Gathered) -> bool:
     if len(targets) < 2 or len(sources) < (2 if _STAGE_NAME.search(group.key.shown) else 3):
         return False
     return sum(target in found.tested for _, target in found.steps) >= 2
+
+
+def is_tabled(group: Gathered) -> bool:
+    """Whether a key that is given its next value by tables or handlers is a state."""
+    looking = [one for one in group.dispatches if one.form not in ("switch", "if-chain")]
+    if not looking or group.key.scope == "parameter":
+        return False
+    if group.key.scope == "local" and not any(one.carried for one in looking):
+        return False
+    found = evidence(group)
+    if len({source for source, _ in found.steps}) < 2 or len({target for _, target in found.steps}) < 2:
+        return False
+    # One number put for another is a translation; with names, an event or a name that says state it is a step.
+    return found.says_state or found.named > 1 or any(move.event for move in group.transitions)
 
 
 def _says_error(group: Gathered) -> bool:
