@@ -224,7 +224,10 @@ def hole(draft: Draft) -> None:
     for name in draft.table.states:
         for each in draft.table.events:
             draft.table.cells.setdefault((name, each), (Step(name),))
+    del draft.table.cells[state, event]
+    check_fit(draft)  # whether a hole leads anywhere is the question
     draft.put(state, event, Step(draft.table.initial))
+    draft.loose = {(state, event, draft.table.initial)}
     draft.style = replace(draft.style, left_out=(state, event), variant=0)
     draft.about = (state,)
 
@@ -445,8 +448,8 @@ SLIPS: dict[str, tuple[Slip, tuple[str, ...], tuple[str, ...]]] = {
 """Each slip with the rules that should speak of it and the forms that it is made in."""
 
 AS_WELL = {
-    # Where each event has its own switch, a state that knows no event is one that nothing handles.
-    **{("trap", form): ("SM02", "SM05") for form in BY_EVENT},
+    # Where each event has its own switch or row, a state that knows no event is one that nothing handles.
+    **{("trap", form): ("SM02", "SM05") for form in (*BY_EVENT, "rows")},
     # Among plain numbers a state is what has a case.
     ("unhandled state", "numbers"): ("SM05",),
 }

@@ -6,8 +6,7 @@ from typing import Any
 import pytest
 
 FORMS_TO_COME: dict[str, str] = {
-    "table": "a table of next states is no dispatch yet",
-    "rows": "a list of rows is no dispatch yet",
+    "working copy": "a copy of a state of plain numbers is taken for a level that is turned up and down",
     "function pointer": "a pointer to the handler is no state yet",
     "goto": "labels are no states yet",
     "handlers in a table": "handlers that are called through a table are not followed yet",
@@ -15,7 +14,13 @@ FORMS_TO_COME: dict[str, str] = {
 
 STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
 
+GRAPHS_TO_COME = {
+    "other enumeration": "a machine of plain numbers takes up the enumeration of the one constant it is compared with",
+}
+"""Slips that spoil the graph."""
+
 SLIPS_TO_COME = {
+    "trap": "a row of a table of plain numbers that always stays is not taken for a state",
     "break missing before default": "a fall into the default is not told yet",
     **dict.fromkeys(
         [
