@@ -48,13 +48,13 @@ def witnessed(program: Program, found: Iterable[Obligation]) -> Iterator[Obligat
         shown = _shown(rings[item.shape], item)
         if shown is not None:
             yield replace(item, evidence=shown.witness, witness=story(shown))
-        elif item.level == "error" and rings[item.shape].explored:
+        elif item.level == "error" and rings[item.shape].unrun is not None:
+            unrun = rings[item.shape].unrun or "no run of the ring's operations was found that shows it"
             yield replace(
                 item,
                 kind="open",
                 level=None,
-                reason="no run of the ring's operations was found that shows it; "
-                "by the index's own code alone it would happen",
+                reason=f"{unrun}; by the index's own code alone it would happen",
                 open_as="no witness replayed",
             )
         else:

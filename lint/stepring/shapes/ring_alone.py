@@ -18,19 +18,27 @@ Odd = Mapping[tuple[str, Any, Any], int]
 """Steps of indices that are wrong, as (shown name, before, after), with what should come after."""
 
 
-def alone(search: Search) -> None:
-    """Call each operation that can be entered again and again, as a history's only writer is; look at the slots.
+HUGE = (250, 1000, 60_000)
+"""Numbers that no ring of those tried has as many slots as."""
 
-    Nothing is compared with a queue here: what counts are accesses outside the storage, and the steps of an index that
-    its own code was found to take wrongly.
-    """
-    world = search.world
-    odd = {
+
+def odd_steps(world: World) -> Odd:
+    """The steps of the ring's indices that are known to be wrong from their code."""
+    return {
         (index.name.rsplit(".", 1)[-1], before, after): due
         for index in world.ring.indices
         for step in index.steps
         for before, after, due in getattr(step, "odd", ())
     }
+
+
+def alone(search: Search, odd: Odd) -> None:
+    """Call each operation that can be entered again and again, as a history's only writer is; look at the slots.
+
+    Nothing is compared with a queue here: what counts are accesses outside the storage, and the steps of an index that
+    its own code was found to take wrongly (``odd``).
+    """
+    world = search.world
     pair = [next((use for use in search.probe.uses if use.kind == kind), None) for kind in ("put", "take")]
     if pair[0] is not None and pair[1] is not None and _again(search, [use for use in pair if use], odd):
         return
@@ -79,10 +87,10 @@ def _again(search: Search, uses: Sequence[Use], odd: Odd, start: Any = None) -> 
         use = uses[number % len(uses)]
         effect = call_from(search, state, use)
         if effect.outcome.kind == "undefined" and about_storage(world, effect):
-            return fault(search, state, use, effect)
+            return blameless(search, state, use, {}) and fault(search, state, use, effect)
         if not effect.returned or (number > 3 and effect.before == effect.after):
             return False
-        if _odd_step(search, state, use, effect, odd):
+        if odd_step(search, state, use, effect, odd):
             return True
         if len(effect.stored) == 1 and use.kind == "put":
             now = effect.stored[0][0]
@@ -117,7 +125,7 @@ def _other_slot(search: Search, state: State, use: Use, effect: Effect, before: 
     return True
 
 
-def _odd_step(search: Search, state: State, use: Use, effect: Effect, odd: Odd) -> bool:
+def odd_step(search: Search, state: State, use: Use, effect: Effect, odd: Odd) -> bool:
     """Report a step of an index that its code was found to take wrongly, where a call takes it."""
     for at, (place, old, new) in enumerate(zip(search.world.places, effect.before, effect.after, strict=True)):
         due = odd.get((place[0], old, new))
@@ -134,3 +142,21 @@ def _odd_step(search: Search, state: State, use: Use, effect: Effect, odd: Odd) 
 def _narrow(world: World) -> bool:
     """Whether some index is of one byte, so that all its values are soon gone through."""
     return any(isinstance(reader[2], IntType) and reader[2].width <= 8 for reader in world.readers)
+
+
+def blameless(search: Search, state: State, use: Use, given: Mapping[str, int]) -> bool:
+    """Whether a call that goes wrong does so without numbers, or with one that the function would refuse if too large.
+
+    The memory is changed.
+    """
+    numbers = [name for name, role in (("number", "value"), ("length", "length")) if use.operation.has(role)]  # type: ignore[arg-type]
+    if not numbers:
+        return True
+    none = call_from(search, state, use, **{**given, **dict.fromkeys(numbers, 0)})
+    if not none.returned and about_storage(search.world, none):
+        return True
+    for huge in HUGE:
+        more = call_from(search, state, use, **{**given, **dict.fromkeys(numbers, huge)})
+        if not more.returned or more.before != more.after or more.stored:
+            return False
+    return True

@@ -13,13 +13,15 @@ from typing import Any
 from stepring.meaning.types import IntType
 from stepring.paths.witness import Ending, StartValue
 from stepring.shapes.ring_calls import Effect, about_storage, below, call
-from stepring.shapes.ring_ideal import Content, after_put, is_slice, linear
+from stepring.shapes.ring_ideal import Content, after_put, is_slice, is_suffix, linear
 from stepring.shapes.ring_parameters import GIVEN, TAKEN
 from stepring.shapes.ring_report import (
     Search,
     State,
+    Suspect,
     content_report,
     index_report,
+    index_store,
     made_of,
     moved_text,
     output_report,
@@ -313,7 +315,8 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
         now, _ = drained(search.probe, search.take, _most(search, state, 0))
         if not search.take.checked:
             now = now[: len(rest)]
-        if now != rest and not (number > len(state.held) and is_slice(now, state.held)):
+        some = now != state.held and is_suffix(now, state.held) and not use.numbered
+        if now != rest and not some and not (number > len(state.held) and is_slice(now, state.held)):
             told = f"{use.name}({number})" if use.numbered else use.name
             what = f"after {told} the ring gives {shown(now)} where {shown(rest)} is due"
             doubt: Doubt = "data" if number > len(state.held) else "order"
@@ -327,7 +330,30 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
             at = return_position(search, state, use, number=number)
             report(search, state, effect, "occupancy", what, at, use.name, ending)
             continue
+        if not _goes_on(search, state, use, effect, saved, now, number=number):
+            continue
         yield _after(search, state, use, effect, saved, now, 0, number=number)
+
+
+def _goes_on(search: Search, state: State, use: Use, effect: Effect, saved: Any, held: Content, **given: Any) -> bool:
+    """Whether the next element that is put comes out in its turn; if not, the call before is to blame."""
+    put = search.put
+    assert put is not None and search.take is not None
+    if len(held) >= search.room:
+        return True
+    after = _after(search, state, use, effect, saved, held, 0, **given)
+    added = call_from(search, after, put)
+    if not added.returned or len(added.stored) != 1:
+        return True
+    whole = (*held, added.stored[0][1])
+    now, calls = drained(search.probe, search.take, len(whole) + (search.room + 2 if search.take.checked else 0))
+    if now == whole or any(item.outcome.kind == "undefined" for item in calls):
+        return True  # what goes outside is said of the call that does
+    position, function = index_store(search, state, use, given)
+    blame = Suspect(position, function, "")
+    what = f"after {use.name} and {put.name} the ring gives {shown(now)} where {shown(whole)} is due"
+    content_report(search, replace(after, blame=blame), put, "order", what, whole, now)
+    return False
 
 
 def _look(search: Search, state: State, use: Use) -> None:

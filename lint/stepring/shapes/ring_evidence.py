@@ -12,6 +12,7 @@ from stepring.paths.symbolic_types import Limits
 from stepring.places import Notice, Origin, Position
 from stepring.shapes.ring_explore import with_runs
 from stepring.shapes.ring_proofs import prove_rings
+from stepring.shapes.ring_types import CheckedAccess, CheckedStep
 from stepring.shapes.ring_writers import Outside
 from stepring.shapes.types import Ring
 
@@ -57,8 +58,9 @@ def with_evidence(
         called.update({(function.identity, function.position): function for function in unit.called})
 
     def proved(found: tuple[Ring, ...]) -> tuple[Ring, ...]:
-        return prove_rings(
-            found,
+        asked = tuple(ring for ring in found if _unsettled(ring))
+        done = prove_rings(
+            asked,
             code.functions,
             code.objects,
             code.structs,
@@ -69,9 +71,11 @@ def with_evidence(
             defined=code.defined,
             limits=limits,
         )
+        answers = dict(zip(asked, done, strict=True))
+        return tuple(answers.get(ring, ring) for ring in found)
 
     steps: tuple[tuple[str, Callable[[tuple[Ring, ...]], tuple[Ring, ...]]], ...] = (
-        ("The operations of rings were not run", lambda found: _run(found, code, origin)),
+        ("The operations of rings were not run", lambda found: _run(found, code, origin, said)),
         ("Nothing was proved of rings", proved),
     )
     for what, step in steps:
@@ -82,7 +86,26 @@ def with_evidence(
     return rings
 
 
-def _run(rings: tuple[Ring, ...], code: Code, origin: Callable[[Position], Origin]) -> tuple[Ring, ...]:
+def _unsettled(ring: Ring) -> bool:
+    """Whether running its indices' code left something for the solver: where all is settled, it is not asked."""
+    if ring.capacity is None or ring.unseen:
+        return True
+    for access in ring.accesses:
+        settled = isinstance(access, CheckedAccess) and (access.settled or access.bad is not None)
+        if not settled or access.kind == "address":
+            return True
+    return any(
+        not step.settled
+        for index in ring.indices
+        if index.role != "count"
+        for step in index.steps
+        if isinstance(step, CheckedStep) and step.wrap != "none"
+    )
+
+
+def _run(
+    rings: tuple[Ring, ...], code: Code, origin: Callable[[Position], Origin], said: list[Notice]
+) -> tuple[Ring, ...]:
     """Run the operations of each ring in the program that it belongs to."""
     units = [
         TypedUnit((*unit.rings, *unit.called), unit.objects, TypeTable(code.model, unit.structs), ())
@@ -93,7 +116,7 @@ def _run(rings: tuple[Ring, ...], code: Code, origin: Callable[[Position], Origi
         programs.setdefault(_program_of(ring, units), []).append(ring)
     found: dict[str, Ring] = {}
     for numbers, members in programs.items():
-        for ring in with_runs(members, [units[number] for number in numbers], origin):
+        for ring in with_runs(members, [units[number] for number in numbers], origin, said):
             found[ring.identity] = ring
     return tuple(found.get(ring.identity, ring) for ring in rings)
 

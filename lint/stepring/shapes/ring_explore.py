@@ -13,12 +13,14 @@ from typing import Any
 from stepring.meaning.types import TypedUnit
 from stepring.paths.interpreter import run as run_program
 from stepring.paths.witness import OutsideValue, Reference, Value, Witness, WitnessCall
-from stepring.shapes.ring_alone import alone
+from stepring.places import Notice
+from stepring.shapes.ring_alone import alone, odd_steps
 from stepring.shapes.ring_calls import Purse
 from stepring.shapes.ring_classify import classify
 from stepring.shapes.ring_compare import near_overflow, search_states
 from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN
 from stepring.shapes.ring_report import Placer, Search, State
+from stepring.shapes.ring_seek import seek
 from stepring.shapes.ring_types import Disagreement
 from stepring.shapes.ring_uses import (
     Probe,
@@ -28,6 +30,7 @@ from stepring.shapes.types import Ring
 
 BUDGET = 1_200_000
 """Interpreter steps for one ring."""
+MOST_SLOTS = 1024
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,10 +38,12 @@ class Exploration:
     """What came of exploring a ring.
 
     ``compared``: its elements were put in and taken out, so that it means something that nothing was found.
+    ``unrun``: why none of its operations could be run, empty if some were.
     """
 
     disagreements: tuple[Disagreement, ...]
     compared: bool
+    unrun: str = ""
 
 
 def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -> Exploration:
@@ -48,34 +53,46 @@ def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -
     the interpreter steps.
     """
     purse = Purse(budget)
+    sizes = _sizes(ring)
+    unrun = "" if sizes else f"rings of {ring.capacity} slots are not run; 2 to {MOST_SLOTS} are"
     compared = False
-    for slots in _sizes(ring):
+    for slots in sizes:
         world = world_of(group, ring, slots)
-        if world is None:
+        if world is None or not world.operations:
+            unrun = "no object that its operations could be run on was found to be made"
             continue
+        unrun = ""
         found = _explored(world, purse, origin)
         compared = compared or found.compared
         if found.disagreements or purse.left <= 0:
             return Exploration(found.disagreements, compared)
-    return Exploration((), compared)
+    return Exploration((), compared, unrun)
 
 
-def with_runs(rings: Sequence[Ring], units: Sequence[TypedUnit], origin: Placer) -> tuple[Ring, ...]:
-    """The rings of one program with what running their operations showed."""
+def with_runs(
+    rings: Sequence[Ring], units: Sequence[TypedUnit], origin: Placer, said: list[Notice]
+) -> tuple[Ring, ...]:
+    """The rings of one program with what running their operations showed; where that fails, ``said`` gets a notice."""
     if not rings:
         return ()
-    group = group_of(units)
+    group = group_of(units, frozenset(name for ring in rings for name in ring.functions))
     found: list[Ring] = []
     for ring in rings:
-        done = explore(ring, group, origin)
-        found.append(replace(ring, disagreements=done.disagreements, explored=done.compared))
+        try:
+            done = explore(ring, group, origin)
+        except Exception as trouble:  # the other rings must not be lost
+            text = f"The operations of {ring.storage} were not run ({type(trouble).__name__}: {trouble})."
+            said.append(Notice("internal", "warning", text))
+            found.append(replace(ring, unrun="running its operations failed"))
+            continue
+        found.append(replace(ring, disagreements=done.disagreements, explored=done.compared, unrun=done.unrun))
     return tuple(found)
 
 
 def _sizes(ring: Ring) -> tuple[int, ...]:
     """How many slots the ring is tried with."""
     if ring.capacity is not None:
-        return (ring.capacity,) if 2 <= ring.capacity <= 1024 else ()
+        return (ring.capacity,) if 2 <= ring.capacity <= MOST_SLOTS else ()
     masked = (ring.bound is not None and ring.bound.plus == 1) or ring.wrap == "mask"
     masked = masked or any(access.reduction == "mask" for access in ring.accesses)
     return (4, 2) if masked or ring.wrap == "free-running" else (4, 3)
@@ -89,8 +106,10 @@ def _explored(world: World, purse: Purse, origin: Placer) -> Exploration:
     if search.put is not None and search.take is not None:
         search_states(search, State(probe.start, (), (), 0))
         near_overflow(search)
+    odd = odd_steps(world)
     if not search.found:
-        alone(search)
+        alone(search, odd)
+    seek(search, odd)
     compared = search.put is not None and search.take is not None and bool(search.uses)
     return Exploration(tuple(search.found.values()), compared)
 

@@ -213,7 +213,7 @@ def variants(operation: Operation) -> Iterator[Operation]:
     if operation.has("buffer"):
         choices: list[int | None] = [None] if operation.has("length") else []
     else:
-        choices = [at for at in numbers if operation.parameters[at].role != "value"] if len(numbers) > 1 else []
+        choices = [*(at for at in numbers if operation.parameters[at].role != "value"), None] if numbers else []
     for chosen in choices:
         parameters = tuple(
             replace(item, role="value" if at == chosen else "other") if at in numbers else item

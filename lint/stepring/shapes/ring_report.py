@@ -52,13 +52,17 @@ class Suspect:
 
 @dataclass(frozen=True, slots=True)
 class State:
-    """A memory with the run that leads to it, what the ideal queue holds then, and the next element to be given."""
+    """A memory with the run that leads to it, what the ideal queue holds then, and the next element to be given.
+
+    ``blame``: the call before, where what comes now only brings to light what it did.
+    """
 
     saved: Any
     held: Content
     run: tuple[Made, ...]
     token: int
     suspect: Suspect | None = None
+    blame: Suspect | None = None
 
 
 @dataclass(slots=True, eq=False)
@@ -215,7 +219,7 @@ def content_report(
     run = (*state.run, *made_of(search, effect))
     place = search.origin(position)
     for number in range(len(due) + search.world.slots + 2):
-        before = State(search.world.save(), due, run, state.token, state.suspect)
+        before = State(search.world.save(), due, run, state.token, state.suspect, state.blame)
         last = perform(search.world, take, search.probe.purse)
         out = last.outputs.get(take.channel, ())[:1]
         wanted = due[number : number + 1]
@@ -254,6 +258,9 @@ def report(
     elif search.odd is not None and doubt in ("order", "room", "data", "occupancy"):
         doubt, position, function = "slots", search.odd.position, search.odd.function
         what = f"{search.odd.what}; then {what}"
+        ending = replace(ending, where=search.origin(position))
+    elif state.blame is not None:
+        position, function = state.blame.position, state.blame.function
         ending = replace(ending, where=search.origin(position))
     mark = (doubt, function)
     if mark in search.found or search.failed.get(mark, 0) >= TRIES:

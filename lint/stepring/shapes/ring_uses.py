@@ -5,6 +5,7 @@ put; one that hands out the oldest element and moves an index is a take. Each ki
 is beyond doubt: as it starts, or with a few elements in it.
 """
 
+import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any, Literal, TypeAlias
@@ -29,13 +30,15 @@ from stepring.places import Position
 from stepring.shapes.ring_calls import Effect, Policy, Purse, Way, call
 from stepring.shapes.ring_ideal import Content, Design, design_of, room_of
 from stepring.shapes.ring_keys import place_keys
-from stepring.shapes.ring_parameters import Operation
+from stepring.shapes.ring_parameters import Operation, variants
 from stepring.shapes.ring_world import Group, World, called
 
 Kind: TypeAlias = Literal["put", "take", "look", "drop", "clear", "tell"]
 PLAIN = Way()
 SMALL = 8
 """Rings with at most so many slots are looked at state by state."""
+_CLEAR = re.compile(r"flush|clear|purge|drop_?all|discard_?all|reset$")
+"""What clears is seen by what it does; what is to clear and does not, by its name only."""
 POLICIES: tuple[Policy, ...] = ("zero", "one", "once")
 
 
@@ -109,7 +112,7 @@ def puts(probe: Probe) -> list[Use]:
     """The operations that store one given element and move an index, those that can be entered first."""
     found: list[Use] = []
     for operation in sorted(probe.world.operations, key=lambda item: item.helper):
-        use = _as_put(probe, operation)
+        use = next(filter(None, (_as_put(probe, item) for item in variants(operation))), None)
         if use is not None:
             found.append(use)
     return sorted(found, key=lambda use: (use.operation.helper, use.bulk))
@@ -166,9 +169,10 @@ def takes(probe: Probe, put: Use) -> list[Use]:
     found: list[Use] = []
     mine = {use.operation.function.identity for use in probe.uses if use.kind == "put"}
     for operation in probe.world.operations:
-        if operation.function.identity in mine or operation.has("value"):
+        if operation.function.identity in mine:
             continue
-        use = _as_take(probe, operation, state, held, put)
+        ways = (item for item in variants(operation) if not item.has("value"))
+        use = next(filter(None, (_as_take(probe, item, state, held, put) for item in ways)), None)
         if use is not None:
             found.append(use)
     found.sort(key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
@@ -258,12 +262,13 @@ def others(probe: Probe, put: Use, take: Use) -> Iterator[Use]:
     known = {use.operation.function.identity for use in probe.uses}
     for operation in probe.world.operations:
         if operation.function.identity not in known:
-            use = _as_other(probe, operation, state, held, take)
+            ways = (_as_other(probe, item, state, held, put, take) for item in variants(operation))
+            use = next(filter(None, ways), None)
             if use is not None:
                 yield use
 
 
-def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, take: Use) -> Use | None:
+def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, put: Use, take: Use) -> Use | None:
     numbered = operation.has("value")
     if operation.has("buffer") and not operation.has("length") and numbered:
         return None
@@ -281,6 +286,8 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, tak
         if one.stored:
             return None
         if one.returned and one.before == one.after:
+            if _sets_back(probe, operation, way, put, take):
+                return Use(operation, "clear", way)
             same = [name for name, values in one.outputs.items() if values[:1] == held[:1] and name != "result"]
             if same or one.outputs.get("result", ())[:1] == held[:1]:
                 if _follows(probe, operation, way, state, take, (same or ["result"])[0], held):
@@ -295,7 +302,9 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, tak
                 continue
             if rest == 0:
                 return Use(operation, "clear", way)
-            return Use(operation, "drop", way) if rest == len(held) - 1 else None
+            if rest == len(held) - 1:
+                return Use(operation, "drop", way)
+            return Use(operation, "clear", way) if _CLEAR.search(operation.function.name.lower()) else None
         if one.returned and rest == len(held) - 1 and left(2)[1] == len(held) - 2:
             return Use(operation, "drop", way, numbered=True)
         every, nothing = left(len(held))
@@ -329,6 +338,19 @@ def _spoilt_drop(probe: Probe, operation: Operation, way: Way, state: Any, held:
     if ends[2].refused or ends[1].after == ends[2].after:
         return Use(operation, "drop", way, numbered=True, checked=True)
     return None
+
+
+def _sets_back(probe: Probe, operation: Operation, way: Way, put: Use, take: Use) -> bool:
+    """Whether what is called a clear moves an index, if only of a ring that has been in use."""
+    if not _CLEAR.search(operation.function.name.lower()) or operation.has("value") or operation.has("buffer"):
+        return False
+    probe.back()
+    for number in range(2):
+        call(probe.world, put.operation, put.way, probe.purse, token=number)
+        perform(probe.world, take, probe.purse)
+    call(probe.world, put.operation, put.way, probe.purse, token=2)
+    effect = call(probe.world, operation, way, probe.purse)
+    return effect.returned and not effect.stored and effect.before != effect.after
 
 
 def _follows(probe: Probe, operation: Operation, way: Way, state: Any, take: Use, channel: str, held: Content) -> bool:

@@ -53,8 +53,7 @@ NOWHERE = Ending("endless", Origin("", 1, 1, 1))
 class Group:
     """The program that several rings belong to.
 
-    ``wanted`` are the functions without body whose result some call uses, ``named`` the lasting variables that each
-    function and its callees name.
+    ``wanted`` are the functions without body whose result some call uses, ``entered`` the functions of any ring.
     """
 
     program: Program
@@ -62,6 +61,7 @@ class Group:
     by_name: dict[str, list[Function]]
     wanted: frozenset[str]
     structs: Mapping[str, StructLayout]
+    entered: frozenset[str] = frozenset()
     callees: dict[str, frozenset[str]] = field(default_factory=dict)
 
 
@@ -71,7 +71,7 @@ class World:
 
     ``base`` is the witness without calls that this memory was made from; ``parts`` objects of callers' buffers make an
     element. ``places`` are the indices and counts that can be read, as (shown, object, path, role).
-    ``kept`` are the objects that the ring's functions can change.
+    ``kept`` are the objects that the ring's functions can change, ``feeders`` other rings' functions that change them.
     """
 
     ring: Ring
@@ -84,6 +84,7 @@ class World:
     offset: int
     places: tuple[tuple[str, str, str, str], ...]
     operations: tuple[Operation, ...]
+    feeders: tuple[Operation, ...] = ()
     kept: list[Cells] = field(default_factory=list)
     readers: list[tuple[Cells, int, CType]] = field(default_factory=list)
     tokens: tuple[int, ...] = ()
@@ -167,8 +168,8 @@ class World:
 # ------------------------------------------------------------------------------------------------------------ a group
 
 
-def group_of(units: Sequence[TypedUnit]) -> Group:
-    """Join the units of a program for all its rings."""
+def group_of(units: Sequence[TypedUnit], entered: frozenset[str] = frozenset()) -> Group:
+    """Join the units of a program for all its rings; ``entered`` are the functions of any of them."""
     made = program(units)
     functions: dict[str, Function] = {}
     by_name: dict[str, list[Function]] = {}
@@ -183,7 +184,7 @@ def group_of(units: Sequence[TypedUnit]) -> Group:
                     if isinstance(statement, Call) and isinstance(statement.callee, FunctionName):
                         if statement.result is not None:
                             wanted.add(statement.callee.name)
-    return Group(made, functions, by_name, frozenset(wanted), made.structs)
+    return Group(made, functions, by_name, frozenset(wanted), made.structs, entered)
 
 
 def called(group: Group, identity: str) -> frozenset[str]:
@@ -204,6 +205,27 @@ def called(group: Group, identity: str) -> frozenset[str]:
                             pending.append(callee.identity)
     group.callees[identity] = frozenset(found)
     return group.callees[identity]
+
+
+def _lasting(group: Group, identity: str) -> set[str]:
+    """The lasting variables that a function and what it calls name."""
+    return {
+        variable.identity
+        for name in called(group, identity)
+        for variable in group.functions[name].variables
+        if variable.lasting
+    }
+
+
+def _feeding(group: Group, functions: Sequence[Function]) -> list[Function]:
+    """Functions of other rings that work on what these functions work on."""
+    mine = {function.identity for function in functions}
+    named = {name for identity in mine for name in _lasting(group, identity)}
+    return [
+        group.functions[identity]
+        for identity in sorted(group.entered - mine)
+        if identity in group.functions and named & _lasting(group, identity)
+    ]
 
 
 # ----------------------------------------------------------------------------------------------------------- the object
@@ -256,6 +278,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     made.append(Made(TAKEN, data.type, (2 * slots + 4) * data.parts))
     start.extend(_given(tokens, data))
     operations = tuple(operations_of(group.structs, ring, functions, root, made, struct, element))
+    feeders = tuple(operations_of(group.structs, ring, _feeding(group, functions), root, made, struct, element))
     base = Witness(
         group.program.model.name,
         tuple(made),
@@ -278,6 +301,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
             0,
             tuple(places),
             operations,
+            feeders,
             tokens=tokens,
             parts=data.parts,
         )
@@ -299,14 +323,14 @@ def _bind(world: World, place: tuple[str, str] | None, pointed: bool) -> None:
         cells, offset, _, _ = memory.address(name + path)
         world.readers.append((cells, offset, memory.type_at(name + path)))
     numbers: set[int] = set()
-    for operation in world.operations:
-        for identity in called(group, operation.function.identity):
-            function = group.functions[identity]
-            for variable in function.variables:
-                if variable.lasting:
-                    for key, number in group.program.numbers.items():
-                        if key[1] == variable.identity:
-                            numbers.add(number)
+    named = {
+        name
+        for operation in (*world.operations, *world.feeders)
+        for name in _lasting(group, operation.function.identity)
+    }
+    for key, number in group.program.numbers.items():
+        if key[1] in named:
+            numbers.add(number)
     group.program.grow(memory)
     world.kept = [memory.cells[number] for number in sorted(numbers)]
 
@@ -330,7 +354,7 @@ def _root(group: Group, functions: Sequence[Function], needed: set[str], entered
                 if isinstance(inner, StructType) and needed <= inner_structs(inner.identity, group.structs):
                     statics[variable.identity] += weight
                     known[variable.identity] = variable
-    if holders and holders.total() >= statics.total():
+    if holders and not any(weight >= 100 for weight in statics.values()):
         # The outermost structure serves the most functions: those that get a part of it get its address.
         def serves(struct: str) -> int:
             inside = inner_structs(struct, group.structs)

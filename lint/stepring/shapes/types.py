@@ -309,6 +309,8 @@ class Ring:
     helpers: tuple[str, ...] = ()
     # Whether its operations were run: only then does it mean something that no disagreement was found.
     explored: bool = False
+    # Why no run of its operations can show anything, a clause; empty if they were run, None if nobody tried.
+    unrun: str | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
