@@ -169,6 +169,28 @@ class ForwardFact:
 
 
 @dataclass(frozen=True, slots=True)
+class HandlerFact:
+    """Something about a variable that holds a function: one is ``stored`` in it (or is its ``initial`` one), it is
+    ``called``, or a function ``returned`` another (no key then).
+
+    ``constant`` names the function; its value stands for it. ``callers`` are those of a static function that stores.
+    ``kept``: the result of the call is stored in the variable again.
+    """
+
+    kind: Literal["stored", "initial", "called", "returned"]
+    key: str
+    function: str
+    constant: Constant
+    where: Origin
+    callers: tuple[str, ...]
+    guard: str
+    event: str
+    actions: tuple[str, ...]
+    timed: bool = False
+    kept: bool = False
+
+
+@dataclass(frozen=True, slots=True)
 class StateFacts:
     """All that a unit says about state variables."""
 
@@ -187,3 +209,4 @@ class StateFacts:
     forwards: tuple[ForwardFact, ...] = ()
     # Variables whose value is stored in a state, with that state: a next state that is committed later.
     commits: tuple[tuple[str, str], ...] = ()
+    handlers: tuple[HandlerFact, ...] = ()

@@ -22,6 +22,7 @@ from stepring.shapes.facts import (
     StateFacts,
     TransitionFact,
 )
+from stepring.shapes.handler_machines import handler_groups
 from stepring.shapes.names import starts_or_runs
 from stepring.shapes.state_kinds import MOST_STATES, Gathered, dispatches_of, is_machine, is_switched, stored_constants
 from stepring.shapes.types import (
@@ -55,6 +56,7 @@ def find_machines(
             if constant.name is not None and group.key.kind == "member":
                 stored_in.setdefault(constant.name, {})[group.key.key] = group.key.shown
     chosen = {key: group for key, group in gathered.items() if is_machine(group)}
+    chosen.update((group.key.key, group) for group in handler_groups(facts))
     for part in facts:
         for following, state in part.commits:
             # A next state that is kept until it is committed is part of the machine that it is committed to.

@@ -5,6 +5,7 @@ program are worked out: the places get their original spelling, falls and defaul
 finds the transitions. Coroutines made of ``case __LINE__`` label their cases with line numbers and are marked as such.
 """
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from stepring.meaning.show import expr_text
@@ -12,6 +13,7 @@ from stepring.meaning.types import (
     Const,
     IntType,
     Load,
+    Object,
     TypedUnit,
     UnknownType,
     VariablePlace,
@@ -27,6 +29,7 @@ from stepring.shapes.names import Names, constant_of, starts
 from stepring.shapes.state_aliases import getters, working_parameters
 from stepring.shapes.state_chain import chain_fact
 from stepring.shapes.state_dispatch import dispatch_fact
+from stepring.shapes.state_handlers import handler_dispatch, handler_facts, handler_tables
 from stepring.shapes.state_keys import families_by_key, key_facts
 from stepring.shapes.state_moves import note_transitions
 from stepring.shapes.state_scan import Scan, Work, function_identity, scan_function, state_candidates
@@ -43,15 +46,20 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
     handed = working_parameters(own)
     scans = [scan_function(function, known, handed.get(function.identity, ())) for function in own]
     work = Work(unit, read, names, {function.name: function for function in own}, scans)
-    looked_up = _looked_up(work)
-    chosen = state_candidates(scans, names) | {found.dispatch.key for found in looked_up}
+    arrays = tables(work)
+    looked_up = _looked_up(work, arrays)
+    for through in handler_tables(work, arrays):
+        work.handler_tables.setdefault(through.key, []).append(through)
+    chosen = state_candidates(scans, names) | {found.dispatch.key for found in looked_up} | set(work.handler_tables)
     for scan in scans:
         _function_facts(work, scan, chosen)
     note_transitions(work, chosen)
     _note_lookups(work, looked_up)
+    _note_handlers(work)
     key_facts(work, chosen)
+    handlers = handler_facts(work)
     return StateFacts(
-        tuple(work.keys.values()),
+        (*work.keys.values(), *work.handler_keys.values()),
         tuple(work.dispatches),
         tuple(work.tests),
         tuple(store for store, _ in work.stores),
@@ -63,12 +71,12 @@ def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
         _starters(work),
         tuple(work.forwards),
         tuple(work.commits),
+        handlers,
     )
 
 
-def _looked_up(work: Work) -> tuple[Found, ...]:
+def _looked_up(work: Work, known: Mapping[str, Object]) -> tuple[Found, ...]:
     """The stores that take a state's next value out of a table."""
-    known = tables(work)
     if not known:
         return ()
     return tuple(
@@ -89,6 +97,26 @@ def _note_lookups(work: Work, looked_up: tuple[Found, ...]) -> None:
             if (store.key, store.function, at) == (found.dispatch.key, found.dispatch.function, found.at):
                 known = replace(store, constants=found.targets, why_unknown="", parameter=None, stepped=False)
                 work.stores[number] = (known, at)
+
+
+def _note_handlers(work: Work) -> None:
+    """Calls through tables of handlers are dispatches."""
+    for key, sets in work.handler_tables.items():
+        names = {
+            constant.value: constant.name
+            for store, _ in work.stores
+            if store.key == key
+            for constant in store.constants
+        }
+        names |= {move.target.value: move.target.name for move in work.transitions if move.key == key}
+        types = [scan.keys[key].type for scan in work.scans if key in scan.keys]
+        enumeration = work.unit.types.enums.get(
+            next((type_.enum or "" for type_ in types if isinstance(type_, IntType)), "")
+        )
+        if enumeration is not None:
+            names |= {item.value: item.name for item in enumeration.enumerators}
+        if types:
+            work.dispatches.extend(handler_dispatch(work, handlers, names) for handlers in sets)
 
 
 def _starters(work: Work) -> tuple[tuple[str, str | None], ...]:

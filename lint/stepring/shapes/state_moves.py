@@ -25,11 +25,15 @@ from stepring.shapes.state_flow import (
     Chosen,
     Move,
     Setting,
+    Value,
     flow,
 )
 from stepring.shapes.state_guards import Condition, Guards, Way, actions, conditions, paths_of, way_of
+from stepring.shapes.state_handlers import Handlers, called_directly
 from stepring.shapes.state_scan import Scan, Work, function_identity, is_shared, stores_parameter
 from stepring.shapes.state_stores import is_fresh
+
+Returned = tuple[int, Chosen] | None  # a constant with where it was chosen; None for what is not known
 
 
 def note_transitions(work: Work, chosen: frozenset[str]) -> None:
@@ -42,12 +46,16 @@ def note_transitions(work: Work, chosen: frozenset[str]) -> None:
     for scan in work.scans:
         for _, name in scan.calls:
             callers.setdefault(name, set()).add(scan.function.identity)
+    for handlers in (one for several in work.handler_tables.values() for one in several):
+        for _, name, _ in handlers.by_value:
+            callers.setdefault(name, set()).add(handlers.function)
     for key, scans in by_key.items():
         _transitions_of(work, key, scans, callers)
 
 
 def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mapping[str, set[str]]) -> None:
-    if not any(scan.keys[key].read_instances for scan in scans) and not _has_setter(scans, key):
+    picked = work.handler_tables.get(key, [])
+    if not picked and not any(scan.keys[key].read_instances for scan in scans) and not _has_setter(scans, key):
         _unconditional(work, key)
         return
     writers = _writers(work, key, scans, callers)
@@ -68,7 +76,7 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
             ),
             *(const.value for const, _ in seen.tests),
         )
-    )
+    ) | {value for handlers in picked for value, _, _ in handlers.by_value}
     by_identity = {scan.function.identity: scan for scan in work.scans}
 
     def instances(function: str) -> frozenset[str]:
@@ -95,6 +103,7 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
     if not dispatched:
         compared = any(scan.keys[key].branches for scan in scans)
         setting.most_visits = CHAIN_VISITS if compared else FEW_VISITS
+    handling = _run_handlers(work, key, setting, picked)
     # Functions that dispatch or test come first: what they call is then seen with its sources.
     readers = [scan for scan in scans if scan.keys[key].read_instances or scan.function.identity in writers]
     readers.sort(key=lambda scan: not scan.keys[key].read_instances)
@@ -106,6 +115,8 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
     for scan in [*readers, *others]:
         function = scan.function
         seen = scan.keys.get(key)
+        if function.identity in handling and not called_directly(work, function.name):
+            continue
         if function.identity in setting.followed and function.static and (seen is None or not seen.read_instances):
             continue
         for instance in sorted(seen.instances) if seen is not None else [key]:
@@ -113,7 +124,10 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
             if seen is not None and not reads and is_fresh(seen, instance):
                 continue
             flow(setting, function, instance, ENTRY, ENTRY, {})
-    if setting.bounded and not dispatched:
+    for handlers in picked:
+        if handlers.result_at is not None:
+            setting.stored[handlers.function, handlers.result_at] = _all_returned(handling)
+    if setting.bounded and not dispatched and not picked:
         _unconditional(work, key)
         return
     if setting.bounded:
@@ -151,6 +165,41 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
     if not setting.bounded and not setting.cut:
         _settle_stores(work, key, setting)
         _settle_calls(work, key, setting)
+
+
+def _run_handlers(work: Work, key: str, setting: Setting, picked: Sequence[Handlers]) -> dict[str, set[Returned]]:
+    """Run each handler from the state that picks it; what handlers were run, and what their calls can return."""
+    found: dict[str, set[Returned]] = {}
+    for handlers in picked:
+        for value, name, _ in handlers.by_value:
+            function = work.by_name.get(name)
+            if function is None:
+                found.setdefault(name, set()).add(None)
+                continue
+            told = Chosen(handlers.function, -1, handlers.position, None)
+            ways = sorted(setting.instances(function.identity)) or [key]
+            returned = found.setdefault(function.identity, set())
+            setting.followed.add(function.identity)
+            for way in ways:
+                source = Value("known", value, told)
+                for leaving in flow(setting, function, way, source, Value("known", value), {}):
+                    one = leaving.returned
+                    if handlers.result_at is None or (one.kind == "known" and one.chosen is None):
+                        continue
+                    if one.kind != "known" or one.chosen is None:
+                        returned.add(None)
+                        continue
+                    returned.add((one.number, one.chosen))
+                    at = one.chosen.position or handlers.result_at
+                    setting.moves.add(
+                        Move(function.identity, value, frozenset(), one.number, one.chosen, at, None, True)
+                    )
+    return found
+
+
+def _all_returned(handling: Mapping[str, set[Returned]]) -> set[Returned]:
+    """All that handlers can return."""
+    return {one for returned in handling.values() for one in returned}
 
 
 @dataclass(slots=True)

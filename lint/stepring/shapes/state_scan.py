@@ -6,6 +6,7 @@ in the program are chosen; the stages that follow work out only those.
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 from stepring.meaning.builder import successors
 from stepring.meaning.types import (
@@ -43,6 +44,9 @@ from stepring.shapes.keys import PlaceKey, is_integral, place_key, uncast
 from stepring.shapes.names import STATE_NAME, Names
 from stepring.shapes.state_aliases import Alias, copies, working_copies
 from stepring.shapes.state_guards import Paths
+
+if TYPE_CHECKING:  # state_handlers is made of what stands here
+    from stepring.shapes.state_handlers import Handlers
 
 
 @dataclass(slots=True)
@@ -94,6 +98,10 @@ class Work:
     setters: dict[str, bool] = field(default_factory=dict)
     forwards: list[ForwardFact] = field(default_factory=list)
     commits: list[tuple[str, str]] = field(default_factory=list)
+    # The calls through tables of functions, by the key that picks the function.
+    handler_tables: dict[str, list["Handlers"]] = field(default_factory=dict)
+    # The variables that hold handlers.
+    handler_keys: dict[str, KeyFact] = field(default_factory=dict)
     # The ways through each function, by its identity.
     paths: dict[str, Paths] = field(default_factory=dict)
 

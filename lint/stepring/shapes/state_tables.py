@@ -255,6 +255,24 @@ def _root(reader: _Reader) -> _Reader:
     return reader
 
 
+def places_of(work: Work, function: Function, place: PlaceExpr, known: Mapping[str, Object]) -> list[Way]:
+    """The places in tables that a place is, through locals and functions of the unit."""
+    return _values(_Reader(work, function, "", frozenset(), {}), Load(place, place.type), known, 0)
+
+
+def subscripts(way: Way) -> list[Expr | None]:
+    """The subscripts on the way into a table; None for any element."""
+    return [step for step in way.steps if not isinstance(step, str)]
+
+
+def called_place(call: Call) -> PlaceExpr | None:
+    """The place that holds the function called, None where it is called by its name."""
+    callee = uncast(call.callee)
+    if isinstance(callee, AddressOf) and isinstance(callee.place, Deref):
+        callee = uncast(callee.place.pointer)
+    return callee.place if isinstance(callee, Load) else None
+
+
 # -------------------------------------------------------------------------------------------------------------- rows
 
 
@@ -491,11 +509,9 @@ def _called(reader: _Reader, way: Way, known: Mapping[str, Object], depth: int) 
         for statement in block.statements:
             if not isinstance(statement, Call):
                 continue
-            callee = uncast(statement.callee)
-            if isinstance(callee, AddressOf) and isinstance(callee.place, Deref):
-                callee = uncast(callee.place.pointer)
-            if isinstance(callee, Load):
-                for one in _values(reader, callee, known, 1):
+            place = called_place(statement)
+            if place is not None:
+                for one in _values(reader, Load(place, place.type), known, 1):
                     if one.table is way.table:
                         result = statement.result
                         asked = isinstance(result, VariablePlace) and result.variable.identity in tested
