@@ -26,8 +26,9 @@ STORING = """
     static void in_stuck(void) { horn(); }
 """
 TABLE = "static enum gate (*const handlers[GATES])(void) = { in_shut, in_opening, in_open, in_stuck };"
-VOID_TABLE = "static void (*const handlers[GATES])(void) = { [SHUT] = in_shut, in_opening, in_open, [STUCK] ="
-" in_stuck };"
+VOID_TABLE = """
+    static void (*const handlers[GATES])(void) = { [SHUT] = in_shut, in_opening, in_open, [STUCK] = in_stuck };
+"""
 
 # name: (the code after HEAD, the form)
 TABLES = {
@@ -73,8 +74,9 @@ POINTER_STEPS = {
     ("in_opening", "in_stuck"),
     ("in_open", "in_shut"),
 }
-DECLARED = "static void in_shut(void); static void in_opening(void); static void in_open(void); static void"
-" in_stuck(void);"
+DECLARED = """
+    static void in_shut(void); static void in_opening(void); static void in_open(void); static void in_stuck(void);
+"""
 BODIES = """
     static void in_shut(void) { if (asked()) { motor(1); HERE = in_opening; } }
     static void in_opening(void) { if (jammed()) HERE = in_stuck; else if (at_end()) HERE = in_open; }
@@ -148,7 +150,8 @@ LOOK_ALIKES = {
     " static int port;"
     "void pick(int n) { port = n ? 1 : 0; } void out(void) { write_out[port](); }",
     "a loop through functions": "int p(int); int q(int); static int (*const finds[])(int) = { p, q };"
-    "int find(int c) { int which; for (which = 0; which < 2; which++) { if (finds[which](c)) return which; } return 9; }",
+    "int find(int c) { int which; for (which = 0; which < 2; which++) { if (finds[which](c)) break; }"
+    " return which; }",
     "commands": "int p(int); int q(int); static int (*const commands[])(int) = { p, q }; static int last;"
     "int run(int c) { last = commands[c & 1](c); return last; }",
 }
