@@ -35,6 +35,7 @@ DROPPING = (
     ("bits", 6_000_000),
     ("sums", 1_000_000),
 )
+
 PROVING = (
     ("sums", 5_000),
     ("bits", 300_000),
@@ -45,6 +46,9 @@ PROVING = (
 )
 """Tries at a question, each with its effort in the solver's units. Most code about rings adds and compares, which is
 settled at once by arithmetic, which also tells what a proof rests on; models, masks and what wraps round need bits."""
+
+MANY = 16
+"""Candidates at one point that are tried one by one, where the solver does not settle them together."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -101,6 +105,7 @@ class Body:
     trace: Trace
     assumes: bool
     objects: list[Number | None] = field(default_factory=list)
+    asks: bool = True
     assumed: dict[str, list[Term]] = field(default_factory=dict)
     switches: dict[str, Term] = field(default_factory=dict)
     goals: list[tuple[Point, Term, list[tuple[str, Term]]]] = field(default_factory=list)
@@ -198,6 +203,8 @@ def concerns(family: Family, point: Point) -> bool:
 def _prepared(made: Induction, trace: Trace, assumes: bool, ends: Sequence[Callable[[View], Number]]) -> Body:
     body = Body(trace, assumes)
     body.objects = objects_of(made.family, trace)
+    keys = made.family.keys
+    body.asks = bool(keys & trace.sets.keys()) or any(access.array or access.pointer for access in trace.accesses)
     number = len(made.bodies)
     heads: dict[int, Point] = {}
     for point in trace.points:
@@ -218,7 +225,7 @@ def _prepared(made: Induction, trace: Trace, assumes: bool, ends: Sequence[Calla
             case "loop":
                 began = heads[point.loop]
                 views = [look_at(made.family, trace, point.state, base) for base in body.objects[:2]]
-                for relation in loop_relations(trace, began, point, number, views, ends):
+                for relation in loop_relations(trace, began, point, number, views, ends) if body.asks else ():
                     made.loops[relation.text] = relation
                     made.active.add(relation.text)
                 for text in made.relations:
@@ -318,6 +325,9 @@ def _drop(made: Induction, body: Body, point: Point, guard: Term, goals: Sequenc
         broken = []
         if verdict == "fails" and model is not None:
             broken = [name for name, term in left if z3.is_false(model.eval(term, model_completion=True))]
+        if not broken and len(left) > MANY:
+            # Too much at once: a loop's own variables are what is most easily done without.
+            broken = [name for name, _ in left if name in made.loops]
         if not broken:
             # The solver did not settle all at once; those that it settles one by one may stay.
             for name, term in left:

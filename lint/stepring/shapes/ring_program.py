@@ -55,6 +55,7 @@ class RingProgram:
     written: dict[str, Writes] = field(default_factory=dict)
     named: dict[str, frozenset[Key]] = field(default_factory=dict)
     calls: dict[str, frozenset[str]] = field(default_factory=dict)
+    nearby: dict[str, list[Function]] = field(default_factory=dict)
 
     def trace(self, function: Function, sets_up: bool, opaque: frozenset[str]) -> Trace:
         """A function's trace; ``sets_up``: it works on an object that nobody uses yet. Opaque ones are not laid out."""
@@ -80,18 +81,34 @@ class RingProgram:
 
     def sets(self, function: Function, setting: Set[Key]) -> bool:
         """Whether a function stores into some keys by itself, or through helpers that cannot be entered."""
+        for here in self.near(function):
+            writes = own_writes(self.around, here)
+            if writes.keys & setting or (writes.pointers and self.around.exposed & setting):
+                return True
+        return False
+
+    def speaks_of(self, function: Function, keys: Set[Key]) -> bool:
+        """Whether a function speaks of some keys by itself, or through helpers that cannot be entered."""
+        return any(not keys.isdisjoint(_own_mentions(here)) for here in self.near(function))
+
+    def near(self, function: Function) -> list[Function]:
+        """A function with the helpers that cannot be entered: others are operations themselves."""
+        known = self.nearby.get(function.identity)
+        if known is not None:
+            return known
         doors = {door.identity for door in self.doors}
         pending, seen = [function], {function.identity}
+        found: list[Function] = []
         while pending:
             here = pending.pop()
-            if own_writes(self.around, here).keys & setting:
-                return True
+            found.append(here)
             for name in _callees(here):
                 body = self.around.resolve(here, name)
                 if body is not None and body.identity not in seen and body.identity not in doors:
                     seen.add(body.identity)
                     pending.append(body)
-        return False
+        self.nearby[function.identity] = found
+        return found
 
     def writes(self, function: Function) -> Writes:
         """What a function, with its callees, may store into."""

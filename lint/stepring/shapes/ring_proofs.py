@@ -136,7 +136,13 @@ def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], 
     moved_storage = _storage_pointer(ring)
     bound = case.slots.key if case.slots is not None else None
     setting = case.setting = frozenset(key for key in (bound, moved_storage) if key is not None)
-    pending = list(touching(program, family.keys | _storage_keys(ring), family.struct))
+    storage = _storage_keys(ring)
+    pending = [
+        function
+        for function in touching(program, family.keys | storage, family.struct)
+        # One that only reads, or stores by way of others that can be entered, keeps what these keep.
+        if program.sets(function, family.keys) or program.speaks_of(function, storage)
+    ]
     opaque = frozenset(function.identity for function in pending if setting and program.sets(function, setting))
     done: set[str] = set()
     while pending:
@@ -269,8 +275,10 @@ def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]
     ends = [slots.number] if slots is not None else []
     given: tuple[str, ...] = ()
     while True:
+        spent = case.induction.queries if case.induction is not None else 0
+        left = replace(limits, queries=max(limits.queries // 3, limits.queries - spent))
         case.induction = induct(
-            family, relations, case.operations, case.setups, ends, limits, given=given, setting=case.setting
+            family, relations, case.operations, case.setups, ends, left, given=given, setting=case.setting
         )
         # A capacity that a caller chooses cannot be shown to be one; that it is, is the caller's part.
         lost = [text for text in _callers_part(case) if text not in case.induction.active and text not in given]

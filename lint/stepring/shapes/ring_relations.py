@@ -133,10 +133,10 @@ def relations_of(
     walkers = [index.key for index in ring.indices if index.form == "integer" and index.role != "count"]
     counts = [index.key for index in ring.indices if index.role == "count"]
     taken = {*walkers, *counts, *([slots.key] if slots is not None and slots.key is not None else [])}
-    walkers += [key for key in family.types if key not in taken]
+    companions = [key for key in family.types if key not in taken]
     width = family.width
     elements = any(key[-1] == "[]" for key in family.offsets)
-    for key in (*walkers, *counts):
+    for key in (*walkers, *counts, *companions):
         name = short_text(key)
         if family.types[key].signed:
             yield _order(family, f"{name} >= 0", key, ">=", None, 0)
