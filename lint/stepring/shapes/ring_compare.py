@@ -242,7 +242,7 @@ def _put_many(search: Search, state: State, use: Use) -> Iterator[State]:
     """The states after a put of several elements at once: two, as many as there is room for, one more."""
     free = search.room - len(state.held)
     guarded = not use.checked or use.operation.helper
-    for length in dict.fromkeys((2, free, free + 1)):
+    for length in dict.fromkeys((2, free, free + 1, *(end for end in _to_the_end(search, state) if end < free))):
         if length < 2 or (length > free and guarded):
             continue
         effect = call_from(search, state, use, length=length)
@@ -272,7 +272,7 @@ def _take_many(search: Search, state: State, use: Use) -> Iterator[State]:
     """The states after a take of several elements at once: two, all, one more."""
     level = len(state.held)
     guarded = not use.checked or use.operation.helper
-    for length in dict.fromkeys((2, level, level + 1)):
+    for length in dict.fromkeys((2, level, level + 1, *(end for end in _to_the_end(search, state) if end < level))):
         if length < 2 or level == 0 or (length > level and guarded):
             continue
         effect = call_from(search, state, use, length=length)
@@ -300,7 +300,7 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
     guarded = not use.checked or use.operation.helper
     numbers = [0]
     if use.kind == "drop":
-        numbers = [1, len(state.held), len(state.held) + 1] if use.numbered else [1]
+        numbers = [1, len(state.held), len(state.held) + 1, *_to_the_end(search, state)] if use.numbered else [1]
     for number in dict.fromkeys(numbers):
         if use.kind == "drop" and (number == 0 or (number > len(state.held) and (guarded or not use.numbered))):
             continue
@@ -333,6 +333,14 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
         if not _goes_on(search, state, use, effect, saved, now, number=number):
             continue
         yield _after(search, state, use, effect, saved, now, 0, number=number)
+
+
+def _to_the_end(search: Search, state: State) -> list[int]:
+    """How many elements each index is away from the storage's end, and one more."""
+    search.world.load(state.saved)
+    slots = search.world.slots
+    away = [slots - value % slots for value in search.world.values() if isinstance(value, int)]
+    return [number for end in dict.fromkeys(away) for number in (end, end + 1)]
 
 
 def _goes_on(search: Search, state: State, use: Use, effect: Effect, saved: Any, held: Content, **given: Any) -> bool:

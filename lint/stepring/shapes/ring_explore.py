@@ -29,7 +29,8 @@ from stepring.shapes.ring_world import Group, World, group_of, world_of
 from stepring.shapes.types import Ring
 
 BUDGET = 1_200_000
-"""Interpreter steps for one ring."""
+"""Interpreter steps for one ring; a large one gets more."""
+PER_SLOT = 6000
 MOST_SLOTS = 1024
 
 
@@ -50,9 +51,9 @@ def explore(ring: Ring, group: Group, origin: Placer, *, budget: int = BUDGET) -
     """The disagreements of a ring with the ideal queue, each with a witness that was run again.
 
     ``group`` is the program (``ring_world.group_of``), ``origin`` gives a position's original place, ``budget`` bounds
-    the interpreter steps.
+    the interpreter steps (large rings get more).
     """
-    purse = Purse(budget)
+    purse = Purse(budget + PER_SLOT * max(0, (ring.capacity or 0) - 64))
     sizes = _sizes(ring)
     unrun = "" if sizes else f"rings of {ring.capacity} slots are not run; 2 to {MOST_SLOTS} are"
     compared = False

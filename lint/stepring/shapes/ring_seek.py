@@ -9,9 +9,10 @@ makes it, or if the function looks at its argument and refuses what is far too l
 import heapq
 from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
+from stepring.paths.witness import StartValue
 from stepring.shapes.ring_alone import Odd, blameless, odd_step
 from stepring.shapes.ring_calls import Effect, Policy, Purse, Way, about_storage
 from stepring.shapes.ring_compare import call_from, fault
@@ -22,6 +23,7 @@ from stepring.shapes.ring_uses import Use
 BUDGET = 300_000
 """Interpreter steps for one way of looking."""
 STATES = 3000
+END = 16
 Place = tuple[str, int]
 
 
@@ -75,7 +77,39 @@ def seek(search: Search, odd: Odd) -> None:
         sought.free = False  # only what can be entered may show something new
         if not sought.targets and not sought.odd:
             break
+    _from_orbits(sought)
     search.probe.purse = purse
+
+
+def _from_orbits(sought: _Seek) -> None:
+    """Once more from indices that stand where the ring's own code was found to bring them.
+
+    What moves them may need what is not there to be run: a device's answers, another unit's settings.
+    """
+    search, world, base, start = sought.search, sought.search.world, sought.search.base, sought.search.probe.start
+    for place, index in zip(world.places, world.ring.indices, strict=True):
+        shown, name, path, _ = place
+        for value in _some(index.orbit or ()):
+            if not sought.targets:
+                return
+            search.probe.start = start
+            search.probe.back()
+            if index.form == "pointer" or world.memory.read(name + path) == value:
+                continue
+            world.memory.write(name + path, value)
+            kept = tuple(item for item in base.start if (item.object, item.path) != (name, path))
+            fixed = StartValue(name, path, value)
+            said = f"{shown} is {value} at first, where the ring's own code brings it"
+            search.base = replace(base, start=(*kept, fixed), calls=(), assumed=(*base.assumed, said))
+            search.probe.start = world.save()
+            search.probe.purse = Purse(BUDGET // 10)
+            _round(sought, world.operations, first_only=True)
+    search.probe.start, search.base = start, base
+
+
+def _some(orbit: Sequence[int]) -> Sequence[int]:
+    """The values of an orbit; of a long one those at its ends."""
+    return orbit if len(orbit) <= 2 * END else (*orbit[:END], *orbit[-END:])
 
 
 def _targets(search: Search) -> Iterator[Place]:
@@ -91,7 +125,8 @@ def _targets(search: Search) -> Iterator[Place]:
             yield place
 
 
-def _round(sought: _Seek, operations: Sequence[Operation]) -> None:
+def _round(sought: _Seek, operations: Sequence[Operation], *, first_only: bool = False) -> None:
+    """Call the operations in all ways from state after state, or from the first state alone."""
     search = sought.search
     search.probe.back()
     sought.heap = []
@@ -105,6 +140,8 @@ def _round(sought: _Seek, operations: Sequence[Operation]) -> None:
             if search.spent or sought.done:
                 return
             _step(sought, state, choice)
+        if first_only:
+            return
 
 
 def _wait(sought: _Seek, state: State) -> None:

@@ -259,7 +259,14 @@ def others(probe: Probe, put: Use, take: Use) -> Iterator[Use]:
     if held is None or len(held) < 2:
         return
     state = probe.world.save()
+    # A take in two steps drops one element: its second function alone may drop more.
     known = {use.operation.function.identity for use in probe.uses}
+    if take.first is not None and take.operation.has("value"):
+        probe.world.load(state)
+        call(probe.world, take.operation, take.way, probe.purse, number=len(held) - 1)
+        last = call(probe.world, take.first.operation, take.first.way, probe.purse)
+        if last.outputs.get(take.channel, ())[:1] == held[-1:]:
+            yield replace(take, kind="drop", numbered=True, first=None)
     for operation in probe.world.operations:
         if operation.function.identity not in known:
             ways = (_as_other(probe, item, state, held, put, take) for item in variants(operation))
