@@ -15,6 +15,7 @@ from stepring.paths.interpreter import fresh, program, run
 BATCH = 25
 BATCHES = 200 if os.environ.get("STEPRING_MANY") else 8
 ARGUMENTS = ((0, 0), (1, -1), (7, 300), (-128, 2147483647))
+STEPS = 20_000_000
 
 
 @pytest.mark.skipif(shutil.which("gcc") is None, reason="the host has no gcc")
@@ -32,7 +33,7 @@ def test_batch(seed: int, tmp_path: Path) -> None:
     for number, text in enumerate(texts):
         results = [next(host) for _ in ARGUMENTS]
         for (a, b), wanted in zip(ARGUMENTS, results, strict=True):
-            outcome = run(made, f"run_{number}", (a, b), memory=memory)
+            outcome = run(made, f"run_{number}", (a, b), steps=STEPS, memory=memory)
             if wanted is None:
                 assert outcome.kind == "undefined", f"run_{number}({a}, {b}) of\n{text}"
                 break  # what the memory holds now is not determined

@@ -13,6 +13,7 @@ from stepring.paths.interpreter import fresh, program, run
 BATCH = 25
 BATCHES = 200 if os.environ.get("STEPRING_MANY") else 2
 ARGUMENTS = ((0, 0), (1, -1), (7, 300), (-128, 2147483647))
+STEPS = 20_000_000
 
 
 @pytest.mark.parametrize("seed", range(BATCHES))
@@ -26,7 +27,7 @@ def test_batch(seed: int) -> None:
         memory = fresh(made)
         watched.look(memory)
         for arguments in ARGUMENTS:
-            outcome = run(made, f"run_{number}", arguments, memory=memory, observe=watched.observe)
+            outcome = run(made, f"run_{number}", arguments, steps=STEPS, memory=memory, observe=watched.observe)
             if outcome.kind != "returned":
                 break  # what the memory holds now is not determined
             watched.look(memory)
