@@ -5,16 +5,30 @@ only if the capacity divides 2^w. CWE-128, CWE-190.
 """
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 from stepring.rule import Level, Obligation, Rule, WitnessStep
 from stepring.shapes.types import Program
+from stepring_rules import ring_code
 from stepring_rules.ring_common import Turn, about, checked, declared, once, short, turns
-from stepring_rules.ring_runs import witnessed
+from stepring_rules.ring_runs import Words as Runs
+from stepring_rules.ring_runs import unexplained, witnessed
+
+_RUNS = Runs(
+    "RB04",
+    ("overflow",),
+    "After so many elements the ring no longer does what it did: its counters' comparisons come out otherwise.",
+    "Take the difference of the counters in their own unsigned type, and compare only that.",
+    "warning",
+)
 
 
 def counter_overflow(program: Program) -> Iterator[Obligation]:
-    """One obligation for each counter that runs freely."""
-    return witnessed(program, from_code(program))
+    """One obligation for each counter that runs freely, and what runs across its overflow show besides."""
+    yield from witnessed(program, from_code(program))
+    # A note is said already: the overflow comes after very long running.
+    known = (replace(item, level="warning") if item.kind == "fail" else item for item in ring_code.explained(program))
+    yield from unexplained(program, known, _RUNS)
 
 
 def from_code(program: Program) -> Iterator[Obligation]:

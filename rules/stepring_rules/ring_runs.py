@@ -8,7 +8,7 @@ then the run is the evidence of that finding, and no second one is made. Else th
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
-from stepring.rule import Obligation, Related, WitnessStep
+from stepring.rule import Level, Obligation, Related, WitnessStep
 from stepring.shapes.ring_types import Disagreement, Doubt
 from stepring.shapes.types import Program, Ring
 from stepring_rules.ring_common import about, declared
@@ -33,6 +33,7 @@ class Words:
     doubts: tuple[Doubt, ...]
     why: str
     advice: str
+    level: Level = "error"
 
 
 def witnessed(program: Program, found: Iterable[Obligation]) -> Iterator[Obligation]:
@@ -95,7 +96,7 @@ def unexplained(program: Program, static: Iterable[Obligation], words: Words) ->
 
 
 def finding(ring: Ring, one: Disagreement, words: Words) -> Obligation:
-    """A disagreement as an error."""
+    """A disagreement as a failure."""
     related = (declared(ring),) if ring.capacity is not None else (Related(ring.where, f"{ring.storage} is this ring"),)
     made: Obligation = about(
         words.rule,
@@ -103,7 +104,7 @@ def finding(ring: Ring, one: Disagreement, words: Words) -> Obligation:
         "fail",
         one.where,
         one.what if one.what.endswith(".") else one.what + ".",
-        "error",
+        words.level,
         why=words.why,
         advice=words.advice,
         function=one.function,

@@ -260,6 +260,8 @@ def _told(search: Search, use: Use) -> Use:
     for name, values in shapes.items():
         if results == values:
             return replace(use, tells=name)
+    if min(results) < 0:
+        return use  # no truth value, and no number of elements
     flags = [bool(item) for item in results]
     if "empty" in use.name.lower() and flags[0] and not flags[1]:
         return replace(use, tells="empty")

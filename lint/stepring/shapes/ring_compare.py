@@ -11,8 +11,8 @@ from dataclasses import replace
 from typing import Any
 
 from stepring.meaning.types import IntType
-from stepring.paths.witness import Ending, StartValue
-from stepring.shapes.ring_calls import Effect, about_storage, below, call
+from stepring.paths.witness import Ending
+from stepring.shapes.ring_calls import Effect, about_storage, below
 from stepring.shapes.ring_ideal import Content, after_put, is_slice, is_suffix, linear
 from stepring.shapes.ring_parameters import GIVEN, TAKEN
 from stepring.shapes.ring_report import (
@@ -40,6 +40,7 @@ from stepring.shapes.ring_uses import (
 )
 
 NEAR_END = 3
+"""How many counts before its overflow a counter starts."""
 
 
 def search_states(search: Search, first: State) -> None:
@@ -57,11 +58,21 @@ def search_states(search: Search, first: State) -> None:
     pending = deque((first,))
     while pending and not search.spent:
         state = pending.popleft()
+        if _is_past(search, state):
+            continue
         for after in _look_round(search, state):
             key = _key(search, after)
             if key not in seen:
                 seen.add(key)
                 pending.append(after)
+
+
+def _is_past(search: Search, state: State) -> bool:
+    """Whether all counters have overflowed, in a search that began just before: what follows was searched before."""
+    search.world.load(state.saved)
+    return bool(search.far) and all(
+        search.world.memory.read(place) < start // 2 and not state.held for place, start in search.far
+    )
 
 
 def _key(search: Search, state: State) -> Any:
@@ -308,6 +319,8 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
             continue
         effect = call_from(search, state, use, number=number)
         if fault(search, state, use, effect) or effect.refused or not effect.returned:
+            if effect.refused and effect.returned and state.held and use.kind == "drop" and not use.numbered:
+                _refused_far(search, state, use, effect)
             continue
         saved = search.world.save()
         assert search.take is not None
@@ -333,6 +346,24 @@ def _dropped(search: Search, state: State, use: Use) -> Iterator[State]:
         if not _goes_on(search, state, use, effect, saved, now, number=number):
             continue
         yield _after(search, state, use, effect, saved, now, 0, number=number)
+
+
+def _refused_far(search: Search, state: State, use: Use, effect: Effect) -> None:
+    """Report a drop that does nothing for counters near their overflow and works for the same elements long before."""
+    found = effect.outcome.value
+    if not search.far or not isinstance(found, int):
+        return
+    search.world.load(state.saved)
+    for place, start in search.far:
+        search.world.memory.write(place, (search.world.memory.read(place) - start) % (start + NEAR_END + 1))
+    plain = perform(search.world, use, search.probe.purse)
+    if plain.refused or not plain.returned or not isinstance(plain.outcome.value, int) or plain.outcome.value == found:
+        return
+    position = return_position(search, state, use)
+    due = f"{plain.outcome.value} as it is of small counters"
+    ending = Ending("result", search.origin(position), None, "", str(found), due)
+    what = f"{use.name} returns {found} and drops nothing: {len(state.held)} elements are stored"
+    report(search, state, effect, "overflow", what, position, use.name, ending)
 
 
 def _to_the_end(search: Search, state: State) -> list[int]:
@@ -412,41 +443,3 @@ def _part(search: Search, effect: Effect, found: int, true: int) -> bool:
     """Whether a number tells only the part up to the storage's end, or up to an index."""
     values = [value for value in effect.after if isinstance(value, int)]
     return any(linear(found, true, value % search.world.slots, search.world.slots) for value in values)
-
-
-def near_overflow(search: Search) -> None:
-    """Search again from counters just before their overflow, if the ring's counters never come back otherwise."""
-    world, put, take = search.world, search.put, search.take
-    if search.found or search.spent or put is None or take is None:
-        return
-    turns = 2 * world.slots + 1
-    search.probe.back()
-    before = world.values()
-    for number in range(turns):
-        call(world, put.operation, put.way, search.probe.purse, token=number)
-        perform(world, take, search.probe.purse)
-    after = world.values()
-    free: list[tuple[int, IntType]] = []
-    for at, (old, new) in enumerate(zip(before, after, strict=True)):
-        type_ = world.readers[at][2]
-        if isinstance(old, int) and isinstance(new, int) and isinstance(type_, IntType):
-            if new - old == turns and type_.width <= 32:
-                free.append((at, type_))
-    if len(free) != 2 or free[0][1].high != free[1][1].high:
-        return
-    start = free[0][1].high - NEAR_END
-    if world.slots & (world.slots - 1) and world.ring.capacity is None:
-        return
-    search.probe.back()
-    extra = []
-    for at, _ in free:
-        _, name, path, _ = world.places[at]
-        world.memory.write(name + path, start)
-        extra.append((name, path))
-    # The values are reached by as many puts and takes; the ring's own set-up call would undo them.
-    fixed = tuple(StartValue(name, path, start) for name, path in extra)
-    kept = tuple(item for item in search.base.start if (item.object, item.path) not in extra)
-    said = f"{start} elements have been put in and taken out before"
-    search.base = replace(search.base, start=(*kept, *fixed), calls=(), assumed=(*search.base.assumed, said))
-    search.overflow = True
-    search_states(search, State(world.save(), (), (), 0))

@@ -17,7 +17,9 @@ from stepring.places import Notice
 from stepring.shapes.ring_alone import alone, odd_steps
 from stepring.shapes.ring_calls import Purse
 from stepring.shapes.ring_classify import classify
-from stepring.shapes.ring_compare import near_overflow, search_states
+from stepring.shapes.ring_compare import search_states
+from stepring.shapes.ring_further import all_ones, promised_slots
+from stepring.shapes.ring_overflow import near_overflow
 from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN
 from stepring.shapes.ring_report import Placer, Search, State
 from stepring.shapes.ring_seek import seek
@@ -106,7 +108,9 @@ def _explored(world: World, purse: Purse, origin: Placer) -> Exploration:
     classify(search)
     if search.put is not None and search.take is not None:
         search_states(search, State(probe.start, (), (), 0))
+        all_ones(search)
         near_overflow(search)
+    promised_slots(search)
     odd = odd_steps(world)
     if not search.found:
         alone(search, odd)

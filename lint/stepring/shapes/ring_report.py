@@ -67,7 +67,10 @@ class State:
 
 @dataclass(slots=True, eq=False)
 class Search:
-    """One exploration under way. ``found`` keeps the first disagreement of each kind and function."""
+    """One exploration under way. ``found`` keeps the first disagreement of each kind and function.
+
+    ``far`` are the counters' places with where they start, in the search just before their ``overflow``.
+    """
 
     probe: Probe
     origin: Placer
@@ -77,6 +80,7 @@ class Search:
     uses: list[Use] = field(default_factory=list)
     room: int = 0
     overflow: bool = False
+    far: tuple[tuple[str, int], ...] = ()
     ranges: tuple[tuple[int, int] | None, ...] = ()
     odd: Suspect | None = None
     found: dict[tuple[Doubt, str], Disagreement] = field(default_factory=dict)

@@ -6,7 +6,7 @@ is beyond doubt: as it starts, or with a few elements in it.
 """
 
 import re
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any, Literal, TypeAlias
 
@@ -112,10 +112,19 @@ def puts(probe: Probe) -> list[Use]:
     """The operations that store one given element and move an index, those that can be entered first."""
     found: list[Use] = []
     for operation in sorted(probe.world.operations, key=lambda item: item.helper):
-        use = next(filter(None, (_as_put(probe, item) for item in variants(operation))), None)
-        if use is not None:
-            found.append(use)
+        found.extend(_first(_as_put(probe, item) for item in variants(operation)))
     return sorted(found, key=lambda use: (use.operation.helper, use.bulk))
+
+
+def _first(found: Iterable[Use | None]) -> list[Use]:
+    """The first way to use an operation; a number that is no length of many is better left 0."""
+    uses: list[Use] = []
+    for use in found:
+        if use is not None:
+            uses.append(use)
+            if use.bulk or not use.operation.has("length"):
+                return [use]
+    return uses[:1]
 
 
 def _as_put(probe: Probe, operation: Operation) -> Use | None:
@@ -172,9 +181,7 @@ def takes(probe: Probe, put: Use) -> list[Use]:
         if operation.function.identity in mine:
             continue
         ways = (item for item in variants(operation) if not item.has("value"))
-        use = next(filter(None, (_as_take(probe, item, state, held, put) for item in ways)), None)
-        if use is not None:
-            found.append(use)
+        found.extend(_first(_as_take(probe, item, state, held, put) for item in ways))
     found.sort(key=lambda use: (use.operation.helper, use.bulk, use.operation.has("buffer")))
     return found or _in_two_steps(probe, state, held, mine)
 
@@ -307,6 +314,8 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, put
         if not numbered:
             if not one.returned:
                 continue
+            if not probe.world.keeps_size():
+                return None  # it sets the ring up anew
             if rest == 0:
                 return Use(operation, "clear", way)
             if rest == len(held) - 1:

@@ -137,6 +137,11 @@ class World:
         """All slots."""
         return tuple(self.slot(number) for number in range(self.slots)) if self.storage is not None else ()
 
+    def keeps_size(self) -> bool:
+        """Whether the ring's bound is still the number of slots."""
+        fixed = [item for item in self.base.start if isinstance(item.value, int) and item.object not in (GIVEN, TAKEN)]
+        return all(self.memory.read(item.object + item.path) == item.value for item in fixed)
+
     def save(self) -> Any:
         """The memory now, for ``load``."""
         others = list(self.memory.others)
