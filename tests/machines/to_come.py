@@ -7,9 +7,7 @@ import pytest
 
 FORMS_TO_COME: dict[str, str] = {
     "working copy": "a copy of a state of plain numbers is taken for a level that is turned up and down",
-    "function pointer": "a pointer to the handler is no state yet",
     "goto": "labels are no states yet",
-    "handlers in a table": "handlers that are called through a table are not followed yet",
 }
 
 STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
