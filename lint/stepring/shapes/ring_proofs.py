@@ -11,16 +11,12 @@ says, that a capacity given by a caller is not zero, that nothing else runs in t
 """
 
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import replace
 from typing import cast
 
 import z3
 
-from stepring.meaning.fold import fold
 from stepring.meaning.types import (
-    Assign,
-    Binary,
-    Cast,
     DataModel,
     Function,
     IntType,
@@ -29,54 +25,27 @@ from stepring.meaning.types import (
 )
 from stepring.paths.induction import (
     Body,
-    Family,
-    Induction,
-    Relation,
-    View,
     basis,
-    induct,
     kept_by,
     look_at,
     proved,
 )
 from stepring.paths.symbolic_memory import Node, Pointer, Start, State, Stored, added, address_mark, row_of
 from stepring.paths.symbolic_terms import Number, Truth, bits, both, compared, either, equal, negated, stretch
-from stepring.paths.symbolic_types import CUT, FLAG, SET_FRAME, Accessed, Limits, Point, Trace
-from stepring.paths.symbolic_writes import own_writes
+from stepring.paths.symbolic_types import CUT, FLAG, Accessed, Limits, Point, Trace
 from stepring.places import Origin, Position
 from stepring.shapes.ring_apart import defined_often, told_apart
-from stepring.shapes.ring_keys import Key, inner_structs, key_text, place_keys, short_text, struct_name
-from stepring.shapes.ring_program import RingProgram, ring_program, touching
-from stepring.shapes.ring_relations import Slots, family_of, holds_for, relations_of, slots_of
+from stepring.shapes.ring_case import Case, prepare
+from stepring.shapes.ring_keys import Key, key_text, short_text
+from stepring.shapes.ring_program import ring_program
+from stepring.shapes.ring_relations import Slots, slots_of
 from stepring.shapes.ring_types import CheckedStep, OpenReason, Proof
-from stepring.shapes.ring_writers import Outside, Writer, writers_of
+from stepring.shapes.ring_writers import Outside
 from stepring.shapes.types import Access, Ring
 
 __all__ = ["prove_rings"]
 
 EVERYTHING = Outside()
-MOST_COMPANIONS = 4
-
-
-@dataclass(slots=True, eq=False)
-class Case:
-    """What is asked about one ring: its capacity and integers, the traces of its operations, what they keep.
-
-    ``open_as`` with ``detail`` says why nothing can be proved, if so. ``assumed`` are the clauses on which all proofs
-    rest.
-    """
-
-    ring: Ring
-    program: RingProgram
-    slots: Slots | None
-    family: Family | None
-    setting: frozenset[Key] = frozenset()
-    operations: list[Trace] = field(default_factory=list)
-    setups: list[Trace] = field(default_factory=list)
-    induction: Induction | None = None
-    assumed: list[str] = field(default_factory=list)
-    open_as: OpenReason | None = None
-    detail: str = ""
 
 
 def prove_rings(
@@ -107,295 +76,9 @@ def prove_rings(
     found = []
     for ring in rings:
         case = Case(ring, program, slots_of(ring), None)
-        _prepare(case, outside, often, limits)
+        prepare(case, outside, often, limits)
         found.append(replace(ring, proofs=tuple(_proofs(case, origin))))
     return tuple(found)
-
-
-# -------------------------------------------------------------------------------------------------------- preparation
-
-
-def _leave_open(case: Case, reason: OpenReason, detail: str) -> None:
-    if case.open_as is None:
-        case.open_as, case.detail = reason, detail
-
-
-def _prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
-    ring, program = case.ring, case.program
-    if case.slots is not None and case.slots.plus == 1 and case.slots.key is not None:
-        if not _stands_for_mask(program, case.slots.key):
-            _leave_open(
-                case, "capacity not known", f"{short_text(case.slots.key)} is used as a mask and not stored as one"
-            )
-            return
-    case.family = family_of(ring, case.slots, program.structs, program.variables, _companions(case))
-    if case.family is None:
-        _leave_open(case, "not modelled", "its integers do not live in one structure, nor all in variables")
-        return
-    family = case.family
-    moved_storage = _storage_pointer(ring)
-    bound = case.slots.key if case.slots is not None else None
-    setting = case.setting = frozenset(key for key in (bound, moved_storage) if key is not None)
-    storage = _storage_keys(ring)
-    pending = [
-        function
-        for function in touching(program, family.keys | storage, family.struct)
-        # One that only reads, or stores by way of others that can be entered, keeps what these keep.
-        if program.sets(function, family.keys) or program.speaks_of(function, storage)
-    ]
-    opaque = frozenset(function.identity for function in pending if setting and program.sets(function, setting))
-    done: set[str] = set()
-    while pending:
-        function = pending.pop(0)
-        if function.identity in done:
-            continue
-        done.add(function.identity)
-        sets = bool(setting) and program.sets(function, setting)
-        trace = program.trace(function, sets, opaque)
-        (case.setups if sets else case.operations).append(trace)
-        for name in trace.calls:
-            # A body that was not laid out works on the ring by itself: what it keeps must be shown of it too.
-            body = program.around.resolve(function, name)
-            if body is not None and program.mentions(body) & family.keys:
-                pending.append(body)
-    _look_for_trouble(case, outside, often)
-    if case.open_as is not None:
-        return
-    _find_kept(case, outside, often, limits)
-
-
-def _stands_for_mask(program: RingProgram, key: Key) -> bool:
-    """Whether what is used as a mask is stored as one less than something, or as a constant of low bits.
-
-    A number of slots that is used as a mask by mistake is not: the buffer does not have one slot more than that.
-    """
-    some = False
-    for function in program.functions:
-        for block in function.blocks:
-            for statement in block.statements:
-                if not isinstance(statement, Assign) or key not in place_keys(statement.place, "", {}):
-                    continue
-                value = statement.value
-                while isinstance(value, Cast):
-                    value = value.operand
-                known = fold(value)
-                less = isinstance(value, Binary) and value.op == "-" and fold(value.right) == 1
-                if not less and (known is None or known <= 0 or (known & (known + 1)) != 0):
-                    return False
-                some = True
-    return some
-
-
-def _companions(case: Case) -> tuple[Key, ...]:
-    """Further integers that the ring's functions store into beside its indices: a second index that no access shows."""
-    ring, program = case.ring, case.program
-    keys = {index.key for index in ring.indices}
-    structs = {key[1] for key in keys if key[0] == "member"}
-    found: set[Key] = set()
-    for function in program.functions:
-        for key in own_writes(program.around, function).keys:
-            if (key[0] == "member" and key[1] in structs and len(key) == 3) or (
-                key[0] == "var" and len(key) == 2 and not structs and function.identity in ring.functions
-            ):
-                found.add(key)
-    bound = case.slots.key if case.slots is not None else None
-    chosen = [key for key in sorted(found - keys) if key != bound]
-    return tuple(chosen)[:MOST_COMPANIONS]
-
-
-def _storage_pointer(ring: Ring) -> Key | None:
-    return ring.storage_key[:-1] if ring.storage_key and ring.storage_key[-1] == "*" else None
-
-
-def _storage_keys(ring: Ring) -> frozenset[Key]:
-    key = ring.storage_key
-    if not key:
-        return frozenset()
-    return frozenset((key[:-1] if key[-1] == "*" else key, (*key, "[]")))
-
-
-def _article(struct: str) -> str:
-    name = struct_name(struct)
-    return f"every {name}" if name.startswith(("struct ", "union ")) else f"every object of type {name}"
-
-
-def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozenset[str]]) -> None:
-    """What makes all proofs about the ring impossible."""
-    family, program = case.family, case.program
-    assert family is not None
-    for trace in (*case.operations, *case.setups):
-        writes = program.writes(trace.function)
-        if trace.troubles and (writes.everything or writes.keys & family.keys):
-            reason, detail = next(iter(trace.troubles))
-            _leave_open(case, cast(OpenReason, reason), f"{trace.function.name}: {detail}")
-        for key, name in trace.given.items():
-            if key in family.keys:
-                _leave_open(case, "pointer not resolved", f"{name} is given the address of {short_text(key)}")
-            elif key[0] == "struct" and family.struct in inner_structs(key[1], program.structs):
-                _leave_open(case, "pointer not resolved", f"{name} takes {struct_name(key[1])} as bytes")
-            elif key[0] == "argument" and family.struct in inner_structs(key[1], program.structs):
-                known = program.around.defined
-                if (known is None or name not in known) and not program.has(name):
-                    _leave_open(case, "call to unknown code", f"{name} is given a {struct_name(key[1])}")
-    for name in sorted(program.structs):
-        layout = program.structs[name]
-        if layout.union and family.struct and family.struct in inner_structs(name, program.structs):
-            if len(layout.fields) > 1:
-                _leave_open(case, "not modelled", f"it shares memory in the union {struct_name(name)}")
-    for file, what in outside.unread.items():
-        if any(_reached_from(program, key, file) for key in family.keys):
-            _leave_open(case, "code not read", f"{what} was not read and may store into it")
-    if not outside.whole and any(_reached_from(program, key, "") for key in family.keys):
-        _leave_open(case, "code not read", "only some files of the program were named, and others may store into it")
-    for key in sorted(family.keys):
-        for writer in writers_of(outside, key, often):
-            if writer.value is None and (writer.gives or not program.has(writer.name)):
-                _leave_open(case, "stored into elsewhere", f"{writer.name} may store into {short_text(key)}")
-
-
-def _reached_from(program: RingProgram, key: Key, file: str) -> bool:
-    """Whether code in a file (or in any other, if it is empty) can name an integer."""
-    if key[0] == "member":
-        layout = program.structs.get(key[1])
-        own = layout.position.file if layout is not None and layout.position is not None else ""
-        return not own.endswith(".c") or own == file
-    return ":" not in key[1] or key[1].split(":", 1)[0] == file
-
-
-def _find_kept(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], limits: Limits) -> None:
-    family = case.family
-    assert family is not None
-    relations = [
-        relation
-        for relation in relations_of(case.ring, case.slots, family, _constants(case), case.program.around.model.pointer)
-        if _survives(case, relation, outside, often)
-    ]
-    relations = _start(case, relations)
-    slots = case.slots
-    ends = [slots.number] if slots is not None else []
-    given: tuple[str, ...] = ()
-    while True:
-        spent = case.induction.queries if case.induction is not None else 0
-        left = replace(limits, queries=max(limits.queries // 3, limits.queries - spent))
-        case.induction = induct(
-            family, relations, case.operations, case.setups, ends, left, given=given, setting=case.setting
-        )
-        # A capacity that a caller chooses cannot be shown to be one; that it is, is the caller's part.
-        lost = [text for text in _callers_part(case) if text not in case.induction.active and text not in given]
-        if not lost or case.induction.exhausted:
-            break
-        given = (*given, lost[0])
-    for body in case.induction.bodies if given else ():
-        if not body.assumes and not _can_set_up(case, body):
-            _leave_open(case, "capacity not known", f"{body.trace.function.name} can set up none that fits its use")
-    names = ", ".join(sorted({trace.function.name for trace in case.setups}))
-    if any(trace.calls for trace in case.setups):
-        case.assumed.append(f"nothing uses the ring while {names} runs")
-    for text in given:
-        if text in case.induction.active:
-            case.assumed.append(f"{names} is given a capacity such that {text}")
-
-
-def _can_set_up(case: Case, body: Body) -> bool:
-    """Whether a function can set up an object at all under what is assumed of its callers."""
-    assert case.induction is not None
-    for point in body.trace.points:
-        if point.kind == "return":
-            flags = [point.state.local.get((SET_FRAME, "/".join(key)), 0) for key in sorted(case.setting)]
-            never = both(*(equal(flag, 0, FLAG.width) for flag in flags))
-            if proved(case.induction, body, point.state, never) == "fails":
-                return True
-    return False
-
-
-def _callers_part(case: Case) -> Iterator[str]:
-    """What must hold of a capacity that is set at run time: it is not 0; a mask needs a power of two."""
-    slots, ring = case.slots, case.ring
-    if slots is None or slots.key is None or not case.setups:
-        return
-    yield f"{slots.text} > 0"
-    masked = any(access.reduction == "mask" for access in ring.accesses)
-    if masked or any(step.wrap in ("mask", "free-running") for index in ring.indices for step in index.steps):
-        yield f"{slots.text} is a power of two"
-    if case.family is not None and case.family.types[slots.key].width >= case.program.around.model.pointer:
-        yield f"{slots.text} <= PTRDIFF_MAX"
-
-
-def _constants(case: Case) -> frozenset[int]:
-    return frozenset()
-
-
-def _survives(case: Case, relation: Relation, outside: Outside, often: Mapping[str, frozenset[str]]) -> bool:
-    """Whether stores of constants by code that is not run leave a relation as it is, whatever else holds."""
-    family = case.family
-    assert family is not None
-    for key in relation.keys:
-        for writer in writers_of(outside, key, often):
-            if case.program.has(writer.name) and not writer.gives:
-                continue
-            if writer.value is None or not _harmless(family, relation, key, writer):
-                return False
-    return True
-
-
-def _harmless(family: Family, relation: Relation, key: Key, writer: Writer) -> bool:
-    """Whether a relation still holds after a constant was stored into one of its integers."""
-    solver = z3.SolverFor("QF_BV")
-    solver.set("rlimit", 200_000)
-    values: dict[Key, object] = {
-        each: z3.BitVec(f"value {number}", type_.width) for number, (each, type_) in enumerate(family.types.items())
-    }
-    for other in family.pointers:
-        values[other] = None
-    before = relation.formula(View(lambda each: values[each], family.types, family.width))
-    changed = {**values, key: writer.value}
-    after = relation.formula(View(lambda each: changed[each], family.types, family.width))
-    solver.add(before if not isinstance(before, bool) else z3.BoolVal(before))
-    solver.add(z3.Not(after if not isinstance(after, bool) else z3.BoolVal(after)))
-    return bool(solver.check() == z3.unsat)
-
-
-# -------------------------------------------------------------------------------------------------------------- start
-
-
-def _start(case: Case, relations: list[Relation]) -> list[Relation]:
-    """The relations that hold when the program starts, for all objects that it defines.
-
-    An object whose capacity is still zero is not yet a ring where some function sets rings up. Objects that others
-    make start with zeros, or are given to that function; this is said.
-    """
-    family, program, slots = case.family, case.program, case.slots
-    assert family is not None
-    sets_up = bool(case.setups)
-    names = ", ".join(sorted({trace.function.name for trace in case.setups}))
-    if not family.struct or family.struct == "[]":
-        starts = program.starts(family, None)
-        where = [values for values in starts if values is not None]
-        if len(where) < len(starts):
-            _leave_open(case, "start value not known", "its variables are defined in code that was not read")
-        elif sets_up:
-            case.assumed.append(f"{names} runs before the ring is used")
-            where = []
-    else:
-        found = program.starts(family, family.struct)
-        where = [values for values in found if values is not None]
-        if sets_up:
-            key = slots.key if slots is not None else None
-            where = [values for values in where if key is not None and values.get(key, 0) != 0]
-            case.assumed.append(f"{_article(family.struct)} is given to {names} before it is used")
-        elif not found:
-            where = [dict.fromkeys(family.types, 0)]
-            case.assumed.append(f"{_article(family.struct)} starts with its indices at 0")
-        elif len(where) < len(found):
-            _leave_open(case, "start value not known", "its initial value is not a constant")
-    plain = [relation for relation in relations if all(key in family.types for key in relation.keys)]
-    rest = [relation for relation in relations if relation not in plain]
-    if rest and where:
-        rest = []
-    return [relation for relation in plain if all(holds_for(relation, values, family) for values in where)] + rest
-
-
-# ------------------------------------------------------------------------------------------------------------- proofs
 
 
 def _proofs(case: Case, origin: Callable[[Position], Origin]) -> Iterator[Proof]:
@@ -426,7 +109,7 @@ def _proofs(case: Case, origin: Callable[[Position], Origin]) -> Iterator[Proof]
     for index in ring.indices:
         for step in index.steps:
             if isinstance(step, CheckedStep) and index.role != "count":
-                yield _advance_proof(case, index.name, index.key, step, origin, always)
+                yield _advance_proof(case, index.name, index.key, step, inside, always)
 
 
 def _copies(case: Case, origin: Callable[[Position], Origin], known: set[Origin]) -> Iterator[Access]:
@@ -638,7 +321,7 @@ def _advance_proof(
     name: str,
     key: Key,
     step: CheckedStep,
-    origin: Callable[[Position], Origin],
+    inside: bool,
     assumed: Sequence[str],
 ) -> Proof:
     """That wherever the step is made, the index is then at the next slot, round the end, or where it was."""
@@ -670,7 +353,7 @@ def _advance_proof(
         some = True
         for began, ended, way in _stretches(body):
             for base in body.objects:
-                goal = either(negated(way), _one_on(case, body, began, ended, base, key, slots, step.by))
+                goal = either(negated(way), _one_on(case, body, began, ended, base, key, slots, step.by, inside))
                 verdict = proved(case.induction, body, ended.state, goal)
                 cores += basis(case.induction)
                 if verdict != "holds":
@@ -698,7 +381,15 @@ def _stretches(body: Body) -> Iterator[tuple[Point, Point, Truth]]:
 
 
 def _one_on(
-    case: Case, body: Body, began: Point, ended: Point, base: Number | None, key: Key, slots: Slots, by: int
+    case: Case,
+    body: Body,
+    began: Point,
+    ended: Point,
+    base: Number | None,
+    key: Key,
+    slots: Slots,
+    by: int,
+    inside: bool,
 ) -> Truth:
     family = case.family
     assert family is not None
@@ -707,14 +398,15 @@ def _one_on(
     limit = bits(slots.number(last), family.width)
     one = z3.BitVecVal(1, family.width)
     zero = z3.BitVecVal(0, family.width)
-    # An index may rest at the end and be brought back before it is used: that is slot 0.
-    before = z3.If(before == limit, zero, before)
-    after = z3.If(after == limit, zero, after)
+    # An index may rest at the end and be brought back before it is used, as all accesses show: that is slot 0.
+    if inside:
+        before = z3.If(before == limit, zero, before)
+        after = z3.If(after == limit, zero, after)
     if by < 0:
         before, after = after, before
-    inside = compared("<", after, limit, family.width, True)
+    below = compared("<", after, limit, family.width, True)
     nexts = either(
-        both(equal(after, before + one, family.width), inside),
+        both(equal(after, before + one, family.width), below),
         both(equal(after, 0, family.width), equal(before + one, limit, family.width)),
     )
     return either(equal(after, before, family.width), nexts)
