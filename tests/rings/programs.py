@@ -142,7 +142,7 @@ def _slot_number(w: Writer, index: str) -> str:
 def _may_start_high(w: Writer) -> bool:
     """Whether an index that only ever counts up gets, in so many calls, to where its type ends."""
     plan = w.plan
-    return plan.walk in ("free_modulo", "free_mask") and plan.index.bits == 32
+    return plan.walk in ("free_modulo", "free_mask") and plan.index.bits in (16, 32)
 
 
 def _low(w: Writer) -> str:

@@ -1,15 +1,18 @@
 """What a ring's operations are to be compared with: designs, ranges and what results tell, found in plain use."""
 
-from collections.abc import Sequence
+import re
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
 from stepring.meaning.types import IntType
 from stepring.paths.types import Event
+from stepring.paths.witness import Ending
 from stepring.places import Position
 from stepring.shapes.ring_calls import Effect, Way, call
 from stepring.shapes.ring_compare import try_put
 from stepring.shapes.ring_ideal import Content
+from stepring.shapes.ring_occupancy import occupancy_tests, ways_taken
 from stepring.shapes.ring_report import (
     Made,
     Search,
@@ -20,6 +23,8 @@ from stepring.shapes.ring_report import (
     index_store,
     made_of,
     moved_text,
+    report,
+    return_position,
     shown,
     suspected,
 )
@@ -27,13 +32,15 @@ from stepring.shapes.ring_types import Doubt
 from stepring.shapes.ring_uses import (
     Use,
     designed,
-    occupancy_tests,
+    drained,
     others,
     perform,
     puts,
     takes,
-    ways_taken,
 )
+
+_UNSAFE = re.compile(r"unsafe|uncheck|nocheck|fast|raw|force|from_isr|_locked|^_")
+"""Names of functions whose callers are to look first."""
 
 
 def classify(search: Search) -> None:
@@ -51,6 +58,8 @@ def classify(search: Search) -> None:
     if search.put is None or search.take is None:
         for put in found:
             _inverted(search, put)
+        if not found:
+            _never_stores(search)
         return
     search.take = _checked_take(search, search.take)
     _ranges(search)
@@ -76,6 +85,7 @@ def classify(search: Search) -> None:
             search.put = None
         return
     search.put = next((use for use in kept if use.operation == search.put.operation), kept[0])
+    _one_unchecked(search, kept)
     for use in spoilt:
         # Not even its first element comes out, though another put's do.
         try_put(search, State(probe.start, (), (), 0), use, deep=True)
@@ -83,6 +93,7 @@ def classify(search: Search) -> None:
     more.extend(others(probe, search.put, search.take))
     more = [_checked_take(search, use) if use.kind in ("take", "drop") else use for use in more]
     search.uses = [*kept, *(_told(search, use) for use in more)]
+    _one_unguarded(search)
 
 
 def _inverted(search: Search, put: Use) -> None:
@@ -112,6 +123,109 @@ def _inverted(search: Search, put: Use) -> None:
                 f"{use.name} does nothing while elements are stored, and on an empty ring {moved_text(search, effect)}"
             )
             index_report(search, State(probe.start, (), (), 0), use, effect, "data", what)
+
+
+def _one_unchecked(search: Search, puts: Sequence[Use]) -> None:
+    """Report a put that stores into the full ring where another put of it refuses: they were to be used alike.
+
+    If none looks for room, callers may be meant to.
+    """
+    world, probe, take = search.world, search.probe, search.take
+    checked = [use for use in puts if use.checked and use.design == "refuses" and not use.operation.helper]
+    assert take is not None
+    if not checked or not take.checked:
+        return
+    for use in puts:
+        if use.checked or use.operation.helper or use.design != "unchecked" or _UNSAFE.search(use.name.lower()):
+            continue
+        probe.back()
+        held: list[int] = []
+        run: list[Made] = []
+        for number in range(search.room):
+            effect = call(world, use.operation, use.way, probe.purse, token=number)
+            run.extend(made_of(search, effect))
+            held.extend(value for _, value in effect.stored)
+        state = State(world.save(), tuple(held), tuple(run), search.room)
+        refused = call(world, checked[0].operation, checked[0].way, probe.purse, token=search.room).refused
+        world.load(state.saved)
+        effect = call(world, use.operation, use.way, probe.purse, token=search.room)
+        if not refused or len(held) != search.room or not effect.returned or effect.refused:
+            continue
+        now, _ = drained(probe, take, search.room + world.slots + 2)
+        if now == tuple(held):
+            continue
+        what = (
+            f"{use.name} on a ring that holds {search.room} makes it give {shown(now)} where {shown(held)} is due; "
+            f"{checked[0].name} refuses then"
+        )
+        content_report(search, state, use, "room", what, tuple(held), now, token=search.room)
+
+
+def _one_unguarded(search: Search) -> None:
+    """Report a take that takes from the empty ring where another take of it refuses."""
+    world, probe = search.world, search.probe
+    some = [use for use in search.uses if use.kind == "take" and use.first is None and not use.operation.helper]
+    checked = [use for use in some if use.checked]
+    for use in some:
+        if not checked or use.checked or _UNSAFE.search(use.name.lower()):
+            continue
+        probe.back()
+        if not perform(world, checked[0], probe.purse).refused:
+            continue
+        probe.back()
+        effect = perform(world, use, probe.purse)
+        if effect.returned and not effect.refused:
+            what = f"{use.name} on an empty ring {moved_text(search, effect)}; {checked[0].name} refuses then"
+            index_report(search, State(probe.start, (), (), 0), use, effect, "data", what)
+
+
+def _never_stores(search: Search) -> None:
+    """Report what stores into the full ring only: it says no to the first element already.
+
+    That the room test is to blame shows on a ring that is made full by its indices alone: there the same call stores.
+    """
+    probe, world = search.probe, search.world
+    indices = {place[3]: at for at, place in enumerate(world.places)}
+    if world.storage is None or not all(isinstance(reader[2], IntType) for reader in world.readers):
+        return
+    full = {"count": world.slots} if "count" in indices else {"write": world.slots - 1}
+    for operation in world.operations:
+        item = operation.has("value") or operation.has("buffer")
+        if operation.helper or not item or not occupancy_tests(probe, operation):
+            continue
+        use = Use(operation, "put")
+        probe.back()
+        first = call(world, operation, use.way, probe.purse)
+        if not first.refused or not first.returned or not set(full) <= set(indices):
+            continue
+        stored = _stores_when(search, use, {indices[role]: value for role, value in full.items()})
+        if not stored and "count" not in indices:
+            stored = _stores_when(search, use, {indices["write"]: world.slots})
+        if stored:
+            at = indices.get("write", indices.get("count", 0))
+            _, name, path, _ = world.places[at]
+            position = return_position(search, State(probe.start, (), (), 0), use)
+            due = "another value, the element being stored"
+            ending = Ending("value", search.origin(position), None, name + path, str(first.after[at]), due)
+            what = f"{use.name} stores nothing into the empty ring, and would store into the full one"
+            report(search, State(probe.start, (), (), 0), first, "room", what, position, use.name, ending)
+
+
+def _stores_when(search: Search, use: Use, values: Mapping[int, int]) -> bool:
+    """Whether a put stores its element, and different ones differently, with indices at some values."""
+    world, probe = search.world, search.probe
+    seen: list[int] = []
+    for token in range(2):
+        probe.back()
+        world.blot()
+        for at, value in values.items():
+            _, name, path, _ = world.places[at]
+            world.memory.write(name + path, value)
+        effect = call(world, use.operation, use.way, probe.purse, token=token)
+        if not effect.returned or len(effect.stored) != 1 or effect.before == effect.after:
+            return False
+        seen.append(effect.stored[0][1])
+    return seen[0] != seen[1]
 
 
 def _ranges(search: Search) -> None:

@@ -436,7 +436,8 @@ def _tell(search: Search, state: State, use: Use) -> None:
     what = f"{use.name} returns {found}; {words}"
     ending = Ending("result", return_place(search, state, use), None, "", str(found), str(int(due)))
     position = return_position(search, state, use)
-    report(search, state, effect, "occupancy", what, position, use.name, ending)
+    doubt: Doubt = "overflow" if search.overflow else "occupancy"
+    report(search, state, effect, doubt, what, position, use.name, ending)
 
 
 def _part(search: Search, effect: Effect, found: int, true: int) -> bool:

@@ -6,32 +6,19 @@ is beyond doubt: as it starts, or with a few elements in it.
 """
 
 import re
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field, replace
 from typing import Any, Literal, TypeAlias
 
 from stepring.meaning.types import (
-    Assign,
-    Binary,
-    Branch,
-    Call,
-    Cast,
-    Expr,
-    FunctionName,
     IntType,
-    Load,
-    PointerDistance,
-    Return,
-    Unary,
-    VariablePlace,
 )
 from stepring.paths.types import Event
 from stepring.places import Position
 from stepring.shapes.ring_calls import Effect, Policy, Purse, Way, call
 from stepring.shapes.ring_ideal import Content, Design, design_of, room_of
-from stepring.shapes.ring_keys import place_keys
 from stepring.shapes.ring_parameters import Operation, variants
-from stepring.shapes.ring_world import Group, World, called
+from stepring.shapes.ring_world import World
 
 Kind: TypeAlias = Literal["put", "take", "look", "drop", "clear", "tell"]
 PLAIN = Way()
@@ -39,6 +26,7 @@ SMALL = 8
 """Rings with at most so many slots are looked at state by state."""
 _CLEAR = re.compile(r"flush|clear|purge|drop_?all|discard_?all|reset$")
 """What clears is seen by what it does; what is to clear and does not, by its name only."""
+_LOOK = re.compile(r"peek|front|oldest|first")
 POLICIES: tuple[Policy, ...] = ("zero", "one", "once")
 
 
@@ -306,6 +294,9 @@ def _as_other(probe: Probe, operation: Operation, state: Any, held: Content, put
             if same or one.outputs.get("result", ())[:1] == held[:1]:
                 if _follows(probe, operation, way, state, take, (same or ["result"])[0], held):
                     return Use(operation, "look", way, channel=(same or ["result"])[0])
+            ahead = _looks_ahead(probe, operation, way, state, one, held, take)
+            if ahead is not None:
+                return ahead
             result = isinstance(operation.function.type.returns, IntType)
             plain = not numbered and not operation.has("buffer")
             return Use(operation, "tell", way) if result and plain else None
@@ -354,6 +345,30 @@ def _spoilt_drop(probe: Probe, operation: Operation, way: Way, state: Any, held:
     if ends[2].refused or ends[1].after == ends[2].after:
         return Use(operation, "drop", way, numbered=True, checked=True)
     return None
+
+
+def _looks_ahead(
+    probe: Probe, operation: Operation, way: Way, state: Any, one: Effect, held: Content, take: Use
+) -> Use | None:
+    """What is called a look at the oldest element, and gives the one after it even where there is only one."""
+    if not _LOOK.search(operation.function.name.lower()) or operation.has("value") or operation.has("length"):
+        return None
+    channels = [name for name, values in one.outputs.items() if values[:1] == held[1:2] and name != "result"]
+    if not channels and one.outputs.get("result", ())[:1] == held[1:2]:
+        channels = ["result"]
+    if not channels or not _follows(probe, operation, way, state, take, channels[0], held[1:]):
+        return None
+    probe.world.load(state)
+    for _ in held[1:]:
+        perform(probe.world, take, probe.purse)
+    last = call(probe.world, operation, way, probe.purse)
+    probe.back()
+    none = call(probe.world, operation, way, probe.purse)
+    same = (
+        last.outcome.value != none.outcome.value if channels == ["result"] else last.outcome.value == one.outcome.value
+    )
+    agreed = last.returned and none.returned and same
+    return Use(operation, "look", way, channel=channels[0]) if agreed else None
 
 
 def _sets_back(probe: Probe, operation: Operation, way: Way, put: Use, take: Use) -> bool:
@@ -414,84 +429,3 @@ def designed(probe: Probe, put: Use, take: Use) -> tuple[Use, tuple[Content, ...
         return None
     design: Design = "refuses" if refused else design_of(held, everything, room)
     return replace(put, design=design, room=room), tuple(held), everything
-
-
-# ------------------------------------------------------------------------------------------------- tests of occupancy
-
-
-def occupancy_tests(probe: Probe, operation: Operation) -> frozenset[Position]:
-    """The branches of an operation (and what it calls) that depend on a count, or on two indices at once."""
-    group, ring = probe.world.group, probe.world.ring
-    indices = {index.key: index.role for index in ring.indices}
-    found: set[Position] = set()
-    for identity in called(group, operation.function.identity):
-        known = probe.tests.get(identity)
-        if known is None:
-            known = probe.tests[identity] = frozenset(_tests(group, identity, indices))
-        found |= known
-    return frozenset(found)
-
-
-def _tests(group: Group, identity: str, indices: Mapping[tuple[str, ...], str]) -> Iterator[Position]:
-    function = group.functions[identity]
-    made_of = _made_of(group, identity, set(indices), 0)
-    for block in function.blocks:
-        end = block.terminator
-        if isinstance(end, Branch):
-            keys = _keys_in(end.condition, made_of) & set(indices)
-            if len(keys) > 1 or any(indices[key] == "count" for key in keys):
-                yield end.position
-
-
-def _made_of(
-    group: Group, identity: str, indices: set[tuple[str, ...]], depth: int
-) -> dict[str, frozenset[tuple[str, ...]]]:
-    """Which indices the local variables of a function are computed from."""
-    function = group.functions[identity]
-    made_of: dict[str, frozenset[tuple[str, ...]]] = {}
-    for _ in range(2):
-        for block in function.blocks:
-            for statement in block.statements:
-                match statement:
-                    case Assign(place=VariablePlace(variable=variable), value=value) if not variable.lasting:
-                        keys = _keys_in(value, made_of) & indices
-                    case Call(callee=FunctionName(name=name), result=VariablePlace(variable=variable)):
-                        keys = frozenset(_told_by(group, name, indices, depth))
-                        for given in statement.arguments:
-                            keys |= _keys_in(given, made_of) & indices
-                    case _:
-                        continue
-                made_of[variable.identity] = made_of.get(variable.identity, frozenset()) | keys
-    return made_of
-
-
-def _told_by(group: Group, name: str, indices: set[tuple[str, ...]], depth: int) -> Iterator[tuple[str, ...]]:
-    """The indices that a function's result depends on."""
-    for callee in group.by_name.get(name, ())[:2] if depth < 3 else ():
-        made_of = _made_of(group, callee.identity, indices, depth + 1)
-        for block in callee.blocks:
-            match block.terminator:
-                case Return(value=value) if value is not None:
-                    yield from _keys_in(value, made_of) & indices
-                case Branch(condition=value):
-                    yield from _keys_in(value, made_of) & indices
-
-
-def _keys_in(expr: Expr, made_of: dict[str, frozenset[tuple[str, ...]]]) -> frozenset[tuple[str, ...]]:
-    match expr:
-        case Load(place=VariablePlace(variable=variable)) if not variable.lasting:
-            return made_of.get(variable.identity, frozenset())
-        case Load(place=place):
-            return place_keys(place, "", {})
-        case Unary(operand=operand) | Cast(operand=operand):
-            return _keys_in(operand, made_of)
-        case Binary(left=left, right=right) | PointerDistance(left=left, right=right):
-            return _keys_in(left, made_of) | _keys_in(right, made_of)
-    return frozenset()
-
-
-def ways_taken(events: list[Event], tests: frozenset[Position]) -> frozenset[tuple[Position, bool]]:
-    """Which ways the tests of occupancy went in a run."""
-    return frozenset(
-        (event.position, bool(event.value)) for event in events if event.kind == "branch" and event.position in tests
-    )
