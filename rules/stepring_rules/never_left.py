@@ -1,8 +1,8 @@
 """SM04: a state, or a group of states, that is never left.
 
 The groups are the strongly connected components of the transition graph without an edge out. States whose name says
-that the machine may rest there, or whose case does nothing, are taken for final and get a note. CWE-835 is about
-loops; the nearest entry for a stuck machine is CWE-841.
+that the machine may rest there, or whose case does nothing, are taken for final and get a note, as does the end of a
+sequence that an object goes through once. CWE-835 is about loops; the nearest entry for a stuck machine is CWE-841.
 """
 
 from collections.abc import Iterator
@@ -46,7 +46,8 @@ def never_left(program: Program) -> Iterator[Obligation]:
             at_work = all(
                 state.name in trap or state.initial for state in machine.states if state.labelled or state.stored
             )
-            level: Level = "note" if at_work or any(is_final(name) for name in trap) else "warning"
+            rests = at_work or any(is_final(name) for name in trap) or _one_way(machine)
+            level: Level = "note" if rests else "warning"
             ways_in = [step for step in machine.transitions if step.target in trap and step.source not in trap]
             yield about(
                 "SM04",
@@ -65,6 +66,18 @@ def never_left(program: Program) -> Iterator[Obligation]:
                     Related(step.where, f"{step.source} goes to {step.target} here.") for step in ways_in[:3]
                 ),
             )
+
+
+def _one_way(machine: Machine) -> bool:
+    """Whether a member's states are gone through once, in the order of their values.
+
+    Such a sequence ends with its object: a request that is answered, a transfer that is closed.
+    """
+    values = {state.name: state.value for state in machine.states}
+    steps = [step for step in machine.transitions if step.source != step.target]
+    return (
+        machine.kind == "member" and len(steps) > 1 and all(values[step.source] < values[step.target] for step in steps)
+    )
 
 
 def _traps(machine: Machine) -> Iterator[tuple[str, ...]]:
