@@ -230,6 +230,10 @@ def content_report(
         if last.refused and not wanted:
             break
         if last.refused or out != wanted:
+            if search.overflow and last.refused and wanted:
+                # What was stored is there, by the counters' difference; who takes does not see it.
+                position, function = return_position(search, before, take), take.name
+                place = search.origin(position)
             ending = (
                 _output_ending(search, take, last, 0, wanted, place)
                 if wanted
