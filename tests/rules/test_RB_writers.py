@@ -75,7 +75,6 @@ def test_a_whole_program_passes(tmp_path: Path) -> None:
         "{ memcpy(&pellets, from, sizeof pellets); }",
         "struct barge { int id; struct pellets pellets; }; struct barge barge; "
         "void skip(const struct barge *other) { barge = *other; }",
-        "void skip(void) { pellets.head = 9; }",
     ],
 )
 def test_another_unit_stores_into_an_index(tmp_path: Path, body: str) -> None:
@@ -84,6 +83,16 @@ def test_another_unit_stores_into_an_index(tmp_path: Path, body: str) -> None:
     assert found
     assert "pass" not in kinds(found)
     assert any("skip" in item.reason for item in found if item.kind == "open") or "fail" in kinds(found)
+
+
+def test_a_constant_stored_elsewhere_spoils_its_own_index_only(tmp_path: Path) -> None:
+    other = '#include "pellets.h"\nvoid skip(void) { pellets.head = 9; }\n'
+    found = judged(tmp_path, {"pellets.h": HEADER, "pellets.c": RING, "skip.c": other})
+    lines = RING.splitlines()
+    with_head = [item for item in found if "p->head] =" in lines[item.where.line - 1]]
+    with_tail = [item for item in found if "p->weight[p->tail]" in lines[item.where.line - 1]]
+    assert kinds(with_head) == {"open"}
+    assert kinds(with_tail) == {"pass"}  # whatever head is, every function keeps tail < 6
 
 
 @pytest.mark.parametrize(
