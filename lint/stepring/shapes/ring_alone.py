@@ -48,16 +48,26 @@ def alone(search: Search, odd: Odd) -> None:
         for way in (Way("token"), Way("once", operation.has("buffer"))):
             if _again(search, [Use(operation, "put", way)], odd) or search.spent:
                 break
-    if not search.found:
+    if not search.found and (search.put is None or search.take is None):
         _past_overflow(search, odd)
 
 
 def _past_overflow(search: Search, odd: Odd) -> None:
-    """Again from just before the overflow of an index that counts on and is reduced where it is used."""
+    """Again from just before the overflow of an index that counts on and is reduced where it is used.
+
+    Of several that do no one value of the others is known to go with it.
+    """
+    counting = [
+        index
+        for index in search.world.ring.indices
+        if index.role == "count" or any(step.wrap == "free-running" for step in index.steps)
+    ]
+    if len(counting) != 1:
+        return
     world, base = search.world, search.base
     for at, index in enumerate(world.ring.indices):
         type_ = world.readers[at][2]
-        free = any(step.wrap == "free-running" for step in index.steps)
+        free = index.role != "count" and any(step.wrap == "free-running" for step in index.steps)
         if not free or not isinstance(type_, IntType) or not 8 < type_.width <= 32:
             continue
         start = type_.high - NEAR_END
