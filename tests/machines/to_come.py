@@ -6,7 +6,6 @@ from typing import Any
 import pytest
 
 FORMS_TO_COME: dict[str, str] = {
-    "working copy": "a copy of a state of plain numbers is taken for a level that is turned up and down",
     "goto": "labels are no states yet",
 }
 

@@ -193,7 +193,7 @@ def evidence(group: Gathered) -> Evidence:
 
 def is_chained(group: Gathered) -> bool:
     """Whether a key that is only compared with constants is a state."""
-    chains = [one for one in group.dispatches if not one.line_numbers and one.form == "if-chain"]
+    chains = [one for one in group.dispatches if not one.line_numbers and one.form in ("switch", "if-chain")]
     if not chains or group.key.scope == "parameter":
         return False
     if all(one.characters for one in chains) or all(one.packet for one in chains):

@@ -1,0 +1,28 @@
+"""Machines whose states are plain numbers: found in every form, and no other enumeration's names given to them."""
+
+from pathlib import Path
+
+from tests.marks import machine_in, steps
+
+
+def test_a_working_copy(tmp_path: Path) -> None:
+    machine = machine_in(
+        tmp_path,
+        """
+        #include <stdint.h>
+        static uint8_t lift_state = 0;
+        void lift_step(int ev)
+        {
+            uint8_t now = lift_state;
+            switch (now) {
+            case 0: if (ev == 1) { now = 1; } break;
+            case 1: if (ev == 2) { now = 2; } break;
+            case 2: if (ev == 3) { now = 0; } break;
+            default: now = 0; break;
+            }
+            lift_state = now;
+        }
+        """,
+    )
+    assert {("0", "1"), ("1", "2"), ("2", "0")} <= steps(machine)
+    assert machine.variable == "lift_state"
