@@ -1,7 +1,8 @@
 """RB03: a wrap that skips or repeats slots.
 
 Each advance is run from every value that the index takes; the slot it leads to must be the one that follows (or, in a
-ring that is walked downwards, the one before). CWE-193.
+ring that is walked downwards, the one before). A move by a length has no next slot: what it transfers is compared by
+RB11, where it leaves the index by RB01. CWE-193.
 """
 
 from collections.abc import Iterator
@@ -78,7 +79,7 @@ def _check(turn: Turn) -> Iterator[Obligation]:
             f"Every advance of {name} leads to the next of the {capacity} slots of {ring.storage}.",
             function=step.function,
         )
-    elif turn.cause is None and not step.odd:
+    elif turn.cause is None and not step.odd and step.by is not None:
         yield _unsettled(turn)
 
 
@@ -98,14 +99,17 @@ def _unsettled(turn: Turn) -> Obligation:
     step, ring, name = turn.step, turn.ring, short(turn.index.name)
     where = step.wrap_where or step.where
     proof = next(
-        (one for one in ring.proofs if one.about == "advance" and (one.where, one.function) == (where, step.function)),
+        (
+            one
+            for one in ring.proofs
+            if one.about == "advance" and (one.where, one.function) == (step.where, step.function)
+        ),
         None,
     )
     if proof is not None and proof.holds:
         what = f"Every advance of {name} leads to the next of the {turn.capacity} slots of {ring.storage}."
         passed: Obligation = about("RB03", ring, "pass", where, what, function=step.function, assumed=proof.assumed)
         return passed
-    by_length = step.by is None
     left: Obligation = about(
         "RB03",
         ring,
@@ -113,10 +117,8 @@ def _unsettled(turn: Turn) -> Obligation:
         where,
         f"It is not settled that every advance of {name} leads to the next of the {turn.capacity} slots of "
         f"{ring.storage}.",
-        reason=(proof.detail if proof is not None else "")
-        or ("it is moved by a length" if by_length else "it could not be run from every value that it takes"),
-        open_as=(proof.reason if proof is not None else None)
-        or ("argument not bounded" if by_length else "bound reached"),
+        reason=(proof.detail if proof is not None else "") or "it could not be run from every value that it takes",
+        open_as=(proof.reason if proof is not None else None) or "bound reached",
         function=step.function,
     )
     return left
