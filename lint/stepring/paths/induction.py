@@ -19,6 +19,7 @@ import z3
 from stepring.meaning.types import IntType
 from stepring.paths.induction_loops import LoopRelation, loop_relations
 from stepring.paths.symbolic_memory import Pointer, State, Value, added, address_mark, guard_of, home_of, read, row_of
+from stepring.paths.symbolic_sums import Sums, whole
 from stepring.paths.symbolic_terms import Number, Term, Truth, as_truth, both, either, equal, negated, stretch
 from stepring.paths.symbolic_types import FLAG, SET_FRAME, Limits, Point, Trace
 from stepring.shapes.ring_keys import Key
@@ -29,23 +30,23 @@ Look: TypeAlias = Callable[[Key], Value]
 
 DROPPING = (
     ("bits", 200_000),
-    ("sums", 10_000),
+    ("sums", 200_000),
     ("bits", 1_500_000),
-    ("sums", 100_000),
-    ("bits", 6_000_000),
     ("sums", 1_000_000),
+    ("bits", 6_000_000),
 )
 
 PROVING = (
-    ("sums", 5_000),
-    ("bits", 300_000),
     ("sums", 50_000),
-    ("bits", 1_500_000),
+    ("bits", 300_000),
     ("sums", 200_000),
+    ("bits", 1_500_000),
+    ("sums", 1_000_000),
     ("bits", 6_000_000),
 )
 """Tries at a question, each with its effort in the solver's units. Most code about rings adds and compares, which is
-settled at once by arithmetic, which also tells what a proof rests on; models, masks and what wraps round need bits."""
+settled at once by arithmetic over whole numbers, which also tells what a proof rests on; models, masks and what wraps
+round in other ways need bits."""
 
 MANY = 16
 """Candidates at one point that are tried one by one, where the solver does not settle them together."""
@@ -369,27 +370,34 @@ def _tried(
     made: Induction, body: Body, facts: Sequence[Term], active: Sequence[str], kind: str, effort: int
 ) -> tuple[Verdict, Term]:
     """One try at a question."""
-    if kind == "sums":
-        solver = z3.SimpleSolver()
-        solver.set("smt.bv.solver", 2)  # bit-vectors as integers: sums and orders, no bits
-    else:
+    bits_ = kind == "bits"
+    if bits_:
         steps = ("simplify", "propagate-values", "solve-eqs", "elim-uncnstr", "simplify", "smt")
         solver = z3.Then(*steps).solver()
+    else:
+        solver = z3.SimpleSolver()
     solver.set("rlimit", effort)
     solver.set("random_seed", 0)
-    solver.add(*facts)
-    switches = []
-    for name in active:
-        for term in body.assumed[name]:
-            solver.add(z3.Implies(body.switches[name], term) if kind == "sums" else term)
-        switches.append(body.switches[name])
+    known = [(name, term) for name in active for term in body.assumed[name]]
+    if bits_:
+        solver.add(*facts, *(term for _, term in known))
+    else:
+        try:
+            sums = Sums()
+            solver.add(*(whole(sums, term) for term in facts))
+            for name, term in known:
+                solver.add(z3.Implies(body.switches[name], whole(sums, term)))
+            solver.add(*sums.rules)
+        except RecursionError:
+            return "unknown", None
+    switches = [body.switches[name] for name in active]
     try:
-        answer = solver.check(*switches) if kind == "sums" else solver.check()
+        answer = solver.check() if bits_ else solver.check(*switches)
         if answer == z3.unsat:
-            names = {str(term).removeprefix("keeps ") for term in solver.unsat_core()} if kind == "sums" else active
+            names = active if bits_ else {str(term).removeprefix("keeps ") for term in solver.unsat_core()}
             made.core = tuple(sorted(names))
             return "holds", None
-        if answer == z3.sat:
+        if answer == z3.sat and bits_:
             return "fails", solver.model()
     except z3.Z3Exception:
         # A tactic that gives up says so by an exception.

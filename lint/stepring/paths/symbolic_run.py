@@ -31,6 +31,7 @@ from stepring.meaning.types import (
     Jump,
     Load,
     PlaceExpr,
+    PointerStep,
     PointerType,
     Return,
     Statement,
@@ -608,9 +609,19 @@ def _ends(engine: Engine, frame: Frame, state: State, block: int) -> Iterator[tu
                 given = evaluate(engine, state, frame, value)
                 if given is None:
                     given = anything(engine, value.type)
+                _returned(engine, state, frame, value, given)
             elif value is not None and isinstance(value, Load):
                 locate(engine, state, frame, value.place, "load")
             yield state, -1, Exit(state, given, position)
+
+
+def _returned(engine: Engine, state: State, frame: Frame, value: Expr, given: Value) -> None:
+    """Note an element whose address is made to be returned: whoever called may access it."""
+    while isinstance(value, Cast):
+        value = value.operand
+    if isinstance(value, PointerStep) and isinstance(given, Pointer) and (given.array or given.source):
+        if given.made is not None:
+            note(engine, state, frame, given.made, "address", given.array, given, given.steps, given.unit)
 
 
 def _with(state: State, way: Truth) -> State:

@@ -1,24 +1,32 @@
 """What blocks and functions may store into, by the keys of memory: what a loop or a call leaves unknown.
 
 Read off the text, callees with a body included; a call of code that is not known may store into everything.
+
+A pointer that is only a name for one place, as the macros for atomic loads and stores declare one, is read as that
+place: its address goes nowhere else.
 """
 
-from collections.abc import Iterable
+from collections import Counter
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 
 from stepring.meaning.types import (
+    AddressOf,
     ArrayType,
     Assign,
     Begin,
     Call,
     Cast,
     Clobber,
+    Const,
     CType,
     DerefPlace,
     ElementPlace,
     Expr,
     Function,
     FunctionName,
+    IntType,
+    Load,
     MemberPlace,
     PlaceExpr,
     PointerType,
@@ -29,6 +37,7 @@ from stepring.meaning.types import (
 from stepring.paths.symbolic_types import Around
 from stepring.shapes.ring_keys import Key, inner_structs
 from stepring.values.library import CONTRACTS
+from stepring.values.scan import expressions_of, inside_place, places_of, walk_deep
 
 
 @dataclass(slots=True)
@@ -43,6 +52,72 @@ class Writes:
     everything: bool = False
 
 
+_names: dict[int, tuple[Function, dict[str, PlaceExpr]]] = {}
+
+
+def names_of(function: Function) -> Mapping[str, PlaceExpr]:
+    """The function's pointers that are only names for a lasting integer, by their identities, with that place.
+
+    Such a pointer is set once, where it is declared, to an address without a cast, and used for nothing but to load and
+    store through it. So whatever it leads to is known wherever it is used, and nobody else learns the address.
+    """
+    known = _names.get(id(function))
+    if known is None or known[0] is not function:
+        if len(_names) > 2048:
+            _names.clear()
+        known = _names[id(function)] = (function, _find_names(function))
+    return known[1]
+
+
+def _find_names(function: Function) -> dict[str, PlaceExpr]:
+    targets: dict[str, PlaceExpr] = {}
+    assigned: Counter[str] = Counter()
+    loaded: Counter[str] = Counter()
+    through: Counter[str] = Counter()
+    taken: set[str] = set()
+    for block in function.blocks:
+        for step in (*block.statements, block.terminator):
+            places = list(places_of(step)) if step is not block.terminator else []  # type: ignore[arg-type]
+            if isinstance(step, Assign) and isinstance(step.place, VariablePlace) and step.initial:
+                value = step.value
+                if isinstance(value, AddressOf) and _key(value.place) and isinstance(value.place.type, IntType):
+                    targets[step.place.variable.identity] = value.place
+            for place in places:
+                if isinstance(place, VariablePlace):
+                    assigned[place.variable.identity] += 1
+            expressions = [*expressions_of(step), *(inner for place in places for inner in inside_place(place))]
+            parts = [part for expression in expressions for part in walk_deep(expression)]
+            for part in parts:
+                if isinstance(part, Load) and isinstance(part.place, VariablePlace):
+                    loaded[part.place.variable.identity] += 1
+                elif isinstance(part, AddressOf) and isinstance(_base(part.place), VariablePlace):
+                    taken.add(_base(part.place).variable.identity)  # type: ignore[union-attr]
+            for place in (*places, *(part.place for part in parts if isinstance(part, Load))):
+                name = _named(place)
+                if name is not None:
+                    through[name] += 1
+    return {
+        name: target
+        for name, target in targets.items()
+        if assigned[name] == 1 and loaded[name] == through[name] and name not in taken
+    }
+
+
+def _named(place: PlaceExpr) -> str | None:
+    """The variable that a place is reached through: ``*p`` and nothing more."""
+    if isinstance(place, DerefPlace) and isinstance(place.pointer, Load):
+        inner = place.pointer.place
+        if isinstance(inner, VariablePlace) and not inner.variable.lasting:
+            return inner.variable.identity
+    return None
+
+
+def _base(place: PlaceExpr) -> PlaceExpr:
+    while isinstance(place, MemberPlace | ElementPlace):
+        place = place.base
+    return place
+
+
 def block_writes(around: Around, function: Function, blocks: Iterable[int]) -> Writes:
     """What some blocks of a function may store into."""
     found = Writes()
@@ -52,14 +127,24 @@ def block_writes(around: Around, function: Function, blocks: Iterable[int]) -> W
     return found
 
 
-def own_writes(around: Around, function: Function) -> Writes:
-    """What a function's own text stores into, callees left out."""
+def own_writes(around: Around, function: Function, *, clears: bool = True) -> Writes:
+    """What a function's own text stores into, callees left out; without ``clears`` null pointers that it stores too."""
     found = Writes()
     for block in function.blocks:
         for statement in block.statements:
+            if not clears and isinstance(statement, Assign) and _is_null(statement.value):
+                continue
             if not isinstance(statement, Call) or around.resolve(function, _name_of(statement)) is None:
                 _statement(around, function, statement, found, frozenset((function.identity,)))
     return found
+
+
+def _is_null(value: Expr) -> bool:
+    if not isinstance(value.type, PointerType):
+        return False
+    while isinstance(value, Cast):
+        value = value.operand
+    return isinstance(value, Const) and value.value == 0
 
 
 def _name_of(call: Call) -> str:
@@ -83,15 +168,15 @@ def function_writes(around: Around, function: Function, inside: frozenset[str] =
 def _statement(around: Around, function: Function, statement: Statement, found: Writes, inside: frozenset[str]) -> None:
     match statement:
         case Assign(place=place):
-            _place(around, place, found)
+            _place(around, function, place, found)
         case Begin(variable=variable):
             found.local.add(variable.identity)
         case Clobber(places=places):
             for place in places:
-                _place(around, place, found)
+                _place(around, function, place, found)
         case Call(callee=callee, arguments=arguments, result=result):
             if result is not None:
-                _place(around, result, found)
+                _place(around, function, result, found)
             _call(around, function, callee, arguments, found, inside)
 
 
@@ -125,10 +210,13 @@ def _call(
             if isinstance(to, StructType):
                 _struct(around, to.identity, found)
             elif place is not None and type(inner_).__name__ == "AddressOf":
-                _place(around, place, found)
+                _place(around, function, place, found)
 
 
-def _place(around: Around, place: PlaceExpr, found: Writes) -> None:
+def _place(around: Around, function: Function, place: PlaceExpr, found: Writes) -> None:
+    name = _named(place)
+    if name is not None:
+        place = names_of(function).get(name, place)
     base: PlaceExpr = place
     while isinstance(base, MemberPlace | ElementPlace):
         if isinstance(base, MemberPlace):

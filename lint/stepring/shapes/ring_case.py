@@ -88,14 +88,16 @@ def prepare(case: Case, outside: Outside, often: Mapping[str, frozenset[str]], l
         # One that only reads, or stores by way of others that can be entered, keeps what these keep.
         if program.sets(function, family.keys) or program.speaks_of(function, storage)
     ]
-    opaque = frozenset(function.identity for function in pending if setting and program.sets(function, setting))
+    opaque = frozenset(
+        function.identity for function in pending if setting and program.sets(function, setting, clears=False)
+    )
     done: set[str] = set()
     while pending:
         function = pending.pop(0)
         if function.identity in done:
             continue
         done.add(function.identity)
-        sets = bool(setting) and program.sets(function, setting)
+        sets = bool(setting) and program.sets(function, setting, clears=False)
         trace = program.trace(function, sets, opaque)
         (case.setups if sets else case.operations).append(trace)
         for name in trace.calls:
@@ -178,10 +180,11 @@ def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozense
                 _leave_open(case, "pointer not resolved", f"{name} is given the address of {short_text(key)}")
             elif key[0] == "struct" and family.struct in inner_structs(key[1], program.structs):
                 _leave_open(case, "pointer not resolved", f"{name} takes {struct_name(key[1])} as bytes")
-            elif key[0] == "argument" and family.struct in inner_structs(key[1], program.structs):
-                known = program.around.defined
-                if (known is None or name not in known) and not program.has(name):
-                    _leave_open(case, "call to unknown code", f"{name} is given a {struct_name(key[1])}")
+    given_away = sorted({trace.function.name for trace in (*case.operations, *case.setups) if _gives_away(case, trace)})
+    if given_away:
+        calls = "calls" if len(given_away) == 1 else "call"
+        what = f"what {', '.join(given_away)} {calls} changes {struct_name(family.struct)}"
+        case.assumed.append(f"{what} through its own functions only")
     for name in sorted(program.structs):
         layout = program.structs[name]
         if layout.union and family.struct and family.struct in inner_structs(name, program.structs):
@@ -196,6 +199,22 @@ def _look_for_trouble(case: Case, outside: Outside, often: Mapping[str, frozense
         for writer in writers_of(outside, key, often):
             if writer.value is None and (writer.gives or not program.has(writer.name)):
                 _leave_open(case, "stored into elsewhere", f"{writer.name} may store into {short_text(key)}")
+
+
+def _gives_away(case: Case, trace: Trace) -> bool:
+    """Whether code that is not known is called with the ring: it may enter the ring's functions again with it.
+
+    Such a call is a point where the relations are asked for, and after it nothing else is known; what is left to assume
+    is that it has no ways of its own into the structure.
+    """
+    family, program = case.family, case.program
+    assert family is not None
+    known = program.around.defined
+    for key, name in trace.given.items():
+        if key[0] == "argument" and family.struct in inner_structs(key[1], program.structs):
+            if (known is None or name not in known) and not program.has(name):
+                return True
+    return False
 
 
 def _reached_from(program: RingProgram, key: Key, file: str) -> bool:

@@ -33,7 +33,7 @@ from stepring.meaning.types import (
 from stepring.paths.induction import Family
 from stepring.paths.symbolic import trace_function
 from stepring.paths.symbolic_types import Around, Limits, Trace
-from stepring.paths.symbolic_writes import Writes, function_writes, own_writes
+from stepring.paths.symbolic_writes import Writes, function_writes, names_of, own_writes
 from stepring.shapes.ring_keys import Key, inner_structs, place_keys
 from stepring.shapes.ring_writers import Outside
 from stepring.values.scan import expressions_of, inside_place, places_of, walk_deep
@@ -79,10 +79,13 @@ class RingProgram:
             known = self.calls[function.identity] = frozenset(found)
         return known
 
-    def sets(self, function: Function, setting: Set[Key]) -> bool:
-        """Whether a function stores into some keys by itself, or through helpers that cannot be entered."""
+    def sets(self, function: Function, setting: Set[Key], *, clears: bool = True) -> bool:
+        """Whether a function stores into some keys by itself, or through helpers that cannot be entered.
+
+        Without ``clears``, null pointers do not count: who only takes a ring's storage away sets nothing up.
+        """
         for here in self.near(function):
-            writes = own_writes(self.around, here)
+            writes = own_writes(self.around, here, clears=clears)
             if writes.keys & setting or (writes.pointers and self.around.exposed & setting):
                 return True
         return False
@@ -283,9 +286,12 @@ def _taken(function: Function) -> set[str]:
 
 
 def _exposed(function: Function) -> Iterator[Key]:
-    """The lasting scalars whose address a function takes."""
+    """The lasting scalars whose address a function takes, other than to name them."""
+    named = names_of(function).values()
     for part in _steps(function):
         if isinstance(part, AddressOf) and isinstance(part.place.type, IntType | PointerType):
+            if any(part.place is place for place in named):
+                continue
             for key in place_keys(part.place, "", {}):
                 if key[0] != "local" and key[-1] not in ("[]", "*"):
                     yield key
