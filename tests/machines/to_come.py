@@ -18,7 +18,6 @@ GRAPHS_TO_COME = {
 
 SLIPS_TO_COME = {
     "trap": "a row of a table of plain numbers that always stays is not taken for a state",
-    "break missing before default": "a fall into the default is not told yet",
     **dict.fromkeys(
         [
             "transition overwritten",

@@ -10,7 +10,7 @@ from dataclasses import dataclass, field
 from typing import Literal, TypeAlias
 
 from stepring.places import Origin
-from stepring.shapes.types import Form
+from stepring.shapes.types import DefaultFall, Form
 
 OTHER = None  # a source that stands for every value not mentioned
 Source: TypeAlias = int | None
@@ -90,6 +90,7 @@ class DispatchFact:
     working: bool
     end: int
     form: Form = "switch"
+    default_fall: DefaultFall | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -346,6 +346,7 @@ def _dispatch(fact: DispatchFact, key: KeyFact, by_value: Mapping[int, State]) -
         key.low,
         key.high,
         fact.form,
+        fact.default_fall,
     )
 
 

@@ -29,6 +29,12 @@ _STARTS = re.compile(
     re.IGNORECASE,
 )
 _RUNS = re.compile(r"(?:^|_)(?:main|task|thread)(?:_|$)", re.IGNORECASE)
+# How functions that report a fault are named (common practice).
+_FAULTS = re.compile(
+    r"(?:^|_)(?:err|error|errors|fault|faults|fail|failed|failure|assert|panic|abort|fatal|bug|invalid|illegal|"
+    r"unexpected|unreachable|unhandled|trap|die)(?:_|$)",
+    re.IGNORECASE,
+)
 # How functions that store a state for others are named (common practice).
 _SETS = re.compile(r"set|change|state|mode|phase|goto|enter|switch|transit|next|new_|advance|move", re.IGNORECASE)
 
@@ -39,6 +45,11 @@ STATE_NAME = re.compile(r"(?:state(?!ful|less|ment)|phase|fsm|stage)[^.]*\Z|_st\
 def sets(function: str) -> bool:
     """Whether a function's name says that it may be a setter of a state."""
     return bool(_SETS.search(function))
+
+
+def faults(function: str) -> bool:
+    """Whether a function's name says that it reports a fault: ``fault_report``, ``assert_failed``."""
+    return bool(_FAULTS.search(_words(function)))
 
 
 def starts(function: str) -> bool:

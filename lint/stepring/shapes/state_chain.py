@@ -5,13 +5,12 @@ that leave early differ in layout only. A final ``else`` is its default. (In a s
 machines were dispatched on this way as by ``switch``.)
 """
 
-from typing import Literal
-
 from stepring.meaning.types import Branch, Function, Jump
 from stepring.places import Origin
 from stepring.shapes.facts import DispatchFact, LabelFact
 from stepring.shapes.names import constant_of
-from stepring.shapes.state_dispatch import does, is_packet
+from stepring.shapes.state_default import Does, does, storing
+from stepring.shapes.state_dispatch import is_packet
 from stepring.shapes.state_scan import Scan, Seen, Work, blocks_from, is_carried
 
 
@@ -30,7 +29,7 @@ def chain_fact(work: Work, scan: Scan, seen: Seen) -> DispatchFact | None:
         characters = characters or constant.where.spelling.startswith(("'", "L'"))
         if number.value not in labels:
             labels[number.value] = LabelFact(constant, number.value, number.value, where, None, False, False)
-    default, default_does = _final_else(work, function, seen)
+    default, default_does = _final_else(work, scan, seen)
     first = min(labels.values(), key=lambda label: label.where)
     return DispatchFact(
         seen.key.key,
@@ -52,10 +51,9 @@ def chain_fact(work: Work, scan: Scan, seen: Seen) -> DispatchFact | None:
     )
 
 
-def _final_else(
-    work: Work, function: Function, seen: Seen
-) -> tuple[Origin | None, Literal["none", "nothing", "stores", "calls", "leaves", "work"]]:
+def _final_else(work: Work, scan: Scan, seen: Seen) -> tuple[Origin | None, Does]:
     """What stands in the last ``else`` of the longest chain of tests, if there is one."""
+    function = scan.function
     tests = {block: equal for block, _, equal in seen.branches}
     following: dict[int, int] = {}
     for block, equal in tests.items():
@@ -87,7 +85,7 @@ def _final_else(
     places = [statement.position for number in region for statement in function.blocks[number].statements]
     if not places:
         return None, "none"
-    return work.names.origin(min(places)), does(function, region, seen.key.key)
+    return work.names.origin(min(places)), does(storing(work, scan, seen), region)
 
 
 def _after_jumps(function: Function, block: int) -> int:

@@ -4,19 +4,15 @@ all.
 Falls are judged by the comments and attributes around them, a default by what its own code does.
 """
 
-from typing import Literal
-
 from stepring.meaning.show import expr_text
 from stepring.meaning.types import (
     Assign,
-    Call,
     Cast,
     Expr,
     Function,
     IntType,
     Load,
     PointerType,
-    Return,
     Switch,
     VariablePlace,
 )
@@ -26,9 +22,11 @@ from stepring.shapes.facts import (
     DispatchFact,
     LabelFact,
 )
-from stepring.shapes.keys import PlaceKey, place_key, uncast
+from stepring.shapes.keys import PlaceKey, uncast
 from stepring.shapes.names import constant_at
-from stepring.shapes.state_scan import Scan, Seen, Work, blocks_from, is_carried
+from stepring.shapes.state_default import Does, default_fall, default_region, does, overwrites, storing
+from stepring.shapes.state_scan import Scan, Seen, Work, is_carried
+from stepring.shapes.types import DefaultFall
 
 
 def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch) -> DispatchFact:
@@ -36,6 +34,7 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
     names = work.names
     where = names.origin(switch.syntax.position)
     falls = {fall.label: fall.source for fall in switch.syntax.falls}
+    ways = storing(work, scan, seen)
     labels: list[LabelFact] = []
     characters = False
     line_numbers = 0
@@ -54,14 +53,18 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
                 at,
                 names.origin(source) if source is not None else None,
                 source is not None and _marked(work, source, case.position),
-                source is not None and _overwrites(function, case.target, seen.key.key),
+                source is not None and overwrites(ways, case.target),
             )
         )
-    reach = [blocks_from(function, case.target, block) for case in switch.cases]
-    default_does: Literal["none", "nothing", "stores", "calls", "leaves", "work"] = "none"
+    default_does: Does = "none"
+    fall: DefaultFall | None = None
     if switch.syntax.default is not None:
-        others = frozenset().union(*reach) if reach else frozenset()
-        default_does = does(function, blocks_from(function, switch.default, block) - others, seen.key.key)
+        source = falls.get(switch.syntax.default)
+        region = default_region(function, switch, block, source is not None)
+        default_does = does(ways, region)
+        if source is not None:
+            marked = _marked(work, source, switch.syntax.default)
+            fall = default_fall(work, ways, switch, block, region, source, marked)
     return DispatchFact(
         seen.key.key,
         seen.key.instance,
@@ -78,6 +81,8 @@ def dispatch_fact(work: Work, scan: Scan, seen: Seen, block: int, switch: Switch
         is_packet(function, seen.key),
         _is_working(scan, switch.value),
         switch.syntax.end,
+        "switch",
+        fall,
     )
 
 
@@ -116,30 +121,3 @@ def is_packet(function: Function, key: PlaceKey) -> bool:
 def _marked(work: Work, source: Position, label: Position) -> bool:
     """Whether a comment or attribute between two places says that the fall is meant."""
     return any(file == label.file and source.line <= line <= label.line for file, line in work.read.marked_falls)
-
-
-def _overwrites(function: Function, target: int, key: str) -> bool:
-    """Whether the code run into stores the state at once."""
-    for statement in function.blocks[target].statements:
-        if isinstance(statement, Assign):
-            found = place_key(statement.place, function.identity)
-            if found is not None and found.key == key:
-                return True
-    return False
-
-
-def does(
-    function: Function, region: frozenset[int], key: str
-) -> Literal["nothing", "stores", "calls", "leaves", "work"]:
-    calls = work = leaves = False
-    for number in region:
-        for statement in function.blocks[number].statements:
-            if isinstance(statement, Assign):
-                found = place_key(statement.place, function.identity)
-                if found is not None and found.key == key:
-                    return "stores"
-                work = True
-            elif isinstance(statement, Call):
-                calls = True
-        leaves = leaves or isinstance(function.blocks[number].terminator, Return)
-    return "calls" if calls else "work" if work else "leaves" if leaves else "nothing"

@@ -60,6 +60,20 @@ class Label:
 
 
 @dataclass(frozen=True, slots=True)
+class DefaultFall:
+    """A case that runs on into the ``default``: from where, and whether that is marked as meant.
+
+    ``overwrites``: the default stores over what the case stored. ``faults`` are the functions it calls that report a
+    fault.
+    """
+
+    source: Origin
+    marked: bool
+    overwrites: bool
+    faults: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Dispatch:
     """One dispatch on the state: where it is, what it handles.
 
@@ -81,6 +95,7 @@ class Dispatch:
     control_low: int
     control_high: int
     form: Form = "switch"
+    default_fall: DefaultFall | None = None
 
 
 STEPPED = "arithmetic on its own value"
