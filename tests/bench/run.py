@@ -88,7 +88,7 @@ def inspect(database: Path, proofs: bool = True) -> dict[str, Any]:
     clock.watch(pipeline, "ring_functions", "rings")
     clock.watch(pipeline, "merge_rings", "rings")
     clock.watch(ring_evidence, "with_runs", "runs")
-    clock.watch(ring_evidence, "prove_rings", "proofs")
+    clock.watch(ring_evidence, "aside", "proofs")
     clock.watch(pipeline, "judge", "rules")
     outcome = pipeline.inspect([], pipeline.Options(compile_commands=database, jobs=1, proofs=proofs))
     with clock.stage("report"):

@@ -5,14 +5,15 @@ show. Where an engine fails, what the other found is kept, and the failure is sa
 """
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from stepring.meaning.types import DataModel, Function, Object, StructLayout, TypedUnit, TypeTable
+from stepring.paths.aside import Ended, aside
 from stepring.paths.symbolic_types import Limits
 from stepring.places import Notice, Origin, Position
 from stepring.shapes.ring_explore import with_runs
 from stepring.shapes.ring_proofs import prove_rings
-from stepring.shapes.ring_types import CheckedAccess, CheckedStep
+from stepring.shapes.ring_types import CheckedAccess, CheckedStep, Proof
 from stepring.shapes.ring_writers import Outside
 from stepring.shapes.types import Ring
 
@@ -57,8 +58,7 @@ def with_evidence(
     for unit in code.units:
         called.update({(function.identity, function.position): function for function in unit.called})
 
-    def proved(found: tuple[Ring, ...]) -> tuple[Ring, ...]:
-        asked = tuple(ring for ring in found if _unsettled(ring))
+    def prove(asked: tuple[Ring, ...]) -> tuple[tuple[Proof, ...], ...]:
         done = prove_rings(
             asked,
             code.functions,
@@ -71,8 +71,19 @@ def with_evidence(
             defined=code.defined,
             limits=limits,
         )
-        answers = dict(zip(asked, done, strict=True))
-        return tuple(answers.get(ring, ring) for ring in found)
+        return tuple(ring.proofs for ring in done)
+
+    def proved(found: tuple[Ring, ...]) -> tuple[Ring, ...]:
+        asked = tuple(ring for ring in found if _unsettled(ring))
+        if not asked:
+            return found
+        try:
+            proofs = aside(lambda: prove(asked))
+        except Ended:
+            # One question ended the solver: the other rings shall have their answers.
+            proofs = tuple(_alone(ring, prove, said) for ring in asked)
+        answers = dict(zip(asked, proofs, strict=True))
+        return tuple(replace(ring, proofs=answers.get(ring, ())) for ring in found)
 
     steps: tuple[tuple[str, Callable[[tuple[Ring, ...]], tuple[Ring, ...]]], ...] = (
         ("The operations of rings were not run", lambda found: _run(found, code, origin, said)),
@@ -84,6 +95,17 @@ def with_evidence(
         except Exception as trouble:  # what is known of the rings so far must not be lost
             said.append(Notice("internal", "warning", f"{what} ({type(trouble).__name__}: {trouble})."))
     return rings
+
+
+def _alone(
+    ring: Ring, prove: Callable[[tuple[Ring, ...]], tuple[tuple[Proof, ...], ...]], said: list[Notice]
+) -> tuple[Proof, ...]:
+    try:
+        return aside(lambda: prove((ring,)))[0]
+    except Ended:
+        text = f"Nothing was proved of {ring.storage}: a question about it ended the solver."
+        said.append(Notice("internal", "warning", text))
+        return ()
 
 
 def _unsettled(ring: Ring) -> bool:
