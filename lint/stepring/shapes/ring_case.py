@@ -16,6 +16,7 @@ from stepring.meaning.types import (
     Assign,
     Binary,
     Cast,
+    Load,
 )
 from stepring.paths.induction import (
     Body,
@@ -30,13 +31,15 @@ from stepring.paths.symbolic_terms import both, equal
 from stepring.paths.symbolic_types import FLAG, SET_FRAME, Limits, Trace
 from stepring.paths.symbolic_writes import own_writes
 from stepring.shapes.ring_keys import Key, inner_structs, place_keys, short_text, struct_name
-from stepring.shapes.ring_program import RingProgram, touching
+from stepring.shapes.ring_program import RingProgram, comparisons, touching
 from stepring.shapes.ring_relations import Slots, family_of, holds_for, relations_of
 from stepring.shapes.ring_types import OpenReason
 from stepring.shapes.ring_writers import Outside, Writer, writers_of
 from stepring.shapes.types import Ring
+from stepring.values.scan import walk_deep
 
 MOST_COMPANIONS = 4
+MOST_BOUNDS = 2
 
 
 @dataclass(slots=True, eq=False)
@@ -283,7 +286,23 @@ def _callers_part(case: Case) -> Iterator[str]:
 
 
 def _constants(case: Case) -> frozenset[int]:
-    return frozenset()
+    """The constants below the capacity that its functions compare an index with: it may stop short of the end."""
+    slots = case.ring.capacity
+    keys = {index.key for index in case.ring.indices}
+    found: set[int] = set()
+    for function in case.program.functions:
+        if function.identity not in case.ring.functions:
+            continue
+        for part in comparisons(function):
+            for one, other in ((part.left, part.right), (part.right, part.left)):
+                bound = fold(other)
+                if bound is None or not any(
+                    isinstance(inner, Load) and not keys.isdisjoint(place_keys(inner.place, "", {}))
+                    for inner in walk_deep(one)
+                ):
+                    continue
+                found.add(bound + 1 if part.op in ("<=", ">") else bound)
+    return frozenset(sorted(bound for bound in found if bound > 1 and (slots is None or bound < slots))[:MOST_BOUNDS])
 
 
 def _survives(case: Case, relation: Relation, outside: Outside, often: Mapping[str, frozenset[str]]) -> bool:

@@ -12,6 +12,7 @@ from stepring.meaning.fold import fold
 from stepring.meaning.types import (
     AddressOf,
     ArrayType,
+    Binary,
     Call,
     Cast,
     CType,
@@ -233,6 +234,13 @@ def _steps(function: Function) -> Iterator[Expr | PlaceExpr]:
                 yield from walk_deep(expression)
         for expression in expressions_of(block.terminator):
             yield from walk_deep(expression)
+
+
+def comparisons(function: Function) -> Iterator[Binary]:
+    """The comparisons that a function makes."""
+    for part in _steps(function):
+        if isinstance(part, Binary) and part.op in ("==", "!=", "<", "<=", ">", ">="):
+            yield part
 
 
 def _own_mentions(function: Function) -> Iterator[Key]:
