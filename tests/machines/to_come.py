@@ -11,9 +11,7 @@ FORMS_TO_COME: dict[str, str] = {
 
 STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
 
-GRAPHS_TO_COME = {
-    "other enumeration": "a machine of plain numbers takes up the enumeration of the one constant it is compared with",
-}
+GRAPHS_TO_COME: dict[str, str] = {}
 """Slips that spoil the graph."""
 
 SLIPS_TO_COME = {

@@ -236,8 +236,9 @@ def _short(function: str) -> str:
 
 
 def _family(group: Gathered) -> Family | None:
-    """The group of constants that most of the machine's labels come from."""
+    """The group of constants that most of the machine's labels come from, if they are not mostly plain numbers."""
     votes: dict[str, int] = {}
+    plain: set[int] = set()
     found: dict[str, Family] = {}
     for dispatch in group.dispatches:
         for label in dispatch.labels:
@@ -245,7 +246,10 @@ def _family(group: Gathered) -> Family | None:
             if family is not None:
                 votes[family.identity] = votes.get(family.identity, 0) + 1
                 found[family.identity] = family
-    if not votes:
+            elif label.constant.name is None:
+                plain.add(label.constant.value)
+    # One comparison of plain numbers with a name does not make them that name's group.
+    if not votes or max(votes.values()) < len(plain):
         return None
     return found[max(sorted(votes), key=lambda identity: votes[identity])]
 
