@@ -77,9 +77,35 @@ CALLS_OUT = """
 static uint16_t weights[12]; static uint8_t at; void tell(void);
 void weigh(uint16_t grams) { weights[at] = grams; tell(); at++; if (at >= 12) at = 0; }
 """
+CALLS_BACK = """
+struct ring { uint8_t *bytes; size_t size, head, tail; void (*told)(struct ring *, int); };
+void start(struct ring *r, uint8_t *bytes, size_t size) {
+    if (!r || !bytes || size == 0) return;
+    r->told = 0; r->size = size; r->bytes = bytes; r->head = r->tail = 0; }
+void stop(struct ring *r) { r->bytes = (void *)0; }
+static size_t held(const struct ring *r) {
+    size_t head, tail;
+    { size_t *in = &r->head; head = *in; } { size_t *out = &r->tail; tail = *out; }
+    return head >= tail ? head - tail : r->size - (tail - head); }
+int put(struct ring *r, uint8_t b) {
+    size_t next = r->head + 1; if (next >= r->size) next = 0;
+    if (next == r->tail) return 0;
+    r->bytes[r->head] = b; r->head = next; if (r->told) r->told(r, 1); return 1; }
+size_t skip(struct ring *r, size_t n) {
+    size_t most = held(r); if (n > most) n = most;
+    size_t at = r->tail + n; if (at >= r->size) at -= r->size;
+    { size_t *out = &r->tail; *out = at; } if (r->told) r->told(r, 0); return n; }
+uint8_t *oldest(struct ring *r) { return &r->bytes[r->tail]; }
+"""
+STOPS_SHORT = """
+static uint8_t line[74]; static uint8_t in, out;
+int put(uint8_t b) { uint8_t next = in + 1; if (next == 64) next = 0; if (next == out) return 0;
+    line[in] = b; in = next; return 1; }
+int get(void) { if (in == out) return -1; uint8_t c = line[out]; out++; if (out == 64) out = 0; return c; }
+"""
 FORMS = {
     "log": LOG, "counted": COUNTED, "run time": RUN_TIME, "masked": MASKED, "looped": LOOPED, "bulk": BULK,
-    "calls out": CALLS_OUT,
+    "calls out": CALLS_OUT, "calls back": CALLS_BACK, "stops short": STOPS_SHORT,
 }  # fmt: skip
 
 
@@ -117,6 +143,14 @@ def test_what_a_caller_must_see_to_is_said() -> None:
     assert not any(proof.assumed for proof in proofs(LOG))
 
 
+def test_what_is_called_back_must_use_the_ring_by_its_functions() -> None:
+    said = "what put, skip call changes struct ring through its own functions only"
+    found = [proof for proof in proofs(CALLS_BACK) if proof.about == "access"]
+    assert len(found) == 2
+    assert all(proof.holds and said in proof.assumed for proof in found)
+    assert not any("own functions only" in clause for proof in proofs(CALLS_OUT) for clause in proof.assumed)
+
+
 def test_each_advance_goes_one_slot() -> None:
     found = [proof for form in (LOG, COUNTED, RUN_TIME, LOOPED) for proof in proofs(form) if proof.about == "advance"]
     assert len(found) >= 6
@@ -142,6 +176,11 @@ SLIPS = [
     (BULK, "if (first > n) first = n;", "", "access"),
     (BULK, "r->head = 0;\n    return", ";\n    return", "access"),
     (CALLS_OUT, "tell(); at++;", "at++; tell();", "access"),
+    (CALLS_BACK, "r->head = next;", "if (r->told) r->told(r, 2); r->head = next;", "access"),
+    (CALLS_BACK, "if (at >= r->size)", "r->tail = at; if (r->told) r->told(r, 2); if (at >= r->size)", "access"),
+    (CALLS_BACK, "if (n > most) n = most;", "", "access"),
+    (CALLS_BACK, "*out = at; }", "*out = at + 1; }", "access"),
+    (STOPS_SHORT, "if (out == 64)", "if (out == 75)", "access"),
 ]
 
 
