@@ -148,6 +148,11 @@ def test_what_is_called_back_must_use_the_ring_by_its_functions() -> None:
     found = [proof for proof in proofs(CALLS_BACK) if proof.about == "access"]
     assert len(found) == 2
     assert all(proof.holds and said in proof.assumed for proof in found)
+    # The same where its address is given as one of anything.
+    plain = CALLS_BACK.replace("(struct ring *, int)", "(void *, int)").replace(
+        "r->told(r, 1)", "{ void *a = r; r->told(a, 1); }"
+    )
+    assert any(said in proof.assumed for proof in proofs(plain))
     assert not any("own functions only" in clause for proof in proofs(CALLS_OUT) for clause in proof.assumed)
 
 

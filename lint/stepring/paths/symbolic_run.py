@@ -48,6 +48,7 @@ from stepring.paths.symbolic_memory import (
     Target,
     Value,
     added,
+    address_of,
     guard_of,
     is_scalar_type,
     joined,
@@ -308,6 +309,7 @@ def _leave(engine: Engine, state: State, frame: Frame, statement: Call, name: st
 
 def _give(engine: Engine, argument: Expr, value: Pointer, name: str) -> None:
     """Note what a callee that is not laid out is given the address of."""
+    engine.trace.handed.append((address_of(engine.memories, value), name))
     if value.key is not None and value.key[-1] != "[]":
         engine.trace.given.setdefault(value.key, name)
     inner = argument

@@ -132,9 +132,9 @@ class Trace:
     """What a run leaves: its terms, what was accessed, and the points in the order they were come to.
 
     ``troubles`` say what was not modelled, each a reason of the ledger with a clause; ``calls`` are the functions that
-    were called but not laid out, ``sets`` the addresses that each key was stored into, ``spoiled`` the keys of which
-    nothing was known any more at some point,
-    ``covered`` the positions of the statements that ran.
+    were called but not laid out, ``handed`` the addresses that they were given, ``sets`` those that each key was stored
+    into, ``spoiled`` the keys of which nothing was known any more at some point, ``covered`` the positions of the
+    statements that ran.
     """
 
     function: Function
@@ -148,6 +148,7 @@ class Trace:
     calls: dict[str, None] = field(default_factory=dict)
     laid_out: dict[str, None] = field(default_factory=dict)
     given: dict[Key, str] = field(default_factory=dict)
+    handed: list[tuple[Number, str]] = field(default_factory=list)
     volatile: dict[Key, None] = field(default_factory=dict)
     types: dict[tuple[int, str], CType] = field(default_factory=dict)
     arguments: dict[str, Value] = field(default_factory=dict)

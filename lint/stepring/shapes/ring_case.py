@@ -25,8 +25,10 @@ from stepring.paths.induction import (
     Relation,
     View,
     induct,
+    objects_of,
     proved,
 )
+from stepring.paths.symbolic_memory import address_mark
 from stepring.paths.symbolic_terms import both, equal
 from stepring.paths.symbolic_types import FLAG, SET_FRAME, Limits, Trace
 from stepring.paths.symbolic_writes import own_writes
@@ -213,11 +215,14 @@ def _gives_away(case: Case, trace: Trace) -> bool:
     family, program = case.family, case.program
     assert family is not None
     known = program.around.defined
-    for key, name in trace.given.items():
-        if key[0] == "argument" and family.struct in inner_structs(key[1], program.structs):
-            if (known is None or name not in known) and not program.has(name):
-                return True
-    return False
+    objects = {address_mark(base) for base in objects_of(family, trace) if base is not None}
+    given = {
+        name
+        for key, name in trace.given.items()
+        if key[0] == "argument" and family.struct in inner_structs(key[1], program.structs)
+    }
+    given |= {name for at, name in trace.handed if address_mark(at) in objects}
+    return any((known is None or name not in known) and not program.has(name) for name in given)
 
 
 def _reached_from(program: RingProgram, key: Key, file: str) -> bool:
