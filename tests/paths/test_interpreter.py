@@ -301,6 +301,18 @@ def test_assembly_leaves_what_it_sets_unknown() -> None:
     assert "assembly" in outcome.reason
 
 
+def test_assembly_may_give_a_value_from_outside_where_nothing_goes_in() -> None:
+    made = barge("""int mask(void) { int flags; __stepring_asm(flags); return flags; }
+    int twice(int v) { int flags; __stepring_asm(flags); return flags + v; }
+    int count(void) { int flags; __stepring_asm(flags); return flags + dropped; }""")
+    given = {"inline assembly": lambda _: 5}
+    assert run(made, "mask", externals=given).value == 5
+    assert run(made, "mask", externals=lambda name, _: None).kind == "stopped"
+    assert run(made, "mask", externals={}).kind == "stopped"
+    assert run(made, "twice", (1,), externals=given).kind == "stopped"
+    assert run(made, "count", externals=given).kind == "stopped"
+
+
 def test_equal_runs_give_equal_outcomes() -> None:
     made = barge()
     assert run(made, "put", (1, 2)) == run(made, "put", (1, 2))

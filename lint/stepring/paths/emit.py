@@ -68,6 +68,8 @@ class Writer:
     # What a store under way goes through: the one access of a statement that is no load.
     stored: PlaceExpr | None = None
     at: Position = field(default_factory=lambda: Position("", 0))
+    # Nothing of the program goes into the function: what its inline assembly gives comes from outside.
+    sealed: bool = False
 
 
 @dataclass(slots=True)

@@ -13,6 +13,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from stepring.meaning.fold import convert
 from stepring.meaning.show import expr_text
 from stepring.meaning.types import (
     AddressOf,
@@ -56,7 +57,7 @@ from stepring.paths.emit import (
     where_of,
 )
 from stepring.paths.library import BUILTINS
-from stepring.paths.types import Event, Unsettled
+from stepring.paths.types import ASSEMBLY, Event, Unsettled
 from stepring.places import Position
 
 FIRST_SLOT = 3
@@ -122,7 +123,7 @@ def _statement(writer: Writer, statement: Statement, after: int) -> bool:
         case Clobber(places=places, why=why):
             for place in places:
                 _clobber(writer, place, why)
-            if not places and why != "inline assembly":
+            if not places and why != ASSEMBLY:
                 fail(writer, Unsettled(why, statement.position))
         case Call():
             return _call(writer, statement, after)
@@ -133,7 +134,11 @@ def _clobber(writer: Writer, place: PlaceExpr, why: str) -> None:
     where = where_of(writer, place, access=True)
     if where.slot is not None:
         assert isinstance(place, VariablePlace)
-        line(writer, f"f[{where.slot}] = None")
+        type_ = place.variable.type
+        if writer.sealed and why == ASSEMBLY and isinstance(type_, IntType):
+            line(writer, f"f[{where.slot}] = assembled(f[1], {keep(writer, type_)})")
+        else:
+            line(writer, f"f[{where.slot}] = None")
         line(writer, f"f[1].unknown[{keep(writer, place.variable.identity)}] = {keep(writer, why)}")
         writer.held.pop(where.slot, None)
     else:
@@ -269,6 +274,7 @@ def _needs_cells(function: Function, structs: Mapping[str, StructLayout]) -> set
 
 def _namespace() -> dict[str, Any]:
     names: dict[str, Any] = {"Event": Event, "Enter": Enter, "Leave": Leave, "whole_object": _whole_object}
+    names["assembled"] = _assembled
     for module in (arithmetic, memory):
         names.update({name: thing for name, thing in vars(module).items() if callable(thing)})
     for code, packer in PACKERS.items():
@@ -282,11 +288,30 @@ def _whole_object(pointer: Any) -> Any:
     return pointer
 
 
+def _is_sealed(function: Function) -> bool:
+    """Whether nothing of the program goes into a function: no argument, lasting variable or other function's result."""
+    lasting = any(variable.lasting for variable in function.variables)
+    calls = any(isinstance(statement, Call) for block in function.blocks for statement in block.statements)
+    return not (function.parameters or lasting or calls)
+
+
+def _assembled(state: Any, type_: IntType) -> int | None:
+    """What inline assembly gives, if whoever stands in for the outside says so; None where that is not known."""
+    given = state.externals
+    if isinstance(given, Mapping):
+        function = given.get(ASSEMBLY)
+        found = None if function is None else function([])
+    else:
+        found = None if given is None else given(ASSEMBLY, [])
+    return convert(found, type_) if isinstance(found, int) else None
+
+
 def translate(program: Any, unit: int, function: Function, *, watched: bool) -> Code:
     """A function of a program's unit made ready to run."""
     structs = program.units[unit].types.structs
     writer = Writer(program, unit, function.name, structs, watched, _namespace())
     writer.cells = _needs_cells(function, structs)
+    writer.sealed = _is_sealed(function)
     residents: list[Resident] = []
     every = {variable.identity: variable for variable in (*function.parameters, *function.variables)}
     for identity, variable in every.items():

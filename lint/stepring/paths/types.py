@@ -81,7 +81,9 @@ class Outcome:
     steps: int
 
 
+ASSEMBLY = "inline assembly"
+"""What inline assembly is called, where it gives a value (an interrupt mask) in a function that nothing goes into."""
 External: TypeAlias = Callable[[Sequence[Any]], Any]
 Externals: TypeAlias = Callable[[str, Sequence[Any]], Any] | Mapping[str, External]
 """Functions that have no body in the units: by name, or one that is asked for all. They get the arguments (integers,
-reals, pointers) and give the result; it is converted to the result's type."""
+reals, pointers) and give the result; it is converted to the result's type. ``ASSEMBLY`` is asked for as a function."""

@@ -13,7 +13,7 @@ from typing import Any, Literal, TypeAlias
 from stepring.meaning.types import IntType
 from stepring.paths.devices import Devices
 from stepring.paths.interpreter import run
-from stepring.paths.types import Event, Outcome, Unsettled
+from stepring.paths.types import ASSEMBLY, Event, Outcome, Unsettled
 from stepring.paths.witness import OutsideValue, Reference, WitnessCall
 from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN, Operation, arguments
 from stepring.shapes.ring_world import World
@@ -119,7 +119,11 @@ def call(
         return value
 
     def external(name: str, values: Sequence[Any]) -> Any:
-        if _GUARD.search(name) and not (values and isinstance(values[0], int) and values[0]):
+        if name == ASSEMBLY:  # no element: an interrupt mask, or the result of an exclusive store
+            asked.append(OutsideValue(name, 0))
+            return 0
+        condition = bool(values and isinstance(values[0], int) and name not in world.group.unconditional)
+        if _GUARD.search(name) and not (condition and values[0]):
             raise Unsettled(_ASSERTION)
         _hand_out(world, name, values, outputs)
         return ask(name) if name in world.group.wanted else 0

@@ -12,6 +12,7 @@ from typing import Any
 
 from stepring.meaning.types import TypedUnit
 from stepring.paths.interpreter import run as run_program
+from stepring.paths.types import ASSEMBLY
 from stepring.paths.witness import OutsideValue, Reference, Value, Witness, WitnessCall
 from stepring.places import Notice
 from stepring.shapes.ring_alone import alone, odd_steps
@@ -20,6 +21,7 @@ from stepring.shapes.ring_classify import classify
 from stepring.shapes.ring_compare import search_states
 from stepring.shapes.ring_further import all_ones, promised_slots
 from stepring.shapes.ring_overflow import near_overflow
+from stepring.shapes.ring_pair import pairs
 from stepring.shapes.ring_parameters import GIVEN, STORAGE, TAKEN
 from stepring.shapes.ring_report import Placer, Search, State
 from stepring.shapes.ring_seek import seek
@@ -110,6 +112,7 @@ def _explored(world: World, purse: Purse, origin: Placer) -> Exploration:
         search_states(search, State(probe.start, (), (), 0))
         all_ones(search)
         near_overflow(search)
+        pairs(search)
     promised_slots(search)
     odd = odd_steps(world)
     if not search.found:
@@ -160,7 +163,7 @@ def _runs(world: World, made: WitnessCall) -> WitnessCall | None:
     asked: list[OutsideValue] = []
 
     def external(name: str, given: Sequence[Any]) -> int:
-        if name in world.group.wanted:
+        if name in world.group.wanted or name == ASSEMBLY:
             asked.append(OutsideValue(name, 0))
         return 0
 

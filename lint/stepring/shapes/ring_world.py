@@ -7,14 +7,17 @@ again stands in the same world.
 """
 
 from collections import Counter
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
 from stepring.meaning.types import (
     ArrayType,
     Call,
+    Cast,
+    Const,
     CType,
+    Expr,
     Function,
     FunctionName,
     IntType,
@@ -31,6 +34,7 @@ from stepring.paths.replay import Unfit, pointed, prepared
 from stepring.paths.types import Undefined, Unsettled
 from stepring.paths.witness import Ending, Made, Reference, StartValue, Value, Witness
 from stepring.places import Origin
+from stepring.shapes.ring_elements import data_of, given, tokens_for, type_name
 from stepring.shapes.ring_keys import inner_structs
 from stepring.shapes.ring_parameters import (
     GIVEN,
@@ -54,6 +58,7 @@ class Group:
     """The program that several rings belong to.
 
     ``wanted`` are the functions without body whose result some call uses, ``entered`` the functions of any ring.
+    ``unconditional`` are those whose first argument is a plain number in every call: no condition.
     """
 
     program: Program
@@ -62,6 +67,7 @@ class Group:
     wanted: frozenset[str]
     structs: Mapping[str, StructLayout]
     entered: frozenset[str] = frozenset()
+    unconditional: frozenset[str] = frozenset()
     callees: dict[str, frozenset[str]] = field(default_factory=dict)
 
 
@@ -179,6 +185,7 @@ def group_of(units: Sequence[TypedUnit], entered: frozenset[str] = frozenset()) 
     functions: dict[str, Function] = {}
     by_name: dict[str, list[Function]] = {}
     wanted: set[str] = set()
+    constant: dict[str, bool] = {}
     for unit in units:
         for function in unit.functions:
             if function.identity not in functions:
@@ -187,9 +194,21 @@ def group_of(units: Sequence[TypedUnit], entered: frozenset[str] = frozenset()) 
             for block in function.blocks:
                 for statement in block.statements:
                     if isinstance(statement, Call) and isinstance(statement.callee, FunctionName):
+                        name = statement.callee.name
                         if statement.result is not None:
-                            wanted.add(statement.callee.name)
-    return Group(made, functions, by_name, frozenset(wanted), made.structs, entered)
+                            wanted.add(name)
+                        first = statement.arguments[:1]
+                        constant[name] = constant.get(name, True) and _is_no_condition(first)
+    unconditional = frozenset(name for name, plain in constant.items() if plain)
+    return Group(made, functions, by_name, frozenset(wanted), made.structs, entered, unconditional)
+
+
+def _is_no_condition(arguments: Sequence[Expr]) -> bool:
+    """Whether the first argument is a number, and neither true nor false: a line, a code of an error."""
+    found = arguments[0] if arguments else None
+    while isinstance(found, Cast):
+        found = found.operand
+    return isinstance(found, Const) and found.value not in (0, 1)
 
 
 def called(group: Group, identity: str) -> frozenset[str]:
@@ -256,7 +275,7 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
     element = ring.element_size or 1
     pointed = ring.storage_key[-1:] == ("*",)
     if pointed and place is not None:
-        name = _type_name(_pointed_type(group, place, root))
+        name = type_name(_pointed_type(group, place, root))
         if name is None:
             return None
         made.append(Made(STORAGE, name[0], slots * max(1, element // name[1])))
@@ -277,11 +296,11 @@ def world_of(group: Group, ring: Ring, slots: int) -> World | None:
         if index.form == "pointer" and pointed:
             start.append(StartValue(*found, Reference(STORAGE)))
     struct = _element_struct(group, place, root, pointed)
-    data = _data(group, element, struct)
+    data = data_of(group.structs, element, struct)
     tokens = tokens_for(data.width, slots)
     made.append(Made(GIVEN, data.type, len(tokens) * data.parts))
     made.append(Made(TAKEN, data.type, (2 * slots + 4) * data.parts))
-    start.extend(_given(tokens, data))
+    start.extend(given(tokens, data))
     operations = tuple(operations_of(group.structs, ring, functions, root, made, struct, element))
     feeders = tuple(operations_of(group.structs, ring, _feeding(group, functions), root, made, struct, element))
     base = Witness(
@@ -419,76 +438,3 @@ def _element_struct(group: Group, place: tuple[str, str] | None, root: Root | No
     while isinstance(type_, ArrayType):
         type_ = type_.element
     return type_ if isinstance(type_, StructType) else None
-
-
-def _type_name(type_: CType) -> tuple[str, int] | None:
-    """A made object's type for elements of a type, with its size in bytes."""
-    match type_:
-        case IntType(name=name, width=width):
-            return name, max(1, width // 8)
-        case StructType(identity=identity):
-            return identity, 1 << 30  # one object each
-        case PointerType(width=width):
-            return ("unsigned long" if width == 64 else "unsigned int" if width == 32 else "unsigned short", width // 8)
-        case VoidType():
-            return "unsigned char", 1
-    return None
-
-
-def tokens_for(width: int, slots: int) -> tuple[int, ...]:
-    """Element values of ``width`` bytes that are told apart easily and that no protocol takes for something special."""
-    letters = [*range(0x41, 0x5B), *range(0x61, 0x7B), *range(0x30, 0x3A)]
-    count = max(64, min(600, 2 * slots + 40))
-    found: list[int] = []
-    for number in range(count):
-        high, low = divmod(number, len(letters))
-        found.append(letters[low] + (0x41 + high << 8 if width > 1 else 0))
-    return tuple(found)
-
-
-@dataclass(frozen=True, slots=True)
-class Data:
-    """What callers' buffers are made of: ``parts`` objects of ``type`` make one element; the element's value goes to
-    ``member`` (a path in it, empty for the whole), an integer of ``width`` bytes."""
-
-    type: str
-    parts: int
-    member: str
-    width: int
-
-
-def _data(group: Group, element: int, struct: StructType | None) -> Data:
-    if struct is not None:
-        member = _widest(group.structs, struct, "")
-        if member is not None:
-            return Data(struct.identity, 1, *member)
-    names = {1: "unsigned char", 2: "unsigned short", 4: "unsigned int"}
-    if element in names:
-        return Data(names[element], 1, "", element)
-    return Data("unsigned char", element, "", min(element, 2))
-
-
-def _widest(structs: Mapping[str, StructLayout], struct: StructType, path: str) -> tuple[str, int] | None:
-    """A structure's widest integer member by its path, with its size in bytes."""
-    layout = structs.get(struct.identity)
-    found: list[tuple[str, int]] = []
-    for member in layout.fields if layout is not None else ():
-        type_, where = member.type, f"{path}.{member.name}"
-        while isinstance(type_, ArrayType):
-            type_, where = type_.element, where + "[0]"
-        if isinstance(type_, IntType) and member.bits is None and member.name and type_.name != "_Bool":
-            found.append((where, max(1, type_.width // 8)))
-        elif isinstance(type_, StructType) and member.name:
-            inner = _widest(structs, type_, where)
-            if inner is not None:
-                found.append(inner)
-    return max(found, key=lambda item: item[1], default=None)
-
-
-def _given(tokens: Sequence[int], data: Data) -> Iterator[StartValue]:
-    for number, token in enumerate(tokens):
-        if data.parts == 1:
-            yield StartValue(GIVEN, f"[{number}]{data.member}", token)
-            continue
-        for byte in range(data.width):
-            yield StartValue(GIVEN, f"[{number * data.parts + byte}]", token >> 8 * byte & 0xFF)
