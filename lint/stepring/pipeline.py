@@ -47,9 +47,9 @@ Progress = Callable[[int, int, str], None]
 class Options:
     """What the user asked for.
 
-    ``proofs`` False leaves the solver out: what it alone would settle stays open. ``query_limit`` bounds one query, in
-    the solver's own units of work, which are the same on every machine; ``time_limit`` bounds an obligation, in seconds
-    of the clock, and is only for the worst case. None means the engines' own.
+    ``proofs`` False runs no operations and asks no solver: what only they can show stays open. ``query_limit`` bounds
+    one query, in the solver's own units of work, which are the same on every machine; ``time_limit`` bounds an
+    obligation, in seconds of the clock, and is only for the worst case. None means the engines' own.
     """
 
     compile_commands: Path | None = None
@@ -347,6 +347,8 @@ def merge_rings(
                 frozenset(place.name for summary in group for place in summary.functions),
             )
             found = with_evidence(found, code, origin, limits, said)
+        else:
+            found = tuple(replace(ring, unrun="the ring's operations were not run, as was asked for") for ring in found)
         rings.extend(found)
     return tuple(sorted(rings, key=lambda ring: (ring.where, ring.identity)))
 
