@@ -112,7 +112,7 @@ _OPTIONS = (
     click.option(
         "--no-proofs",
         is_flag=True,
-        help="Run no ring's operations and ask no solver: what only they can show stays open. Faster, with fewer findings.",
+        help="Run no ring's operations and ask no solver: what only they can show stays open. Faster, and finds less.",
     ),
     click.option(
         "--query-limit",
