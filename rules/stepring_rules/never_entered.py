@@ -1,6 +1,7 @@
 """SM03: a state that nothing enters, so that its case is dead code.
 
-Said only where every store of the variable is known; otherwise the verdict is open. CWE-561.
+A store of it by the state's own code enters nothing. Said only where every store of the variable is known; otherwise
+the verdict is open. CWE-561.
 """
 
 from collections.abc import Iterator
@@ -22,7 +23,7 @@ def never_entered(program: Program) -> Iterator[Obligation]:
                     continue  # the constant cannot match at all; that is SM15's finding
                 state = machine.state(label.states[0])
                 seen.add(state.name)
-                if state.stored or state.initial:
+                if state.initial or (state.stored and not state.kept):
                     yield about(
                         "SM03",
                         machine,
@@ -37,7 +38,9 @@ def never_entered(program: Program) -> Iterator[Obligation]:
                         machine,
                         "open",
                         label.where,
-                        f"No store of {state.name} was found.",
+                        f"No store of {state.name} was found."
+                        if not state.kept
+                        else f"No store of {state.name} in another state was found.",
                         reason=machine.why_incomplete[0]
                         if machine.why_incomplete
                         else f"{state.elsewhere} is stored with it, which may be the same memory",
@@ -49,7 +52,8 @@ def never_entered(program: Program) -> Iterator[Obligation]:
                         machine,
                         "fail",
                         label.where,
-                        f"Nothing in the program stores {state.name} in {machine.variable}; "
+                        f"Nothing {'in the program' if not state.kept else 'but its own code'} stores {state.name} in "
+                        f"{machine.variable}; "
                         + ("this case is never run." if dispatch.form == "switch" else "the machine is never in it."),
                         "warning",
                         why="Either the code is left over, or the transition that should lead here is missing.",

@@ -292,6 +292,7 @@ def _states(group: Gathered, family: Family | None) -> tuple[State, ...]:
     if group.starts_zero or (0 in names and (group.key.kind == "member" or not initial)):
         # Static storage starts as zero (6.7.9p10); an object of unknown origin may have been cleared.
         see(Constant(0, None, group.key.where), initial)
+    kept = _kept(group)
     return tuple(
         State(
             name,
@@ -302,9 +303,41 @@ def _states(group: Gathered, family: Family | None) -> tuple[State, ...]:
             value in tested,
             value in stored,
             value in initial,
+            "",
+            value in kept,
         )
         for value, (name, where) in sorted(names.items())
     )
+
+
+def _kept(group: Gathered) -> frozenset[int]:
+    """The values that are only stored where the state has them already: by their own case, handler or row.
+
+    A store is one if the steps of its function are known and all of those to its value come from that value. What
+    tables and handlers give is stored where they are looked up, and their steps are all known.
+    """
+    if group.bounded:
+        return frozenset()
+    sources: dict[int, set[int | None]] = {}
+    stepping: set[tuple[str, int]] = set()
+    for move in group.transitions:
+        value = move.target.value
+        sources.setdefault(value, set()).add(move.source)
+        stepping |= {(move.function, value), (move.stored_by, value)}
+    # A table without a handler for a state that is entered leaves steps unknown.
+    looking = {
+        one.function
+        for one in group.dispatches
+        if one.form not in ("switch", "if-chain") and sources.keys() <= {label.constant.value for label in one.labels}
+    }
+    stored = [(store, store.function, constant.value) for store in group.stores for constant in store.constants]
+    stored += [(store, call.function, constant.value) for store, call, constant in group.setters]
+    entered = {
+        value
+        for store, function, value in stored
+        if store.fresh or ((function, value) not in stepping and function not in looking)
+    }
+    return frozenset(value for value, found in sources.items() if found == {value}) - entered
 
 
 def _elsewhere(state: State, key: KeyFact, stored_in: Mapping[str, Mapping[str, str]]) -> State:

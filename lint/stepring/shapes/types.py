@@ -25,7 +25,8 @@ class State:
     ``labelled``: some dispatch has a case for it. ``tested``: compared with ``==`` or ``!=``. ``stored``: some code
     stores it. ``initial``: the value at start.
     ``where`` is its declaration if known, else its first use. ``elsewhere`` names another variable that the same
-    constant is stored in, which may be the same memory under another type.
+    constant is stored in, which may be the same memory under another type. ``kept``: nothing stores it but code that
+    only runs in that very state, which enters nothing.
     """
 
     name: str
@@ -37,11 +38,10 @@ class State:
     stored: bool
     initial: bool
     elsewhere: str = ""
+    kept: bool = False
 
 
-Form: TypeAlias = Literal[
-    "switch", "if-chain", "table", "row list", "function pointer", "next state returned", "goto"
-]
+Form: TypeAlias = Literal["switch", "if-chain", "table", "row list", "function pointer", "next state returned", "goto"]
 
 
 @dataclass(frozen=True, slots=True)
