@@ -175,7 +175,8 @@ class HandlerFact:
     ``called``, or a function ``returned`` another (no key then).
 
     ``constant`` names the function; its value stands for it. ``callers`` are those of a static function that stores.
-    ``kept``: the result of the call is stored in the variable again.
+    ``kept``: the result of the call is stored in the variable again. ``idle``: the function that stores is static, and
+    nothing calls it or takes its address; ``fits`` says that the variable could hold it.
     """
 
     kind: Literal["stored", "initial", "called", "returned"]
@@ -189,6 +190,8 @@ class HandlerFact:
     actions: tuple[str, ...]
     timed: bool = False
     kept: bool = False
+    idle: bool = False
+    fits: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,11 +1,14 @@
 """Machines whose state is the function that a variable holds, brought together from all units.
 
 The functions stored in a variable are its states. One that a handler stores (itself, or through a function that only
-handlers call) is a step from that handler; one that is stored from elsewhere can come from any. A variable is a machine
-if at least two different steps lead from one of its handlers to another; what else holds functions is a callback.
+handlers call) is a step from that handler; one that is stored from elsewhere can come from any, but for what never
+runs: a function of the handlers' type that nothing stores or calls is a state that is never entered. A variable is a
+machine if at least two different steps lead from one of its handlers to another; what else holds functions is a
+callback.
 """
 
 from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import replace
 
 from stepring.shapes.facts import (
     Constant,
@@ -52,6 +55,10 @@ def _group(
     first: dict[int, HandlerFact] = {}
     for fact in sorted((fact for fact in about if fact.kind != "called"), key=lambda fact: fact.where):
         first.setdefault(fact.constant.value, fact)
+    for fact in about:
+        if fact.idle and fact.fits and fact.kind == "stored":
+            own = Constant(handler_value(fact.function), fact.function.rsplit(":", 1)[-1], fact.where)
+            first.setdefault(own.value, replace(fact, constant=own))
     following = [fact for fact in about if fact.kind == "stored"]
     if any(call.kept for call in calls):
         pending = list(first)
@@ -110,6 +117,8 @@ def _sources(fact: HandlerFact, handlers: Mapping[int, HandlerFact]) -> Iterator
     own = handler_value(fact.function)
     if own in handlers:
         yield own
+        return
+    if fact.idle:
         return
     callers = [handler_value(caller) for caller in fact.callers]
     if callers and all(caller in handlers for caller in callers):

@@ -7,7 +7,7 @@ same but for one thing: no handler puts another in its place.
 """
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, is_dataclass
 from zlib import crc32
 
 from stepring.meaning.types import (
@@ -24,6 +24,7 @@ from stepring.meaning.types import (
     PlaceExpr,
     PointerType,
     Return,
+    Variable,
     VariablePlace,
 )
 from stepring.places import Position
@@ -249,7 +250,7 @@ def _facts_of(work: Work, scan: Scan, setters: Mapping[tuple[str, int], PlaceKey
     function = scan.function
     guards: Guards | None = None
 
-    def fact(kind: str, key: PlaceKey, name: str, position: Position, block: int) -> HandlerFact:
+    def fact(kind: str, key: PlaceKey, name: str, position: Position, block: int, type_: object = None) -> HandlerFact:
         nonlocal guards
         if guards is None:
             known = work.paths.get(function.identity)
@@ -269,6 +270,9 @@ def _facts_of(work: Work, scan: Scan, setters: Mapping[tuple[str, int], PlaceKey
             way.event,
             way.actions,
             way.timed,
+            False,
+            type_ is not None and _is_idle(work, function),
+            type_ is not None and _fits(function, type_),
         )
 
     for number, block in enumerate(function.blocks):
@@ -280,7 +284,7 @@ def _facts_of(work: Work, scan: Scan, setters: Mapping[tuple[str, int], PlaceKey
                 _note_key(work, scan, key)
                 fresh = starts(function.identity)
                 for name, where, chosen in _names(function, statement.value, statement.position, number):
-                    yield fact("initial" if fresh else "stored", key, name, where, chosen)
+                    yield fact("initial" if fresh else "stored", key, name, where, chosen, statement.place.type)
             elif isinstance(statement, Call):
                 yield from _called(work, scan, statement)
                 if isinstance(statement.callee, FunctionName):
@@ -290,7 +294,8 @@ def _facts_of(work: Work, scan: Scan, setters: Mapping[tuple[str, int], PlaceKey
                         if name_ is not None and key is not None:
                             _note_key(work, scan, key)
                             fresh = starts(function.identity)
-                            yield fact("initial" if fresh else "stored", key, name_, statement.position, number)
+                            kind = "initial" if fresh else "stored"
+                            yield fact(kind, key, name_, statement.position, number, uncast(argument).type)
         end = block.terminator
         if isinstance(end, Return) and end.value is not None:
             for name, where, chosen in _names(function, end.value, end.position, number):
@@ -362,6 +367,45 @@ def _callers(work: Work, function: Function) -> tuple[str, ...]:
             }
         )
     )
+
+
+def _is_idle(work: Work, function: Function) -> bool:
+    """Whether a function is the file's own and nothing there calls it or takes its address."""
+    if not function.static or function.attributes or called_directly(work, function.name):
+        return False
+    held = [initial.value for item in work.unit.objects for initial in item.initial]
+    for scan in work.scans:
+        for block in scan.function.blocks:
+            for statement in block.statements:
+                if isinstance(statement, Assign):
+                    held.append(statement.value)
+                elif isinstance(statement, Call):
+                    held.extend(statement.arguments)
+            end = block.terminator
+            held.extend(value for value in (getattr(end, "value", None), getattr(end, "condition", None)) if value)
+    return not any(_names_function(value, function.name) for value in held)
+
+
+def _names_function(value: object, name: str) -> bool:
+    """Whether an expression names a function anywhere."""
+    stack = [value]
+    while stack:
+        node = stack.pop()
+        if isinstance(node, FunctionName) and node.name == name:
+            return True
+        if isinstance(node, tuple):
+            stack.extend(node)
+        elif is_dataclass(node) and not isinstance(node, Variable | Position):
+            stack.extend(getattr(node, field.name) for field in fields(node) if field.name != "type")
+    return False
+
+
+def _fits(function: Function, type_: object) -> bool:
+    """Whether a pointer could hold a function: as many parameters, and a result or none alike."""
+    pointed = type_.to if isinstance(type_, PointerType) else type_
+    if not isinstance(pointed, FunctionType) or type(pointed.returns) is not type(function.type.returns):
+        return False
+    return pointed.parameters is None or len(pointed.parameters) == len(function.parameters)
 
 
 def called_directly(work: Work, name: str) -> bool:
