@@ -98,6 +98,11 @@ def _sizes(ring: Ring) -> tuple[int, ...]:
     """How many slots the ring is tried with."""
     if ring.capacity is not None:
         return (ring.capacity,) if 2 <= ring.capacity <= MOST_SLOTS else ()
+    if ring.bound is None:
+        # Nothing says how many slots there are but the number that subscripts are reduced by.
+        moduli = [access.modulus for access in ring.accesses if access.modulus is not None]
+        if moduli:
+            return (max(moduli),) if 2 <= max(moduli) <= MOST_SLOTS else ()
     masked = (ring.bound is not None and ring.bound.plus == 1) or ring.wrap == "mask"
     masked = masked or any(access.reduction == "mask" for access in ring.accesses)
     return (4, 2) if masked or ring.wrap == "free-running" else (4, 3)
