@@ -29,6 +29,7 @@ from stepring.shapes.ring_types import Disagreement
 from stepring.shapes.ring_uses import (
     Probe,
 )
+from stepring.shapes.ring_walk import walks
 from stepring.shapes.ring_world import Group, World, group_of, world_of
 from stepring.shapes.types import Ring
 
@@ -118,6 +119,7 @@ def _explored(world: World, purse: Purse, origin: Placer) -> Exploration:
         all_ones(search)
         near_overflow(search)
         pairs(search)
+        walks(search)
     promised_slots(search)
     odd = odd_steps(world)
     if not search.found:

@@ -43,7 +43,9 @@ def near_overflow(search: Search) -> None:
     fixed = tuple(StartValue(name, path, start) for name, path in extra)
     kept = tuple(item for item in search.base.start if (item.object, item.path) not in extra)
     said = f"{start} elements have been put in and taken out before"
+    base = search.base
     search.base = replace(search.base, start=(*kept, *fixed), calls=(), assumed=(*search.base.assumed, said))
     search.overflow = True
     search.far = tuple((name + path, start) for name, path in extra)
     search_states(search, State(world.save(), (), (), 0))
+    search.base, search.overflow, search.far = base, False, ()  # what is asked next starts at the ring's own start

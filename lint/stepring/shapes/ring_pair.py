@@ -8,7 +8,7 @@ which the contents are others show what it does wrong.
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
-from typing import Any, TypeAlias
+from typing import TypeAlias
 
 from stepring.paths.interpreter import run
 from stepring.paths.replay import Unfit, prepared
@@ -18,7 +18,7 @@ from stepring.shapes.ring_calls import Purse, call
 from stepring.shapes.ring_compare import fault
 from stepring.shapes.ring_ideal import Content
 from stepring.shapes.ring_parameters import RING, STORAGE, Operation
-from stepring.shapes.ring_report import Search, State, content_report, made_of, shown, suspected
+from stepring.shapes.ring_report import Made, Search, State, content_report, made_of, shown, suspected
 from stepring.shapes.ring_uses import SMALL, Probe, Use, drained, perform
 from stepring.shapes.ring_world import World
 
@@ -233,24 +233,34 @@ def _brought(
 ) -> tuple[State, tuple[Content, Content]] | None:
     """Both rings after so many puts and takes, holding so many elements; None if that does not go well."""
     both[0].probe.back()
-    run_: list[Any] = []
-    held: list[Content] = []
-    token = 0
-    for side, turns, level in zip(both, lead, levels, strict=True):
-        assert side.put is not None and side.take is not None
-        mine: list[int] = []
-        for number in range(turns + level):
-            given = perform(side.world, side.put, side.probe.purse, token=token)
-            token += 1
-            if not given.returned or len(given.stored) != 1:
-                return None
-            run_.extend(made_of(side, given))
-            if number >= turns:
-                mine.append(given.stored[0][1])
-                continue
-            taken = perform(side.world, side.take, side.probe.purse)
-            if not taken.returned or taken.refused:
-                return None
-            run_.extend(made_of(side, taken))
-        held.append(tuple(mine))
-    return State(both[0].world.save(), held[0], tuple(run_), token), (held[0], held[1])
+    one = filled_to(both[0], lead[0], levels[0], 0)
+    if one is None:
+        return None
+    other = filled_to(both[1], lead[1], levels[1], one[2])
+    if other is None:
+        return None
+    return State(both[0].world.save(), one[0], (*one[1], *other[1]), other[2]), (one[0], other[0])
+
+
+def filled_to(side: Search, turns: int, level: int, token: int) -> tuple[Content, tuple[Made, ...], int] | None:
+    """What a ring holds after so many puts and takes and then so many puts, with the calls and the next token.
+
+    None if that does not go well. The memory is changed.
+    """
+    assert side.put is not None and side.take is not None
+    calls: list[Made] = []
+    held: list[int] = []
+    for number in range(turns + level):
+        given = perform(side.world, side.put, side.probe.purse, token=token)
+        token += 1
+        if not given.returned or len(given.stored) != 1:
+            return None
+        calls.extend(made_of(side, given))
+        if number >= turns:
+            held.append(given.stored[0][1])
+            continue
+        taken = perform(side.world, side.take, side.probe.purse)
+        if not taken.returned or taken.refused:
+            return None
+        calls.extend(made_of(side, taken))
+    return tuple(held), tuple(calls), token
