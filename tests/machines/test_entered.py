@@ -1,4 +1,4 @@
-"""States that nothing enters: a state's own store of itself is no entry, nor is a handler that nothing stores a state's."""
+"""States that nothing enters: a state's own store of itself is no entry, a handler that nothing stores is never run."""
 
 from pathlib import Path
 

@@ -9,7 +9,12 @@ FORMS_TO_COME: dict[str, str] = {
     "goto": "labels are no states yet",
 }
 
-STORAGES_TO_COME = {"pointer": "a state that is known through a pointer parameter alone is not found yet"}
+STORAGES_TO_COME: dict[str, str] = {}
+
+PAIRS_TO_COME = {
+    ("event functions", "pointer"): "nothing in the unit passes an address, so that no two functions have one state",
+}
+"""Forms in places."""
 
 GRAPHS_TO_COME: dict[str, str] = {}
 """Slips that spoil the graph."""

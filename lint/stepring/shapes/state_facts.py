@@ -32,6 +32,7 @@ from stepring.shapes.state_dispatch import dispatch_fact
 from stepring.shapes.state_handlers import handler_dispatch, handler_facts, handler_tables
 from stepring.shapes.state_keys import families_by_key, key_facts
 from stepring.shapes.state_moves import note_transitions
+from stepring.shapes.state_pointers import with_pointers_followed
 from stepring.shapes.state_scan import Scan, Work, function_identity, scan_function, state_candidates
 from stepring.shapes.state_spelled import spelled
 from stepring.shapes.state_stores import before_all, may_set, note_forward, store_fact
@@ -40,12 +41,13 @@ from stepring.shapes.state_tables import Found, lookups, tables
 
 def state_facts(unit: TypedUnit, read: ReadUnit) -> StateFacts:
     """What the unit says about state variables."""
+    unit, apart = with_pointers_followed(unit)
     names = Names(read.macros, unit.types, read.origin)
     own = [function for function in unit.functions if function.own]
     known = getters(own)
     handed = working_parameters(own)
     scans = [scan_function(function, known, handed.get(function.identity, ())) for function in own]
-    work = Work(unit, read, names, {function.name: function for function in own}, scans)
+    work = Work(unit, read, names, {function.name: function for function in own}, scans, apart)
     arrays = tables(work)
     looked_up = _looked_up(work, arrays)
     for through in handler_tables(work, arrays):

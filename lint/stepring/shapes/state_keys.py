@@ -65,8 +65,10 @@ def _objects_by_key(work: Work) -> dict[str, tuple[tuple[Constant, ...], bool]]:
     for item in work.unit.objects:
         type_ = item.variable.type
         if isinstance(type_, IntType):
-            constants = initial_constants(work, item, ())
-            found[item.variable.identity] = (constants, not constants and not item.initial)
+            # Several objects can stand for one variable.
+            constants, zero = found.setdefault(item.variable.identity, ([], False))
+            first = initial_constants(work, item, ())
+            found[item.variable.identity] = ([*constants, *first], zero or (not first and not item.initial))
             continue
         given: dict[str, int] = {}
         for initial in item.initial:

@@ -110,7 +110,9 @@ def _transitions_of(work: Work, key: str, scans: Sequence[Scan], callers: Mappin
     others = [
         scan
         for scan in work.scans
-        if key not in scan.keys and any(function_identity(work, name) in writers for _, name in scan.calls)
+        if key not in scan.keys
+        and (scan.function.identity, key) not in work.apart
+        and any(function_identity(work, name) in writers for _, name in scan.calls)
     ]
     for scan in [*readers, *others]:
         function = scan.function
@@ -361,7 +363,7 @@ def _writers(work: Work, key: str, scans: Sequence[Scan], callers: Mapping[str, 
             continue
         name = by_identity[identity].function.name
         for caller in callers.get(name, ()):
-            if caller not in found:
+            if caller not in found and (caller, key) not in work.apart:
                 found.add(caller)
                 depth[caller] = depth[identity] + 1
                 pending.append(caller)

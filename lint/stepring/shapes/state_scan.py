@@ -85,6 +85,8 @@ class Work:
     names: Names
     by_name: Mapping[str, Function]
     scans: Sequence[Scan]
+    # Functions that hand over the addresses of several variables with one machine, with that machine's key.
+    apart: frozenset[tuple[str, str]] = frozenset()
     keys: dict[str, KeyFact] = field(default_factory=dict)
     dispatches: list[DispatchFact] = field(default_factory=list)
     tests: list[TestFact] = field(default_factory=list)
