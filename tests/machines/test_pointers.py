@@ -46,6 +46,12 @@ def test_the_pointer_handed_on(tmp_path: Path) -> None:
     assert steps(machine_in(tmp_path, text() + outer)) == STEPS
 
 
+@pytest.mark.parametrize("test", ["state == 0", "!state", "!(state && ev)", "(void *)0 == state"])
+def test_a_pointer_that_is_compared_with_none(test: str, tmp_path: Path) -> None:
+    guarded = text().replace("switch (*state) {", f"if ({test}) {{ return; }}\n        switch (*state) {{")
+    assert steps(machine_in(tmp_path, guarded + TWO)) == STEPS
+
+
 def test_a_working_copy_of_each_of_two(tmp_path: Path) -> None:
     """What the first call leaves is not what the second finds."""
     copied = text().replace("switch (*state) {", "enum barge now = *state;\n        switch (now) {")

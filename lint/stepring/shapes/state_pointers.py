@@ -3,7 +3,7 @@
 A function that only ever looks through its pointer, and whose every caller in the unit passes the address of a variable
 with static storage, runs the machine of those variables. They all obey the same code, so they are one machine: in the
 unit that is looked at for states, ``*state`` and the variables become one place. What is done with a pointer otherwise
-(kept, compared, moved on, read from memory) leaves everything as it is.
+(kept, moved on, read from memory) leaves everything as it is; it can be compared with no pointer at all.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
@@ -15,6 +15,8 @@ import networkx
 from stepring.meaning.types import (
     AddressOf,
     Assign,
+    Binary,
+    Branch,
     Call,
     Const,
     DerefPlace,
@@ -24,6 +26,7 @@ from stepring.meaning.types import (
     Load,
     PointerType,
     TypedUnit,
+    Unary,
     Variable,
     VariablePlace,
 )
@@ -127,6 +130,14 @@ def _look(node: Any, bad: set[str], looked: set[str]) -> None:
         if isinstance(inner, Load) and isinstance(inner.place, VariablePlace):
             looked.add(inner.place.variable.identity)
             return
+    if isinstance(node, Binary) and node.op in ("==", "!="):
+        sides = (uncast(node.left), uncast(node.right))
+        if any(isinstance(side, Const) for side in sides) and any(_parameter(side) is not None for side in sides):
+            return  # whether there is an object at all
+    if isinstance(node, Unary) and node.op == "!" and _parameter(node.operand) is not None:
+        return
+    if isinstance(node, Branch) and _parameter(node.condition) is not None:
+        return
     if isinstance(node, VariablePlace):
         if isinstance(node.variable.type, PointerType):
             bad.add(node.variable.identity)
