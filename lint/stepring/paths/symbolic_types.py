@@ -25,7 +25,7 @@ class Limits:
     """
 
     effort: int = 1_500_000
-    queries: int = 240
+    queries: int = 150
     paths: int = 256
     depth: int = 4
     blocks: int = 80
