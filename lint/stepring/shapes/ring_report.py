@@ -327,7 +327,8 @@ def _steps(search: Search, run: Sequence[Made], ending: Ending) -> tuple[OrbitSt
 
 def _call_text(search: Search, item: Made) -> str:
     parts = [_value_text(search, value) for value in item.call.arguments]
-    given = ", ".join(f"{value.name} gives {value.value}" for value in item.call.outside[:3])
+    told = [f"{name} gives {value}" for name, value in dict.fromkeys((one.name, one.value) for one in item.call.outside)]
+    given = ", ".join(told[:3])
     text = f"{item.name}({', '.join(parts)})"
     if item.result:
         text += f" returns {item.result}"
