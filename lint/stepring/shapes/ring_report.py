@@ -327,8 +327,8 @@ def _steps(search: Search, run: Sequence[Made], ending: Ending) -> tuple[OrbitSt
 
 def _call_text(search: Search, item: Made) -> str:
     parts = [_value_text(search, value) for value in item.call.arguments]
-    told = [f"{name} gives {value}" for name, value in dict.fromkeys((one.name, one.value) for one in item.call.outside)]
-    given = ", ".join(told[:3])
+    told = dict.fromkeys((value.name, value.value) for value in item.call.outside)
+    given = ", ".join(f"{name} gives {value}" for name, value in list(told)[:3])
     text = f"{item.name}({', '.join(parts)})"
     if item.result:
         text += f" returns {item.result}"
