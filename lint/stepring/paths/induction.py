@@ -27,6 +27,9 @@ from stepring.shapes.ring_keys import Key
 Look: TypeAlias = Callable[[Key], Value]
 """What a key holds, in the object and at the point that are asked about."""
 
+LONGEST = 10_000
+"""Milliseconds after which a question is given up whatever its units: some steps of the solver count none."""
+
 
 DROPPING = (
     ("bits", 200_000),
@@ -377,6 +380,7 @@ def _tried(
     else:
         solver = z3.SimpleSolver()
     solver.set("rlimit", effort)
+    solver.set("timeout", LONGEST)
     solver.set("random_seed", 0)
     known = [(name, term) for name in active for term in body.assumed[name]]
     if bits_:

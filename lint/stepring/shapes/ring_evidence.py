@@ -17,6 +17,10 @@ from stepring.shapes.ring_types import CheckedAccess, CheckedStep, Proof
 from stepring.shapes.ring_writers import Outside
 from stepring.shapes.types import Ring
 
+LARGE = 150
+"""Rings with a function of more blocks than this are not proved: their questions are beyond the solver's limits, and
+answering so takes it minutes."""
+
 
 @dataclass(frozen=True, slots=True)
 class UnitCode:
@@ -58,6 +62,8 @@ def with_evidence(
     for unit in code.units:
         called.update({(function.identity, function.position): function for function in unit.called})
 
+    large = {function.identity for function in code.functions if len(function.blocks) > LARGE}
+
     def prove(asked: tuple[Ring, ...]) -> tuple[tuple[Proof, ...], ...]:
         done = prove_rings(
             asked,
@@ -74,7 +80,7 @@ def with_evidence(
         return tuple(ring.proofs for ring in done)
 
     def proved(found: tuple[Ring, ...]) -> tuple[Ring, ...]:
-        asked = tuple(ring for ring in found if _unsettled(ring))
+        asked = tuple(ring for ring in found if _unsettled(ring) and large.isdisjoint(ring.functions))
         if not asked:
             return found
         try:
