@@ -15,10 +15,11 @@ from rich.text import Text
 
 from stepring.places import Origin
 from stepring.report.sources import Sources
+from stepring.report.tables import orbit_words, users
 from stepring.report.text import function_name, one_sentence, printable, shown_path
 from stepring.report.types import Outcome
 from stepring.report.words import CAUTION, count, coverage_sentence
-from stepring.shapes.types import Access, Index, Machine, Ring, State, StateStore, Transition
+from stepring.shapes.types import Index, Machine, Ring, State, StateStore, Transition
 
 
 def print_inventory(outcome: Outcome, console: Console, base: Path | None = None) -> None:
@@ -153,9 +154,9 @@ def _print_ring(console: Console, ring: Ring, sources: Sources, base: Path | Non
             ("Capacity", f"{_capacity(ring)}{f' {elements}{size}' if ring.capacity else ''}"),
             ("Scheme", ring.scheme),
             ("Wrap", ring.wrap),
-            ("Written by", _users(ring.accesses, "store")),
-            ("Read by", _users(ring.accesses, "load")),
-            ("Passed by", _users(ring.accesses, "address")),
+            ("Written by", users(ring.accesses, "store")),
+            ("Read by", users(ring.accesses, "load")),
+            ("Passed by", users(ring.accesses, "address")),
             *(("Note", one_sentence(note)) for note in ring.notes),
         ],
     )
@@ -167,24 +168,8 @@ def _print_ring(console: Console, ring: Ring, sources: Sources, base: Path | Non
     console.print()
 
 
-def _users(accesses: Iterable[Access], kind: str) -> str:
-    return ", ".join(sorted({function_name(access.function) for access in accesses if access.kind == kind}))
-
-
 def _index_row(index: Index) -> tuple[str, str, str, str, str, str]:
     type_name = f"{index.type_name} ({index.low} to {index.high})"
     steps = ", ".join(sorted({f"{function_name(step.function)} ({step.wrap})" for step in index.steps}))
     initial = "unknown" if index.initial is None else str(index.initial)
-    return index.name, type_name, index.role, initial, _orbit_words(index.orbit), steps
-
-
-def _orbit_words(orbit: tuple[int, ...] | None) -> str:
-    """The values of an orbit in few words."""
-    if orbit is None:
-        return "unknown"
-    low, high, different = min(orbit, default=0), max(orbit, default=0), len(set(orbit))
-    if different == 0:
-        return "nothing"
-    if different == 1:
-        return str(low)
-    return f"{low} to {high}" if different == high - low + 1 else f"{count(different, 'value')} from {low} to {high}"
+    return index.name, type_name, index.role, initial, orbit_words(index.orbit), steps

@@ -4,12 +4,13 @@ A machine's state table has a row for each state and a column for each event; an
 inside the dispatch, or the function that is called. A cell holds every transition from that state on that event.
 """
 
-from collections.abc import Sequence
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 from stepring.places import Origin
 from stepring.report.text import function_name, one_sentence, printable
 from stepring.report.types import Outcome
+from stepring.report.words import count
 from stepring.rule import Obligation
 from stepring.shapes.types import Access, Machine, Ring, State, Transition
 
@@ -153,9 +154,9 @@ def ring_tables(outcome: Outcome, ring: Ring) -> RingTables:
         ("Capacity", capacity + size),
         ("Full and empty", ring.scheme),
         ("Wrap", ring.wrap),
-        ("Written by", _users(ring.accesses, "store")),
-        ("Read by", _users(ring.accesses, "load")),
-        ("Address taken by", _users(ring.accesses, "address")),
+        ("Written by", users(ring.accesses, "store")),
+        ("Read by", users(ring.accesses, "load")),
+        ("Address taken by", users(ring.accesses, "address")),
         ("Verdicts", told),
         *(("Note", one_sentence(note)) for note in ring.notes),
     )
@@ -165,18 +166,18 @@ def ring_tables(outcome: Outcome, ring: Ring) -> RingTables:
             f"{index.type_name} ({index.low} to {index.high})",
             index.role,
             "not known" if index.initial is None else str(index.initial),
-            _orbit(index.orbit),
+            orbit_words(index.orbit),
             ", ".join(sorted({f"{function_name(step.function)} ({step.wrap})" for step in index.steps})),
         )
         for index in ring.indices
     )
     words = {"store": "stores", "load": "loads", "address": "takes the address"}
-    users = tuple(
+    who = tuple(
         (function_name(access.function), f"{words[access.kind]} at {access.index or 'a subscript'}", access.where)
         for access in ring.accesses
     )
     kept = tuple((label, printable(text)) for label, text in facts if text)
-    return RingTables(ring, kept, indices, users, _about(outcome, ring.identity))
+    return RingTables(ring, kept, indices, who, _about(outcome, ring.identity))
 
 
 def _about(outcome: Outcome, identity: str) -> tuple[Obligation, ...]:
@@ -187,17 +188,18 @@ def _entry(number: int, step: Transition) -> Entry:
     return Entry(number, step.target, step.condition, ", ".join(step.actions), step.where)
 
 
-def _users(accesses: Sequence[Access], kind: str) -> str:
+def users(accesses: Iterable[Access], kind: str) -> str:
+    """The functions that access a ring's storage in that way."""
     return ", ".join(sorted({function_name(access.function) for access in accesses if access.kind == kind}))
 
 
-def _orbit(orbit: tuple[int, ...] | None) -> str:
+def orbit_words(orbit: tuple[int, ...] | None) -> str:
+    """The values of an orbit in few words."""
     if orbit is None:
-        return "not known"
-    if not orbit:
+        return "unknown"
+    low, high, different = min(orbit, default=0), max(orbit, default=0), len(set(orbit))
+    if different == 0:
         return "nothing"
-    low, high = min(orbit), max(orbit)
-    whole = len(set(orbit)) == high - low + 1
-    return (
-        str(low) if low == high else f"{low} to {high}" if whole else f"{len(set(orbit))} values from {low} to {high}"
-    )
+    if different == 1:
+        return str(low)
+    return f"{low} to {high}" if different == high - low + 1 else f"{count(different, 'value')} from {low} to {high}"
